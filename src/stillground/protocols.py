@@ -1,0 +1,358 @@
+"""The types that travel between the layers, and the contracts of plug-ins.
+
+All are frozen: no step writes into an earlier one. Arrays are float64 and SI unless said
+otherwise. A *nodal field* has one axis per dimension of the ground, elevation last and ascending;
+flattened in C order it has ``n_nodes`` entries.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, Any, Literal, Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+from pylops import LinearOperator
+
+if TYPE_CHECKING:
+    from pydantic import BaseModel
+    from xarray import Dataset
+
+    from stillground.grid import Grid
+    from stillground.ground import Ground
+
+Array = NDArray[np.float64]
+Integers = NDArray[np.int64]
+Word = Literal["settled", "drifting", "undecided"]
+
+
+@dataclass(frozen=True)
+class GroundProperty:
+    """The property of the ground that a kind of measurement sees.
+
+    ``reciprocal`` is (name, units, long_name) of one over the property where people read that
+    instead, as velocity for slowness; figures then show the reciprocal.
+    """
+
+    name: str
+    units: str
+    long_name: str
+    reciprocal: tuple[str, str, str] | None = None
+
+
+@dataclass(frozen=True)
+class Field:
+    """A named nodal field with its units (UDUNITS text), for products and figures."""
+
+    name: str
+    values: Array
+    units: str
+    long_name: str
+
+
+@dataclass(frozen=True)
+class Measurement:
+    """A linear measurement of the ground on one grid; labels and units end here.
+
+    Parameters
+    ----------
+    operator : pylops.LinearOperator, shape (n_data, n_nodes)
+        From a flattened nodal field of the ground property to predicted data.
+    data, errors : array, shape (n_data,)
+        Observed data and their standard deviations, in the same unit.
+    groupings : mapping of str to integer array, shape (n_data,)
+        Which data share a source, a receiver, a station: numbers from 0, no labels.
+    """
+
+    operator: LinearOperator
+    data: Array
+    errors: Array
+    groupings: Mapping[str, Integers] = field(default_factory=dict)
+
+
+@dataclass(frozen=True)
+class Iterate:
+    """One step of an iteration in standard form; iterate 0 is the prior mean.
+
+    ``solution`` has shape (n_unknowns, n_columns) and ``residual`` = b - A x has shape
+    (n_data, n_columns); both are read-only copies. ``gradient_norm`` is the norm of A^T r of the
+    first column, or None where the method does not have it.
+    """
+
+    index: int
+    solution: Array
+    residual: Array
+    gradient_norm: float | None = None
+
+
+@dataclass(frozen=True)
+class History:
+    """What the stopping rules see: one row an iteration, iteration 0 first.
+
+    Everything is in standard form, where data have unit errors and the ground has unit prior variance
+    (relative to the background, where there is one). A column is None where the method or the run has none; a rule
+    that needs it then says that it does not apply.
+
+    Parameters
+    ----------
+    n_data : int
+    residual_norm, solution_norm : array, shape (n_rows,)
+        Norms of b - A x and of x. The norm of x is the roughness.
+    residual_step, step_norm : array, shape (n_rows,)
+        Norms of the change of the residual and of x since the row before; 0 in row 0.
+        Where the residual meets a norm exactly between two rows follows from ``residual_step``.
+    gradient_norm : array or None
+    degrees_of_freedom : array or None
+        Estimated trace of the map from data to fit.
+    """
+
+    n_data: int
+    residual_norm: Array
+    residual_step: Array
+    solution_norm: Array
+    step_norm: Array
+    gradient_norm: Array | None = None
+    degrees_of_freedom: Array | None = None
+
+    @property
+    def last(self) -> int:
+        """Index of the last iteration."""
+        return self.residual_norm.size - 1
+
+    @property
+    def chi_square(self) -> Array:
+        """Mean squared whitened residual, shape (n_rows,)."""
+        return self.residual_norm**2 / self.n_data
+
+    def upto(self, last: int) -> History:
+        """The history as it stood after iteration ``last``."""
+        columns = {
+            name: value[: last + 1]
+            for name in self.__dataclass_fields__
+            if isinstance(value := getattr(self, name), np.ndarray)
+        }
+        return History(self.n_data, **columns)
+
+
+@dataclass(frozen=True)
+class RuleOptions:
+    """The numbers a user can give to the rules; the defaults of ``[stopping]`` live here."""
+
+    tau: float = 1.0
+
+
+@dataclass(frozen=True)
+class Pick:
+    """Where a rule would stop: an iteration (fractions allowed) or None, how sure, and why."""
+
+    iteration: float | None
+    firm: bool
+    reason: str
+
+
+class Rule(Protocol):
+    """A pure function of the history."""
+
+    def __call__(self, history: History, options: RuleOptions, /) -> Pick: ...
+
+
+class Solver(Protocol):
+    """An iteration in standard form: endless or until it breaks down, without a tolerance.
+
+    It needs only products with ``operator`` and sums and inner products of vectors. ``b`` has shape
+    (n_data, n_columns): independent problems that share the products.
+    """
+
+    def __call__(self, operator: LinearOperator, b: Array, /) -> Iterator[Iterate]: ...
+
+
+@dataclass(frozen=True)
+class Rung:
+    """One grid of the ladder with its answer at the finest rung's pick.
+
+    ``model`` is the nodal field of the ground property on this rung's own ``axes``;
+    ``iteration`` is this rung's own pick by the chosen rule, None where the rule found none.
+    """
+
+    spacing: tuple[float, ...]
+    axes: tuple[Array, ...]
+    model: Array
+    iteration: float | None
+
+    @property
+    def n_nodes(self) -> int:
+        return self.model.size
+
+
+@dataclass(frozen=True)
+class Verdict:
+    """Whether the answer depends on the grid; ``order`` and ``remaining`` None where untold."""
+
+    word: Word
+    reason: str
+    order: float | None
+    remaining: float | None
+
+
+@dataclass(frozen=True)
+class Ladder:
+    """The rungs, coarse to fine, and how far the answer moved between them.
+
+    ``change[i]`` is the relative L2 change from rung i to rung i+1 at equal iteration;
+    ``pick_drift`` the relative change on the finest rung between its own pick and the pick of the
+    rung before it, None with a single rung or where a rule found none.
+    """
+
+    rungs: tuple[Rung, ...]
+    change: tuple[float, ...]
+    pick_drift: float | None
+    verdict: Verdict
+
+
+@dataclass(frozen=True)
+class Choice:
+    """One rule's pick on the finest rung, with what it means for the picture.
+
+    ``iteration`` is where the picture is taken (the last one where the rule found none, so
+    ``pick.iteration`` may be None); ``distance`` is the relative L2 distance of its picture from
+    the chosen one's; ``model`` the nodal field at that iteration.
+    """
+
+    rule: str
+    pick: Pick
+    iteration: float
+    chi_square: float
+    roughness: float
+    distance: float
+    model: Array
+
+
+@dataclass(frozen=True)
+class Result:
+    """One profile's answer on the finest rung, as arrays, with the argument for it.
+
+    Parameters
+    ----------
+    property : GroundProperty
+    axes : tuple of array
+        Node coordinates: (distance, elevation) for a section, (elevation,) for a column.
+    background : array, nodal field
+        The prior mean.
+    model : array, nodal field
+        The property at the chosen pick.
+    mesh_change : array, nodal field
+        Absolute change since the rung before, in the property's unit; NaN with a single rung.
+    anomaly : float
+        Root mean square of the model less its best constant: what changes are relative to.
+    coverage : Field
+        How well the survey visits the ground.
+    predicted : array, shape (n_data,)
+        Data that the model at the chosen pick would give.
+    observed, errors : array, shape (n_data,)
+    groupings : mapping
+        As in Measurement.
+    history : History
+    choices : tuple of Choice
+        One for each rule, in the order asked for.
+    chosen : Choice
+        The one whose picture is the answer.
+    snapshots : tuple of (int, array)
+        Iterations kept on the finest rung with their nodal fields.
+    ladder : Ladder
+    """
+
+    property: GroundProperty
+    axes: tuple[Array, ...]
+    background: Array
+    model: Array
+    mesh_change: Array
+    anomaly: float
+    coverage: Field
+    predicted: Array
+    observed: Array
+    errors: Array
+    groupings: Mapping[str, Integers]
+    history: History
+    choices: tuple[Choice, ...]
+    chosen: Choice
+    snapshots: tuple[tuple[int, Array], ...]
+    ladder: Ladder
+
+
+@dataclass(frozen=True)
+class Progress:
+    """What long work yields while it runs: ``done`` of ``total`` steps of ``stage``."""
+
+    stage: str
+    done: int
+    total: int
+    detail: str = ""
+
+
+class Scene(Protocol):
+    """One profile's survey set into the ground: positions as arrays, labels behind it.
+
+    ``lower`` and ``upper`` bound all positions along the axes of the ground, m. ``surface`` is the
+    known ground surface as (distance, elevation) arrays, or None. ``positions`` are distinct places
+    by what stands there ("source", "receiver"), shape (n, n_axes), in the order of the groupings.
+    ``paths`` are the two places of every datum, shape (n_data, n_axes) each, ``apparent`` the ground
+    property that would explain each datum alone. ``facts`` are sentences worth knowing beforehand.
+    """
+
+    @property
+    def lower(self) -> tuple[float, ...]: ...
+    @property
+    def upper(self) -> tuple[float, ...]: ...
+    @property
+    def surface(self) -> tuple[Array, Array] | None: ...
+    @property
+    def positions(self) -> Mapping[str, Array]: ...
+    @property
+    def paths(self) -> tuple[Array, Array]: ...
+    @property
+    def apparent(self) -> Array: ...
+    @property
+    def facts(self) -> tuple[str, ...]: ...
+
+    def assemble(self, grid: Grid) -> Measurement:
+        """The measurement on a grid."""
+
+    def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> Field:
+        """How well the survey visits the ground, as means over about a correlation length."""
+
+    def predict(self, ground: Ground) -> Array:
+        """Data over a described ground, in closed form, shape (n_data,)."""
+
+    def trace(self, distance: Array) -> tuple[Array, Array]:
+        """East and north of distances along the profile, m."""
+
+
+class Kind(Protocol):
+    """A kind of measurement: its columns, its settings, and how it sees the ground.
+
+    ``columns`` are the names that it needs of a survey table, ``datum`` the measured one and
+    ``datum_units`` its SI unit; ``axes`` names the ground's axes, elevation last. On a prior of
+    smoothness ``bounded_above`` or less the measurement has no limit under refinement. ``Settings``
+    is a pydantic model for the table ``[physics]`` of the configuration.
+    """
+
+    @property
+    def name(self) -> str: ...
+    @property
+    def ground_property(self) -> GroundProperty: ...
+    @property
+    def columns(self) -> tuple[str, ...]: ...
+    @property
+    def datum(self) -> str: ...
+    @property
+    def datum_units(self) -> str: ...
+    @property
+    def axes(self) -> tuple[str, ...]: ...
+    @property
+    def bounded_above(self) -> float: ...
+    @property
+    def Settings(self) -> type[BaseModel]: ...  # noqa: N802
+
+    def place(self, survey: Dataset, settings: Any) -> Scene:
+        """Sets a checked survey, on the dimension ``datum``, into the ground."""
