@@ -1,0 +1,1 @@
+"""Compiled loops: arrays in, arrays out; no labels, no units, no grids, no operators."""
