@@ -1,0 +1,88 @@
+"""LSQR with the data-side vectors kept orthogonal: the default iteration."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+from pylops import LinearOperator
+
+from stillground.protocols import Array, Iterate
+from stillground.solve.columns import frozen, norm, ratio
+
+
+def lsqr(operator: LinearOperator, b: Array) -> Iterator[Iterate]:
+    """Iterates of LSQR from zero, in exact arithmetic those of CGLS; ends when the space is used up.
+
+    Parameters
+    ----------
+    operator : pylops.LinearOperator, shape (n_data, n_unknowns)
+    b : array, shape (n_data, n_columns)
+        Independent problems that share the products.
+
+    Yields
+    ------
+    Iterate
+
+    Notes
+    -----
+    Golub-Kahan bidiagonalisation; each new data-side vector is orthogonalised against all before
+    it, n_iterations x n_data numbers. Without that the vectors lose orthogonality where singular
+    values fall fast, and the differences between rungs of a ladder turn random.
+
+    References
+    ----------
+    Paige & Saunders (1982), LSQR: an algorithm for sparse linear equations and sparse least squares,
+    ACM Trans. Math. Softw. 8. Simon & Zha (2000), Low-rank matrix approximation using the Lanczos
+    bidiagonalization process, SIAM J. Sci. Comput. 21 (orthogonalising one side is enough).
+    """
+    x = np.zeros((operator.shape[1], b.shape[1]))
+    r = b.copy()
+    beta = norm(b)
+    u = b * ratio(np.ones_like(beta), beta)
+    v = operator.rmatmat(u)
+    alpha = norm(v)
+    v = v * ratio(np.ones_like(alpha), alpha)
+    yield Iterate(0, frozen(x), frozen(r), float(alpha[0] * beta[0]))
+
+    # One stack of data-side vectors a column, doubled when full.
+    basis = np.empty((b.shape[1], 32, b.shape[0]))
+    basis[:, 0] = u.T
+    w, w_seen = v.copy(), np.zeros_like(u)
+    turned_theta, rho_bar, phi_bar = np.zeros_like(alpha), alpha.copy(), beta.copy()
+    size = alpha[0] ** 2
+    floor = 10 * np.finfo(float).eps
+    index = 0
+    while alpha[0] > floor * np.sqrt(size):
+        seen = operator.matmat(v)
+        # What the operator makes of the search direction follows from the same product.
+        w_seen = seen - turned_theta * w_seen
+        u = seen - alpha * u
+        known = basis[:, : index + 1]
+        for _ in range(2):
+            u -= np.matmul(np.matmul(known, u.T[:, :, None]).swapaxes(1, 2), known)[:, 0].T
+        beta = norm(u)
+        u *= ratio(np.ones_like(beta), beta)
+        if index + 1 == basis.shape[1]:
+            basis = np.concatenate([basis, np.empty_like(basis)], axis=1)
+        basis[:, index + 1] = u.T
+        v_next = operator.rmatmat(u) - beta * v
+        alpha_next = norm(v_next)
+        size += beta[0] ** 2 + alpha_next[0] ** 2
+
+        rho = np.hypot(rho_bar, beta)
+        cosine, sine = ratio(rho_bar, rho), ratio(beta, rho)
+        step = ratio(cosine * phi_bar, rho)
+        x += step * w
+        r -= step * w_seen
+        phi_bar = sine * phi_bar
+        index += 1
+        yield Iterate(index, frozen(x), frozen(r), float(phi_bar[0] * alpha_next[0] * abs(cosine[0])))
+        if beta[0] <= floor * np.sqrt(size):
+            return
+
+        v = v_next * ratio(np.ones_like(alpha_next), alpha_next)
+        turned_theta = ratio(sine * alpha_next, rho)
+        w = v - turned_theta * w
+        rho_bar = -cosine * alpha_next
+        alpha = alpha_next

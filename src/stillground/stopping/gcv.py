@@ -1,0 +1,47 @@
+"""Stop where data left out would be predicted best."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from stillground.protocols import Array, History, Pick, RuleOptions
+
+
+def gcv_curve(history: History) -> Array | None:
+    """``chi_square / (1 - dof / n_data)^2``, shape (n_rows,); None without degrees of freedom."""
+    if history.degrees_of_freedom is None:
+        return None
+    left = 1.0 - history.degrees_of_freedom / history.n_data
+    return np.asarray(
+        np.divide(history.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 0)
+    )
+
+
+def gcv(history: History, options: RuleOptions) -> Pick:
+    """The minimum of generalised cross-validation with the true degrees of freedom.
+
+    It does not need the size of the errors, only their ratios. Between iterations the minimum is that
+    of the parabola through its neighbours, so that picks on different grids can be compared. The pick
+    is weak where the curve stays within 1 % of its minimum over more than a doubling of iterations.
+
+    References
+    ----------
+    Golub, Heath & Wahba (1979), Generalized cross-validation as a method for choosing a good ridge
+    parameter, Technometrics 21. Girard (1989), Numer. Math. 56 (degrees of freedom by random vectors).
+    """
+    curve = gcv_curve(history)
+    if curve is None:
+        return Pick(None, False, "does not apply: this run has no degrees of freedom")
+    k = int(np.argmin(curve))
+    if k == history.last:
+        return Pick(float(k), False, f"still falling at iteration {k}: raise solver.iterations")
+    if k == 0:
+        return Pick(0.0, False, "no iterate predicts better than the background: the data say nothing of it")
+    before, here, after = curve[k - 1 : k + 2]
+    bend = before - 2 * here + after
+    pick = float(k + (0.5 * (before - after) / bend if np.isfinite(bend) and bend > 0 else 0.0))
+    near = np.flatnonzero(curve <= 1.01 * here)
+    span = f"within 1 % of its minimum from iteration {near[0]} to {near[-1]}"
+    if near[-1] > 2 * max(near[0], 1) or near[-1] == history.last:
+        return Pick(pick, False, f"the curve is flat: {span}")
+    return Pick(pick, True, f"a clear minimum, {span}")
