@@ -1,0 +1,99 @@
+"""The ladder: one reconstruction a rung, compared at equal iteration on the finest grid."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Generator, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from stillground.grid import Grid, prolong
+from stillground.protocols import Array, Ladder, Measurement, Progress, Rung
+from stillground.reconstruct import Method, Reconstruction, reconstruct
+from stillground.refinement.verdict import judge
+
+
+@dataclass(frozen=True)
+class Climb:
+    """What a climb leaves: the ladder, and the finest rung's reconstruction with its picture.
+
+    ``model`` is the nodal field at the finest rung's pick, ``anomaly`` the root mean square of it
+    less its best constant, ``mesh_change`` the absolute change since the rung before (NaN with a
+    single rung).
+    """
+
+    ladder: Ladder
+    finest: Reconstruction
+    model: Array
+    anomaly: float
+    mesh_change: Array
+
+
+def climb(
+    assemble: Callable[[Grid], Measurement], grids: Sequence[Grid], method: Method, tolerance: float
+) -> Generator[Progress, None, Climb]:
+    """Reconstructs on every rung, coarse to fine, and judges how the answer moves.
+
+    Parameters
+    ----------
+    assemble : callable
+        From a grid to the measurement on it.
+    grids : sequence of Grid
+        Nested, coarse to fine.
+    method : Method
+    tolerance : float
+        Relative change that counts as none.
+
+    Yields
+    ------
+    Progress
+
+    Returns
+    -------
+    Climb
+    """
+    rungs: list[Reconstruction] = []
+    for number, grid in enumerate(grids, start=1):
+        spacing = " by ".join(f"{h:g}" for h in dict.fromkeys(grid.spacing))
+        stage = f"rung {number} of {len(grids)}, {spacing} m"
+        work = reconstruct(assemble(grid), grid, method)
+        while True:
+            try:
+                step = next(work)
+            except StopIteration as end:
+                rungs.append(end.value)
+                break
+            yield Progress(stage, step.done, step.total, step.detail)
+
+    finest = rungs[-1]
+    fine = finest.grid
+    stop = finest.stop(method.choose)
+    models = [rung.model(stop) for rung in rungs]
+    model = models[-1]
+    spread = fine.norm(model - fine.mean(model))
+    raised = [prolong(m, rung.grid, fine) for m, rung in zip(models, rungs, strict=True)]
+
+    def relative(difference: Array) -> float:
+        size = fine.norm(difference)
+        return size / spread if spread > 0 else float(size > 0)
+
+    change = tuple(relative(after - before) for before, after in zip(raised[:-1], raised[1:], strict=True))
+    drift = None
+    if len(rungs) > 1 and rungs[-2].picks[method.choose].iteration is not None:
+        drift = relative(finest.model(rungs[-2].stop(method.choose)) - model)
+    ladder = Ladder(
+        rungs=tuple(
+            Rung(rung.grid.spacing, rung.grid.axes, m, rung.picks[method.choose].iteration)
+            for rung, m in zip(rungs, models, strict=True)
+        ),
+        change=change,
+        pick_drift=drift,
+        verdict=judge(change, drift, tolerance),
+    )
+    return Climb(
+        ladder=ladder,
+        finest=finest,
+        model=model,
+        anomaly=spread / float(np.sqrt(np.prod(fine.lengths))),
+        mesh_change=np.abs(raised[-1] - raised[-2]) if len(rungs) > 1 else np.full(fine.shape, np.nan),
+    )
