@@ -1,0 +1,5 @@
+"""``python -m stillground``."""
+
+from stillground.cli import main
+
+main()

@@ -1,0 +1,42 @@
+"""The configuration's class for a kind of survey, and the JSON Schema of all of them."""
+
+from __future__ import annotations
+
+from functools import cache
+from typing import Any
+
+from pydantic import Field, create_model
+
+from stillground import plugins
+from stillground.config.settings import Config
+from stillground.protocols import Kind
+
+
+def config_class(kind: Kind) -> type[Config]:
+    """`Config` with the kind's own settings under ``physics``."""
+    return _with_physics(kind.Settings)
+
+
+@cache
+def _with_physics(settings: Any) -> type[Config]:
+    physics = (settings, Field(default_factory=settings, description="settings of the kind of survey"))
+    made: type[Config] = create_model("Config", __base__=Config, physics=physics)
+    return made
+
+
+def json_schema() -> dict[str, Any]:
+    """JSON Schema (draft 2020-12) of the configuration, with one choice for each kind of survey."""
+    choices = []
+    definitions: dict[str, Any] = {}
+    for plugin in plugins.registered("physics"):
+        schema = config_class(plugins.kind(plugin.name)).model_json_schema()
+        definitions |= schema.pop("$defs", {})
+        survey = {"properties": {"kind": {"const": plugin.name}}}
+        schema["properties"]["survey"] = {"allOf": [schema["properties"]["survey"], survey]}
+        choices.append(schema | {"title": plugin.name})
+    return {
+        "$schema": "https://json-schema.org/draft/2020-12/schema",
+        "title": "stillground configuration",
+        "oneOf": choices,
+        "$defs": definitions,
+    }

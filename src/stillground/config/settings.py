@@ -1,0 +1,254 @@
+"""The settings of a run, one class a table of the configuration; defaults live here and nowhere else.
+
+Units are gone once a setting is read: metres, and SI for what is measured. What the kind of survey
+decides (the unit of its errors, its ground property) comes in the validation context.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Annotated, Any, Literal, Self
+
+import pyproj
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    SerializeAsAny,
+    ValidationInfo,
+    WithJsonSchema,
+    model_validator,
+)
+
+from stillground import plugins
+from stillground.protocols import GroundProperty, Kind, RuleOptions
+from stillground.survey import quantity
+from stillground.survey.quantities import Coordinate, InputPath, Length
+
+
+def _datum(text: Any, info: ValidationInfo) -> float:
+    kind: Kind = (info.context or {})["kind"]
+    value = quantity(text, kind.datum_units)
+    if value <= 0:
+        raise ValueError(f"must be above zero; got '{text}'")
+    return value
+
+
+def _property(text: Any, info: ValidationInfo) -> float:
+    seen: GroundProperty = (info.context or {})["kind"].ground_property
+    units = (seen.units,) if seen.reciprocal is None else (seen.units, seen.reciprocal[1])
+    return quantity(text, units)
+
+
+def _background(text: Any, info: ValidationInfo) -> float | None:
+    return None if text == "fit" else _property(text, info)
+
+
+def _crs(text: str) -> str:
+    try:
+        crs = pyproj.CRS.from_user_input(text)
+    except pyproj.exceptions.CRSError as error:
+        raise ValueError(f"'{text}' is no known coordinate system; give one like 'EPSG:32631'") from error
+    if not crs.is_projected:
+        raise ValueError(
+            f"'{text}' ({crs.name}) has its coordinates in degrees, the survey in lengths; give the "
+            f"projected system of the survey, like 'EPSG:32631', or leave crs out for a local frame"
+        )
+    return text
+
+
+def _both_ways(value: Any) -> Any:
+    return {"horizontal": value, "vertical": value} if isinstance(value, str) else value
+
+
+def _registered(group: plugins.Group, name: str) -> str:
+    getattr(plugins, {"solvers": "solver", "rules": "rule"}[group])(name)
+    return name
+
+
+Datum = Annotated[float, BeforeValidator(_datum), WithJsonSchema({"type": "string", "examples": ["0.1 ms"]})]
+PropertyValue = Annotated[
+    float, BeforeValidator(_property), WithJsonSchema({"type": "string", "examples": ["1900 m/s"]})
+]
+Background = Annotated[
+    float | None,
+    BeforeValidator(_background),
+    WithJsonSchema({"type": "string", "examples": ["fit", "1900 m/s"]}),
+]
+SolverName = Annotated[str, AfterValidator(lambda name: _registered("solvers", name))]
+RuleName = Annotated[str, AfterValidator(lambda name: _registered("rules", name))]
+
+
+class Table(BaseModel):
+    """A table of the configuration: unknown keys are errors."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+class SurveySettings(Table):
+    kind: str = Field(description="kind of measurement, see 'stillground plugins'")
+    files: list[InputPath] = Field(min_length=1, description="survey tables, relative to this file")
+    crs: Annotated[str, AfterValidator(_crs)] | None = Field(
+        None, description="projected coordinate system of x and y; none: a local frame"
+    )
+    columns: dict[str, str] = Field({}, description="our column name = the table's")
+    units: dict[str, str] = Field({}, description="our column name = its unit, where the table gives none")
+
+
+class ErrorSettings(Table):
+    floor: Datum | None = Field(None, description="standard deviation of the data, with unit")
+    relative: float | None = Field(None, gt=0, lt=1, description="and as a share of the datum")
+
+
+class Pair(Table):
+    """A length along the profile and one down."""
+
+    horizontal: Length | None = None
+    vertical: Length
+
+    def along(self, axes: Sequence[str]) -> tuple[float, ...]:
+        """One length for each axis of the ground, m."""
+        horizontal = self.vertical if self.horizontal is None else self.horizontal
+        return tuple(self.vertical if axis == "elevation" else horizontal for axis in axes)
+
+
+class GroundSettings(Table):
+    spacing: Annotated[Pair, BeforeValidator(_both_ways)] = Field(
+        description="distance of nodes on the finest rung"
+    )
+    correlation: Annotated[Pair, BeforeValidator(_both_ways)] = Field(
+        description="lengths over which the ground is alike"
+    )
+    smoothness: float = Field(2.0, ge=0, le=8, description="exponent s of the prior; 0 is white")
+    margin: Length | None = Field(
+        None, description="ground kept around the positions; default: half the correlation length"
+    )
+    depth: Length | None = Field(
+        None, description="below the lowest ground point; default: down to the deepest position"
+    )
+    background: Background = Field(None, description="'fit' (default), or a value with unit")
+
+
+class SolverSettings(Table):
+    method: SolverName = Field("lsqr", description="see 'stillground plugins'")
+    iterations: int = Field(80, ge=2, le=10_000, description="how far the iteration runs before it is judged")
+
+
+class StoppingSettings(Table):
+    rules: list[RuleName] | None = Field(None, min_length=1, description="default: all that are registered")
+    choose: RuleName = Field("gcv", description="the rule whose picture is the answer")
+    tau: float = Field(
+        RuleOptions.tau, gt=0, description="discrepancy target: mean squared whitened residual = tau^2"
+    )
+
+    @property
+    def judged(self) -> tuple[str, ...]:
+        """Names of the rules to judge by."""
+        if self.rules is None:
+            return tuple(plugin.name for plugin in plugins.registered("rules"))
+        return tuple(dict.fromkeys(self.rules))
+
+    @model_validator(mode="after")
+    def _chosen_is_judged(self) -> Self:
+        if self.choose not in self.judged:
+            raise ValueError(f"choose = '{self.choose}' is not among rules = {list(self.judged)}; add it there")
+        return self
+
+
+class RefinementSettings(Table):
+    levels: int = Field(4, ge=1, le=8, description="rungs: 2^(levels-1), ..., 2, 1 times the spacing")
+    tolerance: float = Field(0.02, gt=0, lt=1, description="relative change that counts as none")
+
+
+class OutputSettings(Table):
+    folder: str | None = Field(None, description="default: results/<config name> where you are")
+    products: list[Literal["section", "history", "figures"]] = Field(
+        ["section", "history", "figures"], description="beside summary, ladder and fit"
+    )
+
+
+class Point(Table):
+    """A point of the section."""
+
+    distance: Coordinate
+    elevation: Coordinate
+
+
+class BlobSettings(Table):
+    """A Gaussian body; ``radii`` are its standard deviations."""
+
+    centre: Point
+    radii: Annotated[Pair, BeforeValidator(_both_ways)]
+    value: PropertyValue
+
+
+class DiscSettings(Table):
+    """A disc or ellipse with a sharp edge."""
+
+    centre: Point
+    radii: Annotated[Pair, BeforeValidator(_both_ways)]
+    value: PropertyValue
+
+
+class LayerSettings(Table):
+    """A level layer; without ``top`` or ``bottom`` it goes on for ever that way."""
+
+    top: Coordinate | None = None
+    bottom: Coordinate | None = None
+    value: PropertyValue
+
+
+class BoxSettings(Table):
+    """A rectangle with level and upright sides."""
+
+    lower: Point
+    upper: Point
+    value: PropertyValue
+
+
+class PlacesSettings(Table):
+    """Evenly spaced places on a straight line, both ends included."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True)
+
+    first: tuple[Coordinate, Coordinate, Coordinate] = Field(description="x, y, z of the first")
+    last: tuple[Coordinate, Coordinate, Coordinate] = Field(description="x, y, z of the last")
+    count: int = Field(ge=1, le=100_000)
+
+
+class SimulateSettings(Table):
+    output: InputPath = Field(description="table to write, relative to this file")
+    seed: int = Field(0, ge=0)
+    noise: Datum | None = Field(None, description="standard deviation of the noise, with unit")
+    relative_noise: float = Field(0.0, ge=0, lt=1, description="and as a share of the datum")
+    lost: float = Field(0.0, ge=0, lt=1, description="share of the measurements that is missing")
+    background: PropertyValue
+    blob: list[BlobSettings] = []
+    disc: list[DiscSettings] = []
+    layer: list[LayerSettings] = []
+    box: list[BoxSettings] = []
+    sources: PlacesSettings | None = Field(None, description="default: the places of survey.files")
+    receivers: PlacesSettings | None = None
+
+    @model_validator(mode="after")
+    def _both_or_none(self) -> Self:
+        if (self.sources is None) != (self.receivers is None):
+            raise ValueError("give sources and receivers, or neither for the places of survey.files")
+        return self
+
+
+class Config(Table):
+    """All settings of a run, in SI."""
+
+    title: str = Field(min_length=1)
+    survey: SurveySettings
+    errors: ErrorSettings = ErrorSettings()
+    ground: GroundSettings
+    solver: SolverSettings = SolverSettings()
+    stopping: StoppingSettings = StoppingSettings()
+    refinement: RefinementSettings = RefinementSettings()
+    output: OutputSettings = OutputSettings()
+    physics: SerializeAsAny[BaseModel] = Field(Table(), description="settings of the kind of survey")
+    simulate: SimulateSettings | None = Field(None, description="a described ground to make a survey over")

@@ -1,0 +1,171 @@
+"""Travel times along straight rays in a vertical section: crosshole and the like."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import xarray as xr
+from pydantic import BaseModel, ConfigDict, Field
+from scipy.ndimage import gaussian_filter
+
+from stillground.errors import SurveyError
+from stillground.grid import Grid
+from stillground.ground import Ground
+from stillground.operators.straight_rays import StraightRays
+from stillground.protocols import Array, GroundProperty, Integers, Measurement
+from stillground.protocols import Field as GroundField
+from stillground.survey import Section, fit_section, out_of_plane, plan_positions, read_surface
+from stillground.survey.quantities import InputPath, Length
+
+
+class StraightRaySettings(BaseModel):
+    """The table [physics] for straight rays."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+    surface: InputPath | None = Field(
+        None, description="table x y z of the ground surface; ground above it is left out of products"
+    )
+    out_of_plane: Length | None = Field(
+        None, description="how far positions may lie off the section; default: 5 % of its length"
+    )
+
+
+@dataclass(frozen=True)
+class RayScene:
+    """Straight rays in a section; coordinates are (distance, elevation), m.
+
+    Parameters
+    ----------
+    section : Section
+    starts, ends : array, shape (n_data, 2)
+    lengths : array, shape (n_data,)
+        True lengths in space: across its plane the ground is taken as constant.
+    data, errors : array, shape (n_data,)
+        Times and their standard deviations, s.
+    groupings : mapping
+        By source and by receiver.
+    positions, surface
+        As in `stillground.protocols.Scene`.
+    """
+
+    section: Section
+    starts: Array
+    ends: Array
+    lengths: Array
+    data: Array
+    errors: Array
+    groupings: dict[str, Integers]
+    positions: dict[str, Array]
+    surface: tuple[Array, Array] | None
+    facts: tuple[str, ...]
+
+    @property
+    def paths(self) -> tuple[Array, Array]:
+        return self.starts, self.ends
+
+    @property
+    def apparent(self) -> Array:
+        return self.data / self.lengths
+
+    @property
+    def lower(self) -> tuple[float, ...]:
+        return tuple(np.minimum(self.starts.min(axis=0), self.ends.min(axis=0)).tolist())
+
+    @property
+    def upper(self) -> tuple[float, ...]:
+        return tuple(np.maximum(self.starts.max(axis=0), self.ends.max(axis=0)).tolist())
+
+    def assemble(self, grid: Grid) -> Measurement:
+        """The measurement on a section grid."""
+        operator = StraightRays(grid, self.starts, self.ends, self.lengths)
+        return Measurement(operator, self.data, self.errors, self.groupings)
+
+    def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> GroundField:
+        """Length of ray in a unit of area, a Gaussian mean over half a correlation length, m-1.
+
+        Rays have no width: without the mean the density would depend on the grid. The mean keeps the
+        total length.
+        """
+        operator = StraightRays(grid, self.starts, self.ends, self.lengths)
+        density = operator.rmatvec(np.ones(len(self.data))) / grid.weights()
+        sigma = [0.5 * length / h for length, h in zip(correlation, grid.spacing, strict=True)]
+        smooth = gaussian_filter(density.reshape(grid.shape), sigma, mode="mirror")
+        return GroundField("path_density", smooth, "m-1", "ray length per area")
+
+    def predict(self, ground: Ground) -> Array:
+        """Times through a described ground of slowness, shape (n_data,), s."""
+        times = ground.line_integrals(self.starts, self.ends)
+        return np.asarray(times * self.lengths / np.linalg.norm(self.ends - self.starts, axis=1))
+
+    def trace(self, distance: Array) -> tuple[Array, Array]:
+        """East and north of distances along the section, m."""
+        return self.section.plan(distance)
+
+
+class StraightRay:
+    """First arrivals between boreholes, or along and across one, where rays are nearly straight."""
+
+    name = "straight-ray"
+    ground_property = GroundProperty(
+        "slowness", "s m-1", "slowness of the first arrival", ("velocity", "m s-1", "velocity of the first arrival")
+    )
+    columns = ("source_x", "source_y", "source_z", "receiver_x", "receiver_y", "receiver_z", "time")
+    datum = "time"
+    datum_units = "s"
+    axes = ("distance", "elevation")
+    # A line integral in two dimensions is bounded where s > (d - 1) / 2.
+    bounded_above = 0.5
+    Settings = StraightRaySettings
+
+    def place(self, survey: xr.Dataset, settings: StraightRaySettings) -> RayScene:
+        """Projects a survey on its section.
+
+        Raises
+        ------
+        SurveyError
+            When positions lie too far off the section, all in one place in plan, or a source and a
+            receiver on the same point of it.
+        """
+        name = str(survey.attrs.get("source", "survey"))
+        first = (float(survey["source_x"][0]), float(survey["source_y"][0]))
+        section = fit_section(plan_positions(survey), first, source=name)
+        aside, row = out_of_plane(survey, section, settings.out_of_plane)
+        ends = {
+            end: np.column_stack([survey[f"{end}_{axis}"].values for axis in "xyz"])
+            for end in ("source", "receiver")
+        }
+        flat = {
+            end: np.column_stack([section.along(places[:, 0], places[:, 1]), places[:, 2]])
+            for end, places in ends.items()
+        }
+        short = np.linalg.norm(flat["source"] - flat["receiver"], axis=1) < 1e-3
+        if short.any():
+            rows = ", ".join(str(row) for row in survey["row"].values[short][:5])
+            raise SurveyError(name, [f"source and receiver fall on one point of the section in row {rows}"])
+        groupings, positions = {}, {}
+        for end, places in ends.items():
+            _, where, group = np.unique(places.round(3), axis=0, return_index=True, return_inverse=True)
+            groupings[end] = group.reshape(-1).astype(np.int64)
+            positions[end] = flat[end][where]
+        return RayScene(
+            section=section,
+            starts=flat["source"],
+            ends=flat["receiver"],
+            lengths=np.linalg.norm(ends["source"] - ends["receiver"], axis=1),
+            data=_values(survey, "time"),
+            errors=_values(survey, "time_error"),
+            groupings=groupings,
+            positions=positions,
+            surface=None if settings.surface is None else read_surface(settings.surface, section),
+            facts=(
+                f"section {section.length:.4g} m long; positions lie at most {aside:.2g} m off it (row {row})",
+            ),
+        )
+
+
+def _values(survey: xr.Dataset, name: str) -> Any:
+    """A column, or ones where a survey is only planned."""
+    return survey[name].values if name in survey else np.ones(survey.sizes["datum"])

@@ -1,0 +1,85 @@
+"""Reads and judges a survey without reconstructing: what is there, what is odd, what a run will cost."""
+
+from __future__ import annotations
+
+import time
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+
+from stillground import plugins
+from stillground.config import Config
+from stillground.grid import Grid
+from stillground.operators.prior_root import PriorRoot
+from stillground.pipeline.advice import advise
+from stillground.pipeline.grids import correlation, memory, plan_grids
+from stillground.pipeline.profiles import Profile, read_profiles
+from stillground.products.figures.sheet import write_figure
+from stillground.products.figures.survey import survey_figure
+from stillground.solve.run import n_probes
+
+
+@dataclass(frozen=True)
+class Plan:
+    """What a run of one profile will do and cost.
+
+    ``memory`` in bytes is predicted from sizes, ``seconds`` from one timed product with the finest
+    rung's operator; both leave figures out.
+    """
+
+    profile: Profile
+    grids: tuple[Grid, ...]
+    advice: tuple[str, ...]
+    memory: int
+    seconds: float
+
+
+def inspect(config: Config) -> tuple[Plan, ...]:
+    """Plans a run of every profile; errors as `stillground.pipeline.run.run`, before any work."""
+    return tuple(_plan(profile, config) for profile in read_profiles(config))
+
+
+def _plan(profile: Profile, config: Config) -> Plan:
+    grids = plan_grids(profile, config)
+    n_data = profile.survey.sizes["datum"]
+    return Plan(
+        profile,
+        grids,
+        advise(profile.name, grids, config),
+        memory(grids, n_data, config.solver.iterations),
+        _seconds(profile, grids, n_data, config),
+    )
+
+
+def draw(plan: Plan, config: Config, folder: Path) -> Path:
+    """Writes ``<profile>_survey`` into the figures of ``folder`` and gives the path of the PNG."""
+    scene, grid = plan.profile.scene, plan.grids[-1]
+    sources, receivers = scene.paths
+    figure = survey_figure(
+        plan.profile.name,
+        sources=sources,
+        receivers=receivers,
+        apparent=scene.apparent,
+        seen=plugins.kind(config.survey.kind).ground_property,
+        nodes=grid.axes,
+        coverage=scene.coverage(grid, correlation(config)),
+        surface=scene.surface,
+    )
+    return write_figure(folder / "figures", f"{plan.profile.name}_survey", figure)[0]
+
+
+def _seconds(profile: Profile, grids: tuple[Grid, ...], n_data: int, config: Config) -> float:
+    """Times one product each way on the finest rung; coarser rungs cost by their nodes."""
+    columns = 1 + n_probes(n_data)
+    took = 0.0
+    # Twice, since the first includes compiling.
+    for _ in range(2):
+        operator = profile.scene.assemble(grids[-1]).operator
+        root = PriorRoot(grids[-1], correlation(config), config.ground.smoothness)
+        begin = time.perf_counter()
+        data = operator.matmat(root.matmat(np.ones((grids[-1].n_nodes, columns))))
+        root.rmatmat(operator.rmatmat(data))
+        took = time.perf_counter() - begin
+    share = sum(grid.n_nodes for grid in grids) / grids[-1].n_nodes
+    return took * share * config.solver.iterations

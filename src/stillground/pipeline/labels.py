@@ -1,0 +1,138 @@
+"""A profile's answer with its labels on: what the product files hold, and what a notebook gets."""
+
+from __future__ import annotations
+
+import hashlib
+import sys
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
+from importlib.metadata import version
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+import pyproj
+import xarray as xr
+
+from stillground import plugins
+from stillground.config import Config
+from stillground.pipeline.advice import advise
+from stillground.pipeline.grids import plan_grids
+from stillground.pipeline.profiles import Profile
+from stillground.products.fit import fit_table
+from stillground.products.history import history_dataset
+from stillground.products.ladder import ladder_dataset
+from stillground.products.provenance import Provenance, timestamp
+from stillground.products.section import section_dataset
+from stillground.products.summary import profile_summary
+from stillground.protocols import Result
+from stillground.survey import to_si
+
+_PACKAGES = ("stillground", "numpy", "scipy", "pylops", "xarray", "numba", "netCDF4")
+
+
+@dataclass(frozen=True)
+class ProfileResult:
+    """One profile's labelled answer.
+
+    Parameters
+    ----------
+    name : str
+    section, history, ladder : xarray.Dataset
+        As in the files ``<name>_section.nc``, ``<name>_history.nc``, ``<name>_ladder.nc``.
+    fit : pandas.DataFrame
+        As in ``<name>_fit.csv``.
+    profile : Profile
+        The survey behind it.
+    arrays : Result
+        The same answer without labels.
+    advice : tuple of str
+        What settings will not do what their user hopes.
+    """
+
+    name: str
+    section: xr.Dataset
+    history: xr.Dataset
+    ladder: xr.Dataset
+    fit: pd.DataFrame
+    profile: Profile
+    arrays: Result
+    advice: tuple[str, ...]
+
+    @property
+    def verdict(self) -> str:
+        """``settled``, ``drifting`` or ``undecided``."""
+        return self.arrays.ladder.verdict.word
+
+    def summary(self, files: dict[str, str] | None = None) -> dict[str, Any]:
+        """The profile's entry of ``summary.json``."""
+        return profile_summary(self.name, self.arrays, files or {})
+
+    def __repr__(self) -> str:
+        chosen, verdict = self.arrays.chosen, self.arrays.ladder.verdict
+        return (
+            f"<stillground result '{self.name}': {verdict.word} ({verdict.reason}); "
+            f"{chosen.rule} stops at iteration {chosen.iteration:.3g}, misfit {chosen.chi_square:.3g}>"
+        )
+
+
+def provenance(config: Config, text: str, command: str) -> Provenance:
+    """What made the files of a run: the configuration, digests of all inputs, versions, time."""
+    surface = getattr(config.physics, "surface", None)
+    inputs = [*config.survey.files, *([surface] if surface else [])]
+    return Provenance(
+        title=config.title,
+        config_text=text,
+        command=command,
+        inputs=digests(path for path in inputs if path.is_file()),
+        versions={name: version(name) for name in _PACKAGES} | {"python": sys.version.split()[0]},
+        created=timestamp(),
+        cautions="",
+    )
+
+
+def digests(paths: Iterable[Path]) -> dict[str, str]:
+    """SHA-256 of files by their names."""
+    return {path.name: hashlib.sha256(path.read_bytes()).hexdigest() for path in paths}
+
+
+def label(profile: Profile, result: Result, config: Config, origin: Provenance) -> ProfileResult:
+    """Puts labels, units and coordinates back on an answer."""
+    advice = advise(profile.name, plan_grids(profile, config), config)
+    origin = replace(origin, cautions=" ".join(advice))
+    kind = plugins.kind(config.survey.kind)
+    crs = None if config.survey.crs is None else pyproj.CRS.from_user_input(config.survey.crs)
+    metres = 1.0 if crs is None else crs.axis_info[0].unit_conversion_factor
+    easting, northing = profile.scene.trace(result.axes[0])
+    surface, tolerance = profile.scene.surface, config.refinement.tolerance
+    unit, factor = _table_unit(profile, kind.datum, kind.datum_units)
+    return ProfileResult(
+        name=profile.name,
+        section=section_dataset(
+            profile.name,
+            result,
+            easting=np.asarray(easting) / metres,
+            northing=np.asarray(northing) / metres,
+            crs=crs,
+            surface=surface,
+            tolerance=tolerance,
+            provenance=origin,
+        ),
+        history=history_dataset(profile.name, result, surface=surface, provenance=origin),
+        ladder=ladder_dataset(
+            profile.name, result, surface=surface, tolerance=tolerance, provenance=origin
+        ),
+        fit=fit_table(
+            result, rows=profile.survey["row"].values, datum=kind.datum, unit=unit, si_factor=factor
+        ),
+        profile=profile,
+        arrays=result,
+        advice=advice,
+    )
+
+
+def _table_unit(profile: Profile, datum: str, si: str) -> tuple[str, float]:
+    """The unit of the datum in the survey table, and that unit in SI."""
+    unit = str(profile.survey[datum].attrs.get("original_units", si))
+    return unit, to_si(1.0, unit, si)

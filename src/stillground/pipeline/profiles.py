@@ -1,0 +1,64 @@
+"""The survey's tables as checked profiles, each set into the ground."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import xarray as xr
+
+from stillground import plugins
+from stillground.config import Config
+from stillground.errors import ConfigError
+from stillground.protocols import Scene
+from stillground.survey import SurveyReport, check, profiles, read
+
+
+@dataclass(frozen=True)
+class Profile:
+    """One line of a survey: its usable rows, what the check found in its file, and its scene."""
+
+    name: str
+    survey: xr.Dataset
+    report: SurveyReport
+    scene: Scene
+
+
+def read_profiles(config: Config) -> tuple[Profile, ...]:
+    """Reads and checks all files of the survey.
+
+    Raises
+    ------
+    SurveyError
+        With all faults of the first table that has any.
+    ConfigError
+        When two files give profiles of one name.
+    """
+    kind = plugins.kind(config.survey.kind)
+    found: dict[str, Profile] = {}
+    for path in config.survey.files:
+        table = read(
+            path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns
+        )
+        for profile in place(table, path.stem, config):
+            if profile.name in found:
+                raise ConfigError(
+                    f"survey.files: two tables give a profile named '{profile.name}'; rename one of the files"
+                )
+            found[profile.name] = profile
+    return tuple(found.values())
+
+
+def place(table: xr.Dataset, stem: str, config: Config) -> tuple[Profile, ...]:
+    """Checks a table and sets each of its lines into the ground; errors as `read_profiles`."""
+    kind = plugins.kind(config.survey.kind)
+    usable, report = check(
+        table,
+        datum=kind.datum,
+        expected=kind.columns,
+        floor=config.errors.floor,
+        relative=config.errors.relative,
+    )
+    return tuple(
+        Profile(name, line, report, kind.place(line, config.physics))
+        for name, line in profiles(usable, stem).items()
+    )

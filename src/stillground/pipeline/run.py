@@ -1,0 +1,242 @@
+"""The main job: from a configuration to the products of all its profiles."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+import time
+from collections.abc import Generator, Sequence
+from dataclasses import dataclass
+from importlib.metadata import version
+from pathlib import Path
+from typing import Any, TypeVar, cast
+
+import xarray as xr
+
+from stillground.config import Config, from_mapping, load
+from stillground.errors import ConfigError
+from stillground.pipeline.answer import answer
+from stillground.pipeline.grids import plan_grids
+from stillground.pipeline.labels import ProfileResult, label, provenance
+from stillground.pipeline.profiles import place, read_profiles
+from stillground.products.figures import write_figures
+from stillground.products.fit import write_fit
+from stillground.products.history import write_history
+from stillground.products.ladder import write_ladder
+from stillground.products.provenance import Provenance
+from stillground.products.section import write_section
+from stillground.products.summary import run_summary, write_summary
+from stillground.protocols import Progress
+
+
+T = TypeVar("T")
+
+
+@dataclass(frozen=True)
+class Done:
+    """One profile finished and written; yielded between the progress of profiles."""
+
+    result: ProfileResult
+    folder: Path
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """A finished run: its folder, its summary as in ``summary.json``, and the profiles of this run."""
+
+    folder: Path
+    summary: dict[str, Any]
+    results: tuple[ProfileResult, ...]
+
+
+def run(
+    config: Config, text: str, folder: Path, *, command: str = "stillground run", resume: bool = False
+) -> Generator[Progress | Done, None, Outcome]:
+    """Reconstructs every profile of a configuration and writes its products.
+
+    Parameters
+    ----------
+    config : Config
+    text : str
+        The configuration as written, for the products' provenance.
+    folder : Path
+        Where to write; made if it does not exist.
+    command : str
+        For the products' history.
+    resume : bool
+        Keep profiles that ``folder`` holds from the same configuration, inputs and version.
+
+    Yields
+    ------
+    Progress or Done
+
+    Returns
+    -------
+    Outcome
+
+    Raises
+    ------
+    StillgroundError
+        For anything the user can mend, before anything of the profile is written.
+
+    Notes
+    -----
+    When it is interrupted, the summary of the profiles finished so far is written.
+    """
+    begin = time.perf_counter()
+    origin = provenance(config, text, command)
+    yield Progress("reading the survey", 0, 1)
+    profiles = read_profiles(config)
+    for profile in profiles:
+        plan_grids(profile, config)
+    yield Progress("reading the survey", 1, 1)
+
+    mark = _fingerprint(origin)
+    entries = _kept(folder, mark) if resume else {}
+    results: list[ProfileResult] = []
+    summary: dict[str, Any] = {}
+    try:
+        for profile in profiles:
+            if profile.name in entries:
+                continue
+            result = label(profile, (yield from answer(profile, config)), config, origin)
+            files = yield from _write(folder, result, config)
+            results.append(result)
+            entries[profile.name] = result.summary(files) | {"fingerprint": mark}
+            yield Done(result, folder)
+    finally:
+        if entries:
+            seconds = None if "SOURCE_DATE_EPOCH" in os.environ else time.perf_counter() - begin
+            order = [profile.name for profile in profiles if profile.name in entries]
+            summary = run_summary(
+                config.title, version("stillground"), seconds, [entries[name] for name in order]
+            )
+            write_summary(folder, summary)
+    return Outcome(folder, summary, tuple(results))
+
+
+def run_config(
+    path: str | Path, *, out: str | Path | None = None, overrides: Sequence[str] = ()
+) -> Outcome:
+    """Runs a configuration file without a word, as ``stillground run`` does.
+
+    Parameters
+    ----------
+    path : str or Path
+    out : str or Path, optional
+        Default: ``output.folder`` of the configuration.
+    overrides : sequence of str
+        ``key=value`` each.
+
+    Returns
+    -------
+    Outcome
+    """
+    config, text = load(path, overrides)
+    return finish(run(config, text, output_folder(config, path, out)))
+
+
+def output_folder(config: Config, path: str | Path, out: str | Path | None = None) -> Path:
+    """Where a run writes: what the caller says, else the configuration, else results/<its name>."""
+    return Path(out or config.output.folder or Path("results") / Path(path).stem)
+
+
+def finish(work: Generator[Any, None, T]) -> T:
+    """Runs long work to its end and drops its progress."""
+    while True:
+        try:
+            next(work)
+        except StopIteration as end:
+            return cast(T, end.value)
+
+
+def reconstruct_survey(
+    survey: xr.Dataset, *, kind: str = "straight-ray", title: str = "survey", **tables: Any
+) -> ProfileResult:
+    """Reconstructs one profile from a survey in memory, in one call, and writes nothing.
+
+    Parameters
+    ----------
+    survey : xarray.Dataset
+        On the dimension ``datum``, SI, as `stillground.read_survey` returns it.
+    kind : str
+        Kind of measurement.
+    title : str
+    **tables : mapping
+        Tables of the configuration by name, with its keys and units: at least ``ground``, as in
+        ``ground={"spacing": "0.5 m", "correlation": {"horizontal": "4 m", "vertical": "2 m"}}``.
+
+    Returns
+    -------
+    ProfileResult
+
+    Raises
+    ------
+    StillgroundError
+        For a survey or settings that cannot be used.
+    """
+    source = str(survey.attrs.get("source", "survey"))
+    given = dict(tables.pop("survey", {})) | {"kind": kind, "files": [source]}
+    data = {"title": title, "survey": given, **tables}
+    config = from_mapping(data)
+    found = place(survey, Path(source).stem, config)
+    if len(found) > 1:
+        names = ", ".join(profile.name for profile in found)
+        raise ConfigError(f"{source} holds {len(found)} profiles ({names}); select one line of it")
+    arrays = finish(answer(found[0], config))
+    origin = provenance(config, json.dumps(data), "stillground.reconstruct_survey")
+    return label(found[0], arrays, config, origin)
+
+
+def _write(
+    folder: Path, result: ProfileResult, config: Config
+) -> Generator[Progress, None, dict[str, str]]:
+    """Writes one profile's products; file names by product."""
+    wanted = config.output.products
+    yield Progress("writing products", 0, 2)
+    written = {
+        "ladder": write_ladder(folder, result.name, result.ladder),
+        "fit": write_fit(folder, result.name, result.fit),
+    }
+    if "section" in wanted:
+        written["section"] = write_section(folder, result.name, result.section)
+    if "history" in wanted:
+        written["history"] = write_history(folder, result.name, result.history)
+    yield Progress("writing products", 1, 2)
+    if "figures" in wanted:
+        scene = result.profile.scene
+        write_figures(
+            folder / "figures",
+            result.name,
+            result.arrays,
+            sources=scene.positions["source"],
+            receivers=scene.positions["receiver"],
+            surface=scene.surface,
+            tolerance=config.refinement.tolerance,
+            tau=config.stopping.tau,
+        )
+    yield Progress("writing products", 2, 2)
+    return {name: path.relative_to(folder).as_posix() for name, path in written.items()}
+
+
+def _fingerprint(origin: Provenance) -> str:
+    parts = [origin.config_text, *(f"{n} {d}" for n, d in origin.inputs.items()), version("stillground")]
+    return hashlib.sha256("\n".join(parts).encode()).hexdigest()
+
+
+def _kept(folder: Path, mark: str) -> dict[str, dict[str, Any]]:
+    """Entries of an earlier summary that were made from the same things and whose files are there."""
+    path = folder / "summary.json"
+    if not path.is_file():
+        return {}
+    try:
+        entries = json.loads(path.read_text(encoding="utf-8"))["profiles"]
+        return {
+            entry["name"]: entry
+            for entry in entries
+            if entry.get("fingerprint") == mark
+            and all((folder / name).is_file() for name in entry["files"].values())
+        }
+    except (ValueError, KeyError, TypeError, AttributeError) as error:
+        raise ConfigError(f"{path}: is no summary of a run ({error}); run without --resume") from error

@@ -1,0 +1,89 @@
+"""Kinds, solvers and rules by name: built-in and third-party through the same entry points."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from difflib import get_close_matches
+from functools import cache
+from importlib.metadata import EntryPoint, entry_points
+from typing import Literal, cast
+
+from stillground.errors import PluginError
+from stillground.protocols import Kind, Rule, Solver
+
+Group = Literal["physics", "solvers", "rules"]
+_SETTING = {"physics": "survey.kind", "solvers": "solver.method", "rules": "stopping.rules"}
+
+
+@dataclass(frozen=True)
+class Plugin:
+    """A registered name and the distribution that it comes from."""
+
+    name: str
+    distribution: str
+    target: str
+
+
+@cache
+def _entries(group: Group) -> dict[str, EntryPoint]:
+    found: dict[str, EntryPoint] = {}
+    for entry in entry_points(group=f"stillground.{group}"):
+        known = found.setdefault(entry.name, entry)
+        if known.value != entry.value:
+            raise PluginError(
+                f"two packages register '{entry.name}' in stillground.{group}: {_source(known)} and "
+                f"{_source(entry)}; uninstall one"
+            )
+    return found
+
+
+def _source(entry: EntryPoint) -> str:
+    return f"{entry.dist.name} {entry.dist.version}" if entry.dist else "unknown"
+
+
+def registered(group: Group) -> tuple[Plugin, ...]:
+    """All that is registered in a group, built-in first, then by name.
+
+    Raises
+    ------
+    PluginError
+        When two packages register one name.
+    """
+    plugins = [Plugin(name, _source(entry), entry.value) for name, entry in _entries(group).items()]
+    return tuple(sorted(plugins, key=lambda p: (not p.distribution.startswith("stillground "), p.name)))
+
+
+def _load(group: Group, name: str) -> object:
+    entries = _entries(group)
+    if name not in entries:
+        near = get_close_matches(name, entries, n=1)
+        advice = f"did you mean '{near[0]}'?" if near else f"there are {', '.join(sorted(entries))}"
+        raise PluginError(f"{_SETTING[group]}: nothing is registered as '{name}'; {advice}")
+    try:
+        return entries[name].load()
+    except Exception as error:
+        raise PluginError(
+            f"{_SETTING[group]}: '{name}' from {_source(entries[name])} cannot be loaded: {error}"
+        ) from error
+
+
+def kind(name: str) -> Kind:
+    """The kind of measurement registered under a name (an instance of what is registered).
+
+    Raises
+    ------
+    PluginError
+        For an unknown name, with the nearest known one.
+    """
+    made = _load("physics", name)
+    return cast(Kind, made() if isinstance(made, type) else made)
+
+
+def solver(name: str) -> Solver:
+    """The solver registered under a name; errors as `kind`."""
+    return cast(Solver, _load("solvers", name))
+
+
+def rule(name: str) -> Rule:
+    """The stopping rule registered under a name; errors as `kind`."""
+    return cast(Rule, _load("rules", name))
