@@ -1,0 +1,31 @@
+"""Survey tables: reading, checking and writing them, and the section plane through their positions.
+
+The way of a table: ``read`` (the file's own faults raise), ``check`` (all other faults at once),
+``profiles`` (one dataset a line), ``fit_section`` and ``out_of_plane`` for each profile.
+"""
+
+from stillground.survey.check import SurveyReport, check
+from stillground.survey.columns import COLUMNS, Column, column
+from stillground.survey.plane import Section, fit_section, out_of_plane, plan_positions
+from stillground.survey.read import profiles, read
+from stillground.survey.surface import read_surface
+from stillground.survey.units import quantity, to_si
+from stillground.survey.write import write_table
+
+__all__ = [
+    "COLUMNS",
+    "Column",
+    "Section",
+    "SurveyReport",
+    "check",
+    "column",
+    "fit_section",
+    "out_of_plane",
+    "plan_positions",
+    "profiles",
+    "quantity",
+    "read",
+    "read_surface",
+    "to_si",
+    "write_table",
+]

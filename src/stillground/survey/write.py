@@ -1,0 +1,62 @@
+"""Survey tables that stillground writes."""
+
+from __future__ import annotations
+
+import csv
+import io
+import os
+from collections.abc import Iterable
+from pathlib import Path
+
+import xarray as xr
+
+from stillground.errors import OutputError
+from stillground.survey.columns import COLUMNS, Column
+from stillground.survey.units import to_si
+
+
+def write_table(path: str | Path, ds: xr.Dataset, comments: Iterable[str] = ()) -> None:
+    """Write a survey as CSV: the same dataset gives the same bytes, and the file appears whole or not at all.
+
+    Parameters
+    ----------
+    path : path of the table
+    ds : xarray.Dataset
+        On the dimension ``datum``, SI; the columns that the vocabulary knows are written in its order,
+        lengths in m with 3 decimals, times in ms with 4, conductivities in mS/m with 4, errors with 6.
+    comments : iterable of str
+        Lines to stand above the table.
+
+    Raises
+    ------
+    OutputError
+        When the file cannot be written.
+    """
+    known = [column for name, column in COLUMNS.items() if name in ds]
+    text = io.StringIO()
+    for comment in comments:
+        text.writelines(f"# {line}".rstrip() + "\n" for line in comment.splitlines() or [""])
+    table = csv.writer(text, lineterminator="\n")
+    table.writerow(f"{c.name} [{c.written[0]}]" if c.dimensional else c.name for c in known)
+    table.writerows(zip(*(_cells(ds[c.name], c) for c in known), strict=True))
+
+    target = Path(path)
+    temporary = target.with_name(f".{target.name}.{os.getpid()}")
+    try:
+        temporary.write_text(text.getvalue(), encoding="utf-8", newline="\n")
+        os.replace(temporary, target)
+    except OSError as error:
+        raise OutputError(f"{target}: cannot be written: {error.strerror}") from error
+    finally:
+        temporary.unlink(missing_ok=True)
+
+
+def _cells(variable: xr.DataArray, column: Column) -> list[str]:
+    if column.rule == "text":
+        return [str(cell) for cell in variable.values]
+    if not column.dimensional:
+        return [f"{cell:.0f}" for cell in variable.values]
+    unit, decimals = column.written
+    values = variable.values / to_si(1.0, unit, column.units)
+    # Adding zero takes the sign off a rounded -0.
+    return [f"{cell:.{decimals}f}" for cell in values.round(decimals) + 0.0]
