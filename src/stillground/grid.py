@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.fft import next_fast_len
 from scipy.interpolate import RegularGridInterpolator
+from scipy.ndimage import gaussian_filter
 
 from stillground.errors import GridError
 
@@ -68,7 +69,8 @@ class Grid:
     def axes(self) -> tuple[Array, ...]:
         """Node coordinates along each axis, m."""
         return tuple(
-            o + h * np.arange(n) for o, h, n in zip(self.origin, self.spacing, self.shape, strict=True)
+            np.asarray(o + h * np.arange(n), dtype=np.float64)
+            for o, h, n in zip(self.origin, self.spacing, self.shape, strict=True)
         )
 
     @property
@@ -99,6 +101,14 @@ class Grid:
     def mean(self, values: Array) -> float:
         """Mean over the extent of a nodal field: the constant nearest to it in L2."""
         return float(self.weights() @ values.reshape(-1)) / math.prod(self.lengths)
+
+    def local_mean(self, values: Array, lengths: Sequence[float]) -> Array:
+        """Gaussian mean of a nodal field over half of ``lengths`` (m, one for each axis).
+
+        The mirror at the edges is that of the quadrature: the integral over the extent is kept.
+        """
+        sigma = [0.5 * length / h for length, h in zip(lengths, self.spacing, strict=True)]
+        return np.asarray(gaussian_filter(values.reshape(self.shape), sigma, mode="mirror"))
 
     def interpolate(self, values: Array, points: Array) -> Array:
         """Values of a nodal field at ``points``, shape (n_points, n_dimensions), within the extent."""

@@ -12,7 +12,6 @@ from stillground.errors import PluginError
 from stillground.protocols import Kind, Rule, Solver
 
 Group = Literal["physics", "solvers", "rules"]
-_SETTING = {"physics": "survey.kind", "solvers": "solver.method", "rules": "stopping.rules"}
 
 
 @dataclass(frozen=True)
@@ -58,13 +57,11 @@ def _load(group: Group, name: str) -> object:
     if name not in entries:
         near = get_close_matches(name, entries, n=1)
         advice = f"did you mean '{near[0]}'?" if near else f"there are {', '.join(sorted(entries))}"
-        raise PluginError(f"{_SETTING[group]}: nothing is registered as '{name}'; {advice}")
+        raise PluginError(f"nothing is registered as '{name}'; {advice}")
     try:
         return entries[name].load()
     except Exception as error:
-        raise PluginError(
-            f"{_SETTING[group]}: '{name}' from {_source(entries[name])} cannot be loaded: {error}"
-        ) from error
+        raise PluginError(f"'{name}' from {_source(entries[name])} cannot be loaded: {error}") from error
 
 
 def kind(name: str) -> Kind:

@@ -90,8 +90,8 @@ class Iterate:
 class History:
     """What the stopping rules see: one row an iteration, iteration 0 first.
 
-    Everything is in standard form, where data have unit errors and the ground has unit prior variance
-    (relative to the background, where there is one). A column is None where the method or the run has none; a rule
+    Everything is of the first column, in standard form: data have unit errors, the ground unit prior
+    variance relative to the background. A column is None where the method or the run has none; a rule
     that needs it then says that it does not apply.
 
     Parameters
@@ -242,7 +242,8 @@ class Result:
     model : array, nodal field
         The property at the chosen pick.
     mesh_change : array, nodal field
-        Absolute change since the rung before, in the property's unit; NaN with a single rung.
+        Local root mean square of the change since the rung before, in the property's unit; NaN with a
+        single rung.
     anomaly : float
         Root mean square of the model less its best constant: what changes are relative to.
     coverage : Field

@@ -20,7 +20,9 @@ app = typer.Typer(
     context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
 )
 
-Configuration = Annotated[Path, typer.Argument(metavar="CONFIG", help="A TOML file, see 'stillground schema'.")]
+Configuration = Annotated[
+    Path, typer.Argument(metavar="CONFIG", help="A TOML file, see 'stillground schema'.")
+]
 Settings = Annotated[
     list[str] | None,
     typer.Option("--set", metavar="KEY=VALUE", help="Override one setting; may be repeated."),

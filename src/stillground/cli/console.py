@@ -38,9 +38,7 @@ def heading(text: str) -> None:
     out().print(text, style="bold", markup=False)
 
 
-def follow(
-    work: Generator[Any, None, T], show: Callable[[Any], None], *, shown: type, quiet: bool
-) -> T:
+def follow(work: Generator[Any, None, T], show: Callable[[Any], None], *, shown: type, quiet: bool) -> T:
     """Runs long work to its end; shows its progress, and what it yields of type ``shown``.
 
     On a terminal the progress is one line that moves, elsewhere a line for each stage.

@@ -41,20 +41,24 @@ def load(path: str | Path, overrides: Sequence[str] = ()) -> tuple[Config, str]:
     try:
         text = path.read_text(encoding="utf-8-sig")
     except OSError as error:
-        raise ConfigError(f"{path}: cannot be read: {error.strerror}; give the path of a TOML file") from error
+        raise ConfigError(
+            f"{path}: cannot be read: {error.strerror}; give the path of a TOML file"
+        ) from error
     except UnicodeDecodeError as error:
         raise ConfigError(f"{path}: is not UTF-8 text (byte {error.start}); save it as UTF-8") from error
     try:
         data = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
-        raise ConfigError(f"{path}: is no TOML: {error}; text values need quotes, as in \"0.25 m\"") from error
+        raise ConfigError(f'{path}: is no TOML: {error}; text values need quotes, as in "0.25 m"') from error
     for override in overrides:
         _apply(data, override)
         text += f"\n# --set {override}"
     return from_mapping(data, folder=path.parent, source=str(path)), text
 
 
-def from_mapping(data: Mapping[str, Any], *, folder: str | Path = ".", source: str = "configuration") -> Config:
+def from_mapping(
+    data: Mapping[str, Any], *, folder: str | Path = ".", source: str = "configuration"
+) -> Config:
     """Settings from tables, as `tomllib` or Python gives them; paths are relative to ``folder``.
 
     Raises
@@ -69,13 +73,15 @@ def from_mapping(data: Mapping[str, Any], *, folder: str | Path = ".", source: s
     try:
         kind = plugins.kind(name)
     except LookupError as error:
-        raise ConfigError(f"{source}: {error}") from error
+        raise ConfigError(f"{source}: survey.kind: {error}") from error
     model = config_class(kind)
     try:
         return model.model_validate(dict(data), context={"folder": Path(folder), "kind": kind})
     except ValidationError as error:
         faults = [_explain(model, fault) for fault in error.errors(include_url=False)]
-        listed = faults[0] if len(faults) == 1 else f"{len(faults)} faults" + "".join(f"\n  - {f}" for f in faults)
+        listed = (
+            faults[0] if len(faults) == 1 else f"{len(faults)} faults" + "".join(f"\n  - {f}" for f in faults)
+        )
         raise ConfigError(f"{source}: {listed}") from None
 
 

@@ -6,7 +6,7 @@ decides (the unit of its errors, its ground property) comes in the validation co
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Annotated, Any, Literal, Self
 
 import pyproj
@@ -23,6 +23,7 @@ from pydantic import (
 )
 
 from stillground import plugins
+from stillground.errors import PluginError
 from stillground.protocols import GroundProperty, Kind, RuleOptions
 from stillground.survey import quantity
 from stillground.survey.quantities import Coordinate, InputPath, Length
@@ -60,11 +61,25 @@ def _crs(text: str) -> str:
 
 
 def _both_ways(value: Any) -> Any:
-    return {"horizontal": value, "vertical": value} if isinstance(value, str) else value
+    if isinstance(value, Mapping):
+        return value
+    quantity(value, "m")
+    return {"horizontal": value, "vertical": value}
 
 
-def _registered(group: plugins.Group, name: str) -> str:
-    getattr(plugins, {"solvers": "solver", "rules": "rule"}[group])(name)
+def _solver_name(name: str) -> str:
+    try:
+        plugins.solver(name)
+    except PluginError as error:
+        raise ValueError(error) from error
+    return name
+
+
+def _rule_name(name: str) -> str:
+    try:
+        plugins.rule(name)
+    except PluginError as error:
+        raise ValueError(error) from error
     return name
 
 
@@ -77,8 +92,8 @@ Background = Annotated[
     BeforeValidator(_background),
     WithJsonSchema({"type": "string", "examples": ["fit", "1900 m/s"]}),
 ]
-SolverName = Annotated[str, AfterValidator(lambda name: _registered("solvers", name))]
-RuleName = Annotated[str, AfterValidator(lambda name: _registered("rules", name))]
+SolverName = Annotated[str, AfterValidator(_solver_name)]
+RuleName = Annotated[str, AfterValidator(_rule_name)]
 
 
 class Table(BaseModel):
@@ -114,11 +129,15 @@ class Pair(Table):
         return tuple(self.vertical if axis == "elevation" else horizontal for axis in axes)
 
 
+PairOrOne = Annotated[Pair, BeforeValidator(_both_ways, json_schema_input_type=str | Pair)]
+"""One length for both ways, or a pair."""
+
+
 class GroundSettings(Table):
-    spacing: Annotated[Pair, BeforeValidator(_both_ways)] = Field(
+    spacing: PairOrOne = Field(
         description="distance of nodes on the finest rung"
     )
-    correlation: Annotated[Pair, BeforeValidator(_both_ways)] = Field(
+    correlation: PairOrOne = Field(
         description="lengths over which the ground is alike"
     )
     smoothness: float = Field(2.0, ge=0, le=8, description="exponent s of the prior; 0 is white")
@@ -153,7 +172,9 @@ class StoppingSettings(Table):
     @model_validator(mode="after")
     def _chosen_is_judged(self) -> Self:
         if self.choose not in self.judged:
-            raise ValueError(f"choose = '{self.choose}' is not among rules = {list(self.judged)}; add it there")
+            raise ValueError(
+                f"choose = '{self.choose}' is not among rules = {list(self.judged)}; add it there"
+            )
         return self
 
 
@@ -180,7 +201,7 @@ class BlobSettings(Table):
     """A Gaussian body; ``radii`` are its standard deviations."""
 
     centre: Point
-    radii: Annotated[Pair, BeforeValidator(_both_ways)]
+    radii: PairOrOne
     value: PropertyValue
 
 
@@ -188,7 +209,7 @@ class DiscSettings(Table):
     """A disc or ellipse with a sharp edge."""
 
     centre: Point
-    radii: Annotated[Pair, BeforeValidator(_both_ways)]
+    radii: PairOrOne
     value: PropertyValue
 
 

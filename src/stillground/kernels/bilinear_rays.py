@@ -73,7 +73,7 @@ def ray_table(starts: Array, ends: Array, lengths: Array) -> tuple[Array, NDArra
 def antiderivatives(k: int) -> Callable[..., None]:
     """Kernel ``(m, c, e, start, stop)``: fills rows of ``c`` and ``e`` from the field ``m``."""
 
-    @njit(**_JIT)  # type: ignore[untyped-decorator]
+    @njit(**_JIT)
     def kernel(m: Array, c: Array, e: Array, start: int, stop: int) -> None:
         columns = m.shape[1]
         for offset in range(stop - start):
@@ -97,7 +97,7 @@ def antiderivatives(k: int) -> Callable[..., None]:
 def second_differences(k: int) -> Callable[..., None]:
     """Kernel ``(m, e, dm, start, stop)``: fills rows of ``dm`` (rows, columns, 2, k) with D and M."""
 
-    @njit(**_JIT)  # type: ignore[untyped-decorator]
+    @njit(**_JIT)
     def kernel(m: Array, e: Array, dm: Array, start: int, stop: int) -> None:
         rows, columns = m.shape[0], m.shape[1]
         for offset in range(stop - start):
@@ -120,7 +120,7 @@ def antiderivatives_adjoint(k: int) -> Callable[..., None]:
     ``e`` is used up; the first and last row of ``dm`` are taken as zero, since no ray crosses them.
     """
 
-    @njit(**_JIT)  # type: ignore[untyped-decorator]
+    @njit(**_JIT)
     def kernel(m: Array, c: Array, e: Array, dm: Array, start: int, stop: int) -> None:
         rows, columns = m.shape[0], m.shape[1]
         for offset in range(stop - start):
@@ -162,7 +162,7 @@ def _strips(ray: Array, rows: int) -> tuple[int, int]:
 def forward(k: int) -> Callable[..., None]:
     """Kernel ``(rays, start, stop, m, c, e, dm, out)``: fills rows of ``out`` (n_rays, k)."""
 
-    @njit(**_JIT)  # type: ignore[untyped-decorator]
+    @njit(**_JIT)
     def kernel(
         rays: Array, start: int, stop: int, m: Array, c: Array, e: Array, dm: Array, out: Array
     ) -> None:
@@ -230,7 +230,7 @@ def forward(k: int) -> Callable[..., None]:
 def adjoint_crossings(k: int) -> Callable[..., None]:
     """Kernel ``(rays, start, stop, y, dm)``: adds the crossed rows' part to ``dm``."""
 
-    @njit(**_JIT)  # type: ignore[untyped-decorator]
+    @njit(**_JIT)
     def kernel(rays: Array, start: int, stop: int, y: Array, dm: Array) -> None:
         rows, columns = dm.shape[0], dm.shape[1]
         one = np.uintp(1)
@@ -261,7 +261,7 @@ def adjoint_crossings(k: int) -> Callable[..., None]:
 def adjoint_ends(k: int) -> Callable[..., None]:
     """Kernel ``(rays, y, m, c, e)``: adds the ends' part of every ray, shapes (rows, columns, k)."""
 
-    @njit(**_JIT)  # type: ignore[untyped-decorator]
+    @njit(**_JIT)
     def kernel(rays: Array, y: Array, m: Array, c: Array, e: Array) -> None:
         rows, columns = m.shape[0], m.shape[1]
         one = np.uintp(1)

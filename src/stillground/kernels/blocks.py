@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from functools import cache
+from itertools import pairwise
 
 import numba
 import numpy as np
@@ -19,9 +20,14 @@ def _pool(threads: int) -> ThreadPoolExecutor:
     return ThreadPoolExecutor(threads, thread_name_prefix="stillground")
 
 
+def n_threads() -> int:
+    """numba's number of threads."""
+    return int(numba.config.NUMBA_NUM_THREADS)  # type: ignore[attr-defined]  # made at import
+
+
 def run_blocks(blocks: Sequence[Callable[[], None]], threads: int | None = None) -> None:
     """Call every block; on the pool when ``threads`` (default: numba's number) is above one."""
-    threads = numba.config.NUMBA_NUM_THREADS if threads is None else threads
+    threads = n_threads() if threads is None else threads
     if threads == 1 or len(blocks) == 1:
         for block in blocks:
             block()
@@ -37,4 +43,4 @@ def cut(loads: np.ndarray, n_blocks: int) -> list[tuple[int, int]]:
         return []
     goals = total[-1] * np.arange(1, n_blocks) / n_blocks
     edges = np.unique([0, *np.searchsorted(total, goals), total.size])
-    return [(int(a), int(b)) for a, b in zip(edges[:-1], edges[1:], strict=True)]
+    return [(int(a), int(b)) for a, b in pairwise(edges)]

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 from pylops import LinearOperator
@@ -14,6 +13,7 @@ from scipy.special import gamma
 
 from stillground.errors import GridError
 from stillground.grid import Grid
+from stillground.kernels.blocks import n_threads
 
 Array = NDArray[np.float64]
 
@@ -67,10 +67,10 @@ class PriorRoot(LinearOperator):
     def __init__(
         self, grid: Grid, correlation: Sequence[float], smoothness: float, deviation: float = 1.0
     ) -> None:
-        if len(correlation) != len(grid.shape) or not all(length > 0 for length in correlation):
+        if len(correlation) != len(grid.shape) or not all(0 < length < math.inf for length in correlation):
             raise GridError(f"one positive correlation length for each axis is needed; got {correlation}")
-        if smoothness < 0:
-            raise GridError(f"the smoothness must not be negative; got {smoothness}")
+        if not 0 <= smoothness < math.inf:
+            raise GridError(f"the smoothness must be a number from 0 up; got {smoothness}")
         half = len(grid.shape) / 2
         s = smoothness if smoothness > half else half + 1
         variance = (4 * math.pi) ** half * gamma(s) / gamma(s - half) * math.prod(correlation)
@@ -85,19 +85,17 @@ class PriorRoot(LinearOperator):
         super().__init__(dtype=np.dtype(np.float64), dims=(grid.n_nodes,), dimsd=(grid.n_nodes,))
 
     def _transform(self, field: Array) -> Array:
-        workers = numba.config.NUMBA_NUM_THREADS if field.size > _WORTH_THREADS else 1
-        transformed = dctn(
-            field, type=1, axes=self._axes, norm="ortho", overwrite_x=True, workers=workers
-        )
+        workers = n_threads() if field.size > _WORTH_THREADS else 1
+        transformed = dctn(field, type=1, axes=self._axes, norm="ortho", overwrite_x=True, workers=workers)
         return np.asarray(transformed)
 
     def _matmat(self, X: Array) -> Array:
         field = self._factor * X.reshape(*self._root.shape[:-1], -1)
-        return (self._root * self._transform(field)).reshape(X.shape)
+        return np.asarray((self._root * self._transform(field)).reshape(X.shape))
 
     def _rmatmat(self, X: Array) -> Array:
         field = self._root * X.reshape(*self._root.shape[:-1], -1)
-        return (self._factor * self._transform(field)).reshape(X.shape)
+        return np.asarray((self._factor * self._transform(field)).reshape(X.shape))
 
     def _matvec(self, x: Array) -> Array:
         return self._matmat(x.reshape(-1, 1)).reshape(-1)

@@ -16,6 +16,11 @@ from stillground.kernels.blocks import cut, run_blocks
 Array = NDArray[np.float64]
 Integers = NDArray[np.int64]
 
+
+# Kernels are compiled for each number of columns, in seconds, and gain nothing beyond a few of them.
+_TOGETHER = 4
+
+
 # Numbers of blocks follow from the work and not from the threads: sums then come in the same order on
 # every machine. Below some 100,000 crossings or nodes the threads' start costs more than it brings.
 def _blocks(work: int) -> int:
@@ -29,7 +34,9 @@ class _Family:
         order = slice(None, None, -1) if transposed else slice(None)
         self.index = index
         self.transposed = transposed
-        self.rays, crossed = bilinear_rays.ray_table(here[index][:, order], there[index][:, order], lengths[index])
+        self.rays, crossed = bilinear_rays.ray_table(
+            here[index][:, order], there[index][:, order], lengths[index]
+        )
         # An end costs about as much as two crossings.
         self.ranges = cut(crossed + 4, _blocks(int(crossed.sum())))
 
@@ -84,9 +91,9 @@ class StraightRays(LinearOperator):
         origin, spacing = np.array(grid.origin), np.array(grid.spacing)
         top = np.array(grid.shape) - 1.0
         here, there = ((np.asarray(p, dtype=float) - origin) / spacing for p in (starts, ends))
-        outside = np.any((np.minimum(here, there) < -1e-9) | (np.maximum(here, there) > top + 1e-9), axis=1)
-        if outside.any():
-            ray = int(np.flatnonzero(outside)[0])
+        inside = np.all((np.minimum(here, there) >= -1e-9) & (np.maximum(here, there) <= top + 1e-9), axis=1)
+        if not inside.all():
+            ray = int(np.flatnonzero(~inside)[0])
             raise GridError(f"ray {ray} from {starts[ray]} to {ends[ray]} leaves the grid")
         here, there = np.clip(here, 0, top), np.clip(there, 0, top)
         if lengths is None:
@@ -102,45 +109,58 @@ class StraightRays(LinearOperator):
         super().__init__(dtype=np.dtype(np.float64), dims=(grid.n_nodes,), dimsd=(len(here),))
 
     def _matmat(self, X: Array) -> Array:
-        k = X.shape[1]
-        field = np.asarray(X, dtype=np.float64).reshape(*self._grid_shape, k)
-        out = np.empty((self.shape[0], k))
-        for family in self._families:
-            m = np.ascontiguousarray(field.swapaxes(0, 1) if family.transposed else field)
-            c, e, dm = np.empty_like(m), np.empty_like(m), np.empty((*m.shape[:2], 2, k))
-            rows = cut(np.ones(len(m)), _blocks(m.size))
-            integrate, difference = bilinear_rays.antiderivatives(k), bilinear_rays.second_differences(k)
-            run_blocks([partial(integrate, m, c, e, *r) for r in rows], self._threads)
-            run_blocks([partial(difference, m, e, dm, *r) for r in rows], self._threads)
-            part = np.empty((family.index.size, k))
-            follow = bilinear_rays.forward(k)
-            run_blocks([partial(follow, family.rays, *r, m, c, e, dm, part) for r in family.ranges], self._threads)
-            out[family.index] = part
+        X = np.asarray(X, dtype=np.float64)
+        out = np.empty((self.shape[0], X.shape[1]))
+        for first in range(0, X.shape[1], _TOGETHER):
+            columns = slice(first, first + _TOGETHER)
+            for family in self._families:
+                out[family.index, columns] = self._follow(family, X[:, columns])
         return out
 
     def _rmatmat(self, X: Array) -> Array:
-        k = X.shape[1]
-        total = np.zeros((*self._grid_shape, k))
-        for family in self._families:
-            y = np.ascontiguousarray(np.asarray(X, dtype=np.float64)[family.index])
-            shape = self._grid_shape[::-1] if family.transposed else self._grid_shape
-            m, c, e = np.zeros((3, *shape, k))
-            parts = np.zeros((len(family.ranges), *shape, 2, k))
-            scatter = bilinear_rays.adjoint_crossings(k)
-            blocks = [
-                partial(scatter, family.rays, *r, y, part)
-                for r, part in zip(family.ranges, parts, strict=True)
-            ]
-            ends = partial(bilinear_rays.adjoint_ends(k), family.rays, y, m, c, e)
-            run_blocks([*blocks, ends], self._threads if len(blocks) > 1 else 1)
-            dm = parts[0]
-            for part in parts[1:]:
-                dm += part
-            collect = bilinear_rays.antiderivatives_adjoint(k)
-            rows = cut(np.ones(len(m)), _blocks(m.size))
-            run_blocks([partial(collect, m, c, e, dm, *r) for r in rows], self._threads)
-            total += m.swapaxes(0, 1) if family.transposed else m
-        return total.reshape(-1, k)
+        X = np.asarray(X, dtype=np.float64)
+        total = np.zeros((self.shape[1], X.shape[1]))
+        for first in range(0, X.shape[1], _TOGETHER):
+            columns = slice(first, first + _TOGETHER)
+            for family in self._families:
+                total[:, columns] += self._spread(family, X[family.index, columns])
+        return total
+
+    def _follow(self, family: _Family, fields: Array) -> Array:
+        """Integrals of fields, shape (n_nodes, k), along the rays of a family, shape (n_rays, k)."""
+        k = fields.shape[1]
+        field = fields.reshape(*self._grid_shape, k)
+        m = np.ascontiguousarray(field.swapaxes(0, 1) if family.transposed else field)
+        c, e, dm = np.empty_like(m), np.empty_like(m), np.empty((*m.shape[:2], 2, k))
+        rows = cut(np.ones(len(m)), _blocks(m.size))
+        integrate, difference = bilinear_rays.antiderivatives(k), bilinear_rays.second_differences(k)
+        run_blocks([partial(integrate, m, c, e, *r) for r in rows], self._threads)
+        run_blocks([partial(difference, m, e, dm, *r) for r in rows], self._threads)
+        out = np.empty((family.index.size, k))
+        follow = bilinear_rays.forward(k)
+        run_blocks([partial(follow, family.rays, *r, m, c, e, dm, out) for r in family.ranges], self._threads)
+        return out
+
+    def _spread(self, family: _Family, data: Array) -> Array:
+        """Adjoint of ``_follow``: data, shape (n_rays, k), to nodes, shape (n_nodes, k)."""
+        k = data.shape[1]
+        y = np.ascontiguousarray(data)
+        shape = self._grid_shape[::-1] if family.transposed else self._grid_shape
+        m, c, e = np.zeros((3, *shape, k))
+        parts = np.zeros((len(family.ranges), *shape, 2, k))
+        scatter = bilinear_rays.adjoint_crossings(k)
+        blocks = [
+            partial(scatter, family.rays, *r, y, part) for r, part in zip(family.ranges, parts, strict=True)
+        ]
+        ends = partial(bilinear_rays.adjoint_ends(k), family.rays, y, m, c, e)
+        run_blocks([*blocks, ends], self._threads if len(blocks) > 1 else 1)
+        dm = parts[0]
+        for part in parts[1:]:
+            dm += part
+        collect = bilinear_rays.antiderivatives_adjoint(k)
+        rows = cut(np.ones(len(m)), _blocks(m.size))
+        run_blocks([partial(collect, m, c, e, dm, *r) for r in rows], self._threads)
+        return (m.swapaxes(0, 1) if family.transposed else m).reshape(-1, k)
 
     def _matvec(self, x: Array) -> Array:
         return self._matmat(x.reshape(-1, 1)).reshape(-1)

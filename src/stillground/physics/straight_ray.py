@@ -8,7 +8,6 @@ from typing import Any
 import numpy as np
 import xarray as xr
 from pydantic import BaseModel, ConfigDict, Field
-from scipy.ndimage import gaussian_filter
 
 from stillground.errors import SurveyError
 from stillground.grid import Grid
@@ -91,9 +90,9 @@ class RayScene:
         """
         operator = StraightRays(grid, self.starts, self.ends, self.lengths)
         density = operator.rmatvec(np.ones(len(self.data))) / grid.weights()
-        sigma = [0.5 * length / h for length, h in zip(correlation, grid.spacing, strict=True)]
-        smooth = gaussian_filter(density.reshape(grid.shape), sigma, mode="mirror")
-        return GroundField("path_density", smooth, "m-1", "ray length per area")
+        return GroundField(
+            "path_density", grid.local_mean(density, correlation), "m-1", "ray length per area"
+        )
 
     def predict(self, ground: Ground) -> Array:
         """Times through a described ground of slowness, shape (n_data,), s."""
@@ -110,7 +109,10 @@ class StraightRay:
 
     name = "straight-ray"
     ground_property = GroundProperty(
-        "slowness", "s m-1", "slowness of the first arrival", ("velocity", "m s-1", "velocity of the first arrival")
+        "slowness",
+        "s m-1",
+        "slowness of the first arrival",
+        ("velocity", "m s-1", "velocity of the first arrival"),
     )
     columns = ("source_x", "source_y", "source_z", "receiver_x", "receiver_y", "receiver_z", "time")
     datum = "time"
@@ -147,8 +149,7 @@ class StraightRay:
             raise SurveyError(name, [f"source and receiver fall on one point of the section in row {rows}"])
         groupings, positions = {}, {}
         for end, places in ends.items():
-            _, where, group = np.unique(places.round(3), axis=0, return_index=True, return_inverse=True)
-            groupings[end] = group.reshape(-1).astype(np.int64)
+            groupings[end], where = _numbered(places)
             positions[end] = flat[end][where]
         return RayScene(
             section=section,
@@ -161,9 +162,19 @@ class StraightRay:
             positions=positions,
             surface=None if settings.surface is None else read_surface(settings.surface, section),
             facts=(
-                f"section {section.length:.4g} m long; positions lie at most {aside:.2g} m off it (row {row})",
+                f"section {section.length:.4g} m long; "
+                f"positions lie at most {aside:.2g} m off it (row {row})",
             ),
         )
+
+
+def _numbered(places: Array) -> tuple[Integers, Integers]:
+    """Numbers equal places (to the millimetre) in the order of the table; where each stands first."""
+    _, where, group = np.unique(places.round(3), axis=0, return_index=True, return_inverse=True)
+    order = np.argsort(where)
+    rank = np.empty_like(order)
+    rank[order] = np.arange(order.size)
+    return rank[group.reshape(-1)], where[order]
 
 
 def _values(survey: xr.Dataset, name: str) -> Any:

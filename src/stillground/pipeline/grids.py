@@ -34,9 +34,7 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
     scene, ground = profile.scene, config.ground
     axes = plugins.kind(config.survey.kind).axes
     spacing = ground.spacing.along(axes)
-    margin = [
-        length / 2 if ground.margin is None else ground.margin for length in correlation(config)
-    ]
+    margin = [length / 2 if ground.margin is None else ground.margin for length in correlation(config)]
     for axis, low, high, h in zip(axes, scene.lower, scene.upper, spacing, strict=True):
         if high - low < h:
             raise ConfigError(
@@ -49,8 +47,8 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
         bottom = ground_point - ground.depth
         if bottom > scene.lower[-1]:
             raise ConfigError(
-                f"ground.depth: {ground.depth:g} m reach down to {bottom:.6g} m, but {profile.name} has a position "
-                f"at {scene.lower[-1]:.6g} m; take at least {ground_point - scene.lower[-1]:.3g} m"
+                f"ground.depth: {ground.depth:g} m reach down to {bottom:.6g} m, but {profile.name} has "
+                f"a position at {scene.lower[-1]:.6g} m; take at least {ground_point - scene.lower[-1]:.3g} m"
             )
     lower = [low - pad for low, pad in zip(scene.lower, margin, strict=True)]
     upper = [high + pad for high, pad in zip(scene.upper, margin, strict=True)]
@@ -81,9 +79,9 @@ def _refuse_too_large(grids: tuple[Grid, ...], profile: Profile, config: Config)
         factor = (need / free) ** (1 / len(grids[-1].shape))
         spacing = _round_up(max(grids[-1].spacing) * factor * 1.05)
         raise CapacityError(
-            f"profile {profile.name}: the finest rung of {shape} nodes needs about {need / 2**30:.3g} GiB, this "
-            f"machine has {free / 2**30:.3g} GiB free; take ground.spacing of {spacing} m or more, or a smaller "
-            f"margin or depth"
+            f"profile {profile.name}: the finest rung of {shape} nodes needs about {need / 2**30:.3g} GiB, "
+            f"this machine has {free / 2**30:.3g} GiB free; take ground.spacing of {spacing} m or more, "
+            f"or a smaller margin or depth"
         )
 
 

@@ -120,9 +120,7 @@ def label(profile: Profile, result: Result, config: Config, origin: Provenance) 
             provenance=origin,
         ),
         history=history_dataset(profile.name, result, surface=surface, provenance=origin),
-        ladder=ladder_dataset(
-            profile.name, result, surface=surface, tolerance=tolerance, provenance=origin
-        ),
+        ladder=ladder_dataset(profile.name, result, surface=surface, tolerance=tolerance, provenance=origin),
         fit=fit_table(
             result, rows=profile.survey["row"].values, datum=kind.datum, unit=unit, si_factor=factor
         ),

@@ -36,9 +36,7 @@ def read_profiles(config: Config) -> tuple[Profile, ...]:
     kind = plugins.kind(config.survey.kind)
     found: dict[str, Profile] = {}
     for path in config.survey.files:
-        table = read(
-            path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns
-        )
+        table = read(path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns)
         for profile in place(table, path.stem, config):
             if profile.name in found:
                 raise ConfigError(

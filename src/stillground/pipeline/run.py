@@ -29,7 +29,6 @@ from stillground.products.section import write_section
 from stillground.products.summary import run_summary, write_summary
 from stillground.protocols import Progress
 
-
 T = TypeVar("T")
 
 
@@ -116,9 +115,7 @@ def run(
     return Outcome(folder, summary, tuple(results))
 
 
-def run_config(
-    path: str | Path, *, out: str | Path | None = None, overrides: Sequence[str] = ()
-) -> Outcome:
+def run_config(path: str | Path, *, out: str | Path | None = None, overrides: Sequence[str] = ()) -> Outcome:
     """Runs a configuration file without a word, as ``stillground run`` does.
 
     Parameters
@@ -189,9 +186,7 @@ def reconstruct_survey(
     return label(found[0], arrays, config, origin)
 
 
-def _write(
-    folder: Path, result: ProfileResult, config: Config
-) -> Generator[Progress, None, dict[str, str]]:
+def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Progress, None, dict[str, str]]:
     """Writes one profile's products; file names by product."""
     wanted = config.output.products
     yield Progress("writing products", 0, 2)

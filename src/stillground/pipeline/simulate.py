@@ -117,4 +117,4 @@ def _planned(config: Config, settings: SimulateSettings) -> xr.Dataset:
 def _places(line: PlacesSettings) -> Array:
     first, last = np.array(line.first), np.array(line.last)
     # Tables hold millimetres: the data are computed for the places that the table will name.
-    return np.round(first + np.linspace(0, 1, line.count)[:, None] * (last - first), 3)
+    return np.asarray(np.round(first + np.linspace(0, 1, line.count)[:, None] * (last - first), 3))

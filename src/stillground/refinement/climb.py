@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Generator, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
@@ -18,8 +19,8 @@ class Climb:
     """What a climb leaves: the ladder, and the finest rung's reconstruction with its picture.
 
     ``model`` is the nodal field at the finest rung's pick, ``anomaly`` the root mean square of it
-    less its best constant, ``mesh_change`` the absolute change since the rung before (NaN with a
-    single rung).
+    less its best constant, ``mesh_change`` the local root mean square, over about a correlation
+    length, of the change since the rung before (NaN with a single rung).
     """
 
     ladder: Ladder
@@ -77,9 +78,9 @@ def climb(
         size = fine.norm(difference)
         return size / spread if spread > 0 else float(size > 0)
 
-    change = tuple(relative(after - before) for before, after in zip(raised[:-1], raised[1:], strict=True))
+    change = tuple(relative(after - before) for before, after in pairwise(raised))
     drift = None
-    if len(rungs) > 1 and rungs[-2].picks[method.choose].iteration is not None:
+    if len(rungs) > 1 and all(rung.picks[method.choose].iteration is not None for rung in rungs[-2:]):
         drift = relative(finest.model(rungs[-2].stop(method.choose)) - model)
     ladder = Ladder(
         rungs=tuple(
@@ -95,5 +96,12 @@ def climb(
         finest=finest,
         model=model,
         anomaly=spread / float(np.sqrt(np.prod(fine.lengths))),
-        mesh_change=np.abs(raised[-1] - raised[-2]) if len(rungs) > 1 else np.full(fine.shape, np.nan),
+        mesh_change=_local_change(raised, fine, method.correlation),
     )
+
+
+def _local_change(raised: Sequence[Array], fine: Grid, correlation: Sequence[float]) -> Array:
+    # Node by node the change would show the coarser rung's nodes and not the ground.
+    if len(raised) < 2:
+        return np.full(fine.shape, np.nan)
+    return np.sqrt(fine.local_mean(np.square(raised[-1] - raised[-2]), correlation))

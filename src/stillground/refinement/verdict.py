@@ -12,7 +12,7 @@ _FLOOR = 0.1
 
 
 def _order(change: Sequence[float]) -> float | None:
-    if len(change) < 2 or min(change[-2:]) <= 0:
+    if not all(0 < step < math.inf for step in change[-2:]):
         return None
     return math.log2(change[-2] / change[-1])
 
@@ -26,7 +26,8 @@ def judge(change: Sequence[float], pick_drift: float | None, tolerance: float) -
         Relative L2 change between successive rungs at equal iteration, coarse to fine; each rung
         halves the spacing.
     pick_drift : float or None
-        Relative change on the finest rung between its own pick and that of the rung before.
+        Relative change on the finest rung between its own pick and that of the rung before; None
+        where the rule found none.
     tolerance : float
         Relative change that counts as none.
 
@@ -58,7 +59,7 @@ def judge(change: Sequence[float], pick_drift: float | None, tolerance: float) -
     at_floor = last <= _FLOOR * tolerance
     remaining: float | None
     if order is not None and order > 0 and not (at_floor and order < 1):
-        remaining = last / (2**order - 1)
+        remaining = last / (change[-2] / last - 1)
     else:
         remaining = last if at_floor else None
 
@@ -78,7 +79,7 @@ def judge(change: Sequence[float], pick_drift: float | None, tolerance: float) -
     if not at_floor and order is not None and 0 < order < 1:
         faults.append(f"the changes shrink slowly (order {order:.2f})")
     if pick_drift is None:
-        faults.append("the chosen rule found no pick on the rung before the finest")
+        faults.append("the chosen rule found no pick on one of the two finest rungs")
     elif pick_drift > tolerance:
         faults.append(f"the stop itself moves the picture by {100 * pick_drift:.2g} % from rung to rung")
     if faults:

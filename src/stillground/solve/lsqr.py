@@ -10,6 +10,8 @@ from pylops import LinearOperator
 from stillground.protocols import Array, Iterate
 from stillground.solve.columns import frozen, norm, ratio
 
+_GROWTH = 1e-12
+
 
 def lsqr(operator: LinearOperator, b: Array) -> Iterator[Iterate]:
     """Iterates of LSQR from zero, in exact arithmetic those of CGLS; ends when the space is used up.
@@ -28,7 +30,9 @@ def lsqr(operator: LinearOperator, b: Array) -> Iterator[Iterate]:
     -----
     Golub-Kahan bidiagonalisation; each new data-side vector is orthogonalised against all before
     it, n_iterations x n_data numbers. Without that the vectors lose orthogonality where singular
-    values fall fast, and the differences between rungs of a ladder turn random.
+    values fall fast, and the differences between rungs of a ladder turn random. The other side is
+    left alone; where it has lost its orthogonality too, as beyond the rank of an operator with
+    repeated rows, the next step would make the residual grow, and the iteration ends before it.
 
     References
     ----------
@@ -73,6 +77,12 @@ def lsqr(operator: LinearOperator, b: Array) -> Iterator[Iterate]:
         rho = np.hypot(rho_bar, beta)
         cosine, sine = ratio(rho_bar, rho), ratio(beta, rho)
         step = ratio(cosine * phi_bar, rho)
+        # A residual that would grow tells that rounding has used the space up.
+        going = norm(r - step * w_seen) <= (1 + _GROWTH) * norm(r)
+        if not going[0]:
+            return
+        step, alpha_next = step * going, alpha_next * going
+        w, w_seen, v_next = w * going, w_seen * going, v_next * going
         x += step * w
         r -= step * w_seen
         phi_bar = sine * phi_bar

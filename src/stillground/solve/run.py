@@ -28,14 +28,16 @@ class Run:
     """A finished iteration in standard form.
 
     ``solutions`` holds the iterates 0, 1, ... that fitted into the memory budget, read-only,
-    shape (n_unknowns,) each; ``residuals`` all of them, shape (n_rows, n_data).
+    shape (n_unknowns,) each; ``residuals`` all of them, shape (n_rows, n_data). ``columns`` are the
+    data and their disturbed copies, shape (n_data, n_columns): only together do they give the same
+    iterates again to the bit.
     """
 
     history: History
     residuals: Array
     solutions: tuple[Array, ...]
     operator: LinearOperator
-    b: Array
+    columns: Array
     solver: Solver
 
     def solution(self, iteration: float) -> Array:
@@ -45,7 +47,7 @@ class Run:
         if wanted[-1] < len(self.solutions):
             found = [self.solutions[k] for k in wanted]
         else:
-            again = islice(self.solver(self.operator, self.b[:, None]), wanted[0], wanted[-1] + 1)
+            again = islice(self.solver(self.operator, self.columns), wanted[0], wanted[-1] + 1)
             found = [iterate.solution[:, 0] for iterate in again]
         return found[0] if part == 0 else (1 - part) * found[0] + part * found[1]
 
@@ -53,7 +55,7 @@ class Run:
         """Whitened residual at a fractional iteration, shape (n_data,)."""
         whole, part = self._split(iteration)
         if part == 0:
-            return self.residuals[whole]
+            return np.asarray(self.residuals[whole])
         return np.asarray((1 - part) * self.residuals[whole] + part * self.residuals[whole + 1])
 
     def _split(self, iteration: float) -> tuple[int, float]:
@@ -135,4 +137,4 @@ def iterate(
         gradient_norm=None if None in gradients else np.array(gradients, dtype=float),
         degrees_of_freedom=np.maximum.accumulate(freedoms),
     )
-    return Run(history, kept, tuple(solutions), operator, b, solver)
+    return Run(history, kept, tuple(solutions), operator, columns, solver)

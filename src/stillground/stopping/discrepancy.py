@@ -46,7 +46,9 @@ def discrepancy(history: History, options: RuleOptions) -> Pick:
         )
     if pick == 0:
         return Pick(
-            0.0, False, "the background alone fits within the errors: they may be too large, or the ground even"
+            0.0,
+            False,
+            "the background alone fits within the errors: they may be too large, or the ground even",
         )
     early = _crossing(history, 1.05 * target)
     late = _crossing(history, target / 1.05)

@@ -12,9 +12,7 @@ def gcv_curve(history: History) -> Array | None:
     if history.degrees_of_freedom is None:
         return None
     left = 1.0 - history.degrees_of_freedom / history.n_data
-    return np.asarray(
-        np.divide(history.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 0)
-    )
+    return np.asarray(np.divide(history.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 0))
 
 
 def gcv(history: History, options: RuleOptions) -> Pick:
@@ -33,10 +31,10 @@ def gcv(history: History, options: RuleOptions) -> Pick:
     if curve is None:
         return Pick(None, False, "does not apply: this run has no degrees of freedom")
     k = int(np.argmin(curve))
-    if k == history.last:
-        return Pick(float(k), False, f"still falling at iteration {k}: raise solver.iterations")
     if k == 0:
         return Pick(0.0, False, "no iterate predicts better than the background: the data say nothing of it")
+    if k == history.last:
+        return Pick(float(k), False, f"still falling at iteration {k}: raise solver.iterations")
     before, here, after = curve[k - 1 : k + 2]
     bend = before - 2 * here + after
     pick = float(k + (0.5 * (before - after) / bend if np.isfinite(bend) and bend > 0 else 0.0))
