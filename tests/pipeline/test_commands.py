@@ -1,0 +1,261 @@
+"""What the commands do with odd input, interruptions, several lines, and in Python."""
+
+from __future__ import annotations
+
+import json
+import os
+import signal
+import subprocess
+import sys
+import time
+from collections.abc import Callable
+from pathlib import Path
+
+import numpy as np
+import pytest
+import xarray as xr
+
+import stillground as package
+from stillground.config import load
+from stillground.errors import CapacityError, ConfigError, SurveyError
+from stillground.pipeline.grids import memory, plan_grids
+from stillground.pipeline.profiles import read_profiles
+from stillground.survey import write_table
+
+Command = Callable[..., "subprocess.CompletedProcess[str]"]
+
+
+def rewrite(path: Path, before: str, after: str) -> None:
+    text = path.read_text()
+    assert before in text
+    path.write_text(text.replace(before, after))
+
+
+@pytest.mark.parametrize(
+    ("before", "after", "told"),
+    [
+        ('files = ["small.csv"]', 'files = ["no.csv"]', "no.csv: there is no such file"),
+        ('spacing = "0.25 m"', 'spacing = "20 m"', "is larger than the survey small"),
+        ('spacing = "0.25 m"', 'spacing = "2 m"', "take a smaller ground.spacing"),
+        ('spacing = "0.25 m"', 'spacing = "0.1 mm"', "this machine has"),
+        ("[solver]", "depth = \"2 m\"\n[solver]", "ground.depth: 2 m reach down to -2.5 m"),
+        ("[ground]", "[physics]\nsurface = \"no.csv\"\n[ground]", "no.csv"),
+        ("[ground]", "[ground]\nspacng = 1", "did you mean 'spacing'?"),
+    ],
+)  # fmt: skip
+def test_bad_input_is_one_message_exit_2_and_nothing_written(
+    stillground: Command, small: Path, before: str, after: str, told: str
+) -> None:
+    rewrite(small / "small.toml", before, after)
+    done = stillground("run", "small.toml", cwd=small)
+    assert done.returncode == 2
+    assert told in done.stderr
+    assert "Traceback" not in done.stderr
+    assert not (small / "results").exists()
+
+
+@pytest.mark.parametrize(
+    ("rows", "told"),
+    [
+        (["0,0,-1,9,0,-1,5.0", "0,0,-2,9,0,-1,x"], "row 3"),
+        (["0,0,-1,9,0,-1,5.0", "0,0,-2,9,0,-1"], "row 3"),
+        (["0,0,-1,9,0,-1,5.0"], "two"),
+        (["0,0,-1,9,0,-1,5.0", "0,0,-1,0,0,-1,5.0"], "row 3"),
+        (["0,0,-1,9,0,-1,5.0", "0,0,-2,9,0,-1,-5.0"], "row 3"),
+    ],
+)
+def test_a_faulty_table_is_told_by_row(stillground: Command, small: Path, rows: list[str], told: str) -> None:
+    header = ",".join(f"{end}_{axis} [m]" for end in ("source", "receiver") for axis in "xyz") + ",time [ms]"
+    (small / "small.csv").write_text("\n".join([header, *rows]) + "\n")
+    done = stillground("run", "small.toml", "--set", "errors.floor=0.1 ms", cwd=small)
+    assert done.returncode == 2
+    assert told in done.stderr
+    assert "small.csv" in done.stderr
+    assert "Traceback" not in done.stderr
+
+
+def test_usage_errors_are_exit_2(stillground: Command) -> None:
+    for arguments in (["rum"], ["run"], ["run", "a.toml", "--bogus"], ["run", "no.toml"]):
+        done = stillground(*arguments)
+        assert done.returncode == 2
+        assert "Traceback" not in done.stderr
+
+
+def test_strict_tells_a_verdict_that_is_not_settled(stillground: Command, small: Path) -> None:
+    done = stillground(
+        "run", "small.toml", "--strict", "--set", "ground.smoothness=0", "--set", "output.products=['section']",
+        cwd=small,
+    )  # fmt: skip
+    assert done.returncode == 3
+    assert "no limit as the grid is refined" in done.stdout, "the white prior is warned of"
+    summary = json.loads((small / "results" / "small" / "summary.json").read_text())
+    assert summary["verdict"] != "settled"
+
+
+def test_a_table_is_never_written_over_unasked(stillground: Command, small: Path) -> None:
+    with (small / "small.toml").open("a") as config:
+        config.write('[simulate]\noutput = "small.csv"\nbackground = "1800 m/s"\n')
+    before = (small / "small.csv").read_bytes()
+    refused = stillground("simulate", "small.toml", cwd=small)
+    assert refused.returncode == 2
+    assert "--replace" in refused.stderr
+    assert (small / "small.csv").read_bytes() == before
+    replaced = stillground("simulate", "small.toml", "--replace", cwd=small)
+    assert replaced.returncode == 0, replaced.stderr
+    again = package.read_survey(small / "small.csv")
+    ends = [np.stack([again[f"{end}_{axis}"] for axis in "xyz"]) for end in ("source", "receiver")]
+    # A ground of one velocity: time is distance over velocity (common practice, no source).
+    distance = np.linalg.norm(ends[1] - ends[0], axis=0)
+    np.testing.assert_allclose(again["time"], distance / 1800, atol=1e-7)
+
+
+def test_several_lines_give_several_profiles_and_resume_keeps_them(
+    stillground: Command, small: Path, survey: xr.Dataset
+) -> None:
+    lines = np.where(np.arange(survey.sizes["datum"]) % 2, "B 2", "A 1")
+    write_table(small / "small.csv", survey.assign(line=("datum", lines)))
+    quick = ("--set", "output.products=['section']", "--set", "refinement.levels=2")
+    done = stillground("run", "small.toml", *quick, cwd=small)
+    assert done.returncode == 0, done.stderr
+    folder = small / "results" / "small"
+    summary = json.loads((folder / "summary.json").read_text())
+    names = [profile["name"] for profile in summary["profiles"]]
+    assert names == ["small-A_1", "small-B_2"]
+    assert summary["verdict"] == "undecided"
+
+    (folder / "small-B_2_section.nc").unlink()
+    kept = (folder / "small-A_1_section.nc").stat().st_mtime_ns
+    again = stillground("run", "small.toml", *quick, "--resume", cwd=small)
+    assert again.returncode == 0, again.stderr
+    assert (folder / "small-A_1_section.nc").stat().st_mtime_ns == kept
+    assert (folder / "small-B_2_section.nc").exists()
+    assert [p["name"] for p in json.loads((folder / "summary.json").read_text())["profiles"]] == names
+    changed = stillground("run", "small.toml", *quick, "--resume", "--set", "solver.iterations=9", cwd=small)
+    assert changed.returncode == 0
+    assert (folder / "small-A_1_section.nc").stat().st_mtime_ns != kept, "other settings: made again"
+
+
+def test_an_interruption_exits_130_and_leaves_nothing_half_written(small: Path) -> None:
+    rewrite(small / "small.toml", "iterations = 20", "iterations = 10000")
+    rewrite(small / "small.toml", 'spacing = "0.25 m"', 'spacing = "0.02 m"')
+    work = subprocess.Popen(
+        [sys.executable, "-m", "stillground", "run", "small.toml"],
+        cwd=small,
+        stderr=subprocess.PIPE,
+        stdout=subprocess.PIPE,
+        text=True,
+        env=os.environ | {"PYTHONUNBUFFERED": "1"},
+    )
+    assert work.stderr is not None
+    for line in work.stderr:
+        if "rung 2" in line:
+            break
+    time.sleep(0.3)
+    work.send_signal(signal.SIGINT)
+    _, errors = work.communicate(timeout=60)
+    assert work.returncode == 130
+    assert "interrupted" in errors
+    assert "Traceback" not in errors
+    assert not list(small.rglob("*.nc"))
+    assert not [p for p in small.rglob("*") if p.name.startswith(".")]
+
+
+def test_every_command_teaches_by_example(stillground: Command) -> None:
+    for command in ("run", "inspect", "simulate"):
+        help_text = stillground(command, "--help").stdout
+        assert f"stillground {command}" in help_text
+        assert "Example" in help_text
+    assert "no clearance to dig" in stillground("--help").stdout
+    assert stillground("--version").stdout.startswith("stillground 0")
+
+
+def test_plugins_and_schema_print(stillground: Command) -> None:
+    listed = stillground("plugins").stdout
+    for name in ("straight-ray", "lsqr", "cgls", "discrepancy", "gcv", "stillground"):
+        assert name in listed
+    assert json.loads(stillground("schema").stdout)["oneOf"]
+
+
+def test_python_gets_a_labelled_result_in_one_call(survey: xr.Dataset) -> None:
+    result = package.reconstruct_survey(
+        survey, ground={"spacing": "0.125 m", "correlation": {"horizontal": "3 m", "vertical": "2 m"}}
+    )
+    assert result.verdict == "settled"
+    assert "settled" in repr(result)
+    assert result.section["velocity"].attrs["units"] == "m s-1"
+    fast = result.section["slowness"].sel(distance=3, elevation=-4, method="nearest")
+    slow = result.section["slowness"].sel(distance=6, elevation=-8, method="nearest")
+    assert float(fast) > 1 / 1800 > float(slow)
+
+
+def test_xarray_opens_a_survey_table(small: Path) -> None:
+    with xr.open_dataset(small / "small.csv", engine="stillground") as ds:
+        assert ds["time"].attrs["units"] == "s"
+        assert ds.sizes == {"datum": 144}
+
+
+def test_a_survey_of_several_lines_is_refused_in_memory(survey: xr.Dataset) -> None:
+    lines = np.where(np.arange(survey.sizes["datum"]) % 2, "B", "A")
+    with pytest.raises(ConfigError, match="holds 2 profiles"):
+        package.reconstruct_survey(
+            survey.assign(line=("datum", lines)), ground={"spacing": "0.5 m", "correlation": "2 m"}
+        )
+
+
+def test_positions_off_the_section_are_refused_with_row_and_advice(small: Path, survey: xr.Dataset) -> None:
+    moved = survey.copy(deep=True)
+    moved["receiver_y"][5] += 2.0
+    write_table(small / "small.csv", moved)
+    config, _ = load(small / "small.toml")
+    with pytest.raises(SurveyError, match=r"row \d+ lies .* m off the section plane"):
+        read_profiles(config)
+
+
+def test_true_lengths_keep_the_velocity_of_rays_out_of_the_plane(survey: xr.Dataset) -> None:
+    # Even ground: whatever the geometry, the slowness is time over distance (common practice, no source).
+    shifted = survey.copy(deep=True)
+    shifted["receiver_y"] = shifted["receiver_y"] + 0.4 * (np.arange(survey.sizes["datum"]) % 2)
+    ends = [np.stack([shifted[f"{end}_{axis}"] for axis in "xyz"]) for end in ("source", "receiver")]
+    shifted["time"] = ("datum", np.linalg.norm(ends[1] - ends[0], axis=0) / 1500)
+    result = package.reconstruct_survey(
+        shifted, ground={"spacing": "0.5 m", "correlation": "2 m"}, refinement={"levels": 2}
+    )
+    np.testing.assert_allclose(result.section["velocity"], 1500, rtol=1e-5)
+
+
+def test_too_large_a_grid_is_refused_before_it_is_made(small: Path) -> None:
+    config, _ = load(small / "small.toml", ["ground.spacing=0.1 mm"])
+    (profile,) = read_profiles(config)
+    began = time.perf_counter()
+    with pytest.raises(CapacityError, match=r"take ground.spacing of [0-9.]+ m or more"):
+        plan_grids(profile, config)
+    assert time.perf_counter() - began < 5
+
+
+def test_predicted_memory_covers_what_a_climb_takes(small: Path) -> None:
+    code = (
+        "import resource, stillground\n"
+        "from stillground.config import load\n"
+        "from stillground.pipeline.grids import memory, plan_grids\n"
+        "from stillground.pipeline.profiles import read_profiles\n"
+        "from stillground.pipeline.answer import answer\n"
+        "from stillground.pipeline.run import finish\n"
+        "def peak(): return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024\n"
+        "config, _ = load('small.toml', ['ground.spacing=0.02 m', 'solver.iterations=10'])\n"
+        "(profile,) = read_profiles(config)\n"
+        "few, _ = load('small.toml', ['refinement.levels=1', 'solver.iterations=2'])\n"
+        "finish(answer(profile, few))\n"
+        "before = peak(); finish(answer(profile, config)); grids = plan_grids(profile, config)\n"
+        "print(memory(grids, profile.survey.sizes['datum'], 10) / (peak() - before))\n"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", code], cwd=small, capture_output=True, text=True, check=True
+    )
+    assert 0.8 < float(done.stdout) < 3, "predicted over taken"
+
+
+def test_predicted_memory_grows_with_the_grid(small: Path) -> None:
+    config, _ = load(small / "small.toml")
+    (profile,) = read_profiles(config)
+    grids = plan_grids(profile, config)
+    assert memory(grids, 144, 20) > memory(grids[:-1], 144, 20)
