@@ -1,0 +1,142 @@
+"""The ladder as a figure: does the answer stop changing as the spacing shrinks?"""
+
+from __future__ import annotations
+
+import numpy as np
+from matplotlib.figure import Figure
+from matplotlib.ticker import LogLocator, NullLocator
+
+from stillground.products.figures.field import colour_scale, draw_field, shown
+from stillground.products.figures.sheet import FOOT, HEADING, LINE, MUTED, TEAL, panel, sheet, styled
+from stillground.products.ladder import rung_spacing
+from stillground.products.raster import Surface, ground
+from stillground.products.reliability import reliability
+from stillground.protocols import Ladder, Result
+
+MAPS = (3.7, 3.5)
+GAP = 0.34
+
+
+@styled
+def ladder_figure(profile: str, result: Result, *, tolerance: float, surface: Surface | None) -> Figure:
+    """Change between rungs against spacing, with the fitted order, and the rungs side by side.
+
+    Parameters
+    ----------
+    profile : str
+    result : Result
+        On axes (distance, elevation).
+    tolerance : float
+        Of the refinement, relative to the anomaly.
+    surface : pair of arrays (distance, elevation), m, or None
+    """
+    verdict = result.ladder.verdict
+    body = MAPS[1] + 0.1
+    bottom = FOOT + 0.5
+    figure = sheet(
+        7.4,
+        bottom + body + HEADING + 0.1,
+        f"{profile}: refinement ladder",
+        f"{verdict.word.capitalize()}: {verdict.reason}",
+        verdict.word,
+    )
+    _changes(figure, result.ladder, tolerance, (0.72, bottom, 2.55, body))
+    _rungs(figure, result, surface, tolerance, (3.55, bottom - 0.3))
+    return figure
+
+
+def _changes(
+    figure: Figure, ladder: Ladder, tolerance: float, place: tuple[float, float, float, float]
+) -> None:
+    axes = panel(figure, *place)
+    # A change belongs to the finer of its two rungs: what halving down to that spacing did.
+    spacings = np.array([rung_spacing(rung) for rung in ladder.rungs])
+    change = np.array(ladder.change)
+    drawn = change > 0
+    ends = spacings[1:] if spacings.size > 1 else spacings
+    heights = np.append(change[drawn], tolerance)
+    axes.set(
+        xscale="log",
+        yscale="log",
+        xlim=(ends.min() / 1.35, ends.max() * 1.35),
+        ylim=(heights.min() / 2.5, heights.max() * 2.5),
+        xlabel="spacing of the finer rung (m)",
+        ylabel="relative change",
+    )
+    axes.set_xticks(ends)
+    axes.xaxis.set_minor_locator(NullLocator())
+    axes.xaxis.set_major_formatter("{x:g}")
+    axes.yaxis.set_major_locator(LogLocator(subs=(1, 2, 5)))
+    axes.yaxis.set_minor_locator(NullLocator())
+    axes.yaxis.set_major_formatter("{x:g}")
+    axes.axhline(tolerance, color=MUTED, lw=1, ls=(0, (5, 3)))
+    axes.annotate(
+        f"tolerance {tolerance:g}",
+        (1, tolerance),
+        (0, -2),
+        xycoords=("axes fraction", "data"),
+        textcoords="offset points",
+        ha="right",
+        va="top",
+        size=7,
+        color=MUTED,
+        bbox={"facecolor": axes.get_facecolor(), "lw": 0, "pad": 1},
+    )
+    if not drawn.any():
+        axes.set_title("one rung: nothing to compare" if change.size == 0 else "no change at all")
+        return
+    axes.plot(spacings[1:][drawn], change[drawn], "o", color=TEAL, ms=6, zorder=4)
+    if ladder.verdict.order is not None and drawn[-1]:
+        along = np.array(axes.get_xlim())
+        axes.plot(
+            along, change[-1] * (along / spacings[-1]) ** ladder.verdict.order, color=LINE, lw=1.2, ls="--"
+        )
+        axes.set_title(f"dashed: fitted order {ladder.verdict.order:.2f}")
+
+
+def _rungs(
+    figure: Figure,
+    result: Result,
+    surface: Surface | None,
+    tolerance: float,
+    corner: tuple[float, float],
+) -> None:
+    rungs = result.ladder.rungs
+    flags = reliability(result, tolerance, ground(result.axes, surface))
+    scale = colour_scale(shown(result.property, result.model)[0], flags)
+    across, up = (float(axis[-1] - axis[0]) for axis in result.axes)
+    # The number of columns that draws the maps largest.
+    sizes = {}
+    for n_columns in range(1, len(rungs) + 1):
+        n_rows = -(-len(rungs) // n_columns)
+        room = ((MAPS[0] - (n_columns - 1) * 0.15) / n_columns, (MAPS[1] + 0.3) / n_rows - GAP)
+        sizes[n_columns] = min(room[0] / across, room[1] / up)
+    n_columns = max(sizes, key=lambda n: sizes[n])
+    inches = sizes[n_columns]
+    n_rows = -(-len(rungs) // n_columns)
+    step = ((MAPS[0] + 0.15) / n_columns, (MAPS[1] + 0.3) / n_rows)
+    across_sheet, up_sheet = figure.get_size_inches()
+    said = f"{shown(result.property, result.model)[1]}, colours as in the section"
+    middle = (corner[0] + MAPS[0] / 2) / across_sheet
+    figure.text(middle, (FOOT + 0.02) / up_sheet, said, size=7, color=MUTED, ha="center")
+    for i, rung in enumerate(rungs):
+        row, column = divmod(i, n_columns)
+        axes = panel(
+            figure,
+            corner[0] + column * step[0] + (step[0] - 0.15 - across * inches) / 2,
+            corner[1] + (n_rows - 1 - row) * step[1] + (step[1] - GAP - up * inches) / 2,
+            across * inches,
+            up * inches,
+        )
+        draw_field(
+            axes,
+            rung.axes,
+            shown(result.property, rung.model)[0],
+            scale,
+            flags=None,
+            surface=surface,
+            pixels=200,
+        )
+        axes.set(xticks=[], yticks=[])
+        axes.spines[:].set_visible(False)
+        axes.set_title(f"{rung_spacing(rung):g} m · {rung.n_nodes} nodes", size=7)

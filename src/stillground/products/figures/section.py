@@ -1,0 +1,95 @@
+"""The section as a figure: what the ground looks like, and where not to believe it."""
+
+from __future__ import annotations
+
+from matplotlib.cm import ScalarMappable
+from matplotlib.figure import Figure
+from matplotlib.lines import Line2D
+from matplotlib.patches import Patch
+
+from stillground.products.figures.field import FIELD_COLOURS, HATCHES, colour_scale, draw_field, shown
+from stillground.products.figures.positions import RECEIVER, SOURCE, draw_positions
+from stillground.products.figures.sheet import FOOT, HEADING, PAPER, panel, sheet, styled, unit_text
+from stillground.products.raster import Surface, ground
+from stillground.products.reliability import MESH_DEPENDENT, POORLY_COVERED, reliability
+from stillground.protocols import Array, Result
+
+LARGEST = (6.4, 5.6)
+LEAST_WIDTH = 5.6
+HATCH_NAMES = {POORLY_COVERED: "poorly covered", MESH_DEPENDENT: "depends on the grid"}
+
+
+@styled
+def section_figure(
+    profile: str,
+    result: Result,
+    *,
+    tolerance: float,
+    surface: Surface | None,
+    sources: Array,
+    receivers: Array,
+) -> Figure:
+    """The answer with positions, surface and colour bar; unreliable ground faded and hatched.
+
+    Parameters
+    ----------
+    profile : str
+    result : Result
+        On axes (distance, elevation).
+    tolerance : float
+        As for `section_dataset`.
+    surface : pair of arrays (distance, elevation), m, or None
+    sources, receivers : array, shapes (n_sources, 2), (n_receivers, 2)
+        Distance and elevation, m.
+    """
+    flags = reliability(result, tolerance, ground(result.axes, surface))
+    values, long_name, units = shown(result.property, result.model)
+    scale = colour_scale(values, flags)
+
+    across, up = (float(axis[-1] - axis[0]) for axis in result.axes)
+    inches = min(LARGEST[0] / across, LARGEST[1] / up)
+    width, height = across * inches, up * inches
+    whole_width = max(width + 1.95, LEAST_WIDTH)
+    left = (whole_width - width - 0.75) / 2 + 0.05
+    verdict = result.ladder.verdict
+    bottom = FOOT + 0.85
+    figure = sheet(
+        whole_width,
+        bottom + height + HEADING + 0.3,
+        profile,
+        f"{verdict.word.capitalize()}: {verdict.reason}",
+        verdict.word,
+    )
+
+    axes = panel(figure, left, bottom, width, height)
+    draw_field(axes, result.axes, values, scale, flags=flags, surface=surface, pixels=700)
+    draw_positions(axes, sources, receivers)
+    chosen = result.chosen
+    axes.set(
+        xlabel="distance (m)",
+        ylabel="elevation (m)",
+        title=f"{long_name.capitalize()} at the pick of {chosen.rule}, iteration {chosen.iteration:.3g}",
+    )
+    bar = figure.colorbar(
+        ScalarMappable(scale, FIELD_COLOURS), cax=panel(figure, left + width + 0.18, bottom, 0.14, height)
+    )
+    bar.set_label(f"{long_name} ({unit_text(units)})")
+    bar.outline.set_linewidth(0.5)
+
+    key = [
+        Line2D([], [], **SOURCE, label="source"),
+        Line2D([], [], **RECEIVER, label="receiver"),
+    ] + [
+        Patch(facecolor=PAPER, edgecolor="#8e979d", hatch=HATCHES[flag], label=name, lw=0.4)
+        for flag, name in HATCH_NAMES.items()
+        if (flags == flag).any()
+    ]
+    figure.legend(
+        handles=key,
+        loc="lower center",
+        bbox_to_anchor=(0.5, (FOOT + 0.05) / figure.get_figheight()),
+        ncols=len(key),
+        handletextpad=0.5,
+        columnspacing=1.6,
+    )
+    return figure

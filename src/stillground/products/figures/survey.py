@@ -1,0 +1,92 @@
+"""The survey as a figure, before any reconstruction: who sees what, and what the data say at first sight."""
+
+from __future__ import annotations
+
+import numpy as np
+from matplotlib.cm import ScalarMappable
+from matplotlib.collections import LineCollection
+from matplotlib.colors import LinearSegmentedColormap
+from matplotlib.figure import Figure
+
+from stillground.products.figures.field import colour_scale, draw_field
+from stillground.products.figures.positions import draw_positions
+from stillground.products.figures.sheet import FOOT, HEADING, INK, TEAL, panel, sheet, styled, unit_text
+from stillground.products.raster import Surface, ground
+from stillground.protocols import Array, Field, GroundProperty
+
+# Not the colours of the ground's properties: coverage says how well, not what.
+COVERAGE_COLOURS = LinearSegmentedColormap.from_list("coverage", ["#fffefb", "#bcd3cf", TEAL])
+MOST_RAYS = 2000
+PICTURE = (3.1, 4.3)
+
+
+@styled
+def survey_figure(
+    profile: str,
+    *,
+    sources: Array,
+    receivers: Array,
+    apparent: Array,
+    seen: GroundProperty,
+    nodes: tuple[Array, ...],
+    coverage: Field,
+    surface: Surface | None,
+) -> Figure:
+    """Straight rays over the coverage, and the apparent property against offset and ray angle.
+
+    Parameters
+    ----------
+    profile : str
+    sources, receivers : array, shape (n_data, 2)
+        Distance and elevation of both ends of every ray, m.
+    apparent : array, shape (n_data,)
+        The property that would explain each datum alone, in the units of ``seen``.
+    seen : GroundProperty
+    nodes : tuple of two arrays
+        Distance and elevation of the coverage's nodes, m, ascending.
+    coverage : Field
+    surface : pair of arrays (distance, elevation), m, or None
+    """
+    n_data = apparent.size
+    shown = np.unique(np.linspace(0, n_data - 1, MOST_RAYS).astype(int))
+    drawn = "all drawn" if shown.size == n_data else f"{shown.size} of them drawn"
+    bottom = FOOT + 0.5
+    figure = sheet(
+        7.4,
+        bottom + PICTURE[1] + HEADING + 0.2,
+        f"{profile}: survey",
+        f"{n_data} straight rays, {drawn}, over {coverage.long_name} ({unit_text(coverage.units)})",
+    )
+
+    across, up = (float(axis[-1] - axis[0]) for axis in nodes)
+    inches = min(PICTURE[0] / across, PICTURE[1] / up)
+    width, height = across * inches, up * inches
+    place = (0.65, bottom + PICTURE[1] - height, width, height)
+    axes = panel(figure, *place)
+    scale = colour_scale(coverage.values, np.where(ground(nodes, surface), 0, 1).astype(np.int8))
+    draw_field(
+        axes, nodes, coverage.values, scale, flags=None, surface=surface, pixels=500, colours=COVERAGE_COLOURS
+    )
+    rays = list(np.stack([sources[shown], receivers[shown]], axis=1))
+    axes.add_collection(LineCollection(rays, colors=INK, linewidths=0.3, alpha=0.25), autolim=False)
+    draw_positions(axes, np.unique(sources, axis=0), np.unique(receivers, axis=0))
+    axes.set(xlabel="distance (m)", ylabel="elevation (m)")
+    bar = figure.colorbar(
+        ScalarMappable(scale, COVERAGE_COLOURS), cax=panel(figure, 0.65 + width + 0.1, place[1], 0.12, height)
+    )
+    bar.outline.set_linewidth(0.5)
+
+    span = receivers - sources
+    offset = np.hypot(*span.T)
+    angle = np.degrees(np.arctan2(span[:, 1], np.abs(span[:, 0])))
+    label = f"apparent {seen.long_name} ({unit_text(seen.units)})"
+    height = (PICTURE[1] - 0.75) / 2
+    for row, (values, name) in enumerate(
+        ((offset, "offset (m)"), (angle, "ray angle (degrees above level)"))
+    ):
+        axes = panel(figure, 5.05, bottom + (1 - row) * (height + 0.75), 2.15, height)
+        axes.plot(values, apparent, "o", ms=2.4, color=TEAL, alpha=0.4, mew=0)
+        axes.axhline(np.median(apparent), color=INK, lw=0.8, ls=(0, (5, 3)), label="median")
+        axes.set(xlabel=name, ylabel=label)
+        axes.legend(loc="upper right", borderpad=0.1)
+    return figure

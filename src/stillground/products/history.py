@@ -1,0 +1,137 @@
+"""``<profile>_history.nc``: every iteration's curves, every rule's pick, and the pictures kept."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+
+from stillground.products.cf import COORDINATES
+from stillground.products.netcdf import write_netcdf
+from stillground.products.provenance import Provenance
+from stillground.products.raster import Surface, coordinates, ground, map_variable
+from stillground.protocols import Array, Choice, Field, Result
+
+CURVES = {
+    "residual_norm": "norm of the whitened residual",
+    "chi_square": "mean squared whitened residual",
+    "residual_step": "norm of the change of the whitened residual since the iteration before",
+    "solution_norm": "roughness: norm of the solution in standard form",
+    "step_norm": "norm of the change of the solution in standard form since the iteration before",
+    "gradient_norm": "norm of the normal-equation residual in standard form",
+    "degrees_of_freedom": "degrees of freedom of the fit: estimated trace of the map from data to fit",
+}
+
+
+def history_dataset(
+    name: str, result: Result, *, surface: Surface | None, provenance: Provenance
+) -> xr.Dataset:
+    """The iteration on the finest rung as a dataset.
+
+    Parameters
+    ----------
+    name : str
+        Of the profile.
+    result : Result
+    surface : pair of arrays (distance, elevation), m, or None
+        Pictures are NaN above it.
+    provenance : Provenance
+
+    Returns
+    -------
+    xarray.Dataset
+        Over ``iteration`` the curves that the method has. Over ``rule`` ``picked_iteration`` (NaN
+        where the rule found none), ``firm``, ``reason``, and of the iteration where the rule's
+        picture is taken ``shown_iteration``, ``shown_chi_square``, ``shown_roughness`` and
+        ``shown_distance``. The property as ``<property>_at_pick(rule, elevation, distance)`` and
+        ``<property>_at_iteration(kept_iteration, elevation, distance)``.
+    """
+    history, choices = result.history, result.choices
+    inside = ground(result.axes, surface)
+    rules = np.array([choice.rule for choice in choices], dtype=object)
+    axes = coordinates(result.axes)
+    axes["iteration"] = _coordinate("iteration", np.arange(history.last + 1, dtype=np.int32))
+    axes["rule"] = _coordinate("rule", rules)
+    # As characters, CF's way with labels: checkers take a coordinate of whole strings for numbers.
+    axes["rule"].encoding["dtype"] = "S1"
+
+    variables = {
+        curve: _numbers("iteration", values, long_name)
+        for curve, long_name in CURVES.items()
+        if (values := getattr(history, curve)) is not None
+    }
+    variables |= _picks(choices)
+    seen = result.property
+    pictures = [
+        Field(f"{seen.name}_at_pick", choice.model, seen.units, f"{seen.long_name} at the pick of the rule")
+        for choice in choices
+    ]
+    variables[pictures[0].name] = _stack("rule", pictures, inside)
+    if result.snapshots:
+        kept, models = zip(*result.snapshots, strict=True)
+        axes["kept_iteration"] = _coordinate("kept_iteration", np.array(kept, dtype=np.int32))
+        pictures = [
+            Field(f"{seen.name}_at_iteration", model, seen.units, f"{seen.long_name} at a kept iteration")
+            for model in models
+        ]
+        variables[pictures[0].name] = _stack("kept_iteration", pictures, inside)
+
+    summary = (
+        f"Iteration of profile {name} on the finest rung, and where each stopping rule would stop; "
+        f"{result.chosen.rule} is the one chosen."
+    )
+    return xr.Dataset(variables, axes, provenance.attributes(summary) | {"chosen_rule": result.chosen.rule})
+
+
+def write_history(folder: Path, name: str, dataset: xr.Dataset) -> Path:
+    """Write ``<name>_history.nc`` into ``folder``; `OutputError` when the place cannot be written."""
+    path = folder / f"{name}_history.nc"
+    write_netcdf(dataset, path)
+    return path
+
+
+def _picks(choices: tuple[Choice, ...]) -> dict[str, xr.Variable]:
+    picked = [np.nan if choice.pick.iteration is None else choice.pick.iteration for choice in choices]
+    numbers = {
+        "picked_iteration": (picked, "iteration that the rule picks"),
+        "shown_iteration": ([c.iteration for c in choices], "iteration where the picture is taken"),
+        "shown_chi_square": ([c.chi_square for c in choices], "mean squared whitened residual there"),
+        "shown_roughness": ([c.roughness for c in choices], "norm of the solution there"),
+        "shown_distance": (
+            [c.distance for c in choices],
+            "relative L2 distance from the chosen rule's picture",
+        ),
+    }
+    variables = {
+        name: _numbers("rule", np.array(values), long_name) for name, (values, long_name) in numbers.items()
+    }
+    variables["firm"] = xr.Variable(
+        "rule",
+        np.array([choice.pick.firm for choice in choices], dtype=np.int8),
+        {
+            "standard_name": "status_flag",
+            "long_name": "whether the pick is firm",
+            "flag_values": np.array([0, 1], dtype=np.int8),
+            "flag_meanings": "weak firm",
+        },
+        {"_FillValue": np.int8(127)},
+    )
+    reasons = np.array([choice.pick.reason for choice in choices], dtype=object)
+    variables["reason"] = xr.Variable("rule", reasons, {"long_name": "why the rule picks it"})
+    return variables
+
+
+def _stack(dim: str, pictures: list[Field], inside: NDArray[np.bool_]) -> xr.Variable:
+    layers = [map_variable(picture, inside, {"coverage_content_type": "modelResult"}) for picture in pictures]
+    values = np.stack([layer.to_numpy() for layer in layers])
+    return xr.Variable((dim, *layers[0].dims), values, layers[0].attrs)
+
+
+def _numbers(dim: str, values: Array, long_name: str) -> xr.Variable:
+    return xr.Variable(dim, values.astype(np.float32), {"long_name": long_name, "units": "1"})
+
+
+def _coordinate(name: str, values: NDArray[np.int32] | NDArray[np.object_]) -> xr.Variable:
+    return xr.Variable(name, values, COORDINATES[name])

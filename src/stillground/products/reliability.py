@@ -1,0 +1,41 @@
+"""Which ground can be relied on: crossed well enough, and the same on the rung before."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stillground.protocols import Result
+
+RELIABLE, MESH_DEPENDENT, POORLY_COVERED, NO_DATA = 0, 1, 2, 127
+MEANINGS = ("reliable", "mesh_dependent", "poorly_covered")
+SHARE_OF_MEDIAN = 0.05
+
+
+def reliability(result: Result, tolerance: float, inside: NDArray[np.bool_]) -> NDArray[np.int8]:
+    """Flags of all nodes, as a nodal field.
+
+    Parameters
+    ----------
+    result : Result
+        With a single rung ``mesh_change`` is NaN, and no node is called mesh-dependent.
+    tolerance : float
+        Largest change since the rung before, relative to the anomaly.
+    inside : array of bool, nodal field
+        Which nodes lie in the ground.
+
+    Returns
+    -------
+    array of int8, nodal field
+        `POORLY_COVERED` where the coverage is under 5 % of the median of its positive values in the
+        ground; else `MESH_DEPENDENT` where ``mesh_change`` exceeds the tolerance; else `RELIABLE`;
+        `NO_DATA` outside the ground.
+    """
+    coverage = result.coverage.values
+    positive = coverage[inside & (coverage > 0)]
+    least = SHARE_OF_MEDIAN * np.median(positive) if positive.size else np.inf
+    flags = np.full(coverage.shape, RELIABLE, dtype=np.int8)
+    flags[result.mesh_change > tolerance * result.anomaly] = MESH_DEPENDENT
+    flags[~(coverage >= least)] = POORLY_COVERED
+    flags[~inside] = NO_DATA
+    return flags

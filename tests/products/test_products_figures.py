@@ -1,0 +1,325 @@
+"""Laws of the figures: true colours in true places, nothing cut off, the same bytes each time."""
+
+from __future__ import annotations
+
+import shutil
+import subprocess
+from collections.abc import Callable
+from dataclasses import replace
+from itertools import pairwise
+from pathlib import Path
+from typing import Any
+
+import matplotlib as mpl
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from matplotlib import colormaps
+from matplotlib.figure import Figure
+from matplotlib.font_manager import FontProperties
+from matplotlib.image import imread
+from matplotlib.textpath import text_to_path
+
+from stillground.errors import OutputError
+from stillground.products import figures
+from stillground.products.figures import write_figures
+from stillground.products.figures.badges import BADGES, badge_of, shelves
+from stillground.products.figures.ladder import ladder_figure
+from stillground.products.figures.residuals import residuals_figure
+from stillground.products.figures.rules import rules_figure
+from stillground.products.figures.section import section_figure
+from stillground.products.figures.sheet import VERDICTS, fitted, write_figure
+from stillground.products.figures.survey import survey_figure
+from stillground.protocols import Result
+
+from .made_up_results import positions
+
+SOURCES, RECEIVERS = positions()
+PAPER = np.array([0xF6, 0xF4, 0xEE]) / 255
+
+
+@pytest.fixture
+def section(result: Result, surface: Any) -> Callable[..., Figure]:
+    def draw(name: str = "crosshole-ab", shown: Result = result, **changed: Any) -> Figure:
+        arguments: dict[str, Any] = {
+            "tolerance": 0.02,
+            "surface": surface,
+            "sources": SOURCES,
+            "receivers": RECEIVERS,
+        }
+        return section_figure(name, shown, **(arguments | changed))
+
+    return draw
+
+
+def colour_at(figure: Figure, distance: float, elevation: float) -> np.ndarray:
+    """Colour of the picture's own image at a place, before anything is drawn over it."""
+    image = figure.axes[0].images[0]
+    pixels = np.asarray(image.get_array())
+    left, right, bottom, top = image.get_extent()
+    row = int((elevation - bottom) / (top - bottom) * pixels.shape[0])
+    column = int((distance - left) / (right - left) * pixels.shape[1])
+    return pixels[row, column] / 255
+
+
+def test_the_colour_at_a_place_is_the_values_there(section: Callable[..., Figure], result: Result) -> None:
+    figure = section()
+    bar = figure.axes[1]
+    scale = mpl.colors.Normalize(*bar.get_ylim())
+    for distance, elevation in ((5.5, 53.0), (12.5, 44.5), (3.0, 40.0), (15.0, 58.0)):
+        i = int(np.argmin(np.abs(result.axes[0] - distance)))
+        j = int(np.argmin(np.abs(result.axes[1] - elevation)))
+        expected = colormaps["cividis"](scale(1 / result.model[i, j]))[:3]
+        np.testing.assert_allclose(colour_at(figure, distance, elevation), expected, atol=0.02)
+
+
+def test_unreliable_ground_is_blended_to_opaque_colour(
+    section: Callable[..., Figure], result: Result
+) -> None:
+    # An alpha array would get lost in PDF: the image must have three channels.
+    figure = section(tolerance=np.inf)
+    assert np.asarray(figure.axes[0].images[0].get_array()).shape[2] == 3
+    covered = replace(result, coverage=replace(result.coverage, values=np.ones_like(result.model)))
+    clear = section(shown=covered, tolerance=np.inf)
+    scales = [axes.get_ylim() for axes in (figure.axes[1], clear.axes[1])]
+    clear_scale, faded_scale = (mpl.colors.Normalize(*limits) for limits in reversed(scales))
+    value = 1 / result.model[0, 8]
+    place = result.axes[0][0] + 0.02, result.axes[1][8]
+    np.testing.assert_allclose(
+        colour_at(clear, *place), colormaps["cividis"](clear_scale(value))[:3], atol=0.02
+    )
+    full = np.array(colormaps["cividis"](faded_scale(value))[:3])
+    np.testing.assert_allclose(colour_at(figure, *place), 0.32 * full + 0.68 * PAPER, atol=0.02)
+
+
+def test_hatching_is_where_the_flags_are_and_the_key_tells_it(
+    section: Callable[..., Figure], result: Result
+) -> None:
+    def key(figure: Figure) -> list[str]:
+        return [text.get_text() for text in figure.legends[0].get_texts()]
+
+    everywhere = replace(result, coverage=replace(result.coverage, values=np.ones_like(result.model)))
+    assert key(section(shown=everywhere)) == ["source", "receiver"]
+    assert key(section()) == ["source", "receiver", "poorly covered"]
+    assert key(section(tolerance=0.01)) == ["source", "receiver", "poorly covered", "depends on the grid"]
+
+
+def test_scales_are_equal_both_ways(section: Callable[..., Figure]) -> None:
+    axes = section().axes[0]
+    assert axes.get_aspect() == 1
+    corners = axes.transData.transform([(0, 40), (10, 50)])
+    across, up = corners[1] - corners[0]
+    assert across == pytest.approx(up, rel=1e-6)
+
+
+def test_the_pdf_shows_the_fade_and_nothing_above_the_surface(
+    section: Callable[..., Figure], result: Result, tmp_path: Path
+) -> None:
+    if shutil.which("pdftoppm") is None:
+        pytest.skip("pdftoppm is not installed (Debian package poppler-utils)")
+    figure = section()
+    _, pdf = write_figure(tmp_path, "picture", figure)
+    subprocess.run(["pdftoppm", "-r", "150", "-png", "-singlefile", pdf, pdf.with_suffix("")], check=True)
+    page = imread(pdf.with_suffix(".png"))
+
+    def around(distance: float, elevation: float) -> np.ndarray:
+        """Middle colour of a patch, so that thin hatch lines do not count."""
+        at = figure.axes[0].transData.transform((distance, elevation)) / figure.dpi * 150
+        row, column = page.shape[0] - round(at[1]), round(at[0])
+        return np.median(page[row - 12 : row + 12, column - 5 : column + 5, :3], axis=(0, 1))
+
+    # Above the surface: the sheet. On the left margin: faded. Between the boreholes: full colour.
+    np.testing.assert_allclose(around(0, 63.5), [1, 254 / 255, 251 / 255], atol=0.01)
+    scale = mpl.colors.Normalize(*figure.axes[1].get_ylim())
+    for distance, elevation, strength in ((-1.5, 44.0, 0.32), (9.0, 58.0, 1.0)):
+        value = 1 / result.model[round(4 * (distance + 2)), round(4 * (elevation - 34))]
+        full = np.array(colormaps["cividis"](scale(value))[:3])
+        expected = strength * full + (1 - strength) * PAPER
+        np.testing.assert_allclose(around(distance, elevation), expected, atol=0.03)
+
+
+@pytest.mark.parametrize(
+    "name",
+    [
+        "crosshole between boreholes A and B after the second grouting of the upstream cut-off wall",
+        "W" * 200,
+    ],
+    ids=["words", "one word"],
+)
+def test_long_titles_do_not_overflow(
+    name: str, section: Callable[..., Figure], result: Result, surface: Any
+) -> None:
+    ladder = replace(result.ladder, verdict=replace(result.ladder.verdict, reason=f"{name} {name} {name}"))
+    wordy = replace(
+        result, ladder=ladder, chosen=replace(result.chosen, pick=replace(result.chosen.pick, reason=name))
+    )
+    for figure in (
+        section(name, wordy),
+        rules_figure(name, wordy, tau=1.0),
+        ladder_figure(name, wordy, tolerance=0.02, surface=surface),
+        residuals_figure(name, wordy),
+    ):
+        whole = figure.bbox
+        for text in figure.texts:
+            box = text.get_window_extent()
+            assert whole.x0 < box.x0
+            assert box.x1 < whole.x1, text.get_text()
+            assert whole.y0 < box.y0
+            assert box.y1 < whole.y1
+
+
+@given(
+    text=st.text(st.sampled_from("abcW ,-"), max_size=120),
+    room=st.integers(40, 400),
+    n_lines=st.integers(1, 3),
+)
+def test_fitted_text_fits_and_loses_nothing_without_saying(text: str, room: int, n_lines: int) -> None:
+    font = FontProperties(family="DejaVu Sans", size=8)
+    lines = fitted(text, 8, "normal", room, n_lines).split("\n")
+    assert len(lines) <= n_lines
+    for line in lines:
+        assert text_to_path.get_text_width_height_descent(line, font, ismath=False)[0] <= room
+    if not lines[-1].endswith("…"):
+        assert "".join(lines).replace(" ", "") == text.replace(" ", "")
+
+
+def test_a_dollar_sign_is_no_formula(section: Callable[..., Figure]) -> None:
+    figure = section("pump $5 at $x_1")
+    assert not any(text.get_parse_math() for text in figure.texts)
+
+
+def test_gcv_is_drawn_by_its_formula(result: Result) -> None:
+    # Golub, Heath and Wahba (1979): mean squared residual over the squared share of free data.
+    figure = rules_figure("crosshole-ab", result, tau=1.2)
+    by_label = {axes.get_ylabel(): axes for axes in figure.axes}
+    history = result.history
+    assert history.degrees_of_freedom is not None
+    expected = 625 * history.residual_norm**2 / (625 - history.degrees_of_freedom) ** 2
+    np.testing.assert_allclose(by_label["GCV"].lines[0].get_ydata(), expected)
+    targets = [
+        line for line in by_label["mean squared residual"].lines if list(line.get_ydata()) == [1.44, 1.44]
+    ]
+    assert len(targets) == 1
+
+
+def test_without_degrees_of_freedom_gcv_is_left_out(make: Callable[..., Result]) -> None:
+    figure = rules_figure("crosshole-ab", make(probed=False, spacing=1.0), tau=1.0)
+    assert "GCV" not in [axes.get_ylabel() for axes in figure.axes]
+
+
+def test_every_rule_has_its_own_letter_and_shape() -> None:
+    assert len({badge.letter for badge in BADGES.values()}) == len(BADGES) == 8
+    assert len({badge.marker for badge in BADGES.values()}) == 8
+    assert badge_of("noise-meter").letter == "N"
+    assert len({marker for marker, _, _ in VERDICTS.values()}) == 3
+
+
+@given(st.lists(st.floats(0, 50), max_size=12), st.floats(0.1, 5))
+def test_badges_on_one_shelf_never_overlap(at: list[float], width: float) -> None:
+    numbers = shelves(at, width)
+    for shelf in set(numbers):
+        along = sorted(x for x, number in zip(at, numbers, strict=True) if number == shelf)
+        assert all(b - a >= width * (1 - 1e-9) for a, b in pairwise(along))
+
+
+def test_the_order_line_goes_through_the_last_change_with_the_orders_slope(
+    result: Result, surface: Any
+) -> None:
+    axes = ladder_figure("crosshole-ab", result, tolerance=0.02, surface=surface).axes[0]
+    (dashed,) = (line for line in axes.lines if np.ptp(line.get_ydata()) > 0 and len(line.get_ydata()) == 2)
+    spacing, change = np.log(dashed.get_xdata()), np.log(dashed.get_ydata())
+    assert np.diff(change)[0] / np.diff(spacing)[0] == pytest.approx(2.0)
+    assert np.interp(np.log(0.25), spacing, change) == pytest.approx(np.log(result.ladder.change[-1]))
+
+
+@pytest.mark.parametrize(("word", "levels"), [("undecided", 1), ("undecided", 2), ("drifting", 6)])
+def test_any_number_of_rungs_is_drawn(
+    make: Callable[..., Result], surface: Any, word: str, levels: int
+) -> None:
+    figure = ladder_figure("crosshole-ab", make(word=word, levels=levels), tolerance=0.01, surface=surface)
+    assert len(figure.axes) == 1 + levels
+    for axes in figure.axes:
+        assert 0 <= axes.get_position().x0 < axes.get_position().x1 <= 1
+
+
+def test_repeated_measurements_are_averaged_and_gaps_stay_blank(result: Result) -> None:
+    few = replace(
+        result,
+        observed=np.array([1.0, 3.0, 5.0]),
+        predicted=np.zeros(3),
+        errors=np.ones(3),
+        groupings={"source": np.array([0, 0, 1]), "receiver": np.array([0, 0, 1])},
+    )
+    matrix = np.ma.filled(residuals_figure("few", few).axes[0].images[0].get_array(), np.nan)
+    np.testing.assert_array_equal(matrix, [[2, np.nan], [np.nan, 5]])
+
+
+@pytest.mark.parametrize("n_groupings", [0, 1])
+def test_data_without_two_groupings_are_drawn_in_their_order(result: Result, n_groupings: int) -> None:
+    groupings = dict(list(result.groupings.items())[:n_groupings])
+    figure = residuals_figure("line", replace(result, groupings=groupings))
+    assert figure.axes[0].get_xlabel() == "datum, in the table's order"
+    assert len(figure.axes) == 2 + n_groupings
+
+
+def test_the_survey_is_drawn_with_offset_and_angle(result: Result, surface: Any, tmp_path: Path) -> None:
+    i, j = result.groupings["source"], result.groupings["receiver"]
+    length = np.hypot(*(RECEIVERS[j] - SOURCES[i]).T)
+    figure = survey_figure(
+        "crosshole-ab",
+        sources=SOURCES[i],
+        receivers=RECEIVERS[j],
+        apparent=result.observed / length,
+        seen=result.property,
+        nodes=result.axes,
+        coverage=result.coverage,
+        surface=surface,
+    )
+    offset, angle = (axes.lines[0].get_xdata() for axes in figure.axes[2:])
+    np.testing.assert_allclose(offset, length)
+    # Source and receiver 24 m apart in height, 18 m across: 53.13 degrees, by the 3-4-5 triangle.
+    assert max(angle) == pytest.approx(53.1301, abs=1e-4)
+    assert write_figure(tmp_path, "survey", figure)[0].stat().st_size > 10_000
+
+
+def test_figures_come_out_the_same_whatever_the_users_settings(
+    result: Result, surface: Any, tmp_path: Path
+) -> None:
+    written = []
+    for folder, settings in (
+        ("a", {}),
+        ("b", {"font.size": 20, "axes.labelweight": "bold", "savefig.dpi": 30}),
+    ):
+        with mpl.rc_context(settings):
+            paths = write_figures(
+                tmp_path / folder,
+                "crosshole-ab",
+                result,
+                tolerance=0.02,
+                tau=1.0,
+                surface=surface,
+                sources=SOURCES,
+                receivers=RECEIVERS,
+            )
+        written.append({path.name: path.read_bytes() for path in paths})
+    kinds = ("section", "rules", "ladder", "residuals")
+    assert set(written[0]) == {f"crosshole-ab_{kind}.{ending}" for kind in kinds for ending in ("png", "pdf")}
+    for name, first in written[0].items():
+        assert written[1][name] == first, name
+
+
+def test_figures_that_cannot_be_written_are_named(section: Callable[..., Figure], tmp_path: Path) -> None:
+    (tmp_path / "figures").write_text("")
+    with pytest.raises(OutputError, match=r"picture\.png cannot be written"):
+        write_figure(tmp_path / "figures", "picture", section())
+
+
+def test_a_script_that_the_font_lacks_is_no_fault(section: Callable[..., Figure], tmp_path: Path) -> None:
+    write_figure(tmp_path, "picture", section("堰"))
+
+
+def test_figures_do_without_the_stateful_interface() -> None:
+    # It costs import time and keeps every figure alive.
+    sources = Path(figures.__file__).parent.glob("*.py")
+    assert not [path.name for path in sources if "pyplot" in path.read_text(encoding="utf-8")]

@@ -1,0 +1,57 @@
+"""Identical inputs give identical bytes (common practice, no source)."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pytest
+from pyproj import CRS
+
+from stillground.products.fit import fit_table, write_fit
+from stillground.products.history import history_dataset, write_history
+from stillground.products.ladder import ladder_dataset, write_ladder
+from stillground.products.provenance import Provenance, timestamp
+from stillground.products.section import section_dataset, write_section
+from stillground.products.summary import profile_summary, run_summary, write_summary
+from stillground.protocols import Result
+
+
+def test_files_written_twice_are_the_same(
+    result: Result,
+    surface: Any,
+    crs: CRS,
+    provenance: Provenance,
+    tmp_path: Path,
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    monkeypatch.setenv("SOURCE_DATE_EPOCH", "1000000000")
+    written = []
+    for folder in (tmp_path / "a", tmp_path / "b"):
+        origin = replace(provenance, created=timestamp())
+        common: dict[str, Any] = {"surface": surface, "provenance": origin}
+        section = section_dataset(
+            "ab", result, easting=result.axes[0], northing=result.axes[0], crs=crs, tolerance=0.02, **common
+        )
+        fit = fit_table(result, rows=np.arange(625), datum="time", unit="s", si_factor=1)
+        paths = (
+            write_section(folder, "ab", section),
+            write_history(folder, "ab", history_dataset("ab", result, **common)),
+            write_ladder(folder, "ab", ladder_dataset("ab", result, tolerance=0.02, **common)),
+            write_fit(folder, "ab", fit),
+            write_summary(folder, run_summary("t", "0", None, [profile_summary("ab", result, {})])),
+        )
+        written.append({path.name: path.read_bytes() for path in paths})
+        assert {path.name for path in folder.iterdir()} == set(written[-1])
+    assert set(written[0]) == {
+        "ab_section.nc",
+        "ab_history.nc",
+        "ab_ladder.nc",
+        "ab_fit.csv",
+        "summary.json",
+    }
+    assert b"2001-09-09T01:46:40Z" in written[0]["ab_section.nc"]
+    for name, first in written[0].items():
+        assert written[1][name] == first, name

@@ -1,0 +1,123 @@
+"""The table of the fit and the summary, in the words and units that users rely on."""
+
+from __future__ import annotations
+
+import json
+import math
+from collections.abc import Callable
+from dataclasses import replace
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+import pytest
+
+from stillground.errors import OutputError
+from stillground.products.fit import fit_table, write_fit
+from stillground.products.summary import profile_summary, run_summary, write_summary
+from stillground.protocols import Result
+
+
+@pytest.fixture
+def summary(result: Result) -> dict[str, Any]:
+    return profile_summary("crosshole-ab", result, {"section": "crosshole-ab_section.nc"})
+
+
+def test_the_fit_is_in_the_tables_unit(result: Result, tmp_path: Path) -> None:
+    made = fit_table(result, rows=np.arange(2, 627), datum="time", unit="ms", si_factor=1e-3)
+    path = write_fit(tmp_path, "crosshole-ab", made)
+    assert path.name == "crosshole-ab_fit.csv"
+    assert path.read_bytes().startswith(
+        b"row,observed_time [ms],predicted_time [ms],residual_over_error,weight\n2,"
+    )
+    read = pd.read_csv(path)
+    np.testing.assert_allclose(read["observed_time [ms]"], 1e3 * result.observed, rtol=1e-8)
+    np.testing.assert_allclose(read["predicted_time [ms]"], 1e3 * result.predicted, rtol=1e-8)
+    # Errors are 0.1 ms throughout.
+    difference = read["observed_time [ms]"] - read["predicted_time [ms]"]
+    np.testing.assert_allclose(read["residual_over_error"], difference / 0.1, atol=1e-5)
+    assert (read["weight"] == 1).all()
+    assert read["row"].tolist() == list(range(2, 627))
+
+
+def test_a_fit_that_cannot_be_written_is_named(result: Result, tmp_path: Path) -> None:
+    (tmp_path / "results").write_text("")
+    made = fit_table(result, rows=np.arange(625), datum="time", unit="s", si_factor=1)
+    with pytest.raises(OutputError, match=r"crosshole-ab_fit\.csv"):
+        write_fit(tmp_path / "results", "crosshole-ab", made)
+
+
+def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result, tmp_path: Path) -> None:
+    # The contract with outside programs: every key, and no other.
+    made = run_summary("Osmere Weir", "0.1.0", 3.2, [summary])
+    read = json.loads(write_summary(tmp_path, made).read_text(encoding="utf-8"))
+    assert list(read) == ["schema", "title", "version", "verdict", "seconds", "profiles"]
+    assert (read["schema"], read["verdict"], read["seconds"]) == (1, "settled", 3.2)
+    profile = read["profiles"][0]
+    assert list(profile) == ["name", "data", "nodes", "chosen", "rules", "refinement", "files"]
+    assert (profile["data"], profile["nodes"]) == (625, 89 * 121)
+    assert list(profile["chosen"]) == ["rule", "iteration", "chi_square"]
+    assert profile["chosen"]["iteration"] == 9
+    assert list(profile["rules"][0]) == [
+        "rule",
+        "iteration",
+        "chi_square",
+        "firm",
+        "roughness",
+        "distance",
+        "reason",
+    ]
+    assert [rule["rule"] for rule in profile["rules"]] == [choice.rule for choice in result.choices]
+    assert profile["rules"][0]["iteration"] == 13.4
+    refinement = profile["refinement"]
+    assert list(refinement) == ["verdict", "reason", "order", "change", "remaining", "pick_drift", "levels"]
+    assert refinement["levels"][0] == {"spacing": 2.0, "nodes": 192, "iteration": 9}
+    assert profile["files"] == {"section": "crosshole-ab_section.nc"}
+
+
+def test_what_is_no_number_is_null(make: Callable[..., Result], tmp_path: Path) -> None:
+    alone = make(word="undecided", levels=1, spacing=1.0)
+    broken = tuple(replace(choice, roughness=math.nan, chi_square=math.inf) for choice in alone.choices)
+    made = run_summary(
+        "t", "0", None, [profile_summary("a", replace(alone, choices=broken), {"section": "a_section.nc"})]
+    )
+
+    def refuse(token: str) -> float:
+        pytest.fail(f"{token} is no JSON")
+
+    text = write_summary(tmp_path, made).read_text(encoding="utf-8")
+    read = json.loads(text, parse_constant=refuse)
+    assert read["seconds"] is None
+    refinement = read["profiles"][0]["refinement"]
+    assert [refinement[name] for name in ("order", "remaining", "pick_drift")] == [None] * 3
+    last = read["profiles"][0]["rules"][-1]
+    assert (last["rule"], last["iteration"], last["roughness"], last["chi_square"]) == (
+        "hanke-raus",
+        None,
+        None,
+        None,
+    )
+
+
+def test_numbers_have_six_significant_digits(summary: dict[str, Any], tmp_path: Path) -> None:
+    made = run_summary("t", "0", 1234.56789, [summary | {"tiny": 1.23456789e-12, "list": [2 / 3]}])
+    read = json.loads(write_summary(tmp_path, made).read_text(encoding="utf-8"))
+    assert read["seconds"] == 1234.57
+    assert read["profiles"][0]["tiny"] == 1.23457e-12
+    assert read["profiles"][0]["list"] == [0.666667]
+
+
+@pytest.mark.parametrize(
+    ("words", "worst"),
+    [
+        (["settled", "settled"], "settled"),
+        (["settled", "undecided"], "undecided"),
+        (["undecided", "drifting", "settled"], "drifting"),
+    ],
+)
+def test_the_runs_verdict_is_the_worst_profiles(
+    summary: dict[str, Any], words: list[str], worst: str
+) -> None:
+    profiles = [summary | {"refinement": summary["refinement"] | {"verdict": word}} for word in words]
+    assert run_summary("t", "0", None, profiles)["verdict"] == worst
