@@ -94,7 +94,9 @@ Command = Callable[..., "subprocess.CompletedProcess[str]"]
 def stillground() -> Command:
     """Runs the command line in a process of its own, as a user does."""
 
-    def run(*arguments: object, cwd: Path | None = None, **environment: str) -> subprocess.CompletedProcess[str]:
+    def run(
+        *arguments: object, cwd: Path | None = None, **environment: str
+    ) -> subprocess.CompletedProcess[str]:
         return subprocess.run(
             [sys.executable, "-m", "stillground", *map(str, arguments)],
             cwd=cwd,

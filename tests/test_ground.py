@@ -13,7 +13,7 @@ from numpy.testing import assert_allclose
 from scipy.integrate import quad
 
 from stillground.errors import ConfigError
-from stillground.ground import Blob, Body, Box, Centred, Disc, Gradient, Ground, Layer
+from stillground.ground import Blob, Body, Box, Centred, Disc, Ground, Layer
 
 INF = math.inf
 ZOO: dict[str, tuple[Body, int]] = {
@@ -32,7 +32,6 @@ ZOO: dict[str, tuple[Body, int]] = {
     "half-space": (Layer(0.4, -INF, -1.6), 3),
     "dipping layer": (Layer(-0.4, -3.7, -1.6, dip=0.37), 2),
     "dipping layer 3-D": (Layer(-0.4, -3.7, -1.6, dip=-0.37), 3),
-    "gradient": (Gradient(0.05, datum=-2.3), 2),
 }
 zoo = pytest.mark.parametrize(("body", "d"), ZOO.values(), ids=ZOO.keys())
 laws = settings(derandomize=True, deadline=None, max_examples=60)
@@ -143,7 +142,6 @@ def test_values_by_hand() -> None:
     assert_allclose(Box(2.0, (1.0, -2.0), (3.5, 0.0)).values(at), [2, 2, 0, 0])
     assert_allclose(Layer(2.0, -2.5, -1.0).values(at), [2, 0, 2, 0])
     assert_allclose(Layer(2.0, -7.1, -4.9, dip=1.0).values(at), [0, 0, 2, 2])
-    assert_allclose(Gradient(2.0, datum=-1.5).values(at), [-1, 1, -1, -3])
 
 
 @zoo
@@ -248,8 +246,6 @@ def test_a_ground_adds_its_background_and_bodies() -> None:
         (lambda: Box(1.0, (0.0,), (1.0, 2.0)), "box needs lower and upper of equal length"),
         (lambda: Layer(1.0, -1.0, -2.0), "layer needs bottom below top; got -1.0 and -2.0"),
         (lambda: Layer(1.0, -2.0, -1.0, dip=INF), "layer needs a finite dip"),
-        (lambda: Gradient(1.0, math.nan), "gradient needs a finite datum"),
-        (lambda: Gradient(INF, 0.0), "gradient needs a finite excess"),
         (lambda: Ground(math.nan), "ground needs a finite background"),
     ],
 )

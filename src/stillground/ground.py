@@ -222,31 +222,6 @@ class Layer(Body):
 
 
 @dataclass(frozen=True)
-class Gradient(Body):
-    """A change linear in elevation everywhere: excess (z - datum); its mean is that of the ends.
-
-    Parameters
-    ----------
-    excess : float
-        Per metre upwards: in the property's unit over m.
-    datum : float, m
-        Elevation where the background stays as it is.
-    """
-
-    datum: float
-
-    def __post_init__(self) -> None:
-        super().__post_init__()
-        _require(math.isfinite(self.datum), self, "a finite datum", self.datum)
-
-    def shape(self, points: Array) -> Array:
-        return points[:, -1] - self.datum
-
-    def mean_shape(self, starts: Array, ends: Array) -> Array:
-        return 0.5 * (self.shape(starts) + self.shape(ends))
-
-
-@dataclass(frozen=True)
 class Ground:
     """A background value and the bodies in it, added.
 

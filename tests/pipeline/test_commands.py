@@ -18,7 +18,8 @@ import xarray as xr
 import stillground as package
 from stillground.config import load
 from stillground.errors import CapacityError, ConfigError, SurveyError
-from stillground.pipeline.grids import memory, plan_grids
+from stillground.pipeline.capacity import memory
+from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.profiles import read_profiles
 from stillground.survey import write_table
 
@@ -82,10 +83,8 @@ def test_usage_errors_are_exit_2(stillground: Command) -> None:
 
 
 def test_strict_tells_a_verdict_that_is_not_settled(stillground: Command, small: Path) -> None:
-    done = stillground(
-        "run", "small.toml", "--strict", "--set", "ground.smoothness=0", "--set", "output.products=['section']",
-        cwd=small,
-    )  # fmt: skip
+    white = ("--set", "ground.smoothness=0", "--set", "output.products=[]")
+    done = stillground("run", "small.toml", "--strict", *white, cwd=small)
     assert done.returncode == 3
     assert "no limit as the grid is refined" in done.stdout, "the white prior is warned of"
     summary = json.loads((small / "results" / "small" / "summary.json").read_text())
@@ -236,7 +235,8 @@ def test_predicted_memory_covers_what_a_climb_takes(small: Path) -> None:
     code = (
         "import resource, stillground\n"
         "from stillground.config import load\n"
-        "from stillground.pipeline.grids import memory, plan_grids\n"
+        "from stillground.pipeline.capacity import memory\n"
+        "from stillground.pipeline.grids import plan_grids\n"
         "from stillground.pipeline.profiles import read_profiles\n"
         "from stillground.pipeline.answer import answer\n"
         "from stillground.pipeline.run import finish\n"
@@ -248,10 +248,8 @@ def test_predicted_memory_covers_what_a_climb_takes(small: Path) -> None:
         "before = peak(); finish(answer(profile, config)); grids = plan_grids(profile, config)\n"
         "print(memory(grids, profile.survey.sizes['datum'], 10) / (peak() - before))\n"
     )
-    done = subprocess.run(
-        [sys.executable, "-c", code], cwd=small, capture_output=True, text=True, check=True
-    )
-    assert 0.8 < float(done.stdout) < 3, "predicted over taken"
+    done = subprocess.run([sys.executable, "-c", code], cwd=small, capture_output=True, text=True, check=True)
+    assert 0.9 < float(done.stdout) < 1.6, "predicted over taken"
 
 
 def test_predicted_memory_grows_with_the_grid(small: Path) -> None:

@@ -83,8 +83,9 @@ def test_induction_tables_are_in_millisiemens(tmp_path: Path) -> None:
 
 def test_a_place_that_cannot_be_written_is_told(tmp_path: Path) -> None:
     ds = survey({"time": [1e-3]})
-    with pytest.raises(OutputError, match=r"none/picks.csv: cannot be written: No such file"):
-        write_table(tmp_path / "none" / "picks.csv", ds)
+    (tmp_path / "file").touch()
+    with pytest.raises(OutputError, match=r"file/picks.csv cannot be written"):
+        write_table(tmp_path / "file" / "picks.csv", ds)
 
 
 def test_a_failure_leaves_the_old_file_and_no_other(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:

@@ -134,12 +134,8 @@ PairOrOne = Annotated[Pair, BeforeValidator(_both_ways, json_schema_input_type=s
 
 
 class GroundSettings(Table):
-    spacing: PairOrOne = Field(
-        description="distance of nodes on the finest rung"
-    )
-    correlation: PairOrOne = Field(
-        description="lengths over which the ground is alike"
-    )
+    spacing: PairOrOne = Field(description="distance of nodes on the finest rung")
+    correlation: PairOrOne = Field(description="lengths over which the ground is alike")
     smoothness: float = Field(2.0, ge=0, le=8, description="exponent s of the prior; 0 is white")
     margin: Length | None = Field(
         None, description="ground kept around the positions; default: half the correlation length"

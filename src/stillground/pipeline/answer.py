@@ -8,14 +8,12 @@ import numpy as np
 
 from stillground import plugins
 from stillground.config import Config
+from stillground.pipeline.capacity import SNAPSHOT_VALUES
 from stillground.pipeline.grids import correlation, plan_grids
 from stillground.pipeline.profiles import Profile
 from stillground.protocols import Array, Choice, Progress, Result, RuleOptions
 from stillground.reconstruct import Method
 from stillground.refinement import Climb, climb
-
-# Values in all snapshots of a history file; more are thinned.
-_SNAPSHOT_VALUES = 16_000_000
 
 
 def answer(profile: Profile, config: Config) -> Generator[Progress, None, Result]:
@@ -92,6 +90,6 @@ def _choice(top: Climb, rule: str) -> Choice:
 
 def _snapshots(top: Climb) -> Iterator[tuple[int, Array]]:
     kept = len(top.finest.run.solutions)
-    stride = int(np.ceil(kept * top.finest.grid.n_nodes / _SNAPSHOT_VALUES))
+    stride = int(np.ceil(kept * top.finest.grid.n_nodes / SNAPSHOT_VALUES))
     for iteration in range(0, kept, max(stride, 1)):
         yield iteration, top.finest.model(iteration)

@@ -1,18 +1,17 @@
-"""Where the ground is modelled, on which grids, and what memory that will take."""
+"""Where the ground is modelled, and on which grids."""
 
 from __future__ import annotations
 
 import math
 
 import numpy as np
-import psutil
 
 from stillground import plugins
 from stillground.config import Config
-from stillground.errors import CapacityError, ConfigError, GridError
+from stillground.errors import ConfigError, GridError
 from stillground.grid import Grid, ladder
+from stillground.pipeline.capacity import refuse_too_large
 from stillground.pipeline.profiles import Profile
-from stillground.solve.run import KEPT_BYTES, n_probes
 
 
 def correlation(config: Config) -> tuple[float, ...]:
@@ -57,39 +56,10 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
         grids = ladder(lower, upper, spacing, config.refinement.levels)
     except GridError as error:
         raise ConfigError(f"profile {profile.name}: {error}") from error
-    _refuse_too_large(grids, profile, config)
+    refuse_too_large(profile.name, grids, profile.survey.sizes["datum"], config.solver.iterations)
     return grids
-
-
-def memory(grids: tuple[Grid, ...], n_data: int, iterations: int) -> int:
-    """Predicted peak of a climb, bytes: kept iterates of all rungs and work arrays of the finest."""
-    columns = 1 + n_probes(n_data)
-    kept = sum(min(KEPT_BYTES, 8 * grid.n_nodes * (iterations + 1)) for grid in grids)
-    work = 8 * grids[-1].n_nodes * columns * 24
-    data_side = 8 * n_data * iterations * (2 * columns + 1)
-    products = 8 * grids[-1].n_nodes * 40
-    return kept + work + data_side + products
-
-
-def _refuse_too_large(grids: tuple[Grid, ...], profile: Profile, config: Config) -> None:
-    need = memory(grids, profile.survey.sizes["datum"], config.solver.iterations)
-    free = psutil.virtual_memory().available
-    if need > free:
-        shape = " by ".join(str(n) for n in grids[-1].shape)
-        factor = (need / free) ** (1 / len(grids[-1].shape))
-        spacing = _round_up(max(grids[-1].spacing) * factor * 1.05)
-        raise CapacityError(
-            f"profile {profile.name}: the finest rung of {shape} nodes needs about {need / 2**30:.3g} GiB, "
-            f"this machine has {free / 2**30:.3g} GiB free; take ground.spacing of {spacing} m or more, "
-            f"or a smaller margin or depth"
-        )
 
 
 def _round_down(value: float) -> str:
     step = 10.0 ** (math.floor(math.log10(value)) - 1)
     return f"{math.floor(value / step) * step:g}"
-
-
-def _round_up(value: float) -> str:
-    step = 10.0 ** (math.floor(math.log10(value)) - 1)
-    return f"{math.ceil(value / step) * step:g}"

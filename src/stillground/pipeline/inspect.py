@@ -13,7 +13,8 @@ from stillground.config import Config
 from stillground.grid import Grid
 from stillground.operators.prior_root import PriorRoot
 from stillground.pipeline.advice import advise
-from stillground.pipeline.grids import correlation, memory, plan_grids
+from stillground.pipeline.capacity import memory
+from stillground.pipeline.grids import correlation, plan_grids
 from stillground.pipeline.profiles import Profile, read_profiles
 from stillground.products.figures.sheet import write_figure
 from stillground.products.figures.survey import survey_figure

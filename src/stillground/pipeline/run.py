@@ -28,6 +28,7 @@ from stillground.products.provenance import Provenance
 from stillground.products.section import write_section
 from stillground.products.summary import run_summary, write_summary
 from stillground.protocols import Progress
+from stillground.whole import require_writable
 
 T = TypeVar("T")
 
@@ -89,6 +90,7 @@ def run(
     profiles = read_profiles(config)
     for profile in profiles:
         plan_grids(profile, config)
+    require_writable(folder)
     yield Progress("reading the survey", 1, 1)
 
     mark = _fingerprint(origin)

@@ -8,8 +8,8 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from stillground.products.whole import whole
 from stillground.protocols import Result
+from stillground.whole import whole
 
 
 def fit_table(

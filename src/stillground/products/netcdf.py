@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 import xarray as xr
 
-from stillground.products.whole import whole
+from stillground.whole import whole
 
 
 def write_netcdf(dataset: xr.Dataset, path: Path) -> None:

@@ -9,8 +9,8 @@ from pathlib import Path
 from typing import Any
 
 from stillground.products.ladder import rung_spacing
-from stillground.products.whole import whole
 from stillground.protocols import Result
+from stillground.whole import whole
 
 WORST_FIRST = ("drifting", "undecided", "settled")
 

@@ -72,16 +72,22 @@ def climb(
     models = [rung.model(stop) for rung in rungs]
     model = models[-1]
     spread = fine.norm(model - fine.mean(model))
-    raised = [prolong(m, rung.grid, fine) for m, rung in zip(models, rungs, strict=True)]
 
-    def relative(difference: Array) -> float:
-        size = fine.norm(difference)
+    def relative(difference: Array, grid: Grid) -> float:
+        size = grid.norm(difference)
         return size / spread if spread > 0 else float(size > 0)
 
-    change = tuple(relative(after - before) for before, after in pairwise(raised))
+    # Each change is measured on the finer grid of its own pair: between the nodes of a coarser rung a
+    # difference is a row of arches, which the quadrature of one grid for all would see now better, now
+    # worse, and the observed order with it.
+    moved = [
+        models[i + 1] - prolong(models[i], before.grid, after.grid)
+        for i, (before, after) in enumerate(pairwise(rungs))
+    ]
+    change = tuple(relative(m, rung.grid) for m, rung in zip(moved, rungs[1:], strict=True))
     drift = None
     if len(rungs) > 1 and all(rung.picks[method.choose].iteration is not None for rung in rungs[-2:]):
-        drift = relative(finest.model(rungs[-2].stop(method.choose)) - model)
+        drift = relative(finest.model(rungs[-2].stop(method.choose)) - model, fine)
     ladder = Ladder(
         rungs=tuple(
             Rung(rung.grid.spacing, rung.grid.axes, m, rung.picks[method.choose].iteration)
@@ -96,12 +102,8 @@ def climb(
         finest=finest,
         model=model,
         anomaly=spread / float(np.sqrt(np.prod(fine.lengths))),
-        mesh_change=_local_change(raised, fine, method.correlation),
+        # Node by node the change would show the coarser rung's nodes and not the ground.
+        mesh_change=np.sqrt(fine.local_mean(np.square(moved[-1]), method.correlation))
+        if moved
+        else np.full(fine.shape, np.nan),
     )
-
-
-def _local_change(raised: Sequence[Array], fine: Grid, correlation: Sequence[float]) -> Array:
-    # Node by node the change would show the coarser rung's nodes and not the ground.
-    if len(raised) < 2:
-        return np.full(fine.shape, np.nan)
-    return np.sqrt(fine.local_mean(np.square(raised[-1] - raised[-2]), correlation))

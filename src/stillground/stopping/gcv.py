@@ -12,7 +12,10 @@ def gcv_curve(history: History) -> Array | None:
     if history.degrees_of_freedom is None:
         return None
     left = 1.0 - history.degrees_of_freedom / history.n_data
-    return np.asarray(np.divide(history.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 0))
+    # With all freedom used up, as with few data, misfit and rest are both rounding.
+    return np.asarray(
+        np.divide(history.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 1e-6)
+    )
 
 
 def gcv(history: History, options: RuleOptions) -> Pick:

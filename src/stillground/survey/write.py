@@ -4,15 +4,14 @@ from __future__ import annotations
 
 import csv
 import io
-import os
 from collections.abc import Iterable
 from pathlib import Path
 
 import xarray as xr
 
-from stillground.errors import OutputError
 from stillground.survey.columns import COLUMNS, Column
 from stillground.survey.units import to_si
+from stillground.whole import whole
 
 
 def write_table(path: str | Path, ds: xr.Dataset, comments: Iterable[str] = ()) -> None:
@@ -40,15 +39,8 @@ def write_table(path: str | Path, ds: xr.Dataset, comments: Iterable[str] = ()) 
     table.writerow(f"{c.name} [{c.written[0]}]" if c.dimensional else c.name for c in known)
     table.writerows(zip(*(_cells(ds[c.name], c) for c in known), strict=True))
 
-    target = Path(path)
-    temporary = target.with_name(f".{target.name}.{os.getpid()}")
-    try:
+    with whole(Path(path)) as temporary:
         temporary.write_text(text.getvalue(), encoding="utf-8", newline="\n")
-        os.replace(temporary, target)
-    except OSError as error:
-        raise OutputError(f"{target}: cannot be written: {error.strerror}") from error
-    finally:
-        temporary.unlink(missing_ok=True)
 
 
 def _cells(variable: xr.DataArray, column: Column) -> list[str]:

@@ -24,8 +24,8 @@ from matplotlib.lines import Line2D
 from matplotlib.textpath import text_to_path
 
 from stillground.products.provenance import CAUTION
-from stillground.products.whole import whole
 from stillground.protocols import Word
+from stillground.whole import whole
 
 STYLE = Path(__file__).parents[1] / "stillground.mplstyle"
 INK, MUTED, LINE, PAPER, TEAL, RUST = "#18232e", "#52606d", "#3b4753", "#f6f4ee", "#155e63", "#a33a12"

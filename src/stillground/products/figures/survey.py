@@ -79,7 +79,7 @@ def survey_figure(
     span = receivers - sources
     offset = np.hypot(*span.T)
     angle = np.degrees(np.arctan2(span[:, 1], np.abs(span[:, 0])))
-    label = f"apparent {seen.long_name} ({unit_text(seen.units)})"
+    label = f"apparent {seen.name} ({unit_text(seen.units)})"
     height = (PICTURE[1] - 0.75) / 2
     for row, (values, name) in enumerate(
         ((offset, "offset (m)"), (angle, "ray angle (degrees above level)"))

@@ -8,7 +8,7 @@ from pathlib import Path
 import pytest
 
 from stillground.errors import OutputError
-from stillground.products.whole import whole
+from stillground.whole import require_writable, whole
 
 
 def test_nothing_stands_at_the_place_before_the_block_ends(tmp_path: Path) -> None:
@@ -62,3 +62,11 @@ def test_a_full_disk_is_the_machines_fault_and_passes_as_it_is(tmp_path: Path) -
         raise full
     assert caught.value is full
     assert not list(tmp_path.iterdir())
+
+
+def test_a_folder_proves_writable_before_long_work_and_keeps_no_trace(tmp_path: Path) -> None:
+    require_writable(tmp_path / "new" / "folder")
+    assert list((tmp_path / "new" / "folder").iterdir()) == []
+    (tmp_path / "file").touch()
+    with pytest.raises(OutputError, match="file cannot be written"):
+        require_writable(tmp_path / "file")

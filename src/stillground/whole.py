@@ -44,5 +44,16 @@ def whole(path: Path) -> Iterator[Path]:
         temporary.unlink(missing_ok=True)
 
 
+def require_writable(folder: Path) -> None:
+    """Make a folder and prove that files can be put there, before long work; else `OutputError`."""
+    proof = folder / f".{secrets.token_hex(4)}"
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        proof.touch(exist_ok=False)
+        proof.unlink()
+    except OSError as error:
+        raise _unwritable(folder, error) from error
+
+
 def _unwritable(path: Path, error: OSError) -> OutputError:
     return OutputError(f"{path} cannot be written ({error.strerror}): choose another output folder")
