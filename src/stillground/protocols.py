@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
+from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal, Protocol
 
 import numpy as np
@@ -125,6 +126,18 @@ class History:
         """Mean squared whitened residual, shape (n_rows,)."""
         return self.residual_norm**2 / self.n_data
 
+    @property
+    def gcv(self) -> Array | None:
+        """``chi_square / (1 - dof / n_data)^2``, shape (n_rows,), infinite where no freedom is left.
+
+        None without degrees of freedom.
+        """
+        if self.degrees_of_freedom is None:
+            return None
+        left = np.maximum(1.0 - self.degrees_of_freedom / self.n_data, 0.0)
+        curve = np.divide(self.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 0)
+        return np.asarray(curve)
+
     def upto(self, last: int) -> History:
         """The history as it stood after iteration ``last``."""
         columns = {
@@ -216,7 +229,7 @@ class Choice:
 
     ``iteration`` is where the picture is taken (the last one where the rule found none, so
     ``pick.iteration`` may be None); ``distance`` is the relative L2 distance of its picture from
-    the chosen one's; ``model`` the nodal field at that iteration.
+    the chosen one's, None where that is the background; ``model`` the nodal field there.
     """
 
     rule: str
@@ -224,7 +237,7 @@ class Choice:
     iteration: float
     chi_square: float
     roughness: float
-    distance: float
+    distance: float | None
     model: Array
 
 
@@ -298,7 +311,8 @@ class Scene(Protocol):
     known ground surface as (distance, elevation) arrays, or None. ``positions`` are distinct places
     by what stands there ("source", "receiver"), shape (n, n_axes), in the order of the groupings.
     ``paths`` are the two places of every datum, shape (n_data, n_axes) each, ``apparent`` the ground
-    property that would explain each datum alone. ``facts`` are sentences worth knowing beforehand.
+    property that would explain each datum alone. ``facts`` are sentences worth knowing
+    beforehand, ``inputs`` files that were read beside the survey.
     """
 
     @property
@@ -315,6 +329,8 @@ class Scene(Protocol):
     def apparent(self) -> Array: ...
     @property
     def facts(self) -> tuple[str, ...]: ...
+    @property
+    def inputs(self) -> tuple[Path, ...]: ...
 
     def assemble(self, grid: Grid) -> Measurement:
         """The measurement on a grid."""

@@ -34,6 +34,8 @@ def tables(**changes: dict[str, Any]) -> dict[str, Any]:
         ({"ground": {"background": "1900"}}, "give it with one, like '1900 m/s'"),
         ({"errors": {"floor": "1 m"}}, "errors.floor: '1 m': unit 'm' does not convert to s"),
         ({"solver": {"iterations": "many"}}, "solver.iterations = 'many': must be a valid integer"),
+        ({"refinement": {"levels": "4"}}, "refinement.levels = '4': must be a valid integer"),
+        ({"ground": {"background": "0 s/m"}}, "ground.background: must be above zero; got '0 s/m'"),
         ({"solver": {"method": "lsqrr"}}, "registered as 'lsqrr'; did you mean 'lsqr'?"),
         ({"stopping": {"choose": "gvc"}}, "registered as 'gvc'; did you mean 'gcv'?"),
         ({"stopping": {"rules": ["discrepancy"]}}, "choose = 'gcv' is not among rules"),

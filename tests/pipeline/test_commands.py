@@ -244,8 +244,8 @@ def test_predicted_memory_covers_what_a_climb_takes(small: Path) -> None:
         "config, _ = load('small.toml', ['ground.spacing=0.02 m', 'solver.iterations=10'])\n"
         "(profile,) = read_profiles(config)\n"
         "few, _ = load('small.toml', ['refinement.levels=1', 'solver.iterations=2'])\n"
-        "finish(answer(profile, few))\n"
-        "before = peak(); finish(answer(profile, config)); grids = plan_grids(profile, config)\n"
+        "finish(answer(profile, plan_grids(profile, few), few))\n"
+        "before = peak(); grids = plan_grids(profile, config); finish(answer(profile, grids, config))\n"
         "print(memory(grids, profile.survey.sizes['datum'], 10) / (peak() - before))\n"
     )
     done = subprocess.run([sys.executable, "-c", code], cwd=small, capture_output=True, text=True, check=True)
@@ -257,3 +257,125 @@ def test_predicted_memory_grows_with_the_grid(small: Path) -> None:
     (profile,) = read_profiles(config)
     grids = plan_grids(profile, config)
     assert memory(grids, 144, 20) > memory(grids[:-1], 144, 20)
+
+
+def test_a_survey_in_memory_needs_no_row_and_may_have_a_crs_and_strange_columns(survey: xr.Dataset) -> None:
+    ds = survey.drop_vars("row").assign(note=("datum", np.full(survey.sizes["datum"], "wet")))
+    ds = ds.assign(line=("datum", np.full(survey.sizes["datum"], 7)))
+    shifted = ds.assign(
+        {f"{end}_{axis}": ds[f"{end}_{axis}"] + at
+         for end in ("source", "receiver") for axis, at in (("x", 431250.0), ("y", 5312480.0))}
+    )  # fmt: skip
+    result = package.reconstruct_survey(
+        shifted,
+        survey={"crs": "EPSG:32631"},
+        ground={"spacing": "0.5 m", "correlation": "2 m"},
+        refinement={"levels": 1},
+    )
+    assert result.section["easting"].attrs["standard_name"] == "projection_x_coordinate"
+    assert float(result.section["easting"].sel(distance=0, method="nearest")) == pytest.approx(431250.0)
+
+
+def test_noise_on_even_ground_is_told_as_the_background(survey: xr.Dataset) -> None:
+    ends = [np.stack([survey[f"{end}_{axis}"] for axis in "xyz"]) for end in ("source", "receiver")]
+    random = np.random.default_rng(0)
+    times = np.linalg.norm(ends[1] - ends[0], axis=0) / 1800
+    noisy = survey.assign(
+        time=("datum", times + 0.8 * survey["time_error"].values * random.standard_normal(144))
+    )
+    result = package.reconstruct_survey(
+        noisy, ground={"spacing": "0.5 m", "correlation": "2 m"}, stopping={"choose": "discrepancy"},
+        refinement={"levels": 3},
+    )  # fmt: skip
+    assert result.arrays.chosen.iteration == 0
+    assert all(choice.distance is None for choice in result.arrays.choices)
+    assert result.summary()["rules"][0]["distance"] is None
+    assert max(result.arrays.ladder.change) == 0
+
+
+def test_running_into_the_last_iteration_is_no_pick_and_never_settled(survey: xr.Dataset) -> None:
+    result = package.reconstruct_survey(
+        survey, ground={"spacing": "0.25 m", "correlation": "2 m"}, solver={"iterations": 2},
+        refinement={"levels": 3},
+    )  # fmt: skip
+    assert result.arrays.chosen.pick.iteration is None
+    assert "raise solver.iterations" in result.arrays.chosen.pick.reason
+    assert result.verdict != "settled"
+
+
+def test_positions_at_one_elevation_are_no_error(survey: xr.Dataset) -> None:
+    level = survey.assign(
+        source_z=survey["source_z"] * 0, receiver_z=survey["receiver_z"] * 0,
+        receiver_x=survey["receiver_x"] + survey["receiver_z"] / 2,
+    )  # fmt: skip
+    times = (level["receiver_x"] - level["source_x"]).values / 1800
+    result = package.reconstruct_survey(
+        level.assign(time=("datum", times)),
+        ground={"spacing": "0.25 m", "correlation": "2 m"},
+        refinement={"levels": 2},
+    )
+    np.testing.assert_allclose(result.section["velocity"], 1800, rtol=1e-4)
+
+
+def test_resume_never_keeps_files_of_another_configuration(stillground: Command, small: Path) -> None:
+    quick = ("--set", "output.products=[]", "--set", "refinement.levels=2")
+    folder = small / "results" / "small"
+    assert stillground("run", "small.toml", *quick, cwd=small).returncode == 0
+    other = stillground("run", "small.toml", *quick, "--set", "stopping.choose=discrepancy", cwd=small)
+    assert other.returncode == 0
+    fit = (folder / "small_fit.csv").read_bytes()
+    again = stillground("run", "small.toml", *quick, "--resume", cwd=small)
+    assert again.returncode == 0
+    assert (folder / "small_fit.csv").read_bytes() != fit, "made again by the first configuration"
+
+
+def test_inputs_of_one_name_are_told_apart(small: Path, survey: xr.Dataset) -> None:
+    (small / "a").mkdir()
+    (small / "b").mkdir()
+    write_table(small / "a" / "line.csv", survey)
+    (small / "b" / "line.csv").write_text("x [m],y [m],z [m]\n0,0,1\n9,0,1\n")
+    rewrite(small / "small.toml", "small.csv", "a/line.csv")
+    results = package.run_config(
+        small / "small.toml",
+        out=small / "out",
+        overrides=["physics.surface=b/line.csv", "output.products=[]", "refinement.levels=1"],
+    )
+    digests = results[0].section.attrs["input_sha256"].splitlines()
+    assert [line.split()[1] for line in digests] == ["a/line.csv", "b/line.csv"]
+
+
+def test_a_surface_below_the_positions_is_refused(small: Path) -> None:
+    (small / "low.csv").write_text("x [m],y [m],z [m]\n0,0,-100\n9,0,-100\n")
+    config, _ = load(small / "small.toml", ["physics.surface=low.csv"])
+    with pytest.raises(SurveyError, match=r"the surface lies 99.5 m under a position"):
+        read_profiles(config)
+
+
+def test_faults_of_several_tables_are_told_together(small: Path) -> None:
+    for name in ("one", "two"):
+        (small / f"{name}.csv").write_text("source_x [m],time [ms]\n1,2\n")
+    rewrite(small / "small.toml", '"small.csv"', '"one.csv", "two.csv"')
+    config, _ = load(small / "small.toml")
+    with pytest.raises(SurveyError, match="2 tables: 2 faults") as caught:
+        read_profiles(config)
+    assert all(name in str(caught.value) for name in ("one.csv", "two.csv"))
+
+
+def test_a_forked_child_computes_too(small: Path) -> None:
+    code = (
+        "import multiprocessing, numpy as np\n"
+        "from stillground import StraightRays\n"
+        "from stillground.grid import Grid\n"
+        "grid = Grid((0., 0.), (.1, .1), (400, 400))\n"
+        "z = np.linspace(0, 39, 60); s = np.column_stack([0 * z, z]); e = np.column_stack([0 * z + 39, z[::-1]])\n"
+        "A = StraightRays(grid, np.repeat(s, 60, 0), np.tile(e, (60, 1)), threads=2)\n"
+        "x = np.ones(grid.n_nodes); A @ x\n"
+        "p = multiprocessing.get_context('fork').Process(target=lambda: A @ x); p.start(); p.join(30)\n"
+        "print(p.exitcode)\n"
+    )
+    if not hasattr(os, "fork"):
+        pytest.skip("this system does not fork")
+    done = subprocess.run(
+        [sys.executable, "-c", code], capture_output=True, text=True, timeout=120, check=True
+    )
+    assert done.stdout.strip() == "0"

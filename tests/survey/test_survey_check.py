@@ -145,7 +145,7 @@ def test_missing_errors_are_made(
 def test_a_column_of_errors_wins(picks: Picks, rays: tuple[str, ...]) -> None:
     ds, report = checked(picks(*GOOD), rays, floor=7.0)
     np.testing.assert_allclose(ds["time_error"], 1e-4)
-    assert report.errors == "given"
+    assert report.errors == "given by the table, and [errors] has no effect"
 
 
 def test_errors_from_nowhere_are_refused_with_advice(picks: Picks, rays: tuple[str, ...]) -> None:

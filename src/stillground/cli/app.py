@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import json
 import sys
 from importlib.metadata import version
@@ -175,6 +176,9 @@ def schema() -> None:
 
 def main() -> None:
     """Runs the command line; an error becomes one message and an exit code."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")
     try:
         app()
     except StillgroundError as error:

@@ -70,7 +70,7 @@ def _rules(choices: tuple[Choice, ...], chosen: Choice) -> None:
             _number(choice.pick.iteration),
             _number(choice.chi_square),
             _number(choice.roughness),
-            f"{100 * choice.distance:.1f} %",
+            "-" if choice.distance is None else f"{100 * choice.distance:.1f} %",
             "firm" if choice.pick.firm else "weak",
             choice.pick.reason,
         )
@@ -158,7 +158,9 @@ def plan(planned: Plan, figure: Path) -> None:
 
 
 def _time(seconds: float) -> str:
-    return f"{seconds:.1g} s" if seconds < 60 else f"{seconds / 60:.1f} min"
+    if seconds < 10:
+        return f"{seconds:.1g} s"
+    return f"{seconds:.0f} s" if seconds < 60 else f"{seconds / 60:.1f} min"
 
 
 def plugins() -> None:

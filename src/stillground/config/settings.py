@@ -17,6 +17,7 @@ from pydantic import (
     ConfigDict,
     Field,
     SerializeAsAny,
+    Strict,
     ValidationInfo,
     WithJsonSchema,
     model_validator,
@@ -40,7 +41,10 @@ def _datum(text: Any, info: ValidationInfo) -> float:
 def _property(text: Any, info: ValidationInfo) -> float:
     seen: GroundProperty = (info.context or {})["kind"].ground_property
     units = (seen.units,) if seen.reciprocal is None else (seen.units, seen.reciprocal[1])
-    return quantity(text, units)
+    value = quantity(text, units)
+    if seen.reciprocal is not None and value <= 0:
+        raise ValueError(f"must be above zero; got '{text}'")
+    return value
 
 
 def _background(text: Any, info: ValidationInfo) -> float | None:
@@ -96,6 +100,10 @@ SolverName = Annotated[str, AfterValidator(_solver_name)]
 RuleName = Annotated[str, AfterValidator(_rule_name)]
 
 
+Number = Annotated[float, Strict()]
+Count = Annotated[int, Strict()]
+
+
 class Table(BaseModel):
     """A table of the configuration: unknown keys are errors."""
 
@@ -114,7 +122,7 @@ class SurveySettings(Table):
 
 class ErrorSettings(Table):
     floor: Datum | None = Field(None, description="standard deviation of the data, with unit")
-    relative: float | None = Field(None, gt=0, lt=1, description="and as a share of the datum")
+    relative: Number | None = Field(None, gt=0, lt=1, description="and as a share of the datum")
 
 
 class Pair(Table):
@@ -136,7 +144,7 @@ PairOrOne = Annotated[Pair, BeforeValidator(_both_ways, json_schema_input_type=s
 class GroundSettings(Table):
     spacing: PairOrOne = Field(description="distance of nodes on the finest rung")
     correlation: PairOrOne = Field(description="lengths over which the ground is alike")
-    smoothness: float = Field(2.0, ge=0, le=8, description="exponent s of the prior; 0 is white")
+    smoothness: Number = Field(2.0, ge=0, le=8, description="exponent s of the prior; 0 is white")
     margin: Length | None = Field(
         None, description="ground kept around the positions; default: half the correlation length"
     )
@@ -148,13 +156,15 @@ class GroundSettings(Table):
 
 class SolverSettings(Table):
     method: SolverName = Field("lsqr", description="see 'stillground plugins'")
-    iterations: int = Field(80, ge=2, le=10_000, description="how far the iteration runs before it is judged")
+    iterations: Count = Field(
+        80, ge=2, le=10_000, description="how far the iteration runs before it is judged"
+    )
 
 
 class StoppingSettings(Table):
     rules: list[RuleName] | None = Field(None, min_length=1, description="default: all that are registered")
     choose: RuleName = Field("gcv", description="the rule whose picture is the answer")
-    tau: float = Field(
+    tau: Number = Field(
         RuleOptions.tau, gt=0, description="discrepancy target: mean squared whitened residual = tau^2"
     )
 
@@ -175,8 +185,8 @@ class StoppingSettings(Table):
 
 
 class RefinementSettings(Table):
-    levels: int = Field(4, ge=1, le=8, description="rungs: 2^(levels-1), ..., 2, 1 times the spacing")
-    tolerance: float = Field(0.02, gt=0, lt=1, description="relative change that counts as none")
+    levels: Count = Field(4, ge=1, le=8, description="rungs: 2^(levels-1), ..., 2, 1 times the spacing")
+    tolerance: Number = Field(0.02, gt=0, lt=1, description="relative change that counts as none")
 
 
 class OutputSettings(Table):
@@ -210,10 +220,11 @@ class DiscSettings(Table):
 
 
 class LayerSettings(Table):
-    """A level layer; without ``top`` or ``bottom`` it goes on for ever that way."""
+    """A layer; without ``top`` or ``bottom`` it goes on for ever that way."""
 
     top: Coordinate | None = None
     bottom: Coordinate | None = None
+    dip: Number = Field(0.0, description="rise over run along the profile; top and bottom hold at distance 0")
     value: PropertyValue
 
 
@@ -228,19 +239,17 @@ class BoxSettings(Table):
 class PlacesSettings(Table):
     """Evenly spaced places on a straight line, both ends included."""
 
-    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True)
-
     first: tuple[Coordinate, Coordinate, Coordinate] = Field(description="x, y, z of the first")
     last: tuple[Coordinate, Coordinate, Coordinate] = Field(description="x, y, z of the last")
-    count: int = Field(ge=1, le=100_000)
+    count: Count = Field(ge=1, le=100_000)
 
 
 class SimulateSettings(Table):
     output: InputPath = Field(description="table to write, relative to this file")
-    seed: int = Field(0, ge=0)
+    seed: Count = Field(0, ge=0)
     noise: Datum | None = Field(None, description="standard deviation of the noise, with unit")
-    relative_noise: float = Field(0.0, ge=0, lt=1, description="and as a share of the datum")
-    lost: float = Field(0.0, ge=0, lt=1, description="share of the measurements that is missing")
+    relative_noise: Number = Field(0.0, ge=0, lt=1, description="and as a share of the datum")
+    lost: Number = Field(0.0, ge=0, lt=1, description="share of the measurements that is missing")
     background: PropertyValue
     blob: list[BlobSettings] = []
     disc: list[DiscSettings] = []

@@ -6,6 +6,7 @@ the bit for any number of them. numba's own setting NUMBA_NUM_THREADS says how m
 
 from __future__ import annotations
 
+import os
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from functools import cache
@@ -18,6 +19,11 @@ import numpy as np
 @cache
 def _pool(threads: int) -> ThreadPoolExecutor:
     return ThreadPoolExecutor(threads, thread_name_prefix="stillground")
+
+
+# A forked child has the pool but not its threads.
+if hasattr(os, "register_at_fork"):
+    os.register_at_fork(after_in_child=_pool.cache_clear)
 
 
 def n_threads() -> int:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -15,8 +16,12 @@ from stillground.ground import Ground
 from stillground.operators.straight_rays import StraightRays
 from stillground.protocols import Array, GroundProperty, Integers, Measurement
 from stillground.protocols import Field as GroundField
-from stillground.survey import Section, fit_section, out_of_plane, plan_positions, read_surface
+from stillground.survey import Section, fit_section, out_of_plane, plan_positions, read_surface, row_numbers
 from stillground.survey.quantities import InputPath, Length
+
+# Points of the surface are taken within this share of the section's length; positions may stand this
+# far above it, as on a tripod.
+_CORRIDOR, _ABOVE = 0.1, 2.0
 
 
 class StraightRaySettings(BaseModel):
@@ -59,6 +64,7 @@ class RayScene:
     groupings: dict[str, Integers]
     positions: dict[str, Array]
     surface: tuple[Array, Array] | None
+    inputs: tuple[Path, ...]
     facts: tuple[str, ...]
 
     @property
@@ -145,12 +151,17 @@ class StraightRay:
         }
         short = np.linalg.norm(flat["source"] - flat["receiver"], axis=1) < 1e-3
         if short.any():
-            rows = ", ".join(str(row) for row in survey["row"].values[short][:5])
+            rows = ", ".join(str(row) for row in row_numbers(survey)[short][:5])
             raise SurveyError(name, [f"source and receiver fall on one point of the section in row {rows}"])
         groupings, positions = {}, {}
         for end, places in ends.items():
             groupings[end], where = _numbered(places)
             positions[end] = flat[end][where]
+        surface = None
+        if settings.surface is not None:
+            corridor = max(_CORRIDOR * section.length, settings.out_of_plane or 0.0)
+            surface = read_surface(settings.surface, section, corridor)
+            _require_below(settings.surface, surface, np.vstack([flat["source"], flat["receiver"]]))
         return RayScene(
             section=section,
             starts=flat["source"],
@@ -160,11 +171,25 @@ class StraightRay:
             errors=_values(survey, "time_error"),
             groupings=groupings,
             positions=positions,
-            surface=None if settings.surface is None else read_surface(settings.surface, section),
+            surface=surface,
+            inputs=() if settings.surface is None else (settings.surface,),
             facts=(
                 f"section {section.length:.4g} m long; "
                 f"positions lie at most {aside:.2g} m off it (row {row})",
             ),
+        )
+
+
+def _require_below(path: Path, surface: tuple[Array, Array], places: Array) -> None:
+    above = places[:, 1] - np.interp(places[:, 0], *surface)
+    worst = int(np.argmax(above))
+    if above[worst] > _ABOVE:
+        raise SurveyError(
+            str(path),
+            [
+                f"the surface lies {above[worst]:.4g} m under a position at {places[worst, 0]:.4g} m along "
+                f"the section, elevation {places[worst, 1]:.6g} m; check the elevations of both tables"
+            ],
         )
 
 

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from stillground import plugins
 from stillground.config import Config
 from stillground.grid import Grid
 
 
-def advise(profile: str, grids: tuple[Grid, ...], config: Config) -> tuple[str, ...]:
+def advise(profile: str, grids: Sequence[Grid], config: Config) -> tuple[str, ...]:
     """Sentences on the grids and the prior of a profile; none is an error."""
     kind = plugins.kind(config.survey.kind)
     ground = config.ground

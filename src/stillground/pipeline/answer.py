@@ -2,22 +2,24 @@
 
 from __future__ import annotations
 
-from collections.abc import Generator, Iterator
+from collections.abc import Generator, Iterator, Sequence
 
 import numpy as np
 
 from stillground import plugins
 from stillground.config import Config
+from stillground.grid import Grid
 from stillground.pipeline.capacity import SNAPSHOT_VALUES
-from stillground.pipeline.grids import correlation, plan_grids
+from stillground.pipeline.grids import correlation
 from stillground.pipeline.profiles import Profile
 from stillground.protocols import Array, Choice, Progress, Result, RuleOptions
 from stillground.reconstruct import Method
 from stillground.refinement import Climb, climb
+from stillground.solve.columns import norm
 
 
-def answer(profile: Profile, config: Config) -> Generator[Progress, None, Result]:
-    """Reconstructs a profile on its ladder of grids.
+def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator[Progress, None, Result]:
+    """Reconstructs a profile on its ladder of grids, coarse to fine.
 
     Yields
     ------
@@ -26,24 +28,8 @@ def answer(profile: Profile, config: Config) -> Generator[Progress, None, Result
     Returns
     -------
     Result
-
-    Raises
-    ------
-    ConfigError, CapacityError
-        As `plan_grids`.
     """
-    lengths = correlation(config)
-    method = Method(
-        correlation=lengths,
-        smoothness=config.ground.smoothness,
-        solver=plugins.solver(config.solver.method),
-        iterations=config.solver.iterations,
-        rules={name: plugins.rule(name) for name in config.stopping.judged},
-        choose=config.stopping.choose,
-        options=RuleOptions(tau=config.stopping.tau),
-        background=config.ground.background,
-    )
-    grids = plan_grids(profile, config)
+    method = plan_method(config)
     top = yield from climb(profile.scene.assemble, grids, method, config.refinement.tolerance)
 
     finest, measurement = top.finest, top.finest.measurement
@@ -57,7 +43,7 @@ def answer(profile: Profile, config: Config) -> Generator[Progress, None, Result
         model=top.model,
         mesh_change=top.mesh_change,
         anomaly=top.anomaly,
-        coverage=profile.scene.coverage(finest.grid, lengths),
+        coverage=profile.scene.coverage(finest.grid, method.correlation),
         predicted=measurement.data - measurement.errors * whitened,
         observed=measurement.data,
         errors=measurement.errors,
@@ -70,20 +56,33 @@ def answer(profile: Profile, config: Config) -> Generator[Progress, None, Result
     )
 
 
+def plan_method(config: Config) -> Method:
+    """How a configuration asks to reconstruct."""
+    return Method(
+        correlation=correlation(config),
+        smoothness=config.ground.smoothness,
+        solver=plugins.solver(config.solver.method),
+        iterations=config.solver.iterations,
+        rules={name: plugins.rule(name) for name in config.stopping.judged},
+        choose=config.stopping.choose,
+        options=RuleOptions(tau=config.stopping.tau),
+        background=config.ground.background,
+    )
+
+
 def _choice(top: Climb, rule: str) -> Choice:
     finest, grid = top.finest, top.finest.grid
     stop = finest.stop(rule)
     residual = finest.run.residual(stop)
     model = finest.model(stop)
     size = top.anomaly * float(np.sqrt(np.prod(grid.lengths)))
-    apart = grid.norm(model - top.model)
     return Choice(
         rule=rule,
         pick=finest.picks[rule],
         iteration=stop,
         chi_square=float(residual @ residual) / residual.size,
-        roughness=float(np.linalg.norm(finest.run.solution(stop))),
-        distance=apart / size if size > 0 else 0.0,
+        roughness=float(norm(finest.run.solution(stop)[:, None])[0]),
+        distance=grid.norm(model - top.model) / size if size > 0 else None,
         model=model,
     )
 

@@ -34,15 +34,19 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
     axes = plugins.kind(config.survey.kind).axes
     spacing = ground.spacing.along(axes)
     margin = [length / 2 if ground.margin is None else ground.margin for length in correlation(config)]
-    for axis, low, high, h in zip(axes, scene.lower, scene.upper, spacing, strict=True):
-        if high - low < h:
-            raise ConfigError(
-                f"ground.spacing: {h:g} m is larger than the survey {profile.name}, {high - low:.3g} m "
-                f"along {axis}; take at most {_round_down((high - low) / 10)} m"
-            )
+    extent = max(high - low for low, high in zip(scene.lower, scene.upper, strict=True))
+    if extent < max(spacing):
+        raise ConfigError(
+            f"ground.spacing: {max(spacing):g} m is larger than the survey {profile.name}, {extent:.3g} m "
+            f"across; take at most {_round_down(extent / 10)} m"
+        )
     bottom = scene.lower[-1]
     if ground.depth is not None:
-        ground_point = float(np.min(scene.surface[1])) if scene.surface else scene.upper[-1]
+        ground_point = scene.upper[-1]
+        if scene.surface is not None:
+            # Over the positions only: a surface may go on far beyond them.
+            reach = np.linspace(scene.lower[0], scene.upper[0], 200)
+            ground_point = float(np.interp(reach, *scene.surface).min())
         bottom = ground_point - ground.depth
         if bottom > scene.lower[-1]:
             raise ConfigError(

@@ -3,30 +3,34 @@
 from __future__ import annotations
 
 import time
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 from pathlib import Path
 
-import numpy as np
+import psutil
 
 from stillground import plugins
 from stillground.config import Config
 from stillground.grid import Grid
-from stillground.operators.prior_root import PriorRoot
 from stillground.pipeline.advice import advise
+from stillground.pipeline.answer import plan_method
 from stillground.pipeline.capacity import memory
 from stillground.pipeline.grids import correlation, plan_grids
 from stillground.pipeline.profiles import Profile, read_profiles
+from stillground.pipeline.run import finish
 from stillground.products.figures.sheet import write_figure
 from stillground.products.figures.survey import survey_figure
-from stillground.solve.run import n_probes
+from stillground.reconstruct import reconstruct
+
+_TIMED_STEPS = 3
 
 
 @dataclass(frozen=True)
 class Plan:
     """What a run of one profile will do and cost.
 
-    ``memory`` in bytes is predicted from sizes, ``seconds`` from one timed product with the finest
-    rung's operator; both leave figures out.
+    ``memory`` of the whole process in bytes is predicted from sizes, ``seconds`` from a few timed steps on
+    the finest rung; both leave figures out.
     """
 
     profile: Profile
@@ -48,8 +52,8 @@ def _plan(profile: Profile, config: Config) -> Plan:
         profile,
         grids,
         advise(profile.name, grids, config),
-        memory(grids, n_data, config.solver.iterations),
-        _seconds(profile, grids, n_data, config),
+        memory(grids, n_data, config.solver.iterations) + psutil.Process().memory_info().rss,
+        _seconds(profile, grids, config),
     )
 
 
@@ -70,17 +74,15 @@ def draw(plan: Plan, config: Config, folder: Path) -> Path:
     return write_figure(folder / "figures", f"{plan.profile.name}_survey", figure)[0]
 
 
-def _seconds(profile: Profile, grids: tuple[Grid, ...], n_data: int, config: Config) -> float:
-    """Times one product each way on the finest rung; coarser rungs cost by their nodes."""
-    columns = 1 + n_probes(n_data)
+def _seconds(profile: Profile, grids: Sequence[Grid], config: Config) -> float:
+    """Times a few steps of the iteration on the finest rung; coarser rungs cost by their nodes."""
+    few = replace(plan_method(config), iterations=_TIMED_STEPS, rules={})
+    measurement = profile.scene.assemble(grids[-1])
     took = 0.0
     # Twice, since the first includes compiling.
     for _ in range(2):
-        operator = profile.scene.assemble(grids[-1]).operator
-        root = PriorRoot(grids[-1], correlation(config), config.ground.smoothness)
         begin = time.perf_counter()
-        data = operator.matmat(root.matmat(np.ones((grids[-1].n_nodes, columns))))
-        root.rmatmat(operator.rmatmat(data))
+        finish(reconstruct(measurement, grids[-1], few))
         took = time.perf_counter() - begin
     share = sum(grid.n_nodes for grid in grids) / grids[-1].n_nodes
-    return took * share * config.solver.iterations
+    return took / _TIMED_STEPS * share * config.solver.iterations

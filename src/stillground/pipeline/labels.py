@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import sys
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
 from importlib.metadata import version
 from pathlib import Path
@@ -17,8 +17,8 @@ import xarray as xr
 
 from stillground import plugins
 from stillground.config import Config
+from stillground.grid import Grid
 from stillground.pipeline.advice import advise
-from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.profiles import Profile
 from stillground.products.fit import fit_table
 from stillground.products.history import history_dataset
@@ -27,7 +27,7 @@ from stillground.products.provenance import Provenance, timestamp
 from stillground.products.section import section_dataset
 from stillground.products.summary import profile_summary
 from stillground.protocols import Result
-from stillground.survey import to_si
+from stillground.survey import row_numbers, to_si
 
 _PACKAGES = ("stillground", "numpy", "scipy", "pylops", "xarray", "numba", "netCDF4")
 
@@ -77,10 +77,10 @@ class ProfileResult:
         )
 
 
-def provenance(config: Config, text: str, command: str) -> Provenance:
+def provenance(profiles: Sequence[Profile], config: Config, text: str, command: str) -> Provenance:
     """What made the files of a run: the configuration, digests of all inputs, versions, time."""
-    surface = getattr(config.physics, "surface", None)
-    inputs = [*config.survey.files, *([surface] if surface else [])]
+    beside = [path for profile in profiles for path in profile.scene.inputs]
+    inputs = dict.fromkeys([*config.survey.files, *beside])
     return Provenance(
         title=config.title,
         config_text=text,
@@ -93,13 +93,15 @@ def provenance(config: Config, text: str, command: str) -> Provenance:
 
 
 def digests(paths: Iterable[Path]) -> dict[str, str]:
-    """SHA-256 of files by their names."""
-    return {path.name: hashlib.sha256(path.read_bytes()).hexdigest() for path in paths}
+    """SHA-256 of files by their names, with the folder's: files of one name may stand in several."""
+    return {"/".join(path.parts[-2:]): hashlib.sha256(path.read_bytes()).hexdigest() for path in paths}
 
 
-def label(profile: Profile, result: Result, config: Config, origin: Provenance) -> ProfileResult:
+def label(
+    profile: Profile, grids: Sequence[Grid], result: Result, config: Config, origin: Provenance
+) -> ProfileResult:
     """Puts labels, units and coordinates back on an answer."""
-    advice = advise(profile.name, plan_grids(profile, config), config)
+    advice = advise(profile.name, grids, config)
     origin = replace(origin, cautions=" ".join(advice))
     kind = plugins.kind(config.survey.kind)
     crs = None if config.survey.crs is None else pyproj.CRS.from_user_input(config.survey.crs)
@@ -122,7 +124,7 @@ def label(profile: Profile, result: Result, config: Config, origin: Provenance) 
         history=history_dataset(profile.name, result, surface=surface, provenance=origin),
         ladder=ladder_dataset(profile.name, result, surface=surface, tolerance=tolerance, provenance=origin),
         fit=fit_table(
-            result, rows=profile.survey["row"].values, datum=kind.datum, unit=unit, si_factor=factor
+            result, rows=row_numbers(profile.survey), datum=kind.datum, unit=unit, si_factor=factor
         ),
         profile=profile,
         arrays=result,

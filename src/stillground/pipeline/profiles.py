@@ -8,7 +8,7 @@ import xarray as xr
 
 from stillground import plugins
 from stillground.config import Config
-from stillground.errors import ConfigError
+from stillground.errors import ConfigError, SurveyError
 from stillground.protocols import Scene
 from stillground.survey import SurveyReport, check, profiles, read
 
@@ -29,20 +29,32 @@ def read_profiles(config: Config) -> tuple[Profile, ...]:
     Raises
     ------
     SurveyError
-        With all faults of the first table that has any.
+        With all faults of all tables.
     ConfigError
         When two files give profiles of one name.
     """
     kind = plugins.kind(config.survey.kind)
     found: dict[str, Profile] = {}
+    refused: list[SurveyError] = []
     for path in config.survey.files:
-        table = read(path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns)
-        for profile in place(table, path.stem, config):
+        try:
+            table = read(
+                path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns
+            )
+            placed = place(table, path.stem, config)
+        except SurveyError as error:
+            refused.append(error)
+            continue
+        for profile in placed:
             if profile.name in found:
                 raise ConfigError(
                     f"survey.files: two tables give a profile named '{profile.name}'; rename one of the files"
                 )
             found[profile.name] = profile
+    if len(refused) == 1:
+        raise refused[0]
+    if refused:
+        raise SurveyError(f"{len(refused)} tables", [str(error) for error in refused])
     return tuple(found.values())
 
 

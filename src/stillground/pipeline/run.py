@@ -26,7 +26,7 @@ from stillground.products.history import write_history
 from stillground.products.ladder import write_ladder
 from stillground.products.provenance import Provenance
 from stillground.products.section import write_section
-from stillground.products.summary import run_summary, write_summary
+from stillground.products.summary import SUMMARY, run_summary, write_summary
 from stillground.protocols import Progress
 from stillground.whole import require_writable
 
@@ -43,11 +43,10 @@ class Done:
 
 @dataclass(frozen=True)
 class Outcome:
-    """A finished run: its folder, its summary as in ``summary.json``, and the profiles of this run."""
+    """A finished run: its folder and its summary as in ``summary.json``."""
 
     folder: Path
     summary: dict[str, Any]
-    results: tuple[ProfileResult, ...]
 
 
 def run(
@@ -85,25 +84,26 @@ def run(
     When it is interrupted, the summary of the profiles finished so far is written.
     """
     begin = time.perf_counter()
-    origin = provenance(config, text, command)
     yield Progress("reading the survey", 0, 1)
     profiles = read_profiles(config)
-    for profile in profiles:
-        plan_grids(profile, config)
+    plans = {profile.name: plan_grids(profile, config) for profile in profiles}
+    origin = provenance(profiles, config, text, command)
     require_writable(folder)
     yield Progress("reading the survey", 1, 1)
 
     mark = _fingerprint(origin)
     entries = _kept(folder, mark) if resume else {}
-    results: list[ProfileResult] = []
     summary: dict[str, Any] = {}
     try:
         for profile in profiles:
             if profile.name in entries:
                 continue
-            result = label(profile, (yield from answer(profile, config)), config, origin)
+            grids = plans[profile.name]
+            arrays = yield from answer(profile, grids, config)
+            result = label(profile, grids, arrays, config, origin)
+            # Until the new one is there, no summary must speak for files that are being replaced.
+            (folder / SUMMARY).unlink(missing_ok=True)
             files = yield from _write(folder, result, config)
-            results.append(result)
             entries[profile.name] = result.summary(files) | {"fingerprint": mark}
             yield Done(result, folder)
     finally:
@@ -114,11 +114,13 @@ def run(
                 config.title, version("stillground"), seconds, [entries[name] for name in order]
             )
             write_summary(folder, summary)
-    return Outcome(folder, summary, tuple(results))
+    return Outcome(folder, summary)
 
 
-def run_config(path: str | Path, *, out: str | Path | None = None, overrides: Sequence[str] = ()) -> Outcome:
-    """Runs a configuration file without a word, as ``stillground run`` does.
+def run_config(
+    path: str | Path, *, out: str | Path | None = None, overrides: Sequence[str] = ()
+) -> tuple[ProfileResult, ...]:
+    """Runs a configuration file without a word, as ``stillground run`` does, and keeps the results.
 
     Parameters
     ----------
@@ -130,10 +132,12 @@ def run_config(path: str | Path, *, out: str | Path | None = None, overrides: Se
 
     Returns
     -------
-    Outcome
+    tuple of ProfileResult
+        One for each profile; their products are in the output folder.
     """
     config, text = load(path, overrides)
-    return finish(run(config, text, output_folder(config, path, out)))
+    events = run(config, text, output_folder(config, path, out))
+    return tuple(event.result for event in events if isinstance(event, Done))
 
 
 def output_folder(config: Config, path: str | Path, out: str | Path | None = None) -> Path:
@@ -151,7 +155,7 @@ def finish(work: Generator[Any, None, T]) -> T:
 
 
 def reconstruct_survey(
-    survey: xr.Dataset, *, kind: str = "straight-ray", title: str = "survey", **tables: Any
+    survey: xr.Dataset, /, *, kind: str = "straight-ray", title: str = "survey", **tables: Any
 ) -> ProfileResult:
     """Reconstructs one profile from a survey in memory, in one call, and writes nothing.
 
@@ -164,7 +168,8 @@ def reconstruct_survey(
     title : str
     **tables : mapping
         Tables of the configuration by name, with its keys and units: at least ``ground``, as in
-        ``ground={"spacing": "0.5 m", "correlation": {"horizontal": "4 m", "vertical": "2 m"}}``.
+        ``ground={"spacing": "0.5 m", "correlation": {"horizontal": "4 m", "vertical": "2 m"}}``; a table
+        ``survey`` may name the ``crs``.
 
     Returns
     -------
@@ -183,9 +188,10 @@ def reconstruct_survey(
     if len(found) > 1:
         names = ", ".join(profile.name for profile in found)
         raise ConfigError(f"{source} holds {len(found)} profiles ({names}); select one line of it")
-    arrays = finish(answer(found[0], config))
-    origin = provenance(config, json.dumps(data), "stillground.reconstruct_survey")
-    return label(found[0], arrays, config, origin)
+    text = json.dumps(data, default=str)
+    origin = provenance(found, config, text, "stillground.reconstruct_survey")
+    grids = plan_grids(found[0], config)
+    return label(found[0], grids, finish(answer(found[0], grids, config)), config, origin)
 
 
 def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Progress, None, dict[str, str]]:
@@ -224,7 +230,7 @@ def _fingerprint(origin: Provenance) -> str:
 
 def _kept(folder: Path, mark: str) -> dict[str, dict[str, Any]]:
     """Entries of an earlier summary that were made from the same things and whose files are there."""
-    path = folder / "summary.json"
+    path = folder / SUMMARY
     if not path.is_file():
         return {}
     try:

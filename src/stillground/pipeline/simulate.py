@@ -23,7 +23,7 @@ def described_ground(settings: SimulateSettings, axes: tuple[str, ...]) -> Groun
     for layer in settings.layer:
         bottom = -np.inf if layer.bottom is None else layer.bottom
         top = np.inf if layer.top is None else layer.top
-        bodies.append(Layer(layer.value - base, bottom, top))
+        bodies.append(Layer(layer.value - base, bottom, top, layer.dip))
     for box in settings.box:
         lower, upper = ((p.distance, p.elevation) for p in (box.lower, box.upper))
         bodies.append(Box(box.value - base, lower, upper))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import unicodedata
+import warnings
 from collections.abc import Mapping
 from typing import Any
 
@@ -74,9 +75,14 @@ def crs_attributes(crs: CRS | None) -> dict[str, Any]:
         return {"long_name": "local frame: the survey gave no coordinate reference system"}
     parts = crs.sub_crs_list or [crs]
     horizontal = parts[0]
+    with warnings.catch_warnings():
+        # Of projections for which CF has no name: the text says it all.
+        warnings.simplefilter("ignore", UserWarning)
+        found = horizontal.to_cf(wkt_version="WKT2_2019")
     attributes = {
         name: ascii_text(value) if isinstance(value, str) else value
-        for name, value in horizontal.to_cf(wkt_version="WKT2_2019").items()
+        for name, value in found.items()
+        if value is not None and value != "unknown"
     }
     attributes["spatial_ref"] = attributes["crs_wkt"]
     for vertical in parts[1:]:
@@ -108,11 +114,12 @@ def section_crs_attributes(crs: CRS | None, distance: Array, elevation: Array) -
 def section_grid_mapping(crs: CRS | None) -> str:
     """What ``grid_mapping`` says on a section's maps.
 
-    CF has no ``grid_mapping_name`` for an engineering frame, so a local frame is told by its text
-    alone, which goes beyond the letter of CF. Clients find the GeoTransform through it, and checkers
-    do not ask for the name in the form that lists the coordinates.
+    CF has no ``grid_mapping_name`` for an engineering frame, nor for every projection, so these are told by
+    their text alone, which goes beyond the letter of CF. Clients find the GeoTransform through it, and
+    checkers do not ask for the name in the form that lists the coordinates.
     """
-    return "section_crs: distance elevation" if crs is None else "section_crs"
+    named = crs is not None and crs_attributes(crs).get("grid_mapping_name", "unknown") != "unknown"
+    return "section_crs" if named else "section_crs: distance elevation"
 
 
 def plan_attributes(name: str, crs: CRS | None) -> dict[str, str]:

@@ -100,7 +100,7 @@ def _picks(choices: tuple[Choice, ...]) -> dict[str, xr.Variable]:
         "shown_chi_square": ([c.chi_square for c in choices], "mean squared whitened residual there"),
         "shown_roughness": ([c.roughness for c in choices], "norm of the solution there"),
         "shown_distance": (
-            [c.distance for c in choices],
+            [np.nan if c.distance is None else c.distance for c in choices],
             "relative L2 distance from the chosen rule's picture",
         ),
     }

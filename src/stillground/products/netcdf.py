@@ -27,7 +27,11 @@ def write_netcdf(dataset: xr.Dataset, path: Path) -> None:
     for name in dataset.coords:
         encoding[str(name)]["_FillValue"] = None
     with whole(path) as temporary:
-        dataset.to_netcdf(temporary, engine="netcdf4", encoding=encoding)
+        try:
+            dataset.to_netcdf(temporary, engine="netcdf4", encoding=encoding)
+        except RuntimeError as error:
+            # The library's word for a full disk.
+            raise OSError(f"{path} cannot be written ({error}); is the disk full?") from error
 
 
 def _encoding(variable: xr.Variable) -> dict[str, Any]:

@@ -14,6 +14,8 @@ from stillground.whole import whole
 
 WORST_FIRST = ("drifting", "undecided", "settled")
 
+SUMMARY = "summary.json"
+
 
 def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict[str, Any]:
     """One profile's entry.
@@ -99,7 +101,7 @@ def write_summary(folder: Path, summary: Mapping[str, Any]) -> Path:
     OutputError
         When the place cannot be written.
     """
-    path = folder / "summary.json"
+    path = folder / SUMMARY
     text = json.dumps(_plain(summary), indent=1, ensure_ascii=False, allow_nan=False)
     with whole(path) as temporary:
         temporary.write_text(text + "\n", encoding="utf-8", newline="\n")

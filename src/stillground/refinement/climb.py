@@ -13,6 +13,8 @@ from stillground.protocols import Array, Ladder, Measurement, Progress, Rung
 from stillground.reconstruct import Method, Reconstruction, reconstruct
 from stillground.refinement.verdict import judge
 
+_ROUNDING = 1e-10
+
 
 @dataclass(frozen=True)
 class Climb:
@@ -72,10 +74,13 @@ def climb(
     models = [rung.model(stop) for rung in rungs]
     model = models[-1]
     spread = fine.norm(model - fine.mean(model))
+    # Rounding alone is no anomaly: the picture is then the background.
+    floor = _ROUNDING * fine.norm(model)
+    spread = spread if spread > floor else 0.0
 
     def relative(difference: Array, grid: Grid) -> float:
         size = grid.norm(difference)
-        return size / spread if spread > 0 else float(size > 0)
+        return size / spread if spread > 0 else float(size > floor)
 
     # Each change is measured on the finer grid of its own pair: between the nodes of a coarser rung a
     # difference is a row of arches, which the quadrature of one grid for all would see now better, now

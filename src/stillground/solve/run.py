@@ -11,6 +11,7 @@ import numpy as np
 from pylops import LinearOperator
 
 from stillground.protocols import Array, History, Progress, Solver
+from stillground.solve.columns import norm
 
 KEPT_BYTES = 512 * 2**20
 """Memory for kept iterates; those beyond it are made again when asked for."""
@@ -119,8 +120,8 @@ def iterate(
             solutions[-1].flags.writeable = False
         residuals.append(r[:, 0].copy())
         gradients.append(step.gradient_norm)
-        sizes.append(float(np.linalg.norm(x)))
-        steps.append(float(np.linalg.norm(x - before)))
+        sizes.append(float(norm(x[:, None])[0]))
+        steps.append(float(norm((x - before)[:, None])[0]))
         moved = (columns[:, 1:] - r[:, 1:]) - (b - r[:, 0])[:, None]
         freedoms.append(float(np.mean(np.sum(signs * moved, axis=0))))
         before = x

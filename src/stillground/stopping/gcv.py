@@ -4,18 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from stillground.protocols import Array, History, Pick, RuleOptions
-
-
-def gcv_curve(history: History) -> Array | None:
-    """``chi_square / (1 - dof / n_data)^2``, shape (n_rows,); None without degrees of freedom."""
-    if history.degrees_of_freedom is None:
-        return None
-    left = 1.0 - history.degrees_of_freedom / history.n_data
-    # With all freedom used up, as with few data, misfit and rest are both rounding.
-    return np.asarray(
-        np.divide(history.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 1e-6)
-    )
+from stillground.protocols import History, Pick, RuleOptions
 
 
 def gcv(history: History, options: RuleOptions) -> Pick:
@@ -30,14 +19,14 @@ def gcv(history: History, options: RuleOptions) -> Pick:
     Golub, Heath & Wahba (1979), Generalized cross-validation as a method for choosing a good ridge
     parameter, Technometrics 21. Girard (1989), Numer. Math. 56 (degrees of freedom by random vectors).
     """
-    curve = gcv_curve(history)
+    curve = history.gcv
     if curve is None:
         return Pick(None, False, "does not apply: this run has no degrees of freedom")
     k = int(np.argmin(curve))
     if k == 0:
         return Pick(0.0, False, "no iterate predicts better than the background: the data say nothing of it")
     if k == history.last:
-        return Pick(float(k), False, f"still falling at iteration {k}: raise solver.iterations")
+        return Pick(None, False, f"still falling at the last iteration, {k}: raise solver.iterations")
     before, here, after = curve[k - 1 : k + 2]
     bend = before - 2 * here + after
     pick = float(k + (0.5 * (before - after) / bend if np.isfinite(bend) and bend > 0 else 0.0))

@@ -6,6 +6,7 @@ The way of a table: ``read`` (the file's own faults raise), ``check`` (all other
 
 from stillground.survey.check import SurveyReport, check
 from stillground.survey.columns import COLUMNS, Column, column
+from stillground.survey.faults import row_numbers
 from stillground.survey.plane import Section, fit_section, out_of_plane, plan_positions
 from stillground.survey.read import profiles, read
 from stillground.survey.surface import read_surface
@@ -26,6 +27,7 @@ __all__ = [
     "quantity",
     "read",
     "read_surface",
+    "row_numbers",
     "to_si",
     "write_table",
 ]

@@ -11,7 +11,7 @@ import xarray as xr
 
 from stillground.errors import SurveyError
 from stillground.protocols import Array
-from stillground.survey.columns import column, error_of, needed
+from stillground.survey.columns import column, error_of, needed, optional
 from stillground.survey.faults import label, list_rows, row_numbers, source_of, unreadable, where
 
 # Outliers are called so past 5 robust standard deviations; 1.4826 turns the median absolute
@@ -91,9 +91,13 @@ def check(
     SurveyError
         With all faults of columns, cells, geometry and errors.
     """
-    kept, faults = usable(ds, expected)
+    names = {*needed(expected), *optional(expected)}
+    strangers = [str(name) for name in ds.data_vars if name not in names]
+    kept, faults = usable(ds.drop_vars(strangers), expected)
     error = error_of(datum)
-    origin = "given"
+    origin = "given by the table"
+    if error in kept and not (floor is None and relative is None):
+        origin += ", and [errors] has no effect"
     absent = error not in kept and error not in ds.attrs.get("column_faults", {})
     if absent and floor is None and relative is None:
         faults.append(
@@ -122,7 +126,7 @@ def check(
             if v.dtype.kind == "f"
         },
         errors=origin,
-        ignored_columns=tuple(ds.attrs.get("ignored_columns", ())),
+        ignored_columns=(*ds.attrs.get("ignored_columns", ()), *strangers),
     )
     return kept, report
 

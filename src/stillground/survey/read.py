@@ -235,7 +235,7 @@ def profiles(ds: xr.Dataset, stem: str) -> dict[str, xr.Dataset]:
     lines = list(dict.fromkeys(ds["line"].values.tolist()))
     split: dict[str, xr.Dataset] = {}
     for line in lines:
-        name = stem + "-" + re.sub(r"[^\w.+-]+", "_", line)
+        name = stem + "-" + re.sub(r"[^\w.+-]+", "_", str(line))
         if name in split:
             raise SurveyError(
                 source_of(ds), [f"column line: '{line}' and another line both give the name {name}"]

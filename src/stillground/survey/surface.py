@@ -22,6 +22,7 @@ _EXPECTED = ("x", "y", "z")
 def read_surface(
     path: str | Path,
     section: Section,
+    corridor: float,
     *,
     columns: Mapping[str, str] = _NOTHING,
     units: Mapping[str, str] = _NOTHING,
@@ -32,6 +33,8 @@ def read_surface(
     ----------
     path : path of the table, CSV or NetCDF
     section : Section
+    corridor : float
+        How far off the section points may lie to be taken, m.
     columns, units : mapping
         As in ``read``.
 
@@ -51,6 +54,17 @@ def read_surface(
         faults.append(f"a surface needs two points or more; it has {points.sizes['datum']}")
     if faults:
         raise SurveyError(str(path), faults)
+    aside = np.abs(section.across(points["x"].values, points["y"].values))
+    points = points.isel(datum=np.flatnonzero(aside <= corridor))
+    if points.sizes["datum"] < 2:
+        raise SurveyError(
+            str(path),
+            [
+                f"{points.sizes['datum']} of its points lie within {corridor:.3g} m of the section, "
+                f"the nearest {aside.min():.4g} m off it; give two or more points along the profile, "
+                f"in the coordinates of the survey"
+            ],
+        )
     distance = section.along(points["x"].values, points["y"].values)
     if distance.max() < 0 or distance.min() > section.length:
         raise SurveyError(

@@ -9,7 +9,7 @@ from matplotlib.ticker import LogLocator, MaxNLocator, NullLocator
 
 from stillground.products.figures.badges import badge_of, draw_badge, shelves
 from stillground.products.figures.sheet import FOOT, HEADING, LINE, MUTED, fitted, panel, sheet, styled
-from stillground.protocols import Array, Choice, History, Result
+from stillground.protocols import Array, Choice, Result
 
 WIDTH, HEIGHT = 2.95, 1.55
 BADGE, KEY_STEP = 0.17, 0.21
@@ -37,8 +37,8 @@ def rules_figure(profile: str, result: Result, *, tau: float) -> Figure:
     """
     history, choices = result.history, result.choices
     curves = [("mean squared residual", history.chi_square), ("roughness", history.solution_norm)]
-    if history.degrees_of_freedom is not None:
-        curves += [("degrees of freedom", history.degrees_of_freedom), ("GCV", _gcv(history))]
+    if history.degrees_of_freedom is not None and history.gcv is not None:
+        curves += [("degrees of freedom", history.degrees_of_freedom), ("GCV", history.gcv)]
     steps = np.arange(history.last + 1.0)
     placed = [choice for choice in choices if choice.pick.iteration is not None]
     per_inch = max(history.last, 1) * 1.06 / WIDTH
@@ -102,13 +102,6 @@ def rules_figure(profile: str, result: Result, *, tau: float) -> Figure:
                 )
     _key(figure, choices, chosen, FOOT + 0.05 + key_height)
     return figure
-
-
-def _gcv(history: History) -> Array:
-    assert history.degrees_of_freedom is not None
-    free = 1 - history.degrees_of_freedom / history.n_data
-    free[free <= 0] = np.nan
-    return history.chi_square / free**2
 
 
 def _mark(axes: Axes, steps: Array, curve: Array, placed: list[Choice], chosen: Choice) -> None:
