@@ -47,6 +47,13 @@ def test_it_prints_rules_ladder_verdict_and_cautions(told: Any) -> None:
     assert "rung 4 of 4" in told[1].stderr, "progress goes to standard error"
 
 
+def test_the_readme_shows_what_it_prints(told: Any, demo: Path) -> None:
+    readme = (demo.parents[1] / "README.md").read_text()
+    printed = {line.rstrip() for line in told[1].stdout.splitlines()}
+    sample = readme.split("```text\n")[1].split("```")[0].splitlines()
+    assert [line for line in sample if line not in printed] == []
+
+
 def test_all_products_are_there_and_nothing_half_written(folder: Path) -> None:
     products = {p.name for p in folder.iterdir() if p.is_file()}
     assert products == {"summary.json", *(f"crosshole-ab_{what}" for what in
