@@ -18,10 +18,12 @@ A whole configuration, products on disk: ``stillground.run_config("line.toml")``
 """
 
 from importlib import import_module
+from importlib.metadata import version
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from stillground.config import load as load_config
+    from stillground.grid import Grid
     from stillground.operators.prior_root import PriorRoot
     from stillground.operators.straight_rays import StraightRays
     from stillground.pipeline.run import reconstruct_survey, run_config
@@ -29,6 +31,7 @@ if TYPE_CHECKING:
 
 # Loaded when first asked for: the command line's help need not wait for compilers and plotting.
 _PUBLIC = {
+    "Grid": ("stillground.grid", "Grid"),
     "PriorRoot": ("stillground.operators.prior_root", "PriorRoot"),
     "StraightRays": ("stillground.operators.straight_rays", "StraightRays"),
     "load_config": ("stillground.config", "load"),
@@ -38,6 +41,7 @@ _PUBLIC = {
 }
 
 __all__ = [
+    "Grid",
     "PriorRoot",
     "StraightRays",
     "load_config",
@@ -48,6 +52,8 @@ __all__ = [
 
 
 def __getattr__(name: str) -> Any:
+    if name == "__version__":
+        return version("stillground")
     if name not in _PUBLIC:
         raise AttributeError(f"module 'stillground' has no attribute '{name}'")
     module, attribute = _PUBLIC[name]

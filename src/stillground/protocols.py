@@ -312,7 +312,7 @@ class Scene(Protocol):
     by what stands there ("source", "receiver"), shape (n, n_axes), in the order of the groupings.
     ``paths`` are the two places of every datum, shape (n_data, n_axes) each, ``apparent`` the ground
     property that would explain each datum alone. ``facts`` are sentences worth knowing
-    beforehand, ``inputs`` files that were read beside the survey.
+    beforehand, ``doubts`` what looks wrong and may not be; ``inputs`` files that were read beside the survey.
     """
 
     @property
@@ -329,6 +329,8 @@ class Scene(Protocol):
     def apparent(self) -> Array: ...
     @property
     def facts(self) -> tuple[str, ...]: ...
+    @property
+    def doubts(self) -> tuple[str, ...]: ...
     @property
     def inputs(self) -> tuple[Path, ...]: ...
 

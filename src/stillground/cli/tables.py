@@ -6,6 +6,7 @@ import math
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 from rich.table import Table
 
 from stillground import plugins as registry
@@ -13,8 +14,9 @@ from stillground.cli.console import out, say
 from stillground.pipeline.inspect import Plan
 from stillground.pipeline.run import Done, Outcome
 from stillground.products.provenance import CAUTION
+from stillground.products.reliability import MESH_DEPENDENT, NO_DATA
 from stillground.protocols import Choice, Ladder, Result
-from stillground.survey import SurveyReport
+from stillground.survey import SurveyReport, to_si
 
 _LISTED = 8
 
@@ -42,7 +44,7 @@ def profile(done: Done) -> None:
     result = done.result.arrays
     say()
     remarks(done.result.profile.report)
-    for sentence in done.result.advice:
+    for sentence in (*done.result.profile.scene.doubts, *done.result.advice):
         say(f"warning: {sentence}")
     nodes = " by ".join(str(len(axis)) for axis in result.axes)
     say(f"{done.result.name}: {result.observed.size} data, {nodes} nodes, background {_background(result)}")
@@ -53,6 +55,11 @@ def profile(done: Done) -> None:
     colour = {"settled": "green", "drifting": "red", "undecided": "yellow"}[word]
     out().print(f"[bold {colour}]{word.upper()}[/]  ", end="")
     say(f"{reason}.")
+    flags = done.result.section["reliability"].values
+    known = flags != NO_DATA
+    dependent = np.sum(flags == MESH_DEPENDENT) / max(np.sum(known), 1)
+    if dependent:
+        say(f"{100 * dependent:.2g} % of the ground still depends on the grid by itself; see the hatching.")
 
 
 def _background(result: Result) -> str:
@@ -141,7 +148,10 @@ def plan(planned: Plan, figure: Path) -> None:
     say()
     ranges = _table("column", ">smallest", ">largest", "unit")
     for name, (low, high) in report.ranges.items():
-        ranges.add_row(name, f"{low:.6g}", f"{high:.6g}", str(survey[name].attrs.get("units", "")))
+        si = str(survey[name].attrs.get("units", ""))
+        unit = str(survey[name].attrs.get("original_units", si))
+        factor = to_si(1.0, unit, si) if unit != si else 1.0
+        ranges.add_row(name, f"{low / factor:.9g}", f"{high / factor:.9g}", unit)
     _show(ranges)
     remarks(report)
     rungs = _table(">rung", ">spacing", ">nodes")
@@ -149,7 +159,7 @@ def plan(planned: Plan, figure: Path) -> None:
         shape = " by ".join(f"{n}" for n in grid.shape)
         rungs.add_row(str(number), " by ".join(f"{h:g}" for h in dict.fromkeys(grid.spacing)) + " m", shape)
     _show(rungs)
-    for sentence in planned.advice:
+    for sentence in (*planned.profile.scene.doubts, *planned.advice):
         say(f"warning: {sentence}")
     say(
         f"a run will take about {_time(planned.seconds)} without figures and {planned.memory / 2**20:.0f} MiB"

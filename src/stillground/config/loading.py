@@ -105,7 +105,9 @@ def _explain(model: type[BaseModel], fault: Any) -> str:
     key, value, kind = ".".join(where), fault["input"], fault["type"]
     if kind == "extra_forbidden":
         known = _keys(model, where[:-1])
-        near = get_close_matches(where[-1], known, n=1)
+        last = where[-1]
+        elsewhere = [f"{table}.{last}" for table in _keys(model, []) if last in _keys(model, [table])]
+        near = elsewhere[:1] or get_close_matches(last, known, n=1)
         advice = f"did you mean '{near[0]}'?" if near else f"there are {', '.join(known)}"
         return f"{key} is no setting; {advice}"
     if kind == "missing":

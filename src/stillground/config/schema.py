@@ -11,6 +11,9 @@ from stillground import plugins
 from stillground.config.settings import Config
 from stillground.protocols import Kind
 
+_DRAFT = "https://json-schema.org/draft/2020-12/schema"
+_TITLE = "stillground configuration"
+
 
 def config_class(kind: Kind) -> type[Config]:
     """`Config` with the kind's own settings under ``physics``."""
@@ -34,9 +37,12 @@ def json_schema() -> dict[str, Any]:
         survey = {"properties": {"kind": {"const": plugin.name}}}
         schema["properties"]["survey"] = {"allOf": [schema["properties"]["survey"], survey]}
         choices.append(schema | {"title": plugin.name})
+    if len(choices) == 1:
+        # Editors tell faults by key only where there is no choice between schemas.
+        return {"$schema": _DRAFT} | choices[0] | {"title": _TITLE, "$defs": definitions}
     return {
-        "$schema": "https://json-schema.org/draft/2020-12/schema",
-        "title": "stillground configuration",
+        "$schema": _DRAFT,
+        "title": _TITLE,
         "oneOf": choices,
         "$defs": definitions,
     }

@@ -23,6 +23,12 @@ from stillground.survey.quantities import InputPath, Length
 # far above it, as on a tripod.
 _CORRIDOR, _ABOVE = 0.1, 2.0
 
+# Seismic velocities of the ground, m s-1: from loose dry soil to the hardest rock, both with room
+# (common practice, no source).
+_PLAUSIBLE = (50, 10_000)
+_LARGE_ERROR = 0.3
+_SHORTEST, _LONGEST = 0.1, 100_000.0
+
 
 class StraightRaySettings(BaseModel):
     """The table [physics] for straight rays."""
@@ -66,6 +72,7 @@ class RayScene:
     surface: tuple[Array, Array] | None
     inputs: tuple[Path, ...]
     facts: tuple[str, ...]
+    doubts: tuple[str, ...]
 
     @property
     def paths(self) -> tuple[Array, Array]:
@@ -140,6 +147,7 @@ class StraightRay:
         name = str(survey.attrs.get("source", "survey"))
         first = (float(survey["source_x"][0]), float(survey["source_y"][0]))
         section = fit_section(plan_positions(survey), first, source=name)
+        _require_plausible(name, survey, section)
         aside, row = out_of_plane(survey, section, settings.out_of_plane)
         ends = {
             end: np.column_stack([survey[f"{end}_{axis}"].values for axis in "xyz"])
@@ -153,6 +161,11 @@ class StraightRay:
         if short.any():
             rows = ", ".join(str(row) for row in row_numbers(survey)[short][:5])
             raise SurveyError(name, [f"source and receiver fall on one point of the section in row {rows}"])
+        lengths = np.linalg.norm(ends["source"] - ends["receiver"], axis=1)
+        data, errors = _values(survey, "time"), _values(survey, "time_error")
+        # Of a survey that is only planned there is nothing to say.
+        apparent = lengths / data if "time" in survey else np.empty(0)
+        relative = errors / data if "time_error" in survey else np.empty(0)
         groupings, positions = {}, {}
         for end, places in ends.items():
             groupings[end], where = _numbered(places)
@@ -166,9 +179,9 @@ class StraightRay:
             section=section,
             starts=flat["source"],
             ends=flat["receiver"],
-            lengths=np.linalg.norm(ends["source"] - ends["receiver"], axis=1),
-            data=_values(survey, "time"),
-            errors=_values(survey, "time_error"),
+            lengths=lengths,
+            data=data,
+            errors=errors,
             groupings=groupings,
             positions=positions,
             surface=surface,
@@ -176,7 +189,62 @@ class StraightRay:
             facts=(
                 f"section {section.length:.4g} m long; "
                 f"positions lie at most {aside:.2g} m off it (row {row})",
+                *_velocities(apparent),
             ),
+            doubts=_doubts(apparent, relative, surface, np.vstack([flat["source"], flat["receiver"]])),
+        )
+
+
+def _velocities(apparent: Array) -> tuple[str, ...]:
+    if apparent.size == 0:
+        return ()
+    low, middle, high = np.quantile(apparent, [0.0, 0.5, 1.0])
+    return (f"apparent velocities {low:.4g} to {high:.4g} m s-1, median {middle:.4g}",)
+
+
+def _doubts(
+    apparent: Array, relative: Array, surface: tuple[Array, Array] | None, places: Array
+) -> tuple[str, ...]:
+    doubts = []
+    slowest, fastest = _PLAUSIBLE
+    odd = int(np.sum((apparent < slowest) | (apparent > fastest)))
+    if odd:
+        doubts.append(
+            f"{odd} apparent velocities lie outside {slowest} to {fastest} m s-1: is the unit of time right?"
+        )
+    if relative.size and np.median(relative) > _LARGE_ERROR:
+        doubts.append(
+            f"errors are {np.median(relative):.2g} times the data: are the columns or units mixed up?"
+        )
+    if surface is not None:
+        above = int(np.sum(places[:, 1] > np.interp(places[:, 0], *surface) + 0.1))
+        if above:
+            doubts.append(f"{above} positions of the table stand above the surface: z is elevation, up")
+    return tuple(doubts)
+
+
+def _require_plausible(name: str, survey: xr.Dataset, section: Section) -> None:
+    x, y = plan_positions(survey).T
+    if section.length > _LONGEST:
+        raise SurveyError(
+            name,
+            [
+                f"the section is {section.length / 1000:.4g} km long; are x and y of sources and receivers "
+                f"mixed up, or in other units?"
+            ],
+        )
+    if (
+        section.length < 1
+        and np.abs(x).max() <= 180
+        and np.abs(y).max() <= 90
+        and x.min() != x.round(1).min()
+    ):
+        raise SurveyError(
+            name,
+            [
+                f"the section is {section.length:.2g} m long and x and y look like degrees; project them to "
+                f"a system in metres"
+            ],
         )
 
 

@@ -38,7 +38,7 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
     if extent < max(spacing):
         raise ConfigError(
             f"ground.spacing: {max(spacing):g} m is larger than the survey {profile.name}, {extent:.3g} m "
-            f"across; take at most {_round_down(extent / 10)} m"
+            f"across; take at most {_round_down(extent / 2 ** (config.refinement.levels + 2))} m"
         )
     bottom = scene.lower[-1]
     if ground.depth is not None:
@@ -59,7 +59,9 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
     try:
         grids = ladder(lower, upper, spacing, config.refinement.levels)
     except GridError as error:
-        raise ConfigError(f"profile {profile.name}: {error}") from error
+        widths = [high - low for low, high in zip(lower, upper, strict=True)]
+        most = _round_down(min(widths) / 2**config.refinement.levels)
+        raise ConfigError(f"profile {profile.name}: {error}, such as {most} m") from error
     refuse_too_large(profile.name, grids, profile.survey.sizes["datum"], config.solver.iterations)
     return grids
 

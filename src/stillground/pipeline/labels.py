@@ -102,7 +102,7 @@ def label(
 ) -> ProfileResult:
     """Puts labels, units and coordinates back on an answer."""
     advice = advise(profile.name, grids, config)
-    origin = replace(origin, cautions=" ".join(advice))
+    origin = replace(origin, cautions=". ".join([*profile.scene.doubts, *advice]))
     kind = plugins.kind(config.survey.kind)
     crs = None if config.survey.crs is None else pyproj.CRS.from_user_input(config.survey.crs)
     metres = 1.0 if crs is None else crs.axis_info[0].unit_conversion_factor

@@ -67,7 +67,8 @@ def judge(change: Sequence[float], pick_drift: float | None, tolerance: float) -
         return Verdict(
             "drifting",
             f"halving the spacing still changes the picture by {percent}, and the changes do not shrink "
-            f"(the one before was {100 * change[-2]:.2g} %): the answer depends on the grid",
+            f"(the one before was {100 * change[-2]:.2g} %): the answer depends on the grid; "
+            f"take a smoother prior (ground.smoothness) or a rule that stops earlier",
             order,
             remaining,
         )

@@ -12,7 +12,7 @@ def gcv(history: History, options: RuleOptions) -> Pick:
 
     It does not need the size of the errors, only their ratios. Between iterations the minimum is that
     of the parabola through its neighbours, so that picks on different grids can be compared. The pick
-    is weak where the curve stays within 1 % of its minimum over more than a doubling of iterations.
+    is weak where the curve stays within 1 % of its minimum over half as many iterations again.
 
     References
     ----------
@@ -32,6 +32,6 @@ def gcv(history: History, options: RuleOptions) -> Pick:
     pick = float(k + (0.5 * (before - after) / bend if np.isfinite(bend) and bend > 0 else 0.0))
     near = np.flatnonzero(curve <= 1.01 * here)
     span = f"within 1 % of its minimum from iteration {near[0]} to {near[-1]}"
-    if near[-1] > 2 * max(near[0], 1) or near[-1] == history.last:
+    if near[-1] > 1.5 * max(near[0], 1) or near[-1] == history.last:
         return Pick(pick, False, f"the curve is flat: {span}")
     return Pick(pick, True, f"a clear minimum, {span}")

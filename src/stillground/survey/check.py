@@ -177,6 +177,8 @@ def _made(datum: xr.DataArray, error: str, floor: float, relative: float) -> xr.
     known = column(error)
     units = known.units or datum.attrs.get("units", "")
     attributes = {"long_name": known.long_name} | ({"units": units} if units else {})
+    if "original_units" in datum.attrs:
+        attributes["original_units"] = datum.attrs["original_units"]
     return xr.DataArray(np.hypot(floor, relative * datum.values), dims="datum", attrs=attributes)
 
 

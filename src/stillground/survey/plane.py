@@ -13,6 +13,9 @@ from stillground.protocols import Array
 from stillground.survey.faults import row_numbers, source_of
 
 _COINCIDE = 1e-6
+_PASSES = 20
+# Distances under this share of the length count alike: within it the fit is that of least squares.
+_NEAR = 0.02
 
 
 @dataclass(frozen=True)
@@ -64,7 +67,7 @@ def plan_positions(ds: xr.Dataset) -> Array:
 
 
 def fit_section(positions: Array, first: ArrayLike, *, source: str = "survey") -> Section:
-    """Fit the trace of a section by total least squares to the distinct positions in plan.
+    """Fit the trace of a section to the distinct positions in plan, robustly.
 
     Parameters
     ----------
@@ -81,14 +84,24 @@ def fit_section(positions: Array, first: ArrayLike, *, source: str = "survey") -
     SurveyError
         When all positions coincide in plan.
 
+    Notes
+    -----
+    Total least squares, reweighted towards least absolute distances where positions lie far off.
+
     References
     ----------
     Golub, G. H. and Van Loan, C. F. (1980): An analysis of the total least squares problem. SIAM
     Journal on Numerical Analysis 17, 883-893.
     """
     distinct = np.unique(np.asarray(positions, dtype=np.float64), axis=0)
-    center = distinct.mean(axis=0)
-    east, north = np.linalg.svd(distinct - center, full_matrices=False)[2][0]
+    weights = np.ones(len(distinct))
+    for _ in range(_PASSES):
+        center = np.average(distinct, axis=0, weights=weights)
+        around = distinct - center
+        east, north = np.linalg.svd(around * np.sqrt(weights)[:, None], full_matrices=False)[2][0]
+        aside = np.abs(around @ (-north, east))
+        # Least absolute distances: one misplaced position must not swing the plane away from the others.
+        weights = 1 / np.maximum(aside, _NEAR * max(float(np.ptp(around @ (east, north))), _COINCIDE))
     if east < -1e-9 or (east < 1e-9 and north < 0):
         east, north = -east, -north
     along = (distinct - center) @ (east, north)
