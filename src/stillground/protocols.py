@@ -134,8 +134,8 @@ class History:
         """
         if self.degrees_of_freedom is None:
             return None
-        left = np.maximum(1.0 - self.degrees_of_freedom / self.n_data, 0.0)
-        curve = np.divide(self.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 0)
+        left = 1.0 - self.degrees_of_freedom / self.n_data
+        curve = np.divide(self.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 1e-9)
         return np.asarray(curve)
 
     def upto(self, last: int) -> History:
