@@ -135,7 +135,8 @@ class History:
         if self.degrees_of_freedom is None:
             return None
         left = 1.0 - self.degrees_of_freedom / self.n_data
-        curve = np.divide(self.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 1e-9)
+        # With all freedom used up, as with few data, misfit and rest are both rounding.
+        curve = np.divide(self.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 1e-6)
         return np.asarray(curve)
 
     def upto(self, last: int) -> History:

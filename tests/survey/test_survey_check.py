@@ -138,8 +138,8 @@ def test_missing_errors_are_made(
 ) -> None:
     ds, report = checked(picks("0,0,10,18,0,9,10", "0,0,10,18,0,8,20", header=WITHOUT_ERROR), rays, **given)
     np.testing.assert_allclose(ds["time_error"], made, rtol=1e-12)
-    assert ds["time_error"].attrs == {
-        "long_name": "standard deviation of the travel time", "units": "s", "original_units": "ms"}  # fmt: skip
+    told = {"long_name": "standard deviation of the travel time", "units": "s", "original_units": "ms"}
+    assert ds["time_error"].attrs == told
     assert report.errors == origin
 
 
