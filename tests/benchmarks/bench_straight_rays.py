@@ -78,6 +78,14 @@ def medians(candidates: dict[str, Callable[[], object]], rounds: int) -> dict[st
     return {name: float(np.median(all_)) for name, all_ in seconds.items()}
 
 
+def processors(work: Callable[[], object], rounds: int) -> float:
+    """How many processors the work had: below 2 with two threads, others were using them."""
+    busy, passed = time.process_time(), time.perf_counter()
+    for _ in range(rounds):
+        work()
+    return (time.process_time() - busy) / (time.perf_counter() - passed)
+
+
 def peak(work: Callable[[], np.ndarray]) -> int:
     """Largest number of bytes that one call holds beyond its result."""
     tracemalloc.start()
@@ -132,6 +140,7 @@ def main(intervals: int = 512, sources: int = 150, rounds: int = 15) -> None:
             ratio = found[name] / found[f"{way}, {base}"]
             goal = f"{GOALS[name]:8.2f}" if name in GOALS else ""
             print(f"{name:24}{1e3 * found[name]:9.2f}{base:>22}{ratio:9.2f}{goal}")
+    print(f"two threads had {processors(lambda: two.matvec(x1), rounds):.1f} processors")
     print(f"\n{'':24}{'MB':>9}{'over':>22}{'ratio':>9}{'goal':>8}")
     for name, held in (
         ("forward, memory", peak(lambda: two.matvec(x1))),
