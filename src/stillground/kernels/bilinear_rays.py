@@ -228,26 +228,30 @@ def forward(k: int) -> Callable[..., None]:
 
 @cache
 def adjoint_crossings(k: int) -> Callable[..., None]:
-    """Kernel ``(rays, start, stop, y, dm)``: adds the crossed rows' part to ``dm``."""
+    """Kernel ``(rays, y, dm, start, stop)``: adds the part of rays crossing rows ``start`` to ``stop``.
+
+    Blocks of rows share no node, so that they need no sums of their own.
+    """
 
     @njit(**_JIT)
-    def kernel(rays: Array, start: int, stop: int, y: Array, dm: Array) -> None:
+    def kernel(rays: Array, y: Array, dm: Array, start: int, stop: int) -> None:
         rows, columns = dm.shape[0], dm.shape[1]
         one = np.uintp(1)
         weight = np.zeros(k)
-        for offset in range(stop - start):
-            ray = rays[start + offset]
+        for r in range(rays.shape[0]):
+            ray = rays[r]
             if ray[_SCALE] != 0.0:
                 low, high = _strips(ray, rows)
+                low, high = max(low + 1, start), min(high + 1, stop)
                 if high > low:
                     s = (ray[_B_HIGH] - ray[_B_LOW]) / (ray[_A_HIGH] - ray[_A_LOW])
                     back = 1.0 / s
-                    first = ray[_A_LOW] + (low + 1 - ray[_B_LOW]) * back
+                    first = ray[_A_LOW] + (low - ray[_B_LOW]) * back
                     for q in range(k):
-                        weight[q] = y[start + offset, q] * ray[_SCALE] * s
+                        weight[q] = y[r, q] * ray[_SCALE] * s
                     for step in range(high - low):
                         i, t, cubic_t, u, cubic_u = _spline(first + step * back, columns)
-                        j = np.uintp(low + 1 + step)
+                        j = np.uintp(low + step)
                         for q in range(k):
                             dm[j, i, 0, q] += weight[q] * t
                             dm[j, i, 1, q] += weight[q] * cubic_t

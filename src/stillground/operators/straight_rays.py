@@ -38,7 +38,12 @@ class _Family:
             here[index][:, order], there[index][:, order], lengths[index]
         )
         # An end costs about as much as two crossings.
-        self.ranges = cut(crossed + 4, _blocks(int(crossed.sum())))
+        n_blocks = _blocks(int(crossed.sum()))
+        self.ranges = cut(crossed + 4, n_blocks)
+        first = np.floor(self.rays[:, 1]).astype(np.int64) + 1
+        n_rows = int(first.max()) + int(crossed.max()) + 1
+        entered, left = (np.bincount(row, minlength=n_rows) for row in (first, first + crossed))
+        self.bands = cut(np.cumsum(entered - left), n_blocks)
 
 
 class StraightRays(LinearOperator):
@@ -123,7 +128,8 @@ class StraightRays(LinearOperator):
         for first in range(0, X.shape[1], _TOGETHER):
             columns = slice(first, first + _TOGETHER)
             for family in self._families:
-                total[:, columns] += self._spread(family, X[family.index, columns])
+                nodes = total.reshape(*self._grid_shape, -1)[..., columns]
+                nodes += self._spread(family, X[family.index, columns])
         return total
 
     def _follow(self, family: _Family, fields: Array) -> Array:
@@ -142,25 +148,20 @@ class StraightRays(LinearOperator):
         return out
 
     def _spread(self, family: _Family, data: Array) -> Array:
-        """Adjoint of ``_follow``: data, shape (n_rays, k), to nodes, shape (n_nodes, k)."""
+        """Adjoint of ``_follow``: data, shape (n_rays, k), to nodes, shape (*grid.shape, k)."""
         k = data.shape[1]
         y = np.ascontiguousarray(data)
         shape = self._grid_shape[::-1] if family.transposed else self._grid_shape
         m, c, e = np.zeros((3, *shape, k))
-        parts = np.zeros((len(family.ranges), *shape, 2, k))
+        dm = np.zeros((*shape, 2, k))
         scatter = bilinear_rays.adjoint_crossings(k)
-        blocks = [
-            partial(scatter, family.rays, *r, y, part) for r, part in zip(family.ranges, parts, strict=True)
-        ]
+        blocks = [partial(scatter, family.rays, y, dm, *band) for band in family.bands]
         ends = partial(bilinear_rays.adjoint_ends(k), family.rays, y, m, c, e)
         run_blocks([*blocks, ends], self._threads if len(blocks) > 1 else 1)
-        dm = parts[0]
-        for part in parts[1:]:
-            dm += part
         collect = bilinear_rays.antiderivatives_adjoint(k)
         rows = cut(np.ones(len(m)), _blocks(m.size))
         run_blocks([partial(collect, m, c, e, dm, *r) for r in rows], self._threads)
-        return (m.swapaxes(0, 1) if family.transposed else m).reshape(-1, k)
+        return m.swapaxes(0, 1) if family.transposed else m
 
     def _matvec(self, x: Array) -> Array:
         return self._matmat(x.reshape(-1, 1)).reshape(-1)
