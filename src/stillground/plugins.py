@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from difflib import get_close_matches
 from functools import cache
 from importlib.metadata import EntryPoint, entry_points
+from inspect import signature
 from typing import Literal, cast
 
 from stillground.errors import PluginError
@@ -79,6 +80,17 @@ def kind(name: str) -> Kind:
 def solver(name: str) -> Solver:
     """The solver registered under a name; errors as `kind`."""
     return cast(Solver, _load("solvers", name))
+
+
+def options(name: str) -> tuple[str, ...]:
+    """Names of the options that a solver takes: its keyword-only arguments."""
+    found = signature(solver(name)).parameters.values()
+    return tuple(p.name for p in found if p.kind is p.KEYWORD_ONLY)
+
+
+def keeps_bounds(name: str) -> bool:
+    """Whether a solver keeps bounds on the ground property: it says so by ``keeps_bounds = True``."""
+    return bool(getattr(solver(name), "keeps_bounds", False))
 
 
 def rule(name: str) -> Rule:

@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import TYPE_CHECKING, Any, Literal, Protocol
+from typing import TYPE_CHECKING, Any, Literal, Protocol, runtime_checkable
 
 import numpy as np
 from numpy.typing import NDArray
@@ -53,6 +53,20 @@ class Field:
 
 
 @dataclass(frozen=True)
+class Extra:
+    """Unknowns beside the ground, such as a delay of each source, with their prior.
+
+    ``response`` has shape (n_data, n_unknowns), data for one unit of each; ``deviation`` is their
+    prior standard deviation in that unit, named by ``units``; their prior mean is zero.
+    """
+
+    name: str
+    response: Array
+    deviation: float
+    units: str
+
+
+@dataclass(frozen=True)
 class Measurement:
     """A linear measurement of the ground on one grid; labels and units end here.
 
@@ -64,12 +78,15 @@ class Measurement:
         Observed data and their standard deviations, in the same unit.
     groupings : mapping of str to integer array, shape (n_data,)
         Which data share a source, a receiver, a station: numbers from 0, no labels.
+    extras : tuple of Extra
+        Unknowns beside the ground.
     """
 
     operator: LinearOperator
     data: Array
     errors: Array
     groupings: Mapping[str, Integers] = field(default_factory=dict)
+    extras: tuple[Extra, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -77,14 +94,18 @@ class Iterate:
     """One step of an iteration in standard form; iterate 0 is the prior mean.
 
     ``solution`` has shape (n_unknowns, n_columns) and ``residual`` = b - A x has shape
-    (n_data, n_columns); both are read-only copies. ``gradient_norm`` is the norm of A^T r of the
-    first column, or None where the method does not have it.
+    (n_data, n_columns); both are read-only copies. The rest is None where the method does not have it:
+    ``gradient_norm``, the norms of A^T r, shape (n_columns,); ``dual``, a read-only copy of vectors of
+    data with ``solution = A^T dual``, shape (n_data, n_columns); ``filter_slope``, shape (n_columns,):
+    with ``dual = q(A A^T) b`` the value q(0), minus the slope of the residual polynomial at zero.
     """
 
     index: int
     solution: Array
     residual: Array
-    gradient_norm: float | None = None
+    gradient_norm: Array | None = None
+    dual: Array | None = None
+    filter_slope: Array | None = None
 
 
 @dataclass(frozen=True)
@@ -106,6 +127,14 @@ class History:
     gradient_norm : array or None
     degrees_of_freedom : array or None
         Estimated trace of the map from data to fit.
+    error_bound : array or None
+        ``(r + r') . z / (2 |z|)`` of the step ``x' = x + A^T z`` that led to the row: while it is at
+        least the norm of the noise, that step brought x nearer to the truth. Infinite in row 0.
+    filter_slope : array or None
+        As in `Iterate`.
+    whiteness : mapping of str to array
+        By grouping, how far the residual's cumulative periodogram within the groups is from that of
+        white noise, in units in which white noise stays under 1.36 in 95 % of cases.
     """
 
     n_data: int
@@ -115,6 +144,9 @@ class History:
     step_norm: Array
     gradient_norm: Array | None = None
     degrees_of_freedom: Array | None = None
+    error_bound: Array | None = None
+    filter_slope: Array | None = None
+    whiteness: Mapping[str, Array] = field(default_factory=dict)
 
     @property
     def last(self) -> int:
@@ -126,15 +158,14 @@ class History:
         """Mean squared whitened residual, shape (n_rows,)."""
         return self.residual_norm**2 / self.n_data
 
-    @property
-    def gcv(self) -> Array | None:
-        """``chi_square / (1 - dof / n_data)^2``, shape (n_rows,), infinite where no freedom is left.
+    def gcv(self, factor: float = 1.0) -> Array | None:
+        """``chi_square / (1 - factor dof / n_data)^2``, shape (n_rows,), infinite where no freedom is left.
 
         None without degrees of freedom.
         """
         if self.degrees_of_freedom is None:
             return None
-        left = 1.0 - self.degrees_of_freedom / self.n_data
+        left = 1.0 - factor * self.degrees_of_freedom / self.n_data
         # With all freedom used up, as with few data, misfit and rest are both rounding.
         curve = np.divide(self.chi_square, left**2, out=np.full(left.shape, np.inf), where=left > 1e-6)
         return np.asarray(curve)
@@ -146,14 +177,20 @@ class History:
             for name in self.__dataclass_fields__
             if isinstance(value := getattr(self, name), np.ndarray)
         }
-        return History(self.n_data, **columns)
+        whiteness = {name: column[: last + 1] for name, column in self.whiteness.items()}
+        return History(self.n_data, **columns, whiteness=whiteness)
 
 
 @dataclass(frozen=True)
 class RuleOptions:
-    """The numbers a user can give to the rules; the defaults of ``[stopping]`` live here."""
+    """The numbers that rules take; the defaults of ``[stopping]`` live here.
+
+    ``noise`` is the size of the errors over what is stated, 1 where the stated errors are trusted.
+    """
 
     tau: float = 1.0
+    gcv_factor: float = 1.0
+    noise: float = 1.0
 
 
 @dataclass(frozen=True)
@@ -179,6 +216,19 @@ class Solver(Protocol):
     """
 
     def __call__(self, operator: LinearOperator, b: Array, /) -> Iterator[Iterate]: ...
+
+
+@runtime_checkable
+class RowBlocks(Protocol):
+    """What an operator in standard form offers to methods that go through the data by parts."""
+
+    groupings: Mapping[str, Integers]
+
+    def rows(self, index: Integers) -> LinearOperator:
+        """The operator of some data only."""
+
+    def clip(self, solution: Array) -> Array:
+        """The nearest solution whose ground is within its bounds; the same where there are none."""
 
 
 @dataclass(frozen=True)
@@ -243,6 +293,68 @@ class Choice:
 
 
 @dataclass(frozen=True)
+class Rehearsal:
+    """How the rules fared on synthetic grounds under the same survey.
+
+    Parameters
+    ----------
+    ratios : mapping of family to mapping of rule to array, shape (n_twins,)
+        Error at the rule's stop over the error of the best iterate, at least 1.
+    cost : mapping of rule to float
+        Mean of the ratio less one in the rule's worst family.
+    groups : tuple of tuple of str
+        Rules that these twins cannot tell apart, best group first, in each the cheapest first.
+    total_error, resolved : array, nodal field on the grid rehearsed on
+        Root mean square error over twins drawn from the prior at the chosen rule's stops, in the ground
+        property's unit, and the share of the truth that comes back, ``cov(fit, truth) / var(truth)``.
+    """
+
+    ratios: Mapping[str, Mapping[str, Array]]
+    cost: Mapping[str, float]
+    groups: tuple[tuple[str, ...], ...]
+    total_error: Array
+    resolved: Array
+
+
+@dataclass(frozen=True)
+class Variation:
+    """One setting changed: what, the stop it led to, and how far the picture moved (relative L2)."""
+
+    name: str
+    iteration: float
+    distance: float
+
+
+@dataclass(frozen=True)
+class Sensitivity:
+    """How far the answer depends on the lengths, the smoothness and the background.
+
+    ``spread`` is the root mean square change over the variations of lengths and smoothness, in the
+    property's unit; ``investigation`` the depth-of-investigation index: the change of the answer over
+    that of the background, 0 where the data decide and 1 where the background does. Nodal fields.
+    """
+
+    variations: tuple[Variation, ...]
+    spread: Array
+    investigation: Array
+
+
+@dataclass(frozen=True)
+class Pattern:
+    """A synthetic pattern of one size through the survey and the stop: what went in and what came back.
+
+    ``truth`` and ``returned`` are relative to the pattern's amplitude; ``share`` is the local regression
+    of one on the other, over about the size. Nodal fields.
+    """
+
+    name: str
+    size: float
+    truth: Array
+    returned: Array
+    share: Array
+
+
+@dataclass(frozen=True)
 class Result:
     """One profile's answer on the finest rung, as arrays, with the argument for it.
 
@@ -275,6 +387,20 @@ class Result:
     snapshots : tuple of (int, array)
         Iterations kept on the finest rung with their nodal fields.
     ladder : Ladder
+    weights : array, shape (n_data,)
+        Of the data, 1 but for outliers; the errors of the fit are ``errors / sqrt(weights)``.
+    noise : float
+        Estimated size of the errors over what is stated.
+    extras : mapping of str to (array, str)
+        Unknowns beside the ground, such as statics, and their units.
+    noise_part : array, nodal field
+        Standard deviation of the answer under the noise, in the property's unit.
+    rehearsal, sensitivity
+        Their fields brought to ``axes``; None where they were not asked for.
+    remarks : tuple of str
+        What the data say of the settings, with what to do.
+    interrupted : bool
+        The user broke off: this is what had been done by then.
     """
 
     property: GroundProperty
@@ -293,6 +419,14 @@ class Result:
     chosen: Choice
     snapshots: tuple[tuple[int, Array], ...]
     ladder: Ladder
+    weights: Array
+    noise: float
+    extras: Mapping[str, tuple[Array, str]]
+    noise_part: Array
+    rehearsal: Rehearsal | None
+    sensitivity: Sensitivity | None
+    remarks: tuple[str, ...]
+    interrupted: bool = False
 
 
 @dataclass(frozen=True)

@@ -97,6 +97,11 @@ class PriorRoot(LinearOperator):
         field = self._root * X.reshape(*self._root.shape[:-1], -1)
         return np.asarray((self._factor * self._transform(field)).reshape(X.shape))
 
+    def inverse(self, ground: Array) -> Array:
+        """Coefficients (n_nodes, n_columns) that give nodal fields (n_nodes, n_columns): exact."""
+        field = ground.reshape(*self._root.shape[:-1], -1) / self._root
+        return np.asarray((self._transform(field) / self._factor).reshape(ground.shape))
+
     def _matvec(self, x: Array) -> Array:
         return self._matmat(x.reshape(-1, 1)).reshape(-1)
 

@@ -104,6 +104,7 @@ class StraightRays(LinearOperator):
         if lengths is None:
             lengths = np.linalg.norm(np.asarray(ends) - np.asarray(starts), axis=1)
         along_last = np.abs(there - here)[:, 1] >= np.abs(there - here)[:, 0]
+        self._grid, self._rays = grid, (np.asarray(starts), np.asarray(ends), np.asarray(lengths))
         self._grid_shape = grid.shape
         self._threads = threads
         self._families = [
@@ -112,6 +113,11 @@ class StraightRays(LinearOperator):
             if chosen.any()
         ]
         super().__init__(dtype=np.dtype(np.float64), dims=(grid.n_nodes,), dimsd=(len(here),))
+
+    def rows(self, index: Integers) -> StraightRays:
+        """The operator of some rays only."""
+        starts, ends, lengths = (each[index] for each in self._rays)
+        return StraightRays(self._grid, starts, ends, lengths, self._threads)
 
     def _matmat(self, X: Array) -> Array:
         X = np.asarray(X, dtype=np.float64)

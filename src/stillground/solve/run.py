@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections import defaultdict
 from collections.abc import Generator
 from dataclasses import dataclass
 from itertools import islice
@@ -10,13 +11,17 @@ from itertools import islice
 import numpy as np
 from pylops import LinearOperator
 
-from stillground.protocols import Array, History, Progress, Solver
-from stillground.solve.columns import norm
+from stillground.protocols import Array, History, Integers, Iterate, Progress, RowBlocks, Solver
+from stillground.solve.columns import frozen, inner, norm, ratio
+from stillground.solve.data_space import DataSpace
+from stillground.solve.whiteness import Periodogram
 
 KEPT_BYTES = 512 * 2**20
 """Memory for kept iterates; those beyond it are made again when asked for."""
 
 _PROBED_DATA = 1000
+# Fewer iterations than this are not worth judging when the user breaks off.
+_JUDGED = 3
 
 
 def n_probes(n_data: int) -> int:
@@ -29,9 +34,9 @@ class Run:
     """A finished iteration in standard form.
 
     ``solutions`` holds the iterates 0, 1, ... that fitted into the memory budget, read-only,
-    shape (n_unknowns,) each; ``residuals`` all of them, shape (n_rows, n_data). ``columns`` are the
-    data and their disturbed copies, shape (n_data, n_columns): only together do they give the same
-    iterates again to the bit.
+    shape (n_unknowns,) each; ``residuals`` all of them, shape (n_rows, n_data). ``columns`` are all
+    that was iterated with it, shape (n_data, n_columns), and ``column`` its own: only together do they
+    give the same iterates again to the bit.
     """
 
     history: History
@@ -39,18 +44,24 @@ class Run:
     solutions: tuple[Array, ...]
     operator: LinearOperator
     columns: Array
+    column: int
     solver: Solver
+    interrupted: bool = False
 
     def solution(self, iteration: float) -> Array:
         """The iterate at a fractional iteration, shape (n_unknowns,): linear between neighbours."""
+        return back(self.operator, self.inside(iteration)[:, None])[:, 0]
+
+    def inside(self, iteration: float) -> Array:
+        """The same as the iteration knows it: in its data space, where it ran in one."""
         whole, part = self._split(iteration)
         wanted = [whole] if part == 0 else [whole, whole + 1]
         if wanted[-1] < len(self.solutions):
             found = [self.solutions[k] for k in wanted]
         else:
             again = islice(self.solver(self.operator, self.columns), wanted[0], wanted[-1] + 1)
-            found = [iterate.solution[:, 0] for iterate in again]
-        return found[0] if part == 0 else (1 - part) * found[0] + part * found[1]
+            found = [iterate.solution[:, self.column] for iterate in again]
+        return np.asarray(found[0] if part == 0 else (1 - part) * found[0] + part * found[1])
 
     def residual(self, iteration: float) -> Array:
         """Whitened residual at a fractional iteration, shape (n_data,)."""
@@ -64,15 +75,21 @@ class Run:
         return int(inside), inside - int(inside)
 
 
+def back(operator: LinearOperator, solutions: Array) -> Array:
+    """Solutions in standard form, shape (n_unknowns, n_columns), of an operator or its `DataSpace`."""
+    return operator.back(solutions) if isinstance(operator, DataSpace) else solutions
+
+
 def iterate(
     solver: Solver,
     operator: LinearOperator,
     b: Array,
     iterations: int,
     *,
+    probes: int | None = None,
     seed: int = 0,
     kept_bytes: int = KEPT_BYTES,
-) -> Generator[Progress, None, Run]:
+) -> Generator[Progress, None, tuple[Run, ...]]:
     """Runs ``solver`` for ``iterations`` steps, or fewer where it ends by itself.
 
     Beside the data the solver works on copies of them disturbed by z, vectors of random signs, the
@@ -83,10 +100,14 @@ def iterate(
     ----------
     solver : Solver
     operator : pylops.LinearOperator, shape (n_data, n_unknowns)
-    b : array, shape (n_data,)
+        Where it offers `RowBlocks`, whiteness is told along its groupings.
+    b : array, shape (n_data, n_problems)
+        Independent problems that share the products.
     iterations : int
+    probes : int, optional
+        Disturbed copies of each problem; default `n_probes`, 0 for no degrees of freedom.
     seed : int
-        Of the disturbances.
+        Of the disturbances, the same for all problems.
     kept_bytes : int
         Memory for kept iterates.
 
@@ -96,7 +117,13 @@ def iterate(
 
     Returns
     -------
-    Run
+    tuple of Run
+        One for each problem.
+
+    Notes
+    -----
+    A keyboard interrupt ends the iteration early and is told by ``Run.interrupted``; with fewer than
+    three iterations done it passes on.
 
     References
     ----------
@@ -104,38 +131,94 @@ def iterate(
     noisy data, Numer. Math. 56. The size of the disturbance: a small one would measure the kinks of the
     iteration, which is not linear in the data.
     """
-    signs = np.random.default_rng(seed).choice([-1.0, 1.0], size=(b.size, n_probes(b.size)))
-    columns = np.column_stack([b, b[:, None] + signs])
-    n_kept = max(kept_bytes // (8 * operator.shape[1]), 1)
+    n_data, problems = b.shape
+    signs = np.random.default_rng(seed).choice(
+        [-1.0, 1.0], size=(n_data, 1, n_probes(n_data) if probes is None else probes)
+    )
+    # Column 0 of each problem are its data, the others their disturbed copies.
+    columns = (b[:, :, None] + np.concatenate([np.zeros((n_data, 1, 1)), signs], axis=2)).reshape(n_data, -1)
+    own = np.arange(problems) * (1 + signs.shape[2])
+    n_kept = max(kept_bytes // (8 * operator.shape[1] * problems), 1)
+    white = Periodogram(operator.groupings if isinstance(operator, RowBlocks) else {})
 
     solutions: list[Array] = []
-    residuals: list[Array] = []
-    gradients: list[float | None] = []
-    sizes, steps, freedoms = [], [], []
-    before = np.zeros(operator.shape[1])
-    for step in islice(solver(operator, columns), iterations + 1):
-        x, r = step.solution[:, 0], step.residual
-        if step.index < n_kept:
-            solutions.append(np.ascontiguousarray(x))
-            solutions[-1].flags.writeable = False
-        residuals.append(r[:, 0].copy())
-        gradients.append(step.gradient_norm)
-        sizes.append(float(norm(x[:, None])[0]))
-        steps.append(float(norm((x - before)[:, None])[0]))
-        moved = (columns[:, 1:] - r[:, 1:]) - (b - r[:, 0])[:, None]
-        freedoms.append(float(np.mean(np.sum(signs * moved, axis=0))))
-        before = x
-        chi_square = float(residuals[-1] @ residuals[-1]) / b.size
-        yield Progress("", step.index, iterations, f"misfit {chi_square:.3g}")
+    table: dict[str, list[Array]] = defaultdict(list)
+    before: Iterate | None = None
+    interrupted = False
+    try:
+        for step in islice(solver(operator, columns), iterations + 1):
+            r = step.residual[:, own]
+            row = _row(step, before, own) | {f"whiteness {name}": d for name, d in white(r).items()}
+            if signs.size:
+                spread = step.residual.reshape(n_data, problems, -1)
+                moved = signs - (spread[:, :, 1:] - spread[:, :, :1])
+                freedom = np.mean(np.sum(signs * moved, axis=0), axis=-1)
+                known = table["degrees_of_freedom"][-1:] or [freedom]
+                row["degrees_of_freedom"] = np.maximum(freedom, known[0])
+            if step.index < n_kept:
+                solutions.append(frozen(step.solution[:, own]))
+            for name, values in row.items():
+                table[name].append(values)
+            table["residual"].append(r)
+            before = step
+            yield Progress("", step.index, iterations, f"misfit {float(np.mean(r * r)):.3g}")
+    except KeyboardInterrupt:
+        interrupted = True
+        if len(table["residual"]) <= _JUDGED:
+            raise
 
-    kept = np.array(residuals)
-    history = History(
-        n_data=b.size,
-        residual_norm=np.linalg.norm(kept, axis=1),
-        residual_step=np.linalg.norm(np.diff(kept, axis=0, prepend=kept[:1]), axis=1),
-        solution_norm=np.array(sizes),
-        step_norm=np.array(steps),
-        gradient_norm=None if None in gradients else np.array(gradients, dtype=float),
-        degrees_of_freedom=np.maximum.accumulate(freedoms),
+    residuals = table.pop("residual")
+    # An interruption may have come between two columns of the last row.
+    table = {name: rows[: len(residuals)] for name, rows in table.items()}
+    solutions = solutions[: len(residuals)]
+    kept = np.stack(residuals)
+    norms = np.linalg.norm(kept, axis=1)
+    residual_steps = np.linalg.norm(np.diff(kept, axis=0, prepend=kept[:1]), axis=1)
+    stacked = {name: np.stack(rows) for name, rows in table.items() if len(rows) == len(kept)}
+    return tuple(
+        Run(
+            history=History(
+                n_data=n_data,
+                residual_norm=norms[:, j],
+                residual_step=residual_steps[:, j],
+                whiteness={
+                    name.removeprefix("whiteness "): values[:, j]
+                    for name, values in stacked.items()
+                    if name.startswith("whiteness ")
+                },
+                **{
+                    name: values[:, j]
+                    for name, values in stacked.items()
+                    if not name.startswith("whiteness ")
+                },
+            ),
+            residuals=kept[:, :, j],
+            solutions=tuple(x[:, j] for x in solutions),
+            operator=operator,
+            columns=columns,
+            column=int(own[j]),
+            solver=solver,
+            interrupted=interrupted,
+        )
+        for j in range(problems)
     )
-    return Run(history, kept, tuple(solutions), operator, columns, solver)
+
+
+def _row(step: Iterate, before: Iterate | None, own: Integers) -> dict[str, Array]:
+    """One row of the history, shape (n_problems,) each; what the method does not have is left out."""
+    x = step.solution[:, own]
+    row = {
+        "solution_norm": norm(x),
+        "step_norm": norm(x - before.solution[:, own]) if before else np.zeros(own.size),
+    }
+    if step.gradient_norm is not None:
+        row["gradient_norm"] = step.gradient_norm[own]
+    if step.filter_slope is not None:
+        row["filter_slope"] = step.filter_slope[own]
+    if step.dual is not None:
+        row["error_bound"] = np.full(own.size, np.inf)
+        if before is not None and before.dual is not None:
+            z = step.dual[:, own] - before.dual[:, own]
+            mean = 0.5 * (step.residual[:, own] + before.residual[:, own])
+            row["error_bound"] = ratio(inner(mean, z), norm(z))
+    return row

@@ -10,11 +10,15 @@ from stillground.protocols import Measurement
 def fit_background(measurement: Measurement) -> float:
     """Weighted least-squares constant, in the unit of the ground property.
 
+    Extra unknowns are fitted with it, held by their prior: a delay would otherwise go into the constant.
+
     Notes
     -----
-    With a = A 1, the response to a ground of one everywhere:
+    With a = A 1, the response to a ground of one everywhere, and no extra unknowns:
     ``sum(a d / errors^2) / sum(a^2 / errors^2)``.
     """
     response = measurement.operator @ np.ones(measurement.operator.shape[1])
-    weights = measurement.errors**-2.0
-    return float((weights * response) @ measurement.data / ((weights * response) @ response))
+    extras = [extra.response * extra.deviation for extra in measurement.extras]
+    columns = np.column_stack([response, *extras]) / measurement.errors[:, None]
+    normal = columns.T @ columns + np.diag([0.0, *np.ones(columns.shape[1] - 1)])
+    return float(np.linalg.solve(normal, columns.T @ (measurement.data / measurement.errors))[0])

@@ -1,0 +1,67 @@
+"""Kaczmarz' row-action iteration: one datum after the other."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+from pylops import LinearOperator
+
+from stillground.protocols import Array, Iterate
+from stillground.solve.blocks import Order, require_rows, sequence
+from stillground.solve.columns import frozen
+
+
+def kaczmarz(
+    operator: LinearOperator, b: Array, *, order: Order = "golden", relaxation: float = 1.0, seed: int = 0
+) -> Iterator[Iterate]:
+    """Iterates of Kaczmarz' method from zero, one sweep over all data each; endless.
+
+    Parameters
+    ----------
+    operator : pylops.LinearOperator, shape (n_data, n_unknowns)
+        It must offer `stillground.protocols.RowBlocks`; its bounds are kept after every sweep.
+    b : array, shape (n_data, n_columns)
+    order : "cyclic", "random" or "golden"
+        Random draws a new order each sweep.
+    relaxation : float
+        Between 0 and 2.
+    seed : int
+        Of the random order.
+
+    Yields
+    ------
+    Iterate
+
+    Notes
+    -----
+    For one datum after the other, ``x += relaxation (b_i - a_i . x) / |a_i|^2 a_i``.
+
+    References
+    ----------
+    Kaczmarz (1937), Angenäherte Auflösung von Systemen linearer Gleichungen, Bull. Int. Acad. Pol. Sci.
+    Lett. A 35. Strohmer & Vershynin (2009), A randomized Kaczmarz algorithm with exponential
+    convergence, J. Fourier Anal. Appl. 15 (random order; here every datum once a sweep).
+    """
+    require_rows(operator)
+    n_data = operator.shape[0]
+    rows = [operator.rows(np.array([i])) for i in range(n_data)]
+    vectors = [row.rmatmat(np.ones((1, 1))) for row in rows]
+    squares = np.array([float(np.sum(vector**2)) for vector in vectors])
+    x, dual = np.zeros((operator.shape[1], b.shape[1])), np.zeros_like(b)
+    index = 0
+    yield Iterate(0, frozen(x), frozen(b), dual=frozen(dual))
+    while True:
+        for i in sequence(n_data, order, seed + index):
+            if squares[i] > 0:
+                step = relaxation * (b[i] - vectors[i][:, 0] @ x) / squares[i]
+                x += vectors[i] * step
+                dual[i] += step
+        clipped = operator.clip(x)
+        free = clipped is x
+        x = clipped if free else clipped.copy()
+        index += 1
+        yield Iterate(index, frozen(x), frozen(b - operator.matmat(x)), dual=frozen(dual) if free else None)
+
+
+kaczmarz.keeps_bounds = True  # type: ignore[attr-defined]
