@@ -11,6 +11,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from pylops import MatrixMult
 
+from stillground.progress import finish
 from stillground.protocols import History, Pick, Rule, RuleOptions
 from stillground.solve import Run, iterate
 from stillground.solve.cgls import cgls
@@ -52,12 +53,9 @@ def solve(rng: np.random.Generator, solver: Callable = lsqr, scale: float = 1.0)
     left, right = (np.linalg.qr(rng.normal(size=(n, n)))[0] for _ in range(2))
     values = 30 / np.arange(1, n + 1.0) ** 1.5
     b = left @ (values * rng.normal(size=n)) + rng.normal(size=n)
-    work = iterate(solver, MatrixMult(scale * left @ np.diag(values) @ right.T), scale * b, 30)
-    while True:
-        try:
-            next(work)
-        except StopIteration as end:
-            return end.value
+    operator = MatrixMult(scale * left @ np.diag(values) @ right.T)
+    (run,) = finish(iterate(solver, operator, scale * b[:, None], 30))
+    return run
 
 
 class TestDiscrepancy:
@@ -132,7 +130,7 @@ class TestDiscrepancy:
 class TestGcv:
     def test_the_curve_is_the_misfit_over_what_is_left_of_freedom(self) -> None:
         """Outside source: Golub, Heath & Wahba (1979), from memory."""
-        found = history(np.array([20.0, 10.0]), np.zeros(2), np.array([0.0, 60.0])).gcv
+        found = history(np.array([20.0, 10.0]), np.zeros(2), np.array([0.0, 60.0])).gcv()
         assert found == pytest.approx([4.0, 1.0 / 0.4**2])
 
     @laws

@@ -34,7 +34,7 @@ def discrepancy(history: History, options: RuleOptions) -> Pick:
     Morozov (1966), On the solution of functional equations by the method of regularization, Soviet
     Math. Dokl. 7.
     """
-    target = options.tau * math.sqrt(history.n_data)
+    target = options.tau * options.noise * math.sqrt(history.n_data)
     pick = _crossing(history, target)
     chi_square = float(history.chi_square[-1])
     if pick is None:
