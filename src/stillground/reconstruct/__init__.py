@@ -1,5 +1,28 @@
-"""One answer on one grid: standard form, iteration, rules. Arrays only."""
+"""One answer on one grid: standard form, iteration, rules, and the loops around them. Arrays only."""
 
-from stillground.reconstruct.reconstruction import Method, Reconstruction, reconstruct
+from stillground.reconstruct.extras import with_delay, with_statics
+from stillground.reconstruct.outliers import find_outliers, reweighted
+from stillground.reconstruct.reconstruction import (
+    Method,
+    Problem,
+    Reconstruction,
+    judge,
+    prepare,
+    reconstruct,
+)
+from stillground.reconstruct.suspicion import noise_size, shared_constants
 
-__all__ = ["Method", "Reconstruction", "reconstruct"]
+__all__ = [
+    "Method",
+    "Problem",
+    "Reconstruction",
+    "find_outliers",
+    "judge",
+    "noise_size",
+    "prepare",
+    "reconstruct",
+    "reweighted",
+    "shared_constants",
+    "with_delay",
+    "with_statics",
+]

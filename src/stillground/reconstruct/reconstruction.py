@@ -3,15 +3,20 @@
 from __future__ import annotations
 
 from collections.abc import Generator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
+from pylops import LinearOperator
 
 from stillground.grid import Grid
 from stillground.operators.prior_root import PriorRoot
-from stillground.protocols import Array, Measurement, Pick, Progress, Rule, RuleOptions, Solver
-from stillground.solve import Run, iterate
+from stillground.protocols import Array, History, Measurement, Pick, Progress, Rule, RuleOptions, Solver
+from stillground.reconstruct.extras import ground_deviation
+from stillground.reconstruct.suspicion import noise_size
+from stillground.solve import DataSpace, Run, iterate, n_probes
+from stillground.solve.data_space import MOST_DATA
 from stillground.standard_form import StandardForm, fit_background, standard_form
+from stillground.stopping.gcv import gcv
 
 
 @dataclass(frozen=True)
@@ -32,6 +37,11 @@ class Method:
     options : RuleOptions
     background : float or None
         Constant prior mean in the unit of the ground property; None fits it to the data.
+    bounds : pair of float or None
+        Least and greatest value of the ground property; only some solvers keep them.
+    trust : bool
+        Whether the stated errors have the right size; otherwise generalised cross-validation tells it to
+        the rules that need it.
     """
 
     correlation: tuple[float, ...]
@@ -42,17 +52,24 @@ class Method:
     choose: str
     options: RuleOptions = field(default_factory=RuleOptions)
     background: float | None = None
+    bounds: tuple[float, float] | None = None
+    trust: bool = True
 
 
 @dataclass(frozen=True)
 class Reconstruction:
-    """The whole iteration on one grid with every rule's pick."""
+    """The whole iteration on one grid with every rule's pick.
+
+    ``noise`` is the estimated size of the errors over what is stated.
+    """
 
     grid: Grid
     measurement: Measurement
+    method: Method
     standard: StandardForm
     run: Run
     picks: Mapping[str, Pick]
+    noise: float
 
     def model(self, iteration: float) -> Array:
         """Nodal field of the ground property at a fractional iteration, shape ``grid.shape``."""
@@ -62,6 +79,44 @@ class Reconstruction:
         """Where the picture of a rule is taken: its pick, or the last iterate where it found none."""
         pick = self.picks[rule].iteration
         return float(self.run.history.last) if pick is None else pick
+
+
+@dataclass(frozen=True)
+class Problem:
+    """A measurement in standard form with the operator to iterate on: its own, or its data space."""
+
+    grid: Grid
+    standard: StandardForm
+    operator: LinearOperator
+
+    def anomaly(self, solutions: Array) -> Array:
+        """Grounds less the background, shape (n_nodes, n_columns), of solutions in standard form."""
+        return np.asarray(self.standard.prior_root.matmat(solutions[: self.grid.n_nodes]))
+
+
+def prepare(measurement: Measurement, grid: Grid, method: Method, *, products: int) -> Problem:
+    """Brings a measurement to standard form.
+
+    The data space is taken where making it, n_data products each way, costs less than the ``products``
+    that iterations on the grid would take: their number times that of columns.
+    """
+    constant = fit_background(measurement) if method.background is None else method.background
+    # Relative to the background, solutions have no unit. Iterates do not depend on the scale, but for how
+    # much the ground may do before extra unknowns do.
+    deviation = abs(constant) or 1.0
+    if measurement.extras:
+        root = PriorRoot(grid, method.correlation, method.smoothness)
+        deviation = ground_deviation(measurement, root, constant) or deviation
+    standard = standard_form(
+        measurement,
+        PriorRoot(grid, method.correlation, method.smoothness, deviation),
+        np.full(grid.n_nodes, constant),
+        method.bounds,
+    )
+    n_data = measurement.data.size
+    if method.bounds is None and n_data <= min(products, MOST_DATA):
+        return Problem(grid, standard, DataSpace(standard.operator))
+    return Problem(grid, standard, standard.operator)
 
 
 def reconstruct(
@@ -77,14 +132,17 @@ def reconstruct(
     -------
     Reconstruction
     """
-    constant = fit_background(measurement) if method.background is None else method.background
-    # Relative to the background, solutions have no unit; the iterates do not depend on the scale.
-    deviation = abs(constant) or 1.0
-    standard = standard_form(
-        measurement,
-        PriorRoot(grid, method.correlation, method.smoothness, deviation),
-        np.full(grid.n_nodes, constant),
-    )
-    run = yield from iterate(method.solver, standard.operator, standard.b, method.iterations)
-    picks = {name: rule(run.history, method.options) for name, rule in method.rules.items()}
-    return Reconstruction(grid, measurement, standard, run, picks)
+    columns = 1 + n_probes(measurement.data.size)
+    problem = prepare(measurement, grid, method, products=method.iterations * columns)
+    b = problem.standard.b[:, None]
+    (run,) = yield from iterate(method.solver, problem.operator, b, method.iterations)
+    picks, noise = judge(run.history, method)
+    return Reconstruction(grid, measurement, method, problem.standard, run, picks, noise)
+
+
+def judge(history: History, method: Method) -> tuple[dict[str, Pick], float]:
+    """Every rule's pick on a history, and the size of the errors that cross-validation estimates."""
+    pick = gcv(history, method.options).iteration
+    noise = noise_size(history, float(history.last) if pick is None else pick)
+    options = method.options if method.trust else replace(method.options, noise=noise)
+    return {name: rule(history, options) for name, rule in method.rules.items()}, noise

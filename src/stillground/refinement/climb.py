@@ -9,6 +9,7 @@ from itertools import pairwise
 import numpy as np
 
 from stillground.grid import Grid, prolong
+from stillground.progress import staged
 from stillground.protocols import Array, Ladder, Measurement, Progress, Rung
 from stillground.reconstruct import Method, Reconstruction, reconstruct
 from stillground.refinement.verdict import judge
@@ -18,18 +19,25 @@ _ROUNDING = 1e-10
 
 @dataclass(frozen=True)
 class Climb:
-    """What a climb leaves: the ladder, and the finest rung's reconstruction with its picture.
+    """What a climb leaves: the ladder, all reconstructions, and the finest rung's picture.
 
     ``model`` is the nodal field at the finest rung's pick, ``anomaly`` the root mean square of it
     less its best constant, ``mesh_change`` the local root mean square, over about a correlation
-    length, of the change since the rung before (NaN with a single rung).
+    length, of the change since the rung before (NaN with a single rung). ``interrupted``: the user
+    broke off, finer rungs are missing and the last one may not
+    be iterated to its end.
     """
 
     ladder: Ladder
-    finest: Reconstruction
+    rungs: tuple[Reconstruction, ...]
     model: Array
     anomaly: float
     mesh_change: Array
+    interrupted: bool
+
+    @property
+    def finest(self) -> Reconstruction:
+        return self.rungs[-1]
 
 
 def climb(
@@ -56,17 +64,20 @@ def climb(
     Climb
     """
     rungs: list[Reconstruction] = []
+    interrupted = False
     for number, grid in enumerate(grids, start=1):
         spacing = " by ".join(f"{h:g}" for h in dict.fromkeys(grid.spacing))
         stage = f"rung {number} of {len(grids)}, {spacing} m"
-        work = reconstruct(assemble(grid), grid, method)
-        while True:
-            try:
-                step = next(work)
-            except StopIteration as end:
-                rungs.append(end.value)
-                break
-            yield Progress(stage, step.done, step.total, step.detail)
+        try:
+            rungs.append((yield from staged(reconstruct(assemble(grid), grid, method), stage)))
+        except KeyboardInterrupt:
+            # Too early on this rung to judge anything: the ones before stand.
+            if not rungs:
+                raise
+            interrupted = True
+        interrupted = interrupted or rungs[-1].run.interrupted
+        if interrupted:
+            break
 
     finest = rungs[-1]
     fine = finest.grid
@@ -104,7 +115,8 @@ def climb(
     )
     return Climb(
         ladder=ladder,
-        finest=finest,
+        rungs=tuple(rungs),
+        interrupted=interrupted,
         model=model,
         anomaly=spread / float(np.sqrt(np.prod(fine.lengths))),
         # Node by node the change would show the coarser rung's nodes and not the ground.
