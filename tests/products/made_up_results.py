@@ -11,9 +11,13 @@ from stillground.protocols import (
     GroundProperty,
     History,
     Ladder,
+    Pattern,
     Pick,
+    Rehearsal,
     Result,
     Rung,
+    Sensitivity,
+    Variation,
     Verdict,
 )
 
@@ -48,9 +52,67 @@ def positions() -> tuple[np.ndarray, np.ndarray]:
     )
 
 
+def make_rehearsal(x: np.ndarray) -> Rehearsal:
+    """Twenty twins in two families; layers cost about three times as much as draws from the prior."""
+    scatter = np.sort(np.random.default_rng(11).exponential(size=20))
+    cost = {
+        "gcv": 0.12,
+        "discrepancy": 0.13,
+        "risk": 0.14,
+        "whiteness": 0.14,
+        "monotone-error": 0.14,
+        "quasi-optimality": 0.3,
+        "l-curve": 0.6,
+        "hanke-raus": 1.1,
+    }
+    ratios = {
+        family: {rule: 1 + share * size * scatter for rule, size in cost.items()}
+        for family, share in (("prior", 0.3), ("layers", 1.0))
+    }
+    groups = (tuple(cost)[:5], *((rule,) for rule in tuple(cost)[5:]))
+    inwards = 1 - np.abs(x - 9) / 11
+    return Rehearsal(
+        ratios=ratios,
+        cost=cost,
+        groups=groups,
+        total_error=2e-5 * (1.2 - inwards),
+        resolved=0.2 + 0.7 * inwards,
+    )
+
+
+def make_sensitivity(x: np.ndarray) -> Sensitivity:
+    return Sensitivity(
+        variations=(
+            Variation("lengths halved", 7.3, 0.39),
+            Variation("lengths doubled", 13.2, 0.21),
+            Variation("background less 10 %", 11.0, 0.35),
+        ),
+        spread=5e-6 + 1e-6 * np.abs(x - 9),
+        investigation=np.abs(x - 9) / 22,
+    )
+
+
+def make_patterns(axes: tuple[np.ndarray, ...]) -> tuple[Pattern, ...]:
+    """Of 2 and 4 m: small bodies come back left of 9 m and above 37 m, large ones above 40 m."""
+    x, z = np.meshgrid(*axes, indexing="ij")
+    found = []
+    for size, share in ((4.0, 0.9 * (z > 40)), (2.0, 0.8 * (x < 9) * (z > 37))):
+        for name in ("checkerboard", "bodies"):
+            truth = np.sin(np.pi * x / size) * np.sin(np.pi * z / size)
+            found.append(Pattern(name, size, truth, share * truth, share))
+    return tuple(found)
+
+
 def make_result(
-    *, word: str = "settled", probed: bool = True, levels: int = 4, spacing: float = 0.25, n_rules: int = 8
+    *,
+    word: str = "settled",
+    probed: bool = True,
+    levels: int = 4,
+    spacing: float = 0.25,
+    n_rules: int = 8,
+    argued: bool = True,
 ) -> Result:
+    """``argued``: with a rehearsal and with settings varied."""
     axes = axes_of(spacing)
     x, z = np.meshgrid(*axes, indexing="ij")
     model = slowness(x, z)
@@ -82,6 +144,8 @@ def make_result(
         step_norm=np.diff(roughness, prepend=0),
         gradient_norm=900 * np.exp(-k / 4),
         degrees_of_freedom=420 * (1 - np.exp(-k / 14)) if probed else None,
+        error_bound=np.append(np.inf, 60 * np.exp(-k[1:] / 11)),
+        whiteness={"source": 0.5 + np.abs(k - 9) / 4, "receiver": 0.6 + np.abs(k - 12) / 4},
     )
 
     def choice(rule: str, iteration: float | None, firm: bool, reason: str) -> Choice:
@@ -143,4 +207,14 @@ def make_result(
         chosen=choices[1] if n_rules > 1 else choices[0],
         snapshots=tuple((n, slowness(x, z, 1 - np.exp(-n / 4))) for n in range(0, 31, 5)),
         ladder=Ladder(tuple(rungs), tuple(change), 0.001 if levels > 1 else None, verdict),
+        weights=np.where(np.isin(np.arange(625), (17, 300)), 0.25, 1.0),
+        noise=1.07,
+        extras={
+            "source_static": (1e-4 * np.sin(np.arange(25.0)), "s"),
+            "delay": (np.array([3e-4]), "s"),
+        },
+        noise_part=4e-6 + 1e-7 * np.abs(x - 9),
+        rehearsal=make_rehearsal(x) if argued else None,
+        sensitivity=make_sensitivity(x) if argued else None,
+        remarks=("2 of 625 data look like outliers",),
     )

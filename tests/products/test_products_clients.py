@@ -16,9 +16,12 @@ import xarray as xr
 from pyproj import CRS
 
 from stillground.products.history import history_dataset, write_history
+from stillground.products.pattern import pattern_dataset, write_pattern
 from stillground.products.provenance import Provenance
 from stillground.products.section import section_dataset, write_section
 from stillground.protocols import Result
+
+from .made_up_results import axes_of, make_patterns
 
 PLACES = ((5.5, 53.0), (12.5, 40.25))
 
@@ -70,6 +73,14 @@ def test_the_compliance_checker_passes_the_section(section: Path) -> None:
 
 def test_the_compliance_checker_passes_the_history(history: Path) -> None:
     check(history)
+
+
+def test_the_compliance_checker_passes_the_patterns(
+    surface: Any, provenance: Provenance, tmp_path: Path
+) -> None:
+    axes = axes_of(0.5)
+    made = pattern_dataset("crosshole-ab", make_patterns(axes), axes, surface=surface, provenance=provenance)
+    check(write_pattern(tmp_path, "crosshole-ab", made))
 
 
 def test_rasterio_reads_the_section_the_right_way_up(section: Path) -> None:

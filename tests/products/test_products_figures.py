@@ -6,7 +6,6 @@ import shutil
 import subprocess
 from collections.abc import Callable
 from dataclasses import replace
-from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
@@ -24,16 +23,20 @@ from matplotlib.textpath import text_to_path
 from stillground.errors import OutputError
 from stillground.products import figures
 from stillground.products.figures import write_figures
-from stillground.products.figures.badges import BADGES, badge_of, shelves
+from stillground.products.figures.errors import errors_figure
 from stillground.products.figures.ladder import ladder_figure
+from stillground.products.figures.pattern import pattern_figure
+from stillground.products.figures.rehearsal import rehearsal_figure
 from stillground.products.figures.residuals import residuals_figure
 from stillground.products.figures.rules import rules_figure
 from stillground.products.figures.section import section_figure
+from stillground.products.figures.sensitivity import sensitivity_figure
 from stillground.products.figures.sheet import VERDICTS, fitted, write_figure
 from stillground.products.figures.survey import survey_figure
-from stillground.protocols import Result
+from stillground.protocols import Result, RuleOptions
 
-from .made_up_results import positions
+from .made_up_results import axes_of, make_patterns, positions
+from .pixels import colour_at
 
 SOURCES, RECEIVERS = positions()
 PAPER = np.array([0xF6, 0xF4, 0xEE]) / 255
@@ -53,16 +56,6 @@ def section(result: Result, surface: Any) -> Callable[..., Figure]:
     return draw
 
 
-def colour_at(figure: Figure, distance: float, elevation: float) -> np.ndarray:
-    """Colour of the picture's own image at a place, before anything is drawn over it."""
-    image = figure.axes[0].images[0]
-    pixels = np.asarray(image.get_array())
-    left, right, bottom, top = image.get_extent()
-    row = int((elevation - bottom) / (top - bottom) * pixels.shape[0])
-    column = int((distance - left) / (right - left) * pixels.shape[1])
-    return pixels[row, column] / 255
-
-
 def test_the_colour_at_a_place_is_the_values_there(section: Callable[..., Figure], result: Result) -> None:
     figure = section()
     bar = figure.axes[1]
@@ -71,7 +64,7 @@ def test_the_colour_at_a_place_is_the_values_there(section: Callable[..., Figure
         i = int(np.argmin(np.abs(result.axes[0] - distance)))
         j = int(np.argmin(np.abs(result.axes[1] - elevation)))
         expected = colormaps["cividis"](scale(1 / result.model[i, j]))[:3]
-        np.testing.assert_allclose(colour_at(figure, distance, elevation), expected, atol=0.02)
+        np.testing.assert_allclose(colour_at(figure.axes[0], distance, elevation), expected, atol=0.02)
 
 
 def test_unreliable_ground_is_blended_to_opaque_colour(
@@ -87,10 +80,10 @@ def test_unreliable_ground_is_blended_to_opaque_colour(
     value = 1 / result.model[0, 8]
     place = result.axes[0][0] + 0.02, result.axes[1][8]
     np.testing.assert_allclose(
-        colour_at(clear, *place), colormaps["cividis"](clear_scale(value))[:3], atol=0.02
+        colour_at(clear.axes[0], *place), colormaps["cividis"](clear_scale(value))[:3], atol=0.02
     )
     full = np.array(colormaps["cividis"](faded_scale(value))[:3])
-    np.testing.assert_allclose(colour_at(figure, *place), 0.32 * full + 0.68 * PAPER, atol=0.02)
+    np.testing.assert_allclose(colour_at(figure.axes[0], *place), 0.32 * full + 0.68 * PAPER, atol=0.02)
 
 
 def test_hatching_is_where_the_flags_are_and_the_key_tells_it(
@@ -151,14 +144,19 @@ def test_long_titles_do_not_overflow(
     name: str, section: Callable[..., Figure], result: Result, surface: Any
 ) -> None:
     ladder = replace(result.ladder, verdict=replace(result.ladder.verdict, reason=f"{name} {name} {name}"))
+    assert result.rehearsal is not None
     wordy = replace(
         result, ladder=ladder, chosen=replace(result.chosen, pick=replace(result.chosen.pick, reason=name))
     )
     for figure in (
         section(name, wordy),
-        rules_figure(name, wordy, tau=1.0),
+        rules_figure(name, wordy, options=RuleOptions()),
         ladder_figure(name, wordy, tolerance=0.02, surface=surface),
         residuals_figure(name, wordy),
+        errors_figure(name, wordy, tolerance=0.02, surface=surface),
+        sensitivity_figure(name, wordy, tolerance=0.02, surface=surface),
+        rehearsal_figure(name, wordy.rehearsal, wordy.chosen.rule),
+        pattern_figure(name, make_patterns(axes_of(1.0)), axes_of(1.0), surface=surface),
     ):
         whole = figure.bbox
         for text in figure.texts:
@@ -189,38 +187,8 @@ def test_a_dollar_sign_is_no_formula(section: Callable[..., Figure]) -> None:
     assert not any(text.get_parse_math() for text in figure.texts)
 
 
-def test_gcv_is_drawn_by_its_formula(result: Result) -> None:
-    # Golub, Heath and Wahba (1979): mean squared residual over the squared share of free data.
-    figure = rules_figure("crosshole-ab", result, tau=1.2)
-    by_label = {axes.get_ylabel(): axes for axes in figure.axes}
-    history = result.history
-    assert history.degrees_of_freedom is not None
-    expected = 625 * history.residual_norm**2 / (625 - history.degrees_of_freedom) ** 2
-    np.testing.assert_allclose(by_label["GCV"].lines[0].get_ydata(), expected)
-    targets = [
-        line for line in by_label["mean squared residual"].lines if list(line.get_ydata()) == [1.44, 1.44]
-    ]
-    assert len(targets) == 1
-
-
-def test_without_degrees_of_freedom_gcv_is_left_out(make: Callable[..., Result]) -> None:
-    figure = rules_figure("crosshole-ab", make(probed=False, spacing=1.0), tau=1.0)
-    assert "GCV" not in [axes.get_ylabel() for axes in figure.axes]
-
-
-def test_every_rule_has_its_own_letter_and_shape() -> None:
-    assert len({badge.letter for badge in BADGES.values()}) == len(BADGES) == 8
-    assert len({badge.marker for badge in BADGES.values()}) == 8
-    assert badge_of("noise-meter").letter == "N"
+def test_verdicts_do_not_hang_on_colour() -> None:
     assert len({marker for marker, _, _ in VERDICTS.values()}) == 3
-
-
-@given(st.lists(st.floats(0, 50), max_size=12), st.floats(0.1, 5))
-def test_badges_on_one_shelf_never_overlap(at: list[float], width: float) -> None:
-    numbers = shelves(at, width)
-    for shelf in set(numbers):
-        along = sorted(x for x, number in zip(at, numbers, strict=True) if number == shelf)
-        assert all(b - a >= width * (1 - 1e-9) for a, b in pairwise(along))
 
 
 def test_the_order_line_goes_through_the_last_change_with_the_orders_slope(
@@ -255,6 +223,24 @@ def test_repeated_measurements_are_averaged_and_gaps_stay_blank(result: Result) 
     np.testing.assert_array_equal(matrix, [[2, np.nan], [np.nan, 5]])
 
 
+@pytest.mark.parametrize(("weights", "said"), [((1, 0.2, 0.4), "2 outlying data"), ((1, 1, 0.6), None)])
+def test_outliers_are_counted_beside_the_fit(
+    result: Result, weights: tuple[float, ...], said: str | None
+) -> None:
+    few = replace(
+        result,
+        observed=np.ones(3),
+        predicted=np.zeros(3),
+        errors=np.ones(3),
+        groupings={},
+        weights=np.array(weights),
+    )
+    texts = [text.get_text() for text in residuals_figure("few", few).texts]
+    head = " ".join(" ".join(texts).split())
+    assert ("outlying" in head) is (said is not None)
+    assert said is None or said in head
+
+
 @pytest.mark.parametrize("n_groupings", [0, 1])
 def test_data_without_two_groupings_are_drawn_in_their_order(result: Result, n_groupings: int) -> None:
     groupings = dict(list(result.groupings.items())[:n_groupings])
@@ -284,8 +270,9 @@ def test_the_survey_is_drawn_with_offset_and_angle(result: Result, surface: Any,
 
 
 def test_figures_come_out_the_same_whatever_the_users_settings(
-    result: Result, surface: Any, tmp_path: Path
+    make: Callable[..., Result], surface: Any, tmp_path: Path
 ) -> None:
+    coarse = make(spacing=0.5)
     written = []
     for folder, settings in (
         ("a", {}),
@@ -295,18 +282,36 @@ def test_figures_come_out_the_same_whatever_the_users_settings(
             paths = write_figures(
                 tmp_path / folder,
                 "crosshole-ab",
-                result,
+                coarse,
                 tolerance=0.02,
-                tau=1.0,
+                options=RuleOptions(),
                 surface=surface,
                 sources=SOURCES,
                 receivers=RECEIVERS,
             )
         written.append({path.name: path.read_bytes() for path in paths})
-    kinds = ("section", "rules", "ladder", "residuals")
+    kinds = ("section", "errors", "rules", "ladder", "residuals", "rehearsal", "sensitivity")
     assert set(written[0]) == {f"crosshole-ab_{kind}.{ending}" for kind in kinds for ending in ("png", "pdf")}
     for name, first in written[0].items():
         assert written[1][name] == first, name
+
+
+def test_figures_of_what_was_not_asked_for_are_left_out(
+    make: Callable[..., Result], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    written: list[str] = []
+    monkeypatch.setattr(figures, "write_figure", lambda folder, name, figure: written.append(name) or ())
+    write_figures(
+        tmp_path,
+        "ab",
+        make(argued=False, spacing=1.0),
+        tolerance=0.02,
+        options=RuleOptions(),
+        surface=None,
+        sources=SOURCES,
+        receivers=RECEIVERS,
+    )
+    assert written == ["ab_section", "ab_errors", "ab_rules", "ab_ladder", "ab_residuals"]
 
 
 def test_figures_that_cannot_be_written_are_named(section: Callable[..., Figure], tmp_path: Path) -> None:

@@ -39,15 +39,49 @@ def test_curves_are_the_historys(result: Result, provenance: Provenance, tmp_pat
         "step_norm",
         "gradient_norm",
         "degrees_of_freedom",
+        "error_bound",
     ):
         np.testing.assert_allclose(file[name], getattr(result.history, name), rtol=1e-6)
     assert "roughness" in file.solution_norm.attrs["long_name"]
 
 
+def test_whiteness_has_a_curve_for_each_grouping(
+    result: Result, provenance: Provenance, tmp_path: Path
+) -> None:
+    file = written(result, provenance, tmp_path)
+    for grouping in ("source", "receiver"):
+        curve = file[f"whiteness_{grouping}"]
+        np.testing.assert_allclose(curve, result.history.whiteness[grouping], rtol=1e-6)
+        assert grouping in curve.attrs["long_name"]
+        assert "1.36" in curve.attrs["long_name"]
+
+
 def test_a_curve_that_the_method_lacks_is_left_out(
     make: Callable[..., Result], provenance: Provenance, tmp_path: Path
 ) -> None:
-    assert "degrees_of_freedom" not in written(make(probed=False, spacing=1.0), provenance, tmp_path)
+    file = written(make(probed=False, spacing=1.0), provenance, tmp_path)
+    assert "degrees_of_freedom" not in file
+    assert "filter_slope" not in file
+
+
+def test_a_filter_slope_is_kept_where_there_is_one(
+    result: Result, provenance: Provenance, tmp_path: Path
+) -> None:
+    slope = np.linspace(0, 3, 31)
+    sloped = replace(result, history=replace(result.history, filter_slope=slope))
+    np.testing.assert_allclose(written(sloped, provenance, tmp_path).filter_slope, slope, rtol=1e-6)
+
+
+def test_noise_and_unknowns_beside_the_ground_are_kept(
+    result: Result, provenance: Provenance, tmp_path: Path
+) -> None:
+    file = written(result, provenance, tmp_path)
+    np.testing.assert_allclose(file.noise, 1.07, rtol=1e-6)
+    assert file.source_static.dims == ("source_static_number",)
+    np.testing.assert_allclose(file.source_static, result.extras["source_static"][0], rtol=1e-6)
+    assert file.delay.dims == ()
+    np.testing.assert_allclose(file.delay, 3e-4, rtol=1e-6)
+    assert file.source_static.attrs["units"] == file.delay.attrs["units"] == "s"
 
 
 def test_every_rule_has_its_pick_and_its_picture(

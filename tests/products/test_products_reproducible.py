@@ -13,10 +13,13 @@ from pyproj import CRS
 from stillground.products.fit import fit_table, write_fit
 from stillground.products.history import history_dataset, write_history
 from stillground.products.ladder import ladder_dataset, write_ladder
+from stillground.products.pattern import pattern_dataset, write_pattern
 from stillground.products.provenance import Provenance, timestamp
 from stillground.products.section import section_dataset, write_section
 from stillground.products.summary import profile_summary, run_summary, write_summary
 from stillground.protocols import Result
+
+from .made_up_results import axes_of, make_patterns
 
 
 def test_files_written_twice_are_the_same(
@@ -28,6 +31,7 @@ def test_files_written_twice_are_the_same(
     monkeypatch: pytest.MonkeyPatch,
 ) -> None:
     monkeypatch.setenv("SOURCE_DATE_EPOCH", "1000000000")
+    axes = axes_of(0.5)
     written = []
     for folder in (tmp_path / "a", tmp_path / "b"):
         origin = replace(provenance, created=timestamp())
@@ -40,6 +44,7 @@ def test_files_written_twice_are_the_same(
             write_section(folder, "ab", section),
             write_history(folder, "ab", history_dataset("ab", result, **common)),
             write_ladder(folder, "ab", ladder_dataset("ab", result, tolerance=0.02, **common)),
+            write_pattern(folder, "ab", pattern_dataset("ab", make_patterns(axes), axes, **common)),
             write_fit(folder, "ab", fit),
             write_summary(folder, run_summary("t", "0", None, [profile_summary("ab", result, {})])),
         )
@@ -49,6 +54,7 @@ def test_files_written_twice_are_the_same(
         "ab_section.nc",
         "ab_history.nc",
         "ab_ladder.nc",
+        "ab_pattern.nc",
         "ab_fit.csv",
         "summary.json",
     }

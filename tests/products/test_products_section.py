@@ -24,6 +24,16 @@ from .made_up_results import slowness
 
 Section = Callable[..., xr.Dataset]
 
+QUALITIES = (
+    "path_density",
+    "mesh_change",
+    "slowness_noise_part",
+    "slowness_total_error",
+    "resolved_fraction",
+    "length_spread",
+    "investigation_index",
+)
+
 
 @pytest.fixture
 def section(result: Result, surface: Any, crs: CRS, provenance: Provenance) -> Section:
@@ -67,7 +77,7 @@ def test_above_the_surface_there_is_no_data(section: Section) -> None:
     made = section()
     above = made.elevation > made.surface_altitude
     assert above.any()
-    for name in ("slowness", "velocity", "path_density", "mesh_change"):
+    for name in ("slowness", "velocity", *QUALITIES):
         np.testing.assert_array_equal(made[name].isnull(), above)
     np.testing.assert_array_equal(made.reliability == 127, above)
 
@@ -114,6 +124,60 @@ def test_ground_that_nothing_crosses_is_poorly_covered(result: Result) -> None:
     assert np.all(reliability(bare, 0.02, ground(bare.axes, None)) == 2)
 
 
+def test_ground_of_which_nothing_comes_back_is_poorly_covered(result: Result) -> None:
+    assert result.rehearsal is not None
+    sound = replace(
+        result,
+        coverage=replace(result.coverage, values=np.ones_like(result.model)),
+        mesh_change=np.zeros_like(result.model),
+    )
+    resolved = np.ones_like(result.model)
+    resolved[0, :4] = [0.099, 0.101, -0.3, np.nan]
+    made = replace(sound, rehearsal=replace(result.rehearsal, resolved=resolved))
+    inside = ground(made.axes, None)
+    assert reliability(made, 0.02, inside)[0, :4].tolist() == [2, 0, 2, 2]
+    assert not reliability(replace(sound, rehearsal=None), 0.02, inside).any()
+
+
+def test_the_flags_say_by_which_limits_they_were_given(
+    make: Callable[..., Result], section: Section, result: Result
+) -> None:
+    assert "or resolved_fraction under 0.1" in section().reliability.attrs["comment"]
+    bare = section(result=replace(result, rehearsal=None)).reliability.attrs["comment"]
+    assert "resolved_fraction" not in bare
+    assert "not rehearsed" in bare
+
+
+def test_error_bars_say_what_they_are_and_what_not(section: Section, result: Result) -> None:
+    made = section(surface=None)
+    assert result.rehearsal is not None
+    assert result.sensitivity is not None
+    for name, values, units, words in (
+        ("slowness_noise_part", result.noise_part, "s m-1", ("not the error", "prior that the user chose")),
+        (
+            "slowness_total_error",
+            result.rehearsal.total_error,
+            "s m-1",
+            ("drawn from the prior", "not on this one", "prior that the user chose"),
+        ),
+        ("resolved_fraction", result.rehearsal.resolved, "1", ("no length of resolution",)),
+        ("length_spread", result.sensitivity.spread, "s m-1", ("not the error",)),
+        ("investigation_index", result.sensitivity.investigation, "1", ("Oldenburg and Li 1999",)),
+    ):
+        np.testing.assert_allclose(made[name], values.T[::-1], rtol=1e-6)
+        assert made[name].attrs["units"] == units
+        assert all(word in made[name].attrs["comment"] for word in words), name
+        assert "long_name" in made[name].attrs
+
+
+def test_what_was_not_asked_for_is_left_out(section: Section, result: Result) -> None:
+    made = section(result=replace(result, rehearsal=None, sensitivity=None))
+    assert "slowness_noise_part" in made
+    assert not {"slowness_total_error", "resolved_fraction", "length_spread"} & set(made)
+    named = "path_density mesh_change slowness_noise_part reliability"
+    assert made.slowness.attrs["ancillary_variables"] == named
+
+
 def test_one_rung_says_nothing_of_the_mesh(make: Callable[..., Result], section: Section) -> None:
     made = section(result=make(levels=1, word="undecided"))
     assert not (made.reliability == 1).any()
@@ -127,7 +191,7 @@ def test_the_file_is_laid_out_as_the_recipe_says(section: Section, tmp_path: Pat
         file.set_auto_mask(False)
         assert not file.groups
         assert file.comment.startswith(CAUTION)
-        for name in ("slowness", "velocity", "path_density", "mesh_change"):
+        for name in ("slowness", "velocity", *QUALITIES):
             variable = file[name]
             assert variable.dimensions == ("elevation", "distance")
             assert variable.dtype == np.float32
@@ -138,9 +202,10 @@ def test_the_file_is_laid_out_as_the_recipe_says(section: Section, tmp_path: Pat
             assert variable.chunking() == list(variable.shape)
             assert variable.grid_mapping == "section_crs"
             assert variable.coordinates == "easting northing"
-        assert file["slowness"].ancillary_variables == "path_density mesh_change reliability"
+        assert file["slowness"].ancillary_variables == f"{' '.join(QUALITIES)} reliability"
         assert file["slowness"].coverage_content_type == "modelResult"
-        assert file["mesh_change"].coverage_content_type == "qualityInformation"
+        for name in QUALITIES:
+            assert file[name].coverage_content_type == "qualityInformation"
         flags = file["reliability"]
         assert flags.dtype == np.int8
         assert flags._FillValue == 127

@@ -37,7 +37,8 @@ def test_the_fit_is_in_the_tables_unit(result: Result, tmp_path: Path) -> None:
     # Errors are 0.1 ms throughout.
     difference = read["observed_time [ms]"] - read["predicted_time [ms]"]
     np.testing.assert_allclose(read["residual_over_error"], difference / 0.1, atol=1e-5)
-    assert (read["weight"] == 1).all()
+    assert np.flatnonzero(read["weight"] < 1).tolist() == [17, 300]
+    assert read["weight"].min() == 0.25
     assert read["row"].tolist() == list(range(2, 627))
 
 
@@ -55,7 +56,20 @@ def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result
     assert list(read) == ["schema", "title", "version", "verdict", "seconds", "profiles"]
     assert (read["schema"], read["verdict"], read["seconds"]) == (1, "settled", 3.2)
     profile = read["profiles"][0]
-    assert list(profile) == ["name", "data", "nodes", "chosen", "rules", "refinement", "files"]
+    assert list(profile) == [
+        "name",
+        "data",
+        "nodes",
+        "chosen",
+        "rules",
+        "refinement",
+        "noise",
+        "remarks",
+        "extras",
+        "rehearsal",
+        "sensitivity",
+        "files",
+    ]
     assert (profile["data"], profile["nodes"]) == (625, 89 * 121)
     assert list(profile["chosen"]) == ["rule", "iteration", "chi_square"]
     assert profile["chosen"]["iteration"] == 9
@@ -74,6 +88,51 @@ def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result
     assert list(refinement) == ["verdict", "reason", "order", "change", "remaining", "pick_drift", "levels"]
     assert refinement["levels"][0] == {"spacing": 2.0, "nodes": 192, "iteration": 9}
     assert profile["files"] == {"section": "crosshole-ab_section.nc"}
+
+
+def test_the_summary_tells_noise_remarks_and_extra_unknowns(
+    summary: dict[str, Any], result: Result, tmp_path: Path
+) -> None:
+    made = write_summary(tmp_path, run_summary("t", "0", None, [summary]))
+    profile = json.loads(made.read_text(encoding="utf-8"))["profiles"][0]
+    assert profile["noise"] == 1.07
+    assert profile["remarks"] == ["2 of 625 data look like outliers"]
+    statics = result.extras["source_static"][0]
+    assert list(profile["extras"]) == ["source_static", "delay"]
+    assert profile["extras"]["delay"] == {"units": "s", "values": [3e-4]}
+    assert profile["extras"]["source_static"] == {
+        "units": "s",
+        "rms": pytest.approx(math.sqrt(sum(x * x for x in statics) / 25), rel=1e-5),
+        "largest": pytest.approx(1e-4 * abs(math.sin(11)), rel=1e-5),
+    }
+
+
+def test_the_summary_tells_what_each_rule_costs(
+    summary: dict[str, Any], result: Result, tmp_path: Path
+) -> None:
+    made = write_summary(tmp_path, run_summary("t", "0", None, [summary]))
+    profile = json.loads(made.read_text(encoding="utf-8"))["profiles"][0]
+    rehearsal = profile["rehearsal"]
+    assert list(rehearsal) == ["groups", "cost", "families"]
+    assert rehearsal["groups"][0] == ["gcv", "discrepancy", "risk", "whiteness", "monotone-error"]
+    assert rehearsal["groups"][1:] == [["quasi-optimality"], ["l-curve"], ["hanke-raus"]]
+    assert rehearsal["cost"]["l-curve"] == 0.6
+    assert result.rehearsal is not None
+    ratios = sorted(result.rehearsal.ratios["layers"]["l-curve"])
+    # Of twenty values, linear between the ordered ones (Hyndman & Fan 1996, type 7; from memory).
+    assert rehearsal["families"]["layers"]["l-curve"] == {
+        "median": pytest.approx((ratios[9] + ratios[10]) / 2, rel=1e-5),
+        "p90": pytest.approx(0.9 * ratios[17] + 0.1 * ratios[18], rel=1e-5),
+        "worst": pytest.approx(ratios[19], rel=1e-5),
+    }
+    assert profile["sensitivity"][0] == {"name": "lengths halved", "iteration": 7.3, "distance": 0.39}
+    assert profile["sensitivity"][2]["iteration"] == 11
+
+
+def test_what_was_not_asked_for_is_null(make: Callable[..., Result]) -> None:
+    made = profile_summary("ab", make(argued=False, spacing=1.0), {})
+    assert made["rehearsal"] is None
+    assert made["sensitivity"] is None
 
 
 def test_what_is_no_number_is_null(make: Callable[..., Result], tmp_path: Path) -> None:

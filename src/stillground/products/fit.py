@@ -33,7 +33,8 @@ def fit_table(
     -------
     pandas.DataFrame
         ``row``, ``observed_<datum> [<unit>]``, ``predicted_<datum> [<unit>]``,
-        ``residual_over_error`` (observed less predicted, over the standard error) and ``weight``.
+        ``residual_over_error`` (observed less predicted, over the standard error as stated) and
+        ``weight``: 1, but less for outliers.
     """
     return pd.DataFrame(
         {
@@ -41,7 +42,7 @@ def fit_table(
             f"observed_{datum} [{unit}]": result.observed / si_factor,
             f"predicted_{datum} [{unit}]": result.predicted / si_factor,
             "residual_over_error": (result.observed - result.predicted) / result.errors,
-            "weight": 1.0,
+            "weight": result.weights,
         }
     )
 

@@ -22,6 +22,8 @@ CURVES = {
     "step_norm": "norm of the change of the solution in standard form since the iteration before",
     "gradient_norm": "norm of the normal-equation residual in standard form",
     "degrees_of_freedom": "degrees of freedom of the fit: estimated trace of the map from data to fit",
+    "error_bound": "largest norm of the noise at which the step to the iteration surely helped",
+    "filter_slope": "minus the slope of the residual polynomial at zero",
 }
 
 
@@ -42,11 +44,14 @@ def history_dataset(
     Returns
     -------
     xarray.Dataset
-        Over ``iteration`` the curves that the method has. Over ``rule`` ``picked_iteration`` (NaN
-        where the rule found none), ``firm``, ``reason``, and of the iteration where the rule's
-        picture is taken ``shown_iteration``, ``shown_chi_square``, ``shown_roughness`` and
-        ``shown_distance``. The property as ``<property>_at_pick(rule, elevation, distance)`` and
-        ``<property>_at_iteration(kept_iteration, elevation, distance)``.
+        Over ``iteration`` the curves that the method has, ``whiteness_<grouping>`` among them. Over
+        ``rule`` ``picked_iteration`` (NaN where the rule found none), ``firm``, ``reason``, and of the
+        iteration where the rule's picture is taken ``shown_iteration``, ``shown_chi_square``,
+        ``shown_roughness`` and ``shown_distance``. The property as
+        ``<property>_at_pick(rule, elevation, distance)`` and
+        ``<property>_at_iteration(kept_iteration, elevation, distance)``. The scalar ``noise``. Unknowns
+        beside the ground by their names: a lone one is a scalar, several lie on ``<name>_number``, which
+        counts the groups of the survey in their order.
     """
     history, choices = result.history, result.choices
     inside = ground(result.axes, surface)
@@ -62,7 +67,16 @@ def history_dataset(
         for curve, long_name in CURVES.items()
         if (values := getattr(history, curve)) is not None
     }
+    for grouping, distances in history.whiteness.items():
+        long_name = (
+            f"distance from white noise, within each {grouping}; white stays under 1.36 in 95 % of cases"
+        )
+        variables[f"whiteness_{grouping}"] = _numbers("iteration", distances, long_name)
     variables |= _picks(choices)
+    size = np.array(result.noise)
+    variables["noise"] = _numbers((), size, "estimated size of the errors over what is stated")
+    for label, (values, units) in result.extras.items():
+        variables[label] = _extra(label, values, units)
     seen = result.property
     pictures = [
         Field(f"{seen.name}_at_pick", choice.model, seen.units, f"{seen.long_name} at the pick of the rule")
@@ -129,8 +143,19 @@ def _stack(dim: str, pictures: list[Field], inside: NDArray[np.bool_]) -> xr.Var
     return xr.Variable((dim, *layers[0].dims), values, layers[0].attrs)
 
 
-def _numbers(dim: str, values: Array, long_name: str) -> xr.Variable:
-    return xr.Variable(dim, values.astype(np.float32), {"long_name": long_name, "units": "1"})
+def _extra(name: str, values: Array, units: str) -> xr.Variable:
+    said = {
+        "long_name": f"{name.replace('_', ' ')} at the chosen pick",
+        "units": units,
+        "coverage_content_type": "modelResult",
+    }
+    if values.size == 1:
+        return xr.Variable((), np.float32(values.item()), said)
+    return xr.Variable(f"{name}_number", values.astype(np.float32), said)
+
+
+def _numbers(dims: str | tuple[()], values: Array, long_name: str) -> xr.Variable:
+    return xr.Variable(dims, values.astype(np.float32), {"long_name": long_name, "units": "1"})
 
 
 def _coordinate(name: str, values: NDArray[np.int32] | NDArray[np.object_]) -> xr.Variable:

@@ -11,6 +11,7 @@ from pyproj import CRS
 from stillground.products import cf
 from stillground.products.netcdf import write_netcdf
 from stillground.products.provenance import Provenance
+from stillground.products.quality import qualities
 from stillground.products.raster import (
     Surface,
     altitude,
@@ -20,7 +21,7 @@ from stillground.products.raster import (
     map_variable,
     raster,
 )
-from stillground.products.reliability import MEANINGS, NO_DATA, SHARE_OF_MEDIAN, reliability
+from stillground.products.reliability import MEANINGS, NO_DATA, reliability, reliability_comment
 from stillground.protocols import Array, Field, Result
 
 
@@ -56,9 +57,9 @@ def section_dataset(
     Returns
     -------
     xarray.Dataset
-        The ground property, its reciprocal where it has one, the coverage, ``mesh_change``,
-        ``reliability``, ``easting``, ``northing``, ``surface_altitude`` where there is a surface,
-        the trace as a line geometry, ``crs`` and ``section_crs``.
+        The ground property, its reciprocal where it has one, all `qualities`, ``reliability``,
+        ``easting``, ``northing``, ``surface_altitude`` where there is a surface, the trace as a line
+        geometry, ``crs`` and ``section_crs``.
     """
     seen = result.property
     inside = ground(result.axes, surface)
@@ -69,14 +70,14 @@ def section_dataset(
     if seen.reciprocal is not None:
         other, units, long_name = seen.reciprocal
         answers.append(Field(other, 1 / result.model, units, long_name))
-    moved = f"local change of {seen.long_name} since the rung before"
-    qualities = [result.coverage, Field("mesh_change", result.mesh_change, seen.units, moved)]
-
-    companions = " ".join([quality.name for quality in qualities] + ["reliability"])
-    answer = {"coverage_content_type": "modelResult", "ancillary_variables": companions} | on_section
+    companions = qualities(result)
+    names = " ".join([field.name for field, _ in companions] + ["reliability"])
+    answer = {"coverage_content_type": "modelResult", "ancillary_variables": names} | on_section
     quality = {"coverage_content_type": "qualityInformation"} | on_section
     variables = {field.name: map_variable(field, inside, answer) for field in answers}
-    variables |= {field.name: map_variable(field, inside, quality) for field in qualities}
+    for field, comment in companions:
+        said = {"comment": comment} if comment else {}
+        variables[field.name] = map_variable(field, inside, said | quality)
     variables["reliability"] = xr.Variable(
         dims,
         raster(reliability(result, tolerance, inside)),
@@ -85,12 +86,7 @@ def section_dataset(
             "long_name": "how far the value can be relied on",
             "flag_values": np.arange(len(MEANINGS), dtype=np.int8),
             "flag_meanings": " ".join(MEANINGS),
-            "comment": (
-                f"mesh_dependent: mesh_change above {tolerance:g} of the rms anomaly, "
-                f"{result.anomaly:.6g} {seen.units}; not judged where there is one rung only. "
-                f"poorly_covered: {result.coverage.name} under {SHARE_OF_MEDIAN:.0%} "
-                f"of the median of its positive values."
-            ),
+            "comment": reliability_comment(result, tolerance),
         }
         | quality,
         {"_FillValue": np.int8(NO_DATA)},

@@ -8,8 +8,11 @@ from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
 from stillground.products.ladder import rung_spacing
-from stillground.protocols import Result
+from stillground.products.ratios import ratio_numbers
+from stillground.protocols import Array, Rehearsal, Result, Sensitivity
 from stillground.whole import whole
 
 WORST_FIRST = ("drifting", "undecided", "settled")
@@ -26,6 +29,12 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
     result : Result
     files : mapping
         Product name to file name, relative to the output folder.
+
+    Returns
+    -------
+    dict
+        Of extra unknowns a lone one is told with its ``values``, many by their ``rms`` and ``largest``
+        size. ``rehearsal`` and ``sensitivity`` are None where they were not asked for.
     """
     ladder, chosen = result.ladder, result.chosen
     return {
@@ -65,8 +74,39 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
                 for rung in ladder.rungs
             ],
         },
+        "noise": result.noise,
+        "remarks": list(result.remarks),
+        "extras": {name: _extra(*extra) for name, extra in result.extras.items()},
+        "rehearsal": None if result.rehearsal is None else rehearsal_summary(result.rehearsal),
+        "sensitivity": None if result.sensitivity is None else _variations(result.sensitivity),
         "files": dict(files),
     }
+
+
+def rehearsal_summary(rehearsal: Rehearsal) -> dict[str, Any]:
+    """Groups of equals, what trusting each rule costs, and its ratios by family in three numbers."""
+    return {
+        "groups": [list(group) for group in rehearsal.groups],
+        "cost": dict(rehearsal.cost),
+        "families": {
+            family: {rule: ratio_numbers(ratios) for rule, ratios in rules.items()}
+            for family, rules in rehearsal.ratios.items()
+        },
+    }
+
+
+def _variations(sensitivity: Sensitivity) -> list[dict[str, Any]]:
+    return [
+        {"name": varied.name, "iteration": _count(varied.iteration), "distance": varied.distance}
+        for varied in sensitivity.variations
+    ]
+
+
+def _extra(values: Array, units: str) -> dict[str, Any]:
+    if values.size == 1:
+        return {"units": units, "values": values.tolist()}
+    rms, largest = float(np.sqrt(np.mean(values**2))), float(np.abs(values).max())
+    return {"units": units, "rms": rms, "largest": largest}
 
 
 def run_summary(

@@ -4,13 +4,17 @@ from __future__ import annotations
 
 from pathlib import Path
 
+from stillground.products.figures.errors import errors_figure
 from stillground.products.figures.ladder import ladder_figure
+from stillground.products.figures.pattern import pattern_figure
+from stillground.products.figures.rehearsal import rehearsal_figure
 from stillground.products.figures.residuals import residuals_figure
 from stillground.products.figures.rules import rules_figure
 from stillground.products.figures.section import section_figure
+from stillground.products.figures.sensitivity import sensitivity_figure
 from stillground.products.figures.sheet import write_figure
 from stillground.products.raster import Surface
-from stillground.protocols import Array, Result
+from stillground.protocols import Array, Pattern, Rehearsal, Result, RuleOptions
 
 
 def write_figures(
@@ -19,12 +23,15 @@ def write_figures(
     result: Result,
     *,
     tolerance: float,
-    tau: float,
+    options: RuleOptions,
     surface: Surface | None,
     sources: Array,
     receivers: Array,
 ) -> tuple[Path, ...]:
-    """Write ``<profile>_section``, ``_rules``, ``_ladder`` and ``_residuals`` as PNG and PDF.
+    """Write the figures of a result as PNG and PDF.
+
+    ``<profile>_section``, ``_errors``, ``_rules``, ``_ladder`` and ``_residuals`` always, ``_rehearsal``
+    and ``_sensitivity`` where the result has them.
 
     Parameters
     ----------
@@ -33,8 +40,10 @@ def write_figures(
     profile : str
     result : Result
         On axes (distance, elevation).
-    tolerance, tau : float
-        Of the refinement and of the discrepancy rule.
+    tolerance : float
+        Of the refinement, relative to the anomaly.
+    options : RuleOptions
+        As the rules took them.
     surface : pair of arrays (distance, elevation), m, or None
     sources, receivers : array, shapes (n_sources, 2), (n_receivers, 2)
         Distance and elevation, m.
@@ -48,10 +57,33 @@ def write_figures(
         "section": section_figure(
             profile, result, tolerance=tolerance, surface=surface, sources=sources, receivers=receivers
         ),
-        "rules": rules_figure(profile, result, tau=tau),
+        "errors": errors_figure(profile, result, tolerance=tolerance, surface=surface),
+        "rules": rules_figure(profile, result, options=options),
         "ladder": ladder_figure(profile, result, tolerance=tolerance, surface=surface),
         "residuals": residuals_figure(profile, result),
     }
+    if result.rehearsal is not None:
+        figures["rehearsal"] = rehearsal_figure(profile, result.rehearsal, result.chosen.rule)
+    if result.sensitivity is not None:
+        figures["sensitivity"] = sensitivity_figure(profile, result, tolerance=tolerance, surface=surface)
     return tuple(
         path for name, figure in figures.items() for path in write_figure(folder, f"{profile}_{name}", figure)
     )
+
+
+def write_rehearsal_figure(folder: Path, profile: str, rehearsal: Rehearsal, chosen: str) -> Path:
+    """Write `rehearsal_figure` as PNG and PDF ``<profile>_rehearsal``, and give the path of the PNG."""
+    return write_figure(folder, f"{profile}_rehearsal", rehearsal_figure(profile, rehearsal, chosen))[0]
+
+
+def write_pattern_figure(
+    folder: Path,
+    profile: str,
+    patterns: tuple[Pattern, ...],
+    axes: tuple[Array, ...],
+    *,
+    surface: Surface | None,
+) -> Path:
+    """Write `pattern_figure` as PNG and PDF ``<profile>_pattern``, and give the path of the PNG."""
+    figure = pattern_figure(profile, patterns, axes, surface=surface)
+    return write_figure(folder, f"{profile}_pattern", figure)[0]

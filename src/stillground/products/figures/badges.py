@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.transforms import Transform
+from scipy.optimize import isotonic_regression
 
 
 @dataclass(frozen=True)
@@ -73,18 +75,21 @@ def draw_badge(
     )
 
 
-def shelves(positions: list[float], width: float) -> list[int]:
-    """Shelf numbers from 0, so that badges of one ``width`` at ``positions`` never overlap.
+def spread(positions: Sequence[float], gap: float, low: float, high: float) -> list[float]:
+    """Positions for badges: moved as little as can be (least squares) to stand ``gap`` apart in a room.
+
+    Where they do not all fit between ``low`` and ``high`` the gap shrinks.
 
     Examples
     --------
-    >>> shelves([9.0, 9.2, 13.0], 1.0)
-    [0, 1, 0]
+    >>> spread([5.0, 1.0, 1.0], 1.0, 0.0, 9.0)
+    [5.0, 0.5, 1.5]
     """
-    ends: list[float] = []
-    numbers = [0] * len(positions)
-    for i in np.argsort(positions, kind="stable"):
-        free = [shelf for shelf, end in enumerate(ends) if positions[i] >= end]
-        numbers[i] = free[0] if free else len(ends)
-        ends[numbers[i] : numbers[i] + 1] = [positions[i] + width]
-    return numbers
+    if not positions:
+        return []
+    order = np.argsort(positions, kind="stable")
+    steps = np.arange(order.size) * min(gap, (high - low) / max(order.size - 1, 1))
+    level = isotonic_regression(np.asarray(positions)[order] - steps).x
+    moved = np.empty(order.size)
+    moved[order] = np.clip(level, low, high - steps[-1]) + steps
+    return moved.tolist()

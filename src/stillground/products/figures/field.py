@@ -7,15 +7,18 @@ alpha channel gets lost on the way to PDF, and hatched on top.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 from matplotlib import colormaps
 from matplotlib.artist import Artist
 from matplotlib.axes import Axes
 from matplotlib.colors import Colormap, Normalize, to_rgb
-from matplotlib.patches import Polygon
+from matplotlib.figure import Figure
+from matplotlib.patches import Patch, Polygon
 from numpy.typing import NDArray
 
-from stillground.products.figures.sheet import INK, PAPER
+from stillground.products.figures.sheet import FOOT, INK, PAPER, unit_text
 from stillground.products.raster import Surface, altitude
 from stillground.products.reliability import MESH_DEPENDENT, NO_DATA, POORLY_COVERED, RELIABLE
 from stillground.protocols import Array, GroundProperty
@@ -23,6 +26,7 @@ from stillground.protocols import Array, GroundProperty
 FIELD_COLOURS = colormaps["cividis"]
 FADE = 0.68
 HATCHES = {POORLY_COVERED: "////", MESH_DEPENDENT: "...."}
+HATCH_NAMES = {POORLY_COVERED: "poorly covered", MESH_DEPENDENT: "depends on the grid"}
 
 
 def shown(seen: GroundProperty, values: Array) -> tuple[Array, str, str]:
@@ -31,6 +35,24 @@ def shown(seen: GroundProperty, values: Array) -> tuple[Array, str, str]:
         return values, seen.long_name, seen.units
     _, units, long_name = seen.reciprocal
     return 1 / values, long_name, units
+
+
+def shown_change(seen: GroundProperty, model: Array, change: Array) -> Array:
+    """Small changes or errors of the property at its values as those of what people read.
+
+    Examples
+    --------
+    >>> slowness = GroundProperty("slowness", "s m-1", "slowness", ("velocity", "m s-1", "velocity"))
+    >>> shown_change(slowness, np.array([1 / 2000]), np.array([5e-6]))
+    array([20.])
+    """
+    return change if seen.reciprocal is None else change / model**2
+
+
+def shown_name(seen: GroundProperty) -> tuple[str, str]:
+    """Name and units of what people read, as ``velocity`` and ``m s⁻¹``."""
+    name, units = (seen.name, seen.units) if seen.reciprocal is None else seen.reciprocal[:2]
+    return name.replace("_", " "), unit_text(units)
 
 
 def colour_scale(values: Array, flags: NDArray[np.int8]) -> Normalize:
@@ -51,6 +73,7 @@ def draw_field(
     surface: Surface | None,
     pixels: int,
     colours: Colormap = FIELD_COLOURS,
+    lines: Sequence[float] = (),
 ) -> None:
     """Draw a field on (distance, elevation) with equal scales both ways.
 
@@ -68,6 +91,8 @@ def draw_field(
     pixels : int
         Of the image, along its longer side.
     colours : Colormap
+    lines : sequence of float, ascending
+        Values to draw lines of.
     """
     distance, elevation = nodes
     low, high = (distance[0], elevation[0]), (distance[-1], elevation[-1])
@@ -84,7 +109,6 @@ def draw_field(
         np.round(255 * colour).astype(np.uint8).swapaxes(0, 1),
         extent=(low[0], high[0], low[1], high[1]),
         origin="lower",
-        aspect="equal",
         interpolation="none",
     )
     artists: list[Artist] = [image]
@@ -95,17 +119,49 @@ def draw_field(
                 artists.append(
                     axes.contourf(distance, elevation, here.T, [0.5, 1.5], colors="none", hatches=[hatch])
                 )
+    if any(values.min() < line < values.max() for line in lines):
+        artists.append(axes.contour(distance, elevation, values.T, lines, colors=INK, linewidths=0.8))
+    frame_ground(axes, nodes, artists, surface)
+
+
+def frame_ground(
+    axes: Axes, nodes: tuple[Array, ...], artists: Sequence[Artist], surface: Surface | None
+) -> None:
+    """Frame the extent of the nodes with equal scales, and cut what is drawn off at the surface."""
+    distance, elevation = nodes
+    low, high = (distance[0], elevation[0]), (distance[-1], elevation[-1])
     if surface is not None:
         corners = np.unique(np.concatenate([np.clip(surface[0], low[0], high[0]), [low[0], high[0]]]))
         top = altitude(corners, surface)
-        outline = np.column_stack([np.r_[corners, high[0], low[0]], np.r_[top, low[1] - up, low[1] - up]])
+        outline = np.column_stack([np.r_[corners, high[0], low[0]], np.r_[top, low[1] - 1, low[1] - 1]])
         below = Polygon(outline, transform=axes.transData)
         for artist in artists:
             artist.set_clip_path(below)
         axes.plot(corners, top, color=INK, lw=1.2, clip_on=False)
-    axes.set(xlim=(low[0], high[0]), ylim=(low[1], high[1]))
+    axes.set(xlim=(low[0], high[0]), ylim=(low[1], high[1]), aspect="equal")
     axes.locator_params(steps=[1, 2, 5, 10])
     axes.grid(visible=False)
+
+
+def hatch_key(figure: Figure, flags: NDArray[np.int8], others: Sequence[Artist] = ()) -> None:
+    """What hatches mean, where there are any, at the foot of the sheet, after other signs of the picture."""
+    key = [
+        *others,
+        *(
+            Patch(facecolor=PAPER, edgecolor="#8e979d", hatch=HATCHES[flag], label=name, lw=0.4)
+            for flag, name in HATCH_NAMES.items()
+            if (flags == flag).any()
+        ),
+    ]
+    if key:
+        figure.legend(
+            handles=key,
+            loc="lower center",
+            bbox_to_anchor=(0.5, (FOOT + 0.05) / figure.get_figheight()),
+            ncols=len(key),
+            handletextpad=0.5,
+            columnspacing=1.6,
+        )
 
 
 def _carried_up(flags: NDArray[np.int8]) -> NDArray[np.int8]:

@@ -7,6 +7,7 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import LogLocator, NullLocator
 
 from stillground.products.figures.field import colour_scale, draw_field, shown
+from stillground.products.figures.maps import tiling
 from stillground.products.figures.sheet import FOOT, HEADING, LINE, MUTED, TEAL, panel, sheet, styled
 from stillground.products.ladder import rung_spacing
 from stillground.products.raster import Surface, ground
@@ -14,7 +15,7 @@ from stillground.products.reliability import reliability
 from stillground.protocols import Ladder, Result
 
 MAPS = (3.7, 3.5)
-GAP = 0.34
+GAP = (0.15, 0.34)
 
 
 @styled
@@ -104,29 +105,21 @@ def _rungs(
     rungs = result.ladder.rungs
     flags = reliability(result, tolerance, ground(result.axes, surface))
     scale = colour_scale(shown(result.property, result.model)[0], flags)
-    across, up = (float(axis[-1] - axis[0]) for axis in result.axes)
-    # The number of columns that draws the maps largest.
-    sizes = {}
-    for n_columns in range(1, len(rungs) + 1):
-        n_rows = -(-len(rungs) // n_columns)
-        room = ((MAPS[0] - (n_columns - 1) * 0.15) / n_columns, (MAPS[1] + 0.3) / n_rows - GAP)
-        sizes[n_columns] = min(room[0] / across, room[1] / up)
-    n_columns = max(sizes, key=lambda n: sizes[n])
-    inches = sizes[n_columns]
-    n_rows = -(-len(rungs) // n_columns)
-    step = ((MAPS[0] + 0.15) / n_columns, (MAPS[1] + 0.3) / n_rows)
+    room = (MAPS[0], MAPS[1] + 0.3)
+    tiles = tiling(len(rungs), result.axes, room, GAP)
+    step = ((room[0] + GAP[0]) / tiles.columns, room[1] / tiles.rows)
     across_sheet, up_sheet = figure.get_size_inches()
     said = f"{shown(result.property, result.model)[1]}, colours as in the section"
     middle = (corner[0] + MAPS[0] / 2) / across_sheet
     figure.text(middle, (FOOT + 0.02) / up_sheet, said, size=7, color=MUTED, ha="center")
     for i, rung in enumerate(rungs):
-        row, column = divmod(i, n_columns)
+        row, column = divmod(i, tiles.columns)
         axes = panel(
             figure,
-            corner[0] + column * step[0] + (step[0] - 0.15 - across * inches) / 2,
-            corner[1] + (n_rows - 1 - row) * step[1] + (step[1] - GAP - up * inches) / 2,
-            across * inches,
-            up * inches,
+            corner[0] + column * step[0] + (step[0] - GAP[0] - tiles.width) / 2,
+            corner[1] + (tiles.rows - 1 - row) * step[1] + (step[1] - GAP[1] - tiles.height) / 2,
+            tiles.width,
+            tiles.height,
         )
         draw_field(
             axes,

@@ -37,12 +37,13 @@ def residuals_figure(profile: str, result: Result) -> Figure:
     below = 2.1 if groupings else 0.0
     bottom = FOOT + 0.5
     spread = f"mean {residual.mean():.2f}, spread {residual.std():.2f}".replace("-", "−")
-    figure = sheet(
-        7.4,
-        bottom + below + 2.35 + HEADING,
-        f"{profile}: data fit",
-        f"{residual.size} data. Residuals: {spread} standard errors (0 and 1 where errors are stated right)",
+    said = (
+        f"{residual.size} data. Residuals: {spread} standard errors (0 and 1 where errors are stated right)"
     )
+    light = int(np.sum(result.weights < 0.5))
+    if light:
+        said += f"; {light} outlying {'datum counts' if light == 1 else 'data count'} less than half"
+    figure = sheet(7.4, bottom + below + 2.35 + HEADING, f"{profile}: data fit", said)
     wide, high = (0.65, bottom + below, 2.75, 2.25), (4.75, bottom + below, 2.4, 2.25)
     if len(groupings) == 2:
         _matrix(figure, wide, residual, groupings)

@@ -5,18 +5,16 @@ from __future__ import annotations
 from matplotlib.cm import ScalarMappable
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
-from matplotlib.patches import Patch
 
-from stillground.products.figures.field import FIELD_COLOURS, HATCHES, colour_scale, draw_field, shown
+from stillground.products.figures.field import FIELD_COLOURS, colour_scale, draw_field, hatch_key, shown
 from stillground.products.figures.positions import RECEIVER, SOURCE, draw_positions
-from stillground.products.figures.sheet import FOOT, HEADING, PAPER, panel, sheet, styled, unit_text
+from stillground.products.figures.sheet import FOOT, HEADING, panel, sheet, styled, unit_text
 from stillground.products.raster import Surface, ground
-from stillground.products.reliability import MESH_DEPENDENT, POORLY_COVERED, reliability
+from stillground.products.reliability import reliability
 from stillground.protocols import Array, Result
 
 LARGEST = (6.4, 5.6)
 LEAST_WIDTH = 5.6
-HATCH_NAMES = {POORLY_COVERED: "poorly covered", MESH_DEPENDENT: "depends on the grid"}
 
 
 @styled
@@ -76,20 +74,9 @@ def section_figure(
     bar.set_label(f"{long_name} ({unit_text(units)})")
     bar.outline.set_linewidth(0.5)
 
-    key = [
+    positions = [
         Line2D([], [], **SOURCE, label="source"),
         Line2D([], [], **RECEIVER, label="receiver"),
-    ] + [
-        Patch(facecolor=PAPER, edgecolor="#8e979d", hatch=HATCHES[flag], label=name, lw=0.4)
-        for flag, name in HATCH_NAMES.items()
-        if (flags == flag).any()
     ]
-    figure.legend(
-        handles=key,
-        loc="lower center",
-        bbox_to_anchor=(0.5, (FOOT + 0.05) / figure.get_figheight()),
-        ncols=len(key),
-        handletextpad=0.5,
-        columnspacing=1.6,
-    )
+    hatch_key(figure, flags, positions)
     return figure

@@ -1,0 +1,138 @@
+"""Maps of one extent side by side, as large as their room lets them, each with its scale below."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from matplotlib.cm import ScalarMappable
+from matplotlib.colors import Colormap, LinearSegmentedColormap, Normalize
+from matplotlib.figure import Figure
+from numpy.typing import NDArray
+
+from stillground.products.figures.field import draw_field, shown_change
+from stillground.products.figures.sheet import TEAL, panel
+from stillground.products.raster import Surface
+from stillground.products.reliability import RELIABLE
+from stillground.protocols import Array, Result
+
+GAP = (0.5, 1.12)
+"""Beside a map for its ticks; and above and below it for title, ticks and scale, inches."""
+
+PIXELS = 130
+"""Of a map's image, an inch."""
+
+# Not the colours of the ground's properties. Of errors the darkest are the worst, and the least still
+# differ from paper, lest faded ground looks exact; of what is good the darkest is the best.
+ERROR_COLOURS = LinearSegmentedColormap.from_list("error", ["#f3dfa0", "#dd8a3c", "#a33a12", "#46120a"])
+GOOD_COLOURS = LinearSegmentedColormap.from_list("good", ["#f1efe6", "#a9c9c3", TEAL])
+
+
+@dataclass(frozen=True)
+class Tiling:
+    """How equal maps stand: columns, rows, and the size of each map, inches."""
+
+    columns: int
+    rows: int
+    width: float
+    height: float
+
+
+@dataclass(frozen=True)
+class Map:
+    """A nodal field with its title, the words at its scale, and lines of equal value."""
+
+    title: str
+    label: str
+    values: Array
+    scale: Normalize
+    colours: Colormap
+    lines: tuple[float, ...] = ()
+
+
+def tiling(
+    n: int,
+    nodes: tuple[Array, ...],
+    room: tuple[float, float],
+    gap: tuple[float, float],
+    columns: Sequence[int] | None = None,
+) -> Tiling:
+    """The number of columns that draws ``n`` maps largest in a room.
+
+    Parameters
+    ----------
+    n : int
+    nodes : tuple of two arrays
+        Distance and elevation, m: the extent of each map.
+    room : pair of float
+        Width and height of all, inches.
+    gap : pair of float
+        Kept between columns, and with each row, inches.
+    columns : sequence of int, optional
+        Numbers of columns to choose from; default all.
+    """
+    across, up = (float(axis[-1] - axis[0]) for axis in nodes)
+
+    def scale(columns: int) -> float:
+        wide = (room[0] - (columns - 1) * gap[0]) / columns
+        return min(wide / across, (room[1] / -(-n // columns) - gap[1]) / up)
+
+    best = max(columns or range(1, n + 1), key=scale)
+    return Tiling(best, -(-n // best), across * scale(best), up * scale(best))
+
+
+def error_scale(result: Result, errors: Sequence[Array], flags: NDArray[np.int8]) -> Normalize:
+    """One scale for all errors, in the unit shown: the darkest is the rms anomaly, or worse.
+
+    So the colour says what an error means: where it is dark, what the section shows may be none.
+    """
+    used = [one[flags == RELIABLE] for one in errors]
+    largest = max((float(np.percentile(one, 99.5)) for one in used if one.size), default=0.0)
+    return Normalize(0.0, max(largest, shown_anomaly(result)) or 1.0)
+
+
+def shown_anomaly(result: Result) -> float:
+    """The rms anomaly in the unit shown."""
+    typical = np.array(np.median(result.model))
+    return float(shown_change(result.property, typical, np.array(result.anomaly)))
+
+
+def draw_maps(
+    figure: Figure,
+    maps: Sequence[Map],
+    nodes: tuple[Array, ...],
+    tiles: Tiling,
+    corner: tuple[float, float],
+    *,
+    flags: NDArray[np.int8],
+    surface: Surface | None,
+) -> None:
+    """Draw maps row by row; ``corner`` is the lower left of all, inches, scales included."""
+    for i, one in enumerate(maps):
+        row, column = divmod(i, tiles.columns)
+        left = corner[0] + column * (tiles.width + GAP[0])
+        bottom = corner[1] + (tiles.rows - 1 - row) * (tiles.height + GAP[1]) + 0.84
+        axes = panel(figure, left, bottom, tiles.width, tiles.height)
+        draw_field(
+            axes,
+            nodes,
+            one.values,
+            one.scale,
+            flags=flags,
+            surface=surface,
+            pixels=round(PIXELS * max(tiles.width, tiles.height)),
+            colours=one.colours,
+            lines=one.lines,
+        )
+        axes.set_title(one.title)
+        axes.set_xlabel("distance (m)")
+        if column == 0:
+            axes.set_ylabel("elevation (m)")
+        bar = figure.colorbar(
+            ScalarMappable(one.scale, one.colours),
+            cax=panel(figure, left, bottom - 0.56, tiles.width, 0.1),
+            orientation="horizontal",
+        )
+        bar.set_label(one.label, labelpad=1)
+        bar.outline.set_linewidth(0.5)
