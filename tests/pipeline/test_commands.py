@@ -134,7 +134,7 @@ def test_several_lines_give_several_profiles_and_resume_keeps_them(
     assert (folder / "small-A_1_section.nc").stat().st_mtime_ns != kept, "other settings: made again"
 
 
-def test_an_interruption_exits_130_and_leaves_nothing_half_written(small: Path) -> None:
+def test_an_interruption_judges_what_is_done_and_exits_130(small: Path) -> None:
     rewrite(small / "small.toml", "iterations = 20", "iterations = 10000")
     rewrite(small / "small.toml", 'spacing = "0.25 m"', 'spacing = "0.02 m"')
     work = subprocess.Popen(
@@ -151,11 +151,16 @@ def test_an_interruption_exits_130_and_leaves_nothing_half_written(small: Path) 
             break
     time.sleep(0.3)
     work.send_signal(signal.SIGINT)
-    _, errors = work.communicate(timeout=60)
+    printed, errors = work.communicate(timeout=60)
     assert work.returncode == 130
-    assert "interrupted" in errors
+    assert "interrupted on the grid of" in printed
     assert "Traceback" not in errors
-    assert not list(small.rglob("*.nc"))
+    (folder,) = (small / "results").iterdir()
+    summary = json.loads((folder / "summary.json").read_text())
+    assert summary["verdict"] != "settled"
+    assert len(summary["profiles"][0]["refinement"]["levels"]) < 3
+    with xr.open_dataset(folder / "small_section.nc") as section:
+        assert section["velocity"].notnull().any()
     assert not [p for p in small.rglob("*") if p.name.startswith(".")]
 
 

@@ -60,14 +60,14 @@ def test_all_products_are_there_and_nothing_half_written(folder: Path) -> None:
                         ("section.nc", "history.nc", "ladder.nc", "fit.csv"))}  # fmt: skip
     figures = {p.name for p in (folder / "figures").iterdir()}
     assert figures == {f"crosshole-ab_{what}.{kind}" for kind in ("png", "pdf")
-                       for what in ("section", "rules", "ladder", "residuals")}  # fmt: skip
+                       for what in ("section", "rules", "ladder", "residuals", "errors")}  # fmt: skip
 
 
 def test_the_summary_argues_the_stop_and_the_grid(folder: Path) -> None:
     summary = json.loads((folder / "summary.json").read_text())
     (profile,) = summary["profiles"]
     assert (summary["schema"], summary["verdict"], profile["name"]) == (1, "settled", "crosshole-ab")
-    assert {rule["rule"] for rule in profile["rules"]} == {"discrepancy", "gcv"}
+    assert {"discrepancy", "gcv", "risk", "whiteness"} <= {rule["rule"] for rule in profile["rules"]}
     assert [level["spacing"] for level in profile["refinement"]["levels"]] == [1.6, 0.8, 0.4, 0.2]
     assert profile["refinement"]["order"] > 1
     discrepancy = next(rule for rule in profile["rules"] if rule["rule"] == "discrepancy")

@@ -85,7 +85,8 @@ def run(
       stillground run line.toml --set stopping.choose=discrepancy --strict
 
     \b
-    Exit codes: 0 done, 1 the machine failed, 2 bad input, 3 not settled (--strict), 130 interrupted.
+    Exit codes: 0 done, 1 the machine failed, 2 bad input, 3 not settled (--strict), 130 interrupted
+    (what was done by then is judged and written).
     """
     from stillground.cli import console, tables
     from stillground.config import load
@@ -105,6 +106,8 @@ def run(
     )
     if not quiet:
         tables.closing(outcome)
+    if outcome.interrupted:
+        raise typer.Exit(130)
     if strict and outcome.summary["verdict"] != "settled":
         raise typer.Exit(3)
 
@@ -131,6 +134,47 @@ def inspect(config: Configuration, out: Out = None, overrides: Settings = None) 
     console.heading(settings.title)
     for plan in work(settings):
         tables.plan(plan, draw(plan, settings, folder))
+
+
+@app.command()
+def rehearse(
+    config: Configuration,
+    out: Out = None,
+    overrides: Settings = None,
+    pattern: Annotated[
+        bool, typer.Option("--pattern", help="Send checkerboards and single bodies through the survey.")
+    ] = False,
+) -> None:
+    """Try all stopping rules on synthetic ground under the survey of CONFIG.
+
+    Grounds are drawn from the prior, and as layers; where CONFIG describes a ground under [simulate],
+    that too. Each goes through the survey's own geometry with its own errors. Prints what each rule
+    costs over the best iterate: median, 90 %, worst; groups of rules that cannot be told apart; and
+    which to choose.
+
+    With --pattern, prints and draws which sizes come back where, at the stop of the survey's own answer.
+
+    \b
+    Examples:
+      stillground rehearse line.toml
+      stillground rehearse line.toml --set rehearsal.twins=100
+      stillground rehearse line.toml --pattern --set rehearsal.patterns=["2 m","4 m"]
+    """
+    from stillground.cli import console, tables
+    from stillground.config import load
+    from stillground.pipeline.rehearse import Patterns, Rehearsed, rehearse_all
+    from stillground.pipeline.run import output_folder
+
+    settings, text = load(config, overrides or ())
+    folder = output_folder(settings, config, out)
+    command = " ".join(["stillground rehearse", config.name, *(f"--set {o}" for o in overrides or ())])
+    console.heading(settings.title)
+    console.follow(
+        rehearse_all(settings, text, folder, command=command, pattern=pattern),
+        lambda found: tables.pattern(found) if isinstance(found, Patterns) else tables.rehearsal(found),
+        quiet=False,
+        shown=(Rehearsed, Patterns),
+    )
 
 
 @app.command()

@@ -38,7 +38,9 @@ def heading(text: str) -> None:
     out().print(text, style="bold", markup=False)
 
 
-def follow(work: Generator[Any, None, T], show: Callable[[Any], None], *, shown: type, quiet: bool) -> T:
+def follow(
+    work: Generator[Any, None, T], show: Callable[[Any], None], *, shown: type | tuple[type, ...], quiet: bool
+) -> T:
     """Runs long work to its end; shows its progress, and what it yields of type ``shown``.
 
     On a terminal the progress is one line that moves, elsewhere a line for each stage.
@@ -56,23 +58,28 @@ def follow(work: Generator[Any, None, T], show: Callable[[Any], None], *, shown:
     with bar:
         task = bar.add_task("starting", total=1, detail="")
         stage = ""
+        broken_off = False
         while True:
             try:
-                event = next(work)
+                event = work.throw(KeyboardInterrupt) if broken_off else next(work)
+                broken_off = False
+                if isinstance(event, Progress):
+                    if event.stage != stage:
+                        stage = event.stage
+                        bar.reset(task, description=stage, total=event.total, detail="")
+                        if not quiet and not errors.is_terminal:
+                            errors.print(f"  {stage}", markup=False)
+                    bar.update(task, completed=event.done, detail=event.detail)
+                elif isinstance(event, shown) and not quiet:
+                    bar.update(task, visible=False)
+                    show(event)
+                    bar.update(task, visible=True)
             except StopIteration as end:
                 result: T = end.value
                 return result
             except KeyboardInterrupt:
-                errors.print("interrupted; profiles finished before are written")
-                raise
-            if isinstance(event, Progress):
-                if event.stage != stage:
-                    stage = event.stage
-                    bar.reset(task, description=stage, total=event.total, detail="")
-                    if not quiet and not errors.is_terminal:
-                        errors.print(f"  {stage}", markup=False)
-                bar.update(task, completed=event.done, detail=event.detail)
-            elif isinstance(event, shown) and not quiet:
-                bar.update(task, visible=False)
-                show(event)
-                bar.update(task, visible=True)
+                # The work may judge what it has done; only when it does not is this the end.
+                if broken_off:
+                    errors.print("interrupted; profiles finished before are written")
+                    raise
+                broken_off = True

@@ -12,10 +12,11 @@ from rich.table import Table
 from stillground import plugins as registry
 from stillground.cli.console import out, say
 from stillground.pipeline.inspect import Plan
+from stillground.pipeline.rehearse import Patterns, Rehearsed
 from stillground.pipeline.run import Done, Outcome
 from stillground.products.provenance import CAUTION
 from stillground.products.reliability import MESH_DEPENDENT, NO_DATA
-from stillground.protocols import Choice, Ladder, Result
+from stillground.protocols import Choice, Ladder, Rehearsal, Result, Sensitivity
 from stillground.survey import SurveyReport, to_si
 
 _LISTED = 8
@@ -50,7 +51,19 @@ def profile(done: Done) -> None:
     say(f"{done.result.name}: {result.observed.size} data, {nodes} nodes, background {_background(result)}")
     say()
     _rules(result.choices, result.chosen)
+    if result.rehearsal is not None:
+        _rehearsal(result.rehearsal, result.chosen.rule)
+        say()
+    if result.sensitivity is not None:
+        _sensitivity(result.sensitivity)
+    for name, (values, units) in result.extras.items():
+        if values.size == 1:
+            say(f"{name}: {values[0]:.3g} {units}")
+        else:
+            say(f"{name}: rms {np.sqrt(np.mean(values**2)):.3g}, largest {np.abs(values).max():.3g} {units}")
     _ladder(result.ladder)
+    for sentence in result.remarks:
+        say(f"warning: {sentence}")
     word, reason = result.ladder.verdict.word, result.ladder.verdict.reason
     colour = {"settled": "green", "drifting": "red", "undecided": "yellow"}[word]
     out().print(f"[bold {colour}]{word.upper()}[/]  ", end="")
@@ -101,6 +114,68 @@ def _ladder(ladder: Ladder) -> None:
         "drift of the stop " + ("-" if ladder.pick_drift is None else f"{100 * ladder.pick_drift:.2g} %"),
     ]
     say(", ".join(facts))
+
+
+def rehearsal(found: Rehearsed) -> None:
+    """One profile's rehearsal."""
+    say()
+    say(f"{found.name}: error over the best iterate's, on synthetic ground under this survey")
+    say()
+    _rehearsal(found.rehearsal, found.choose)
+    say(f"figure: {found.figure}")
+
+
+def _rehearsal(found: Rehearsal, choose: str) -> None:
+    table = _table("rule", "ground", ">median", ">90 %", ">worst", ">cost", ">group")
+    for group, rules in enumerate(found.groups, start=1):
+        for rule in rules:
+            families = [(name, each[rule]) for name, each in found.ratios.items() if rule in each]
+            for number, (name, ratios) in enumerate(families):
+                table.add_row(
+                    "" if number else (f"{rule} (chosen)" if rule == choose else rule),
+                    name,
+                    *(
+                        f"{value:.2f}"
+                        for value in (np.median(ratios), np.quantile(ratios, 0.9), ratios.max())
+                    ),
+                    "" if number else f"{100 * found.cost[rule]:.0f} %",
+                    "" if number else str(group),
+                )
+    _show(table)
+    best = found.groups[0]
+    cost = 100 * found.cost[best[0]]
+    named = ", ".join(best)
+    if choose in best:
+        say(f'stopping.choose = "{choose}" is among the best here ({named}); trusting it costs {cost:.0f} %.')
+    else:
+        say(
+            f'set stopping.choose = "{best[0]}" (best here: {named}): it costs {cost:.0f} % on its worst '
+            f'family, "{choose}" {100 * found.cost[choose]:.0f} %.'
+        )
+
+
+def pattern(found: Patterns) -> None:
+    """What came back of one profile's patterns."""
+    say()
+    say(f"{found.name}: patterns through the survey, at iteration {found.stop:.3g}")
+    say()
+    table = _table("pattern", ">size", ">comes back (median)", ">ground where half does")
+    for each in found.patterns:
+        table.add_row(
+            each.name,
+            f"{each.size:g} m",
+            f"{100 * float(np.median(each.share)):.0f} %",
+            f"{100 * float(np.mean(each.share >= 0.5)):.0f} %",
+        )
+    _show(table)
+    say(f"written: {found.file}, {found.figure}")
+
+
+def _sensitivity(found: Sensitivity) -> None:
+    table = _table("changed", ">stop", ">picture moves")
+    for variation in found.variations:
+        table.add_row(variation.name, _number(variation.iteration), f"{100 * variation.distance:.0f} %")
+    _show(table)
 
 
 def closing(outcome: Outcome) -> None:

@@ -123,6 +123,14 @@ class SurveySettings(Table):
 class ErrorSettings(Table):
     floor: Datum | None = Field(None, description="standard deviation of the data, with unit")
     relative: Number | None = Field(None, gt=0, lt=1, description="and as a share of the datum")
+    trust: bool = Field(True, description="false: rules that need the size of the errors take it from gcv")
+    outliers: Literal["auto", "tukey", "off"] = Field(
+        "auto", description="reweight outlying data: where the data say so, always, never"
+    )
+    statics: dict[str, Annotated[Number, Field(gt=0)]] = Field(
+        {}, description="constants of each 'source' or 'receiver' as unknowns: their size in errors"
+    )
+    delay: Literal["fit", "off"] = Field("off", description="one constant common to all data as an unknown")
 
 
 class Pair(Table):
@@ -152,13 +160,40 @@ class GroundSettings(Table):
         None, description="below the lowest ground point; default: down to the deepest position"
     )
     background: Background = Field(None, description="'fit' (default), or a value with unit")
+    bounds: tuple[PropertyValue, PropertyValue] | None = Field(
+        None, description="least and greatest value; kept by Kaczmarz' methods"
+    )
 
 
 class SolverSettings(Table):
     method: SolverName = Field("lsqr", description="see 'stillground plugins'")
-    iterations: Count = Field(
-        80, ge=2, le=10_000, description="how far the iteration runs before it is judged"
+    iterations: Count = Field(80, ge=2, le=10_000, description="how far it runs before it is judged")
+    order: Literal["golden", "cyclic", "random"] | None = Field(
+        None, description="Kaczmarz: order of the parts in a sweep; default golden"
     )
+    relaxation: Number | None = Field(None, gt=0, lt=2, description="Kaczmarz: length of a step; default 1")
+    groups: Count | None = Field(None, ge=1, description="block Kaczmarz: groups of sources; default 5")
+    ridge: Number | None = Field(
+        None, ge=0, description="block Kaczmarz: in mean squared row norms; default 1, symmetric 30"
+    )
+
+    reorthogonal: bool | None = Field(
+        None, description="lsqr, cgls: keep vectors orthogonal against rounding; default true"
+    )
+
+    @property
+    def options(self) -> dict[str, Any]:
+        """What is set beyond the method and its length."""
+        return self.model_dump(exclude={"method", "iterations"}, exclude_none=True)
+
+    @model_validator(mode="after")
+    def _options_apply(self) -> Self:
+        known = plugins.options(self.method)
+        for name in self.options:
+            if name not in known:
+                takes = f"it takes {', '.join(known)}" if known else "it takes no options"
+                raise ValueError(f"{name} does not apply to method = '{self.method}'; {takes}")
+        return self
 
 
 class StoppingSettings(Table):
@@ -166,6 +201,10 @@ class StoppingSettings(Table):
     choose: RuleName = Field("gcv", description="the rule whose picture is the answer")
     tau: Number = Field(
         RuleOptions.tau, gt=0, description="discrepancy target: mean squared whitened residual = tau^2"
+    )
+
+    gcv_factor: Number = Field(
+        RuleOptions.gcv_factor, ge=1, le=3, description="gcv: price of a degree of freedom; 1.4 is wary"
     )
 
     @property
@@ -187,6 +226,23 @@ class StoppingSettings(Table):
 class RefinementSettings(Table):
     levels: Count = Field(4, ge=1, le=8, description="rungs: 2^(levels-1), ..., 2, 1 times the spacing")
     tolerance: Number = Field(0.02, gt=0, lt=1, description="relative change that counts as none")
+
+
+class RehearsalSettings(Table):
+    twins: Count = Field(
+        0,
+        ge=0,
+        le=1000,
+        description="grounds in each family that 'run' rehearses on; 0: none, 30 is enough",
+    )
+    seed: Count = Field(0, ge=0)
+    patterns: list[Length] = Field(
+        [], description="sizes of checkerboards and bodies for 'rehearse --pattern'; default: by the lengths"
+    )
+
+
+class SensitivitySettings(Table):
+    vary: bool = Field(False, description="repeat with other lengths, smoothness and backgrounds")
 
 
 class OutputSettings(Table):
@@ -268,6 +324,15 @@ class SimulateSettings(Table):
 class Config(Table):
     """All settings of a run, in SI."""
 
+    @model_validator(mode="after")
+    def _bounds_are_kept(self) -> Self:
+        if self.ground.bounds is not None and not plugins.keeps_bounds(self.solver.method):
+            raise ValueError(
+                f"ground.bounds: method = '{self.solver.method}' cannot keep bounds, only Kaczmarz' "
+                f"methods can ('kaczmarz', 'block-kaczmarz'); take one of them, or leave the bounds out"
+            )
+        return self
+
     title: str = Field(min_length=1)
     survey: SurveySettings
     errors: ErrorSettings = ErrorSettings()
@@ -275,6 +340,8 @@ class Config(Table):
     solver: SolverSettings = SolverSettings()
     stopping: StoppingSettings = StoppingSettings()
     refinement: RefinementSettings = RefinementSettings()
+    rehearsal: RehearsalSettings = RehearsalSettings()
+    sensitivity: SensitivitySettings = SensitivitySettings()
     output: OutputSettings = OutputSettings()
     physics: SerializeAsAny[BaseModel] = Field(Table(), description="settings of the kind of survey")
     simulate: SimulateSettings | None = Field(None, description="a described ground to make a survey over")

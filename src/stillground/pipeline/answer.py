@@ -1,21 +1,44 @@
-"""One profile's answer: climb the ladder, then gather what the products need."""
+"""One profile's answer: climb the ladder, then what argues for it, then what the products need."""
 
 from __future__ import annotations
 
-from collections.abc import Generator, Iterator, Sequence
+from collections.abc import Callable, Generator, Iterator, Sequence
+from dataclasses import replace
+from functools import partial
 
 import numpy as np
 
 from stillground import plugins
 from stillground.config import Config
-from stillground.grid import Grid
+from stillground.grid import Grid, prolong
 from stillground.pipeline.capacity import SNAPSHOT_VALUES
 from stillground.pipeline.grids import correlation
 from stillground.pipeline.profiles import Profile
-from stillground.protocols import Array, Choice, Progress, Result, RuleOptions
-from stillground.reconstruct import Method
+from stillground.pipeline.remarks import remark
+from stillground.pipeline.simulate import described_ground
+from stillground.progress import staged
+from stillground.protocols import (
+    Array,
+    Choice,
+    Measurement,
+    Progress,
+    Rehearsal,
+    Result,
+    RuleOptions,
+    Sensitivity,
+)
+from stillground.reconstruct import Method, find_outliers, reweighted, with_delay, with_statics
 from stillground.refinement import Climb, climb
+from stillground.rehearsal import rehearse
+from stillground.sensitivity import vary
 from stillground.solve.columns import norm
+from stillground.uncertainty import noise_part
+
+Assemble = Callable[[Grid], Measurement]
+
+# Repeated work goes on the finest rung of no more nodes than this; what it tells has settled there.
+_REPEATED_NODES = 6000
+_MEMBERS = 32
 
 
 def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator[Progress, None, Result]:
@@ -30,12 +53,37 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     Result
     """
     method = plan_method(config)
-    top = yield from climb(profile.scene.assemble, grids, method, config.refinement.tolerance)
+    repeated = grids[repeated_rung(grids)]
+    plain = assembly(profile, config)
+    weights = np.ones(profile.survey.sizes["datum"])
+    if config.errors.outliers != "off":
+        always = config.errors.outliers == "tukey"
+        work = find_outliers(plain(repeated), repeated, method, always=always)
+        weights = yield from staged(work, "looking for outliers")
 
-    finest, measurement = top.finest, top.finest.measurement
+    def assemble(grid: Grid) -> Measurement:
+        return reweighted(plain(grid), weights)
+
+    top = yield from climb(assemble, grids, method, config.refinement.tolerance)
+    finest = top.finest
+    chosen_stop = finest.stop(method.choose)
+    rung = top.rungs[min(repeated_rung(grids), len(top.rungs) - 1)]
+    scatter = yield from noise_part(rung, chosen_stop, members=_MEMBERS, seed=0)
+    rehearsal = None
+    if config.rehearsal.twins and not top.interrupted:
+        rehearsal = yield from rehearse_profile(profile, config, grids, assemble)
+    sensitivity = None
+    if config.sensitivity.vary and not top.interrupted:
+        sensitivity = yield from vary(assemble(repeated), repeated, method)
+
+    measurement = plain(finest.grid)
     choices = tuple(_choice(top, name) for name in method.rules)
     chosen = next(choice for choice in choices if choice.rule == method.choose)
-    whitened = finest.run.residual(chosen.iteration)
+    raise_ = partial(prolong, coarse=rung.grid, fine=finest.grid)
+    solution = finest.run.solution(chosen_stop)
+    units = {extra.name: extra.units for extra in finest.measurement.extras}
+    extras = {name: (values, units[name]) for name, values in finest.standard.extras(solution).items()}
+    residual = finest.run.residual(chosen_stop) * finest.measurement.errors
     return Result(
         property=plugins.kind(config.survey.kind).ground_property,
         axes=finest.grid.axes,
@@ -44,7 +92,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         mesh_change=top.mesh_change,
         anomaly=top.anomaly,
         coverage=profile.scene.coverage(finest.grid, method.correlation),
-        predicted=measurement.data - measurement.errors * whitened,
+        predicted=measurement.data - residual,
         observed=measurement.data,
         errors=measurement.errors,
         groupings=measurement.groupings,
@@ -53,20 +101,83 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         chosen=chosen,
         snapshots=tuple(_snapshots(top)),
         ladder=top.ladder,
+        weights=weights,
+        noise=finest.noise,
+        extras=extras,
+        noise_part=raise_(scatter),
+        rehearsal=_raised_rehearsal(rehearsal, raise_),
+        sensitivity=_raised_sensitivity(sensitivity, raise_),
+        remarks=_broken_off(top) + remark(finest, weights, config),
+        interrupted=top.interrupted,
     )
 
 
 def plan_method(config: Config) -> Method:
     """How a configuration asks to reconstruct."""
+    bounds = config.ground.bounds
     return Method(
         correlation=correlation(config),
         smoothness=config.ground.smoothness,
-        solver=plugins.solver(config.solver.method),
+        solver=partial(plugins.solver(config.solver.method), **config.solver.options),
         iterations=config.solver.iterations,
         rules={name: plugins.rule(name) for name in config.stopping.judged},
         choose=config.stopping.choose,
-        options=RuleOptions(tau=config.stopping.tau),
+        options=RuleOptions(tau=config.stopping.tau, gcv_factor=config.stopping.gcv_factor),
         background=config.ground.background,
+        bounds=None if bounds is None else (min(bounds), max(bounds)),
+        trust=config.errors.trust,
+    )
+
+
+def assembly(profile: Profile, config: Config) -> Assemble:
+    """From a grid to the measurement with the extra unknowns that the configuration asks for."""
+    units = plugins.kind(config.survey.kind).datum_units
+
+    def assemble(grid: Grid) -> Measurement:
+        measurement = with_statics(profile.scene.assemble(grid), config.errors.statics, units)
+        return with_delay(measurement, units) if config.errors.delay == "fit" else measurement
+
+    return assemble
+
+
+def repeated_rung(grids: Sequence[Grid]) -> int:
+    """Index of the rung for repeated work: the finest of few nodes, but not the finest of all."""
+    few = [i for i, grid in enumerate(grids[:-1]) if grid.n_nodes <= _REPEATED_NODES]
+    return few[-1] if few else 0
+
+
+def rehearse_profile(
+    profile: Profile, config: Config, grids: Sequence[Grid], assemble: Assemble
+) -> Generator[Progress, None, Rehearsal]:
+    """All rules on twins of a profile; data come from the next finer rung than they are judged on."""
+    i = repeated_rung(grids)
+    coarse, fine = grids[i], grids[min(i + 1, len(grids) - 1)]
+    method = plan_method(config)
+    described = None
+    if config.simulate is not None:
+        axes = plugins.kind(config.survey.kind).axes
+        ground = described_ground(config.simulate, axes)
+        points = np.stack(np.meshgrid(*fine.axes, indexing="ij"), axis=-1).reshape(-1, len(axes))
+        described = ground.values(points) - ground.background
+    return (
+        yield from rehearse(
+            (coarse, assemble(coarse)),
+            (fine, assemble(fine)),
+            method,
+            twins=config.rehearsal.twins,
+            seed=config.rehearsal.seed,
+            described=described,
+        )
+    )
+
+
+def _broken_off(top: Climb) -> tuple[str, ...]:
+    if not top.interrupted:
+        return ()
+    spacing = max(top.finest.grid.spacing)
+    return (
+        f"interrupted on the grid of {spacing:g} m after {top.finest.run.history.last} iterations: "
+        f"this is judged, finer grids are missing",
     )
 
 
@@ -92,3 +203,25 @@ def _snapshots(top: Climb) -> Iterator[tuple[int, Array]]:
     stride = int(np.ceil(kept * top.finest.grid.n_nodes / SNAPSHOT_VALUES))
     for iteration in range(0, kept, max(stride, 1)):
         yield iteration, top.finest.model(iteration)
+
+
+def _raised_rehearsal(rehearsal: Rehearsal | None, raised: Callable[[Array], Array]) -> Rehearsal | None:
+    if rehearsal is None:
+        return None
+    return replace(
+        rehearsal,
+        total_error=raised(rehearsal.total_error),
+        resolved=raised(rehearsal.resolved),
+    )
+
+
+def _raised_sensitivity(
+    sensitivity: Sensitivity | None, raised: Callable[[Array], Array]
+) -> Sensitivity | None:
+    if sensitivity is None:
+        return None
+    return replace(
+        sensitivity,
+        spread=raised(sensitivity.spread),
+        investigation=raised(sensitivity.investigation),
+    )

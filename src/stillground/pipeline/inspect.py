@@ -17,9 +17,9 @@ from stillground.pipeline.answer import plan_method
 from stillground.pipeline.capacity import memory
 from stillground.pipeline.grids import correlation, plan_grids
 from stillground.pipeline.profiles import Profile, read_profiles
-from stillground.pipeline.run import finish
 from stillground.products.figures.sheet import write_figure
 from stillground.products.figures.survey import survey_figure
+from stillground.progress import finish
 from stillground.reconstruct import reconstruct
 
 _TIMED_STEPS = 3

@@ -10,7 +10,7 @@ from collections.abc import Generator, Sequence
 from dataclasses import dataclass
 from importlib.metadata import version
 from pathlib import Path
-from typing import Any, TypeVar, cast
+from typing import Any
 
 import xarray as xr
 
@@ -27,10 +27,9 @@ from stillground.products.ladder import write_ladder
 from stillground.products.provenance import Provenance
 from stillground.products.section import write_section
 from stillground.products.summary import SUMMARY, run_summary, write_summary
-from stillground.protocols import Progress
+from stillground.progress import finish
+from stillground.protocols import Progress, RuleOptions
 from stillground.whole import require_writable
-
-T = TypeVar("T")
 
 
 @dataclass(frozen=True)
@@ -47,6 +46,7 @@ class Outcome:
 
     folder: Path
     summary: dict[str, Any]
+    interrupted: bool = False
 
 
 def run(
@@ -81,7 +81,8 @@ def run(
 
     Notes
     -----
-    When it is interrupted, the summary of the profiles finished so far is written.
+    When it is interrupted from the keyboard while it iterates, what is done is judged and written, and the
+    run ends there; at other times the summary of the profiles finished so far is written.
     """
     begin = time.perf_counter()
     yield Progress("reading the survey", 0, 1)
@@ -94,6 +95,7 @@ def run(
     mark = _fingerprint(origin)
     entries = _kept(folder, mark) if resume else {}
     summary: dict[str, Any] = {}
+    interrupted = False
     try:
         for profile in profiles:
             if profile.name in entries:
@@ -106,6 +108,9 @@ def run(
             files = yield from _write(folder, result, config)
             entries[profile.name] = result.summary(files) | {"fingerprint": mark}
             yield Done(result, folder)
+            interrupted = arrays.interrupted
+            if interrupted:
+                break
     finally:
         if entries:
             seconds = None if "SOURCE_DATE_EPOCH" in os.environ else time.perf_counter() - begin
@@ -114,7 +119,7 @@ def run(
                 config.title, version("stillground"), seconds, [entries[name] for name in order]
             )
             write_summary(folder, summary)
-    return Outcome(folder, summary)
+    return Outcome(folder, summary, interrupted)
 
 
 def run_config(
@@ -143,15 +148,6 @@ def run_config(
 def output_folder(config: Config, path: str | Path, out: str | Path | None = None) -> Path:
     """Where a run writes: what the caller says, else the configuration, else results/<its name>."""
     return Path(out or config.output.folder or Path("results") / Path(path).stem)
-
-
-def finish(work: Generator[Any, None, T]) -> T:
-    """Runs long work to its end and drops its progress."""
-    while True:
-        try:
-            next(work)
-        except StopIteration as end:
-            return cast(T, end.value)
 
 
 def reconstruct_survey(
@@ -217,7 +213,11 @@ def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Pro
             receivers=scene.positions["receiver"],
             surface=scene.surface,
             tolerance=config.refinement.tolerance,
-            tau=config.stopping.tau,
+            options=RuleOptions(
+                tau=config.stopping.tau,
+                gcv_factor=config.stopping.gcv_factor,
+                noise=1.0 if config.errors.trust else result.arrays.noise,
+            ),
         )
     yield Progress("writing products", 2, 2)
     return {name: path.relative_to(folder).as_posix() for name, path in written.items()}

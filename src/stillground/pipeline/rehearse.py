@@ -1,0 +1,92 @@
+"""Rehearsals of a survey without its answer: rules on synthetic ground, and patterns of stated sizes."""
+
+from __future__ import annotations
+
+from collections.abc import Generator
+from dataclasses import dataclass
+from pathlib import Path
+
+from stillground.config import Config
+from stillground.grid import Grid
+from stillground.pipeline.answer import assembly, plan_method, rehearse_profile, repeated_rung
+from stillground.pipeline.grids import plan_grids
+from stillground.pipeline.labels import provenance
+from stillground.pipeline.profiles import Profile, read_profiles
+from stillground.products.figures import write_pattern_figure, write_rehearsal_figure
+from stillground.products.pattern import pattern_dataset, write_pattern
+from stillground.protocols import Pattern, Progress, Rehearsal
+from stillground.reconstruct import reconstruct
+from stillground.rehearsal import through_patterns
+from stillground.whole import require_writable
+
+_TWINS = 30
+# Sizes of patterns in correlation lengths, where none are given.
+_SIZES = (0.5, 1.0, 2.0)
+
+
+@dataclass(frozen=True)
+class Rehearsed:
+    """One profile's rehearsal and the figure of it."""
+
+    name: str
+    rehearsal: Rehearsal
+    choose: str
+    figure: Path
+
+
+@dataclass(frozen=True)
+class Patterns:
+    """One profile's patterns, the stop they went through, and where they were written."""
+
+    name: str
+    patterns: tuple[Pattern, ...]
+    stop: float
+    file: Path
+    figure: Path
+
+
+def rehearse_all(
+    config: Config, text: str, folder: Path, *, command: str, pattern: bool
+) -> Generator[Progress | Rehearsed | Patterns, None, None]:
+    """Rehearses every profile: rules on synthetic ground, or patterns where asked for.
+
+    Yields
+    ------
+    Progress, Rehearsed or Patterns
+    """
+    twins = config.rehearsal.twins or _TWINS
+    config = config.model_copy(update={"rehearsal": config.rehearsal.model_copy(update={"twins": twins})})
+    profiles = read_profiles(config)
+    plans = {profile.name: plan_grids(profile, config) for profile in profiles}
+    require_writable(folder)
+    for profile in profiles:
+        grids = plans[profile.name]
+        if pattern:
+            yield (yield from _patterns(profile, grids, config, text, folder, command))
+        else:
+            found = yield from rehearse_profile(profile, config, grids, assembly(profile, config))
+            figure = write_rehearsal_figure(folder / "figures", profile.name, found, config.stopping.choose)
+            yield Rehearsed(profile.name, found, config.stopping.choose, figure)
+
+
+def _patterns(
+    profile: Profile, grids: tuple[Grid, ...], config: Config, text: str, folder: Path, command: str
+) -> Generator[Progress, None, Patterns]:
+    i = repeated_rung(grids)
+    coarse, fine = grids[i], grids[min(i + 1, len(grids) - 1)]
+    assemble, method = assembly(profile, config), plan_method(config)
+    sizes = config.rehearsal.patterns or [factor * method.correlation[-1] for factor in _SIZES]
+    answer = yield from reconstruct(assemble(coarse), coarse, method)
+    stop = answer.stop(method.choose)
+    patterns = yield from through_patterns(
+        (coarse, assemble(coarse)), (fine, assemble(fine)), method, stop, sizes, seed=config.rehearsal.seed
+    )
+    origin = provenance((profile,), config, text, command)
+    dataset = pattern_dataset(
+        profile.name, patterns, coarse.axes, surface=profile.scene.surface, provenance=origin
+    )
+    file = write_pattern(folder, profile.name, dataset)
+    figure = write_pattern_figure(
+        folder / "figures", profile.name, patterns, coarse.axes, surface=profile.scene.surface
+    )
+    return Patterns(profile.name, patterns, stop, file, figure)

@@ -1,0 +1,60 @@
+"""What the data say of the settings once the answer is there, each with what to do."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from stillground.config import Config
+from stillground.protocols import Array, RuleOptions
+from stillground.reconstruct import Reconstruction, shared_constants
+from stillground.stopping.gcv import gcv
+
+_MISSTATED = 1.3
+_STATICS, _WARY = 2.5, 1.4
+_STALLED = 0.01
+
+
+def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str, ...]:
+    """Sentences on the size of the errors, outliers, statics and bounds; empty where all is well."""
+    said = []
+    noise = finest.noise
+    if not 1 / _MISSTATED < noise < _MISSTATED:
+        what = "too small" if noise > 1 else "too large"
+        trusted = "" if not config.errors.trust else ", or set errors.trust = false"
+        said.append(
+            f"the errors look {what}: cross-validation finds {noise:.2g} times what is stated; "
+            f"look at them again{trusted}"
+        )
+    light = int(np.sum(weights < 0.5))
+    if light:
+        said.append(
+            f"{light} of {weights.size} data look like outliers and count less than half (column weight of "
+            f'the fit table); look at these picks, or set errors.outliers = "off"'
+        )
+    # Statics draw the plain pick so late that the ground has taken them up; a wary one leaves them. Before
+    # there is a pick, residuals are alike for want of iterations.
+    history = finest.run.history
+    wary = gcv(history, RuleOptions(gcv_factor=_WARY)).iteration
+    shared = {}
+    if wary is not None and wary < history.last:
+        kept = weights > 0.5
+        groups = {
+            name: np.unique(group[kept], return_inverse=True)[1]
+            for name, group in finest.measurement.groupings.items()
+        }
+        shared = shared_constants(finest.run.residual(wary)[kept], groups)
+    missing = [name for name, size in shared.items() if size > _STATICS and name not in config.errors.statics]
+    if missing:
+        named = " and ".join(f"{name} ({shared[name]:.2g}, expected 1)" for name in missing)
+        setting = ", ".join(f"{name} = 1.0" for name in missing)
+        said.append(
+            f"residuals are alike within each {named}: constants are likely; "
+            f"set errors.statics = {{ {setting} }}"
+        )
+    if config.ground.bounds is not None:
+        norms = history.residual_norm
+        stalled = norms[-1] > (1 - _STALLED) * norms[history.last // 2]
+        # The size that cross-validation finds comes from this very residual: only the stated one can tell.
+        if stalled and config.errors.trust and history.chi_square[-1] > 1.1:
+            said.append("the residual stalls above the errors: the bounds contradict the data")
+    return tuple(said)
