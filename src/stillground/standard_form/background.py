@@ -10,7 +10,8 @@ from stillground.protocols import Measurement
 def fit_background(measurement: Measurement) -> float:
     """Weighted least-squares constant, in the unit of the ground property.
 
-    Extra unknowns are fitted with it, held by their prior: a delay would otherwise go into the constant.
+    Single extra unknowns, such as a delay, are fitted with it, held by their prior: they would otherwise
+    go into the constant. Statics are not: level layers are constants of each group too.
 
     Notes
     -----
@@ -18,7 +19,8 @@ def fit_background(measurement: Measurement) -> float:
     ``sum(a d / errors^2) / sum(a^2 / errors^2)``.
     """
     response = measurement.operator @ np.ones(measurement.operator.shape[1])
-    extras = [extra.response * extra.deviation for extra in measurement.extras]
+    single = [extra for extra in measurement.extras if extra.response.shape[1] == 1]
+    extras = [extra.response * extra.deviation for extra in single]
     columns = np.column_stack([response, *extras]) / measurement.errors[:, None]
     normal = columns.T @ columns + np.diag([0.0, *np.ones(columns.shape[1] - 1)])
     return float(np.linalg.solve(normal, columns.T @ (measurement.data / measurement.errors))[0])
