@@ -12,6 +12,7 @@ from functools import partial
 
 import numpy as np
 import pytest
+from pylops import MatrixMult
 
 import stillground
 from stillground import plugins
@@ -20,7 +21,7 @@ from stillground.grid import Grid
 from stillground.ground import Disc, Ground
 from stillground.operators.prior_root import PriorRoot
 from stillground.progress import finish
-from stillground.protocols import Array, RuleOptions
+from stillground.protocols import Array, Measurement, RuleOptions
 from stillground.reconstruct import (
     Reconstruction,
     find_outliers,
@@ -296,3 +297,13 @@ def test_bounds_that_contradict_the_data_are_remarked(bounds: list[str], contrad
 
 def test_all_rules_of_the_twins_are_the_registered_ones() -> None:
     assert set(RULES) == {plugin.name for plugin in plugins.registered("rules")}
+
+
+def test_reweighting_leaves_the_mean_square_of_normal_data_at_one() -> None:
+    # Beaton & Tukey (1974) for the weight; normal moments 1, 3, 15 for what it takes away.
+    residual = np.random.default_rng(2).standard_normal(200_000)
+    measurement = Measurement(MatrixMult(np.ones((1, 1))), residual, np.ones_like(residual))
+    weighted = reweighted(measurement, biweight(residual))
+    assert np.mean((residual / weighted.errors) ** 2) == pytest.approx(1.0, abs=0.01)
+    untouched = reweighted(measurement, np.ones_like(residual))
+    np.testing.assert_array_equal(untouched.errors, 1.0)

@@ -12,13 +12,18 @@ T = TypeVar("T")
 
 
 def staged(work: Generator[Progress, None, T], stage: str) -> Generator[Progress, None, T]:
-    """The same work with its progress under a name of the caller's."""
+    """The same work with its progress under a name of the caller's; what is thrown in reaches the work."""
+    thrown: BaseException | None = None
     while True:
         try:
-            step = next(work)
+            step = next(work) if thrown is None else work.throw(thrown)
         except StopIteration as end:
             return cast(T, end.value)
-        yield replace(step, stage=stage)
+        thrown = None
+        try:
+            yield replace(step, stage=stage)
+        except BaseException as error:
+            thrown = error
 
 
 def finish(work: Generator[Any, None, T]) -> T:

@@ -192,6 +192,13 @@ class RuleOptions:
     gcv_factor: float = 1.0
     noise: float = 1.0
 
+    @property
+    def proviso(self) -> str:
+        """What a rule that needs the size of the errors says of it."""
+        return (
+            "needs the errors to be right" if self.noise == 1 else "size of the errors from cross-validation"
+        )
+
 
 @dataclass(frozen=True)
 class Pick:

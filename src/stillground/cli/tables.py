@@ -143,15 +143,18 @@ def _rehearsal(found: Rehearsal, choose: str) -> None:
                 )
     _show(table)
     best = found.groups[0]
-    cost = 100 * found.cost[best[0]]
     named = ", ".join(best)
     if choose in best:
+        cost = 100 * found.cost[choose]
         say(f'stopping.choose = "{choose}" is among the best here ({named}); trusting it costs {cost:.0f} %.')
-    else:
+    elif choose in found.cost:
+        least, cost = 100 * found.cost[best[0]], 100 * found.cost[choose]
         say(
-            f'set stopping.choose = "{best[0]}" (best here: {named}): it costs {cost:.0f} % on its worst '
-            f'family, "{choose}" {100 * found.cost[choose]:.0f} %.'
+            f'set stopping.choose = "{best[0]}" (best here: {named}): it costs {least:.0f} % on its worst '
+            f'family, "{choose}" {cost:.0f} %.'
         )
+    else:
+        say(f'stopping.choose = "{choose}" does not apply to this method; best here: {named}.')
 
 
 def pattern(found: Patterns) -> None:
@@ -236,9 +239,7 @@ def plan(planned: Plan, figure: Path) -> None:
     _show(rungs)
     for sentence in (*planned.profile.scene.doubts, *planned.advice):
         say(f"warning: {sentence}")
-    say(
-        f"a run will take about {_time(planned.seconds)} without figures and {planned.memory / 2**20:.0f} MiB"
-    )
+    say(f"a run will take about {_time(planned.seconds)} for the ladder and {planned.memory / 2**20:.0f} MiB")
     say(f"figure: {figure}")
 
 

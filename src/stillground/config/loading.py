@@ -114,7 +114,7 @@ def _explain(model: type[BaseModel], fault: Any) -> str:
         return f"{key} is missing"
     message = str(fault["ctx"]["error"]) if "error" in fault.get("ctx", {}) else _lower(fault["msg"])
     shown = "" if isinstance(value, Mapping | list) or repr(value) in message else f" = {value!r}"
-    return f"{key}{shown}: {message}"
+    return f"{key}{shown}: {message}" if key else message
 
 
 def _lower(message: str) -> str:

@@ -240,6 +240,12 @@ class RehearsalSettings(Table):
         [], description="sizes of checkerboards and bodies for 'rehearse --pattern'; default: by the lengths"
     )
 
+    @model_validator(mode="after")
+    def _several(self) -> Self:
+        if self.twins == 1:
+            raise ValueError("twins = 1 tells nothing; take 30, or 0 for none")
+        return self
+
 
 class SensitivitySettings(Table):
     vary: bool = Field(False, description="repeat with other lengths, smoothness and backgrounds")
@@ -325,11 +331,26 @@ class Config(Table):
     """All settings of a run, in SI."""
 
     @model_validator(mode="after")
+    def _background_within_bounds(self) -> Self:
+        bounds, background = self.ground.bounds, self.ground.background
+        if bounds is not None and background is not None and not min(bounds) <= background <= max(bounds):
+            raise ValueError("ground.background lies outside ground.bounds; mend one of them")
+        return self
+
+    @model_validator(mode="after")
+    def _rehearsal_has_a_finer_grid(self) -> Self:
+        if self.rehearsal.twins and self.refinement.levels < 2:
+            raise ValueError(
+                "refinement.levels: rehearsals take data from a finer grid; take 2 or more, or twins = 0"
+            )
+        return self
+
+    @model_validator(mode="after")
     def _bounds_are_kept(self) -> Self:
         if self.ground.bounds is not None and not plugins.keeps_bounds(self.solver.method):
             raise ValueError(
-                f"ground.bounds: method = '{self.solver.method}' cannot keep bounds, only Kaczmarz' "
-                f"methods can ('kaczmarz', 'block-kaczmarz'); take one of them, or leave the bounds out"
+                f"ground.bounds: method = '{self.solver.method}' cannot keep bounds; of Kaczmarz' "
+                f"methods 'kaczmarz' and 'block-kaczmarz' can: take one of them, or leave the bounds out"
             )
         return self
 

@@ -10,6 +10,7 @@ import numpy as np
 
 from stillground import plugins
 from stillground.config import Config
+from stillground.errors import ConfigError
 from stillground.grid import Grid, prolong
 from stillground.pipeline.capacity import SNAPSHOT_VALUES
 from stillground.pipeline.grids import correlation
@@ -68,13 +69,19 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     finest = top.finest
     chosen_stop = finest.stop(method.choose)
     rung = top.rungs[min(repeated_rung(grids), len(top.rungs) - 1)]
-    scatter = yield from noise_part(rung, chosen_stop, members=_MEMBERS, seed=0)
-    rehearsal = None
-    if config.rehearsal.twins and not top.interrupted:
-        rehearsal = yield from rehearse_profile(profile, config, grids, assemble)
-    sensitivity = None
-    if config.sensitivity.vary and not top.interrupted:
-        sensitivity = yield from vary(assemble(repeated), repeated, method)
+    scatter = np.full(rung.grid.shape, np.nan)
+    rehearsal = sensitivity = None
+    interrupted = top.interrupted
+    try:
+        if not interrupted:
+            scatter = yield from noise_part(rung, chosen_stop, members=_MEMBERS, seed=0)
+        if config.rehearsal.twins and not interrupted:
+            noise = 1.0 if config.errors.trust else finest.noise
+            rehearsal = yield from rehearse_profile(profile, config, grids, assemble, noise)
+        if config.sensitivity.vary and not interrupted:
+            sensitivity = yield from vary(assemble(repeated), repeated, method)
+    except KeyboardInterrupt:
+        interrupted = True
 
     measurement = plain(finest.grid)
     choices = tuple(_choice(top, name) for name in method.rules)
@@ -107,8 +114,8 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         noise_part=raise_(scatter),
         rehearsal=_raised_rehearsal(rehearsal, raise_),
         sensitivity=_raised_sensitivity(sensitivity, raise_),
-        remarks=_broken_off(top) + remark(finest, weights, config),
-        interrupted=top.interrupted,
+        remarks=_broken_off(top, interrupted) + remark(finest, weights, config),
+        interrupted=interrupted,
     )
 
 
@@ -146,12 +153,28 @@ def repeated_rung(grids: Sequence[Grid]) -> int:
     return few[-1] if few else 0
 
 
-def rehearse_profile(
-    profile: Profile, config: Config, grids: Sequence[Grid], assemble: Assemble
-) -> Generator[Progress, None, Rehearsal]:
-    """All rules on twins of a profile; data come from the next finer rung than they are judged on."""
+def two_rungs(grids: Sequence[Grid]) -> tuple[Grid, Grid]:
+    """The rung for repeated work and the next finer one, for data that owe nothing to the first.
+
+    Raises
+    ------
+    ConfigError
+        With a single rung.
+    """
+    if len(grids) < 2:
+        raise ConfigError("refinement.levels: a rehearsal takes its data from a finer grid; take 2 or more")
     i = repeated_rung(grids)
-    coarse, fine = grids[i], grids[min(i + 1, len(grids) - 1)]
+    return grids[i], grids[i + 1]
+
+
+def rehearse_profile(
+    profile: Profile, config: Config, grids: Sequence[Grid], assemble: Assemble, noise: float
+) -> Generator[Progress, None, Rehearsal]:
+    """All rules on twins of a profile; data come from the next finer rung than they are judged on.
+
+    ``noise`` is the size of the errors over what is stated.
+    """
+    coarse, fine = two_rungs(grids)
     method = plan_method(config)
     described = None
     if config.simulate is not None:
@@ -166,14 +189,17 @@ def rehearse_profile(
             method,
             twins=config.rehearsal.twins,
             seed=config.rehearsal.seed,
+            noise=noise,
             described=described,
         )
     )
 
 
-def _broken_off(top: Climb) -> tuple[str, ...]:
-    if not top.interrupted:
+def _broken_off(top: Climb, interrupted: bool) -> tuple[str, ...]:
+    if not interrupted:
         return ()
+    if not top.interrupted:
+        return ("interrupted after the ladder: error bars, rehearsal or sensitivity are missing",)
     spacing = max(top.finest.grid.spacing)
     return (
         f"interrupted on the grid of {spacing:g} m after {top.finest.run.history.last} iterations: "

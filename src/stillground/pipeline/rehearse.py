@@ -8,7 +8,7 @@ from pathlib import Path
 
 from stillground.config import Config
 from stillground.grid import Grid
-from stillground.pipeline.answer import assembly, plan_method, rehearse_profile, repeated_rung
+from stillground.pipeline.answer import assembly, plan_method, rehearse_profile, two_rungs
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.labels import provenance
 from stillground.pipeline.profiles import Profile, read_profiles
@@ -64,7 +64,11 @@ def rehearse_all(
         if pattern:
             yield (yield from _patterns(profile, grids, config, text, folder, command))
         else:
-            found = yield from rehearse_profile(profile, config, grids, assembly(profile, config))
+            assemble, noise = assembly(profile, config), 1.0
+            if not config.errors.trust:
+                coarse, _ = two_rungs(grids)
+                noise = (yield from reconstruct(assemble(coarse), coarse, plan_method(config))).noise
+            found = yield from rehearse_profile(profile, config, grids, assemble, noise)
             figure = write_rehearsal_figure(folder / "figures", profile.name, found, config.stopping.choose)
             yield Rehearsed(profile.name, found, config.stopping.choose, figure)
 
@@ -72,8 +76,7 @@ def rehearse_all(
 def _patterns(
     profile: Profile, grids: tuple[Grid, ...], config: Config, text: str, folder: Path, command: str
 ) -> Generator[Progress, None, Patterns]:
-    i = repeated_rung(grids)
-    coarse, fine = grids[i], grids[min(i + 1, len(grids) - 1)]
+    coarse, fine = two_rungs(grids)
     assemble, method = assembly(profile, config), plan_method(config)
     sizes = config.rehearsal.patterns or [factor * method.correlation[-1] for factor in _SIZES]
     answer = yield from reconstruct(assemble(coarse), coarse, method)

@@ -10,14 +10,26 @@ from stillground.reconstruct import Reconstruction, shared_constants
 from stillground.stopping.gcv import gcv
 
 _MISSTATED = 1.3
+_ROUNDING = 1e-6
 _STATICS, _WARY = 2.5, 1.4
 _STALLED = 0.01
 
 
 def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str, ...]:
     """Sentences on the size of the errors, outliers, statics and bounds; empty where all is well."""
-    said = []
+    said: list[str] = []
     noise = finest.noise
+    if noise < _ROUNDING:
+        return ("the data are fitted to rounding: they carry no noise, and rules have nothing to judge",)
+    history = finest.run.history
+    contradicted = False
+    if config.ground.bounds is not None:
+        norms = history.residual_norm
+        stalled = norms[-1] > (1 - _STALLED) * norms[history.last // 2]
+        # The size that cross-validation finds comes from this very residual: only the stated one can tell.
+        contradicted = bool(stalled and config.errors.trust and history.chi_square[-1] > 1.1)
+    if contradicted:
+        said.append("the residual stalls above the errors: the bounds contradict the data")
     if not 1 / _MISSTATED < noise < _MISSTATED:
         what = "too small" if noise > 1 else "too large"
         trusted = "" if not config.errors.trust else ", or set errors.trust = false"
@@ -33,10 +45,9 @@ def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str,
         )
     # Statics draw the plain pick so late that the ground has taken them up; a wary one leaves them. Before
     # there is a pick, residuals are alike for want of iterations.
-    history = finest.run.history
     wary = gcv(history, RuleOptions(gcv_factor=_WARY)).iteration
     shared = {}
-    if wary is not None and wary < history.last:
+    if wary is not None and wary < history.last and not contradicted:
         kept = weights > 0.5
         groups = {
             name: np.unique(group[kept], return_inverse=True)[1]
@@ -51,10 +62,4 @@ def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str,
             f"residuals are alike within each {named}: constants are likely; "
             f"set errors.statics = {{ {setting} }}"
         )
-    if config.ground.bounds is not None:
-        norms = history.residual_norm
-        stalled = norms[-1] > (1 - _STALLED) * norms[history.last // 2]
-        # The size that cross-validation finds comes from this very residual: only the stated one can tell.
-        if stalled and config.errors.trust and history.chi_square[-1] > 1.1:
-            said.append("the residual stalls above the errors: the bounds contradict the data")
     return tuple(said)

@@ -13,6 +13,8 @@ from stillground.reconstruct.reconstruction import Method, reconstruct
 from stillground.stopping.gcv import gcv
 
 _BIWEIGHT = 4.685
+# Mean of weight times square of normal data, E[(1 - z^2/c^2)^2 z^2] with the normal moments 1, 3, 15.
+_ENERGY = 1 - 2 * 3 / _BIWEIGHT**2 + 15 / _BIWEIGHT**4
 _MAD_TO_DEVIATION = 1.4826
 _PASSES = 4
 _SETTLED = 0.01
@@ -21,8 +23,16 @@ _WILD, _LEAST_WILD = 5.0, 2
 
 
 def reweighted(measurement: Measurement, weights: Array) -> Measurement:
-    """The measurement with errors divided by the square roots of weights (0 to 1)."""
-    return replace(measurement, errors=measurement.errors / np.sqrt(np.maximum(weights, 1e-6)))
+    """The measurement with errors divided by the square roots of weights (0 to 1).
+
+    Where data are weighted, all are scaled so that the mean squared residual of normal data stays 1.
+    """
+    return replace(measurement, errors=measurement.errors / _applied(weights))
+
+
+def _applied(weights: Array) -> Array:
+    factor = np.sqrt(np.maximum(weights, 1e-6))
+    return factor if np.all(weights == 1) else factor / np.sqrt(_ENERGY)
 
 
 def biweight(residual: Array) -> Array:
@@ -61,8 +71,7 @@ def find_outliers(
     for passed in range(_PASSES):
         found = yield from reconstruct(reweighted(measurement, weights), grid, method)
         # In stated errors: those of data that are all but left out would hide them.
-        applied = np.sqrt(np.maximum(weights, 1e-6))
-        residual = found.run.residual(found.stop("gcv")) / applied
+        residual = found.run.residual(found.stop("gcv")) / _applied(weights)
         if passed == 0 and not always:
             wild = np.abs(residual) > _WILD * _deviation(residual)
             if int(wild.sum()) < _LEAST_WILD:

@@ -120,9 +120,11 @@ def prepare(measurement: Measurement, grid: Grid, method: Method, *, products: i
 
 
 def reconstruct(
-    measurement: Measurement, grid: Grid, method: Method
+    measurement: Measurement, grid: Grid, method: Method, *, breakable: bool = False
 ) -> Generator[Progress, None, Reconstruction]:
     """Runs the iteration on one grid to its full length and lets every rule judge its history.
+
+    With ``breakable`` a keyboard interrupt ends it early, and what is done is judged.
 
     Yields
     ------
@@ -135,7 +137,7 @@ def reconstruct(
     columns = 1 + n_probes(measurement.data.size)
     problem = prepare(measurement, grid, method, products=method.iterations * columns)
     b = problem.standard.b[:, None]
-    (run,) = yield from iterate(method.solver, problem.operator, b, method.iterations)
+    (run,) = yield from iterate(method.solver, problem.operator, b, method.iterations, breakable=breakable)
     picks, noise = judge(run.history, method)
     return Reconstruction(grid, measurement, method, problem.standard, run, picks, noise)
 

@@ -69,7 +69,9 @@ def climb(
         spacing = " by ".join(f"{h:g}" for h in dict.fromkeys(grid.spacing))
         stage = f"rung {number} of {len(grids)}, {spacing} m"
         try:
-            rungs.append((yield from staged(reconstruct(assemble(grid), grid, method), stage)))
+            rungs.append(
+                (yield from staged(reconstruct(assemble(grid), grid, method, breakable=True), stage))
+            )
         except KeyboardInterrupt:
             # Too early on this rung to judge anything: the ones before stand.
             if not rungs:

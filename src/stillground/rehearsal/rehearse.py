@@ -25,6 +25,7 @@ def rehearse(
     *,
     twins: int,
     seed: int,
+    noise: float = 1.0,
     described: Array | None = None,
 ) -> Generator[Progress, None, Rehearsal]:
     """Draws grounds, takes their data on a finer grid with the survey's own errors, and lets every rule stop.
@@ -40,6 +41,8 @@ def rehearse(
     twins : int
         In each family, at least 2.
     seed : int
+    noise : float
+        Size of the errors over what is stated.
     described : array, shape (n_nodes of fine,), optional
         A ground less the background, in the property's unit; it is not scaled.
 
@@ -60,7 +63,7 @@ def rehearse(
         measurement, grid, method, products=method.iterations * twins * (1 + n_probes(measurement.data.size))
     )
     n_data = measurement.data.size
-    signal = max(float(problem.standard.b @ problem.standard.b) - n_data, _LEAST_SIGNAL * n_data)
+    signal = max(float(problem.standard.b @ problem.standard.b) - noise**2 * n_data, _LEAST_SIGNAL * n_data)
 
     families = {
         "prior": prior_grounds(fine_grid, method.correlation, method.smoothness, twins, random),
@@ -81,7 +84,7 @@ def rehearse(
     total_error = resolved = np.empty(0)
     for number, (name, grounds) in enumerate(families.items(), start=1):
         truths = _on_coarse(grounds, fine_grid, grid)
-        noisy = data[name] + random.standard_normal((n_data, twins))
+        noisy = data[name] + noise * random.standard_normal((n_data, twins))
         work = iterate(method.solver, problem.operator, noisy, method.iterations)
         runs = yield from staged(work, f"rehearsing {name} grounds ({number} of {len(families)})")
         stops = [_stops(run, method) for run in runs]
@@ -149,7 +152,7 @@ def _ratios(
     chosen = []
     for j, run in enumerate(runs):
         stopped = {rule: run.inside(stop) for rule, stop in stops[j].items()}
-        chosen.append(stopped[choose])
+        chosen.append(stopped.get(choose, run.inside(run.history.last)))
         solutions = np.column_stack([*run.solutions, *stopped.values()])
         errors = known.distances(solutions, truths[:, j])
         best = float(errors.min())

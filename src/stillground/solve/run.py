@@ -89,6 +89,7 @@ def iterate(
     probes: int | None = None,
     seed: int = 0,
     kept_bytes: int = KEPT_BYTES,
+    breakable: bool = False,
 ) -> Generator[Progress, None, tuple[Run, ...]]:
     """Runs ``solver`` for ``iterations`` steps, or fewer where it ends by itself.
 
@@ -110,6 +111,8 @@ def iterate(
         Of the disturbances, the same for all problems.
     kept_bytes : int
         Memory for kept iterates.
+    breakable : bool
+        Whether a keyboard interrupt ends the iteration early, for what is done to be judged.
 
     Yields
     ------
@@ -122,8 +125,8 @@ def iterate(
 
     Notes
     -----
-    A keyboard interrupt ends the iteration early and is told by ``Run.interrupted``; with fewer than
-    three iterations done it passes on.
+    An early end by a keyboard interrupt is told by ``Run.interrupted``; with fewer than three iterations
+    done it passes on.
 
     References
     ----------
@@ -164,7 +167,7 @@ def iterate(
             yield Progress("", step.index, iterations, f"misfit {float(np.mean(r * r)):.3g}")
     except KeyboardInterrupt:
         interrupted = True
-        if len(table["residual"]) <= _JUDGED:
+        if not breakable or len(table["residual"]) <= _JUDGED:
             raise
 
     residuals = table.pop("residual")

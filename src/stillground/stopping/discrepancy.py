@@ -34,7 +34,8 @@ def discrepancy(history: History, options: RuleOptions) -> Pick:
     Morozov (1966), On the solution of functional equations by the method of regularization, Soviet
     Math. Dokl. 7.
     """
-    target = options.tau * options.noise * math.sqrt(history.n_data)
+    aim = (options.tau * options.noise) ** 2
+    target = math.sqrt(aim * history.n_data)
     pick = _crossing(history, target)
     chi_square = float(history.chi_square[-1])
     if pick is None:
@@ -42,7 +43,7 @@ def discrepancy(history: History, options: RuleOptions) -> Pick:
             None,
             False,
             f"never reached: the misfit is {chi_square:.3g} after {history.last} iterations, the target "
-            f"{options.tau**2:.3g}; the errors may be too small, or solver.iterations too few",
+            f"{aim:.3g}; the errors may be too small, or solver.iterations too few",
         )
     if pick == 0:
         return Pick(
@@ -54,7 +55,7 @@ def discrepancy(history: History, options: RuleOptions) -> Pick:
     late = _crossing(history, target / 1.05)
     if early is not None and late is not None and late <= 1.5 * max(early, 1.0):
         return Pick(
-            pick, True, f"the misfit falls to {options.tau**2:.3g}; errors 5 % off would stop between "
+            pick, True, f"the misfit falls to {aim:.3g}; errors 5 % off would stop between "
             f"{early:.1f} and {late:.1f}",
         )  # fmt: skip
     shown = "never" if late is None else f"at {late:.1f}"

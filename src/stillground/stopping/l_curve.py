@@ -52,5 +52,6 @@ def l_curve(history: History, options: RuleOptions) -> Pick:
         return Pick(min(pick, float(history.last)), False, "no corner between the ends of the curve")
     if curvature[k] < _CORNER * others:
         return Pick(pick, False, "the curve is flat: it turns nearly as much elsewhere")
-    sharper = 99.0 if others * 99 <= curvature[k] else curvature[k] / others
-    return Pick(pick, True, f"a corner, {sharper:.2g} times sharper than any other")
+    if others * 99 <= curvature[k]:
+        return Pick(pick, True, "the only corner")
+    return Pick(pick, True, f"a corner, {curvature[k] / others:.2g} times sharper than any other")

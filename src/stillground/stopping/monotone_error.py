@@ -33,4 +33,4 @@ def monotone_error(history: History, options: RuleOptions) -> Pick:
     before, here = history.error_bound[k - 1 : k + 1]
     part = (before - target) / (before - here) if np.isfinite(before) else 0.0
     pick = k - 1 + float(part)
-    return Pick(pick, True, "up to here each step surely helped; needs the errors to be right")
+    return Pick(pick, True, f"up to here each step surely helped; {options.proviso}")

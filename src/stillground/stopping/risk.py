@@ -24,4 +24,5 @@ def risk(history: History, options: RuleOptions) -> Pick:
     if lowest.at_end:
         return Pick(None, False, lowest.falling)
     words = "a clear minimum" if lowest.sharp else "the curve is flat"
-    return Pick(lowest.iteration, lowest.sharp, f"{words}, {lowest.span}; needs the errors to be right")
+    firm = lowest.sharp and lowest.iteration > 0
+    return Pick(lowest.iteration, firm, f"{words}, {lowest.span}; {options.proviso}")

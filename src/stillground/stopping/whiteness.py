@@ -33,7 +33,7 @@ def whiteness(history: History, options: RuleOptions) -> Pick:
     passing = np.flatnonzero(curve <= WHITE)
     if passing.size:
         reason = f"residuals pass as white (95 %) from iteration {passing[0]} to {passing[-1]}, best here"
-        return Pick(lowest.iteration, True, reason)
+        return Pick(lowest.iteration, lowest.iteration > 0, reason)
     reason = (
         f"residuals never pass as white: {least:.2g} at best, limit {WHITE}; "
         f"errors may be alike along a source or receiver"

@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Generator
+from itertools import islice
 
 import numpy as np
 
-from stillground.progress import staged
 from stillground.protocols import Array, Progress
 from stillground.reconstruct import Reconstruction, prepare
-from stillground.solve import back, iterate
+from stillground.solve import back
 
 # Small against the noise, so that the iteration stays near to that of the data.
 _SHARE = 0.5
@@ -45,14 +45,16 @@ def noise_part(
         A local mean over half a correlation length of the variance, its root.
     """
     grid, method = reconstruction.grid, reconstruction.method
-    last = int(np.ceil(stop)) + 1
-    problem = prepare(reconstruction.measurement, grid, method, products=(members + 1) * last)
+    whole = int(stop)
+    problem = prepare(reconstruction.measurement, grid, method, products=(members + 1) * (whole + 2))
     standard = problem.standard
     noise = np.random.default_rng(seed).standard_normal((standard.b.size, members))
     columns = np.column_stack([standard.b, standard.b[:, None] + _SHARE * reconstruction.noise * noise])
-    work = iterate(method.solver, problem.operator, columns, last, probes=0)
-    runs = yield from staged(work, "noise part of the error")
-    solutions = back(problem.operator, np.column_stack([run.inside(stop) for run in runs]))
+    before = after = np.zeros((problem.operator.shape[1], members + 1))
+    for step in islice(method.solver(problem.operator, columns), whole + 2):
+        before, after = (after if step.index > whole else step.solution), step.solution
+        yield Progress("noise part of the error", step.index, whole + 1)
+    solutions = back(problem.operator, before + (stop - whole) * (after - before))
     grounds = problem.anomaly(solutions)
     scatter = np.mean(np.square(grounds[:, 1:] - grounds[:, :1]), axis=1) / _SHARE**2
     return np.sqrt(grid.local_mean(scatter, method.correlation))
