@@ -8,6 +8,7 @@ import signal
 import subprocess
 import sys
 import time
+import tracemalloc
 from collections.abc import Callable
 from pathlib import Path
 
@@ -18,9 +19,11 @@ import xarray as xr
 import stillground as package
 from stillground.config import load
 from stillground.errors import CapacityError, ConfigError, SurveyError
+from stillground.pipeline.answer import answer
 from stillground.pipeline.capacity import memory
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.profiles import read_profiles
+from stillground.progress import finish
 from stillground.survey import write_table
 
 Command = Callable[..., "subprocess.CompletedProcess[str]"]
@@ -237,24 +240,15 @@ def test_too_large_a_grid_is_refused_before_it_is_made(small: Path) -> None:
 
 
 def test_predicted_memory_covers_what_a_climb_takes(small: Path) -> None:
-    code = (
-        "import resource, stillground\n"
-        "from stillground.config import load\n"
-        "from stillground.pipeline.capacity import memory\n"
-        "from stillground.pipeline.grids import plan_grids\n"
-        "from stillground.pipeline.profiles import read_profiles\n"
-        "from stillground.pipeline.answer import answer\n"
-        "from stillground.pipeline.run import finish\n"
-        "def peak(): return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024\n"
-        "config, _ = load('small.toml', ['ground.spacing=0.02 m', 'solver.iterations=10'])\n"
-        "(profile,) = read_profiles(config)\n"
-        "few, _ = load('small.toml', ['refinement.levels=1', 'solver.iterations=2'])\n"
-        "finish(answer(profile, plan_grids(profile, few), few))\n"
-        "before = peak(); grids = plan_grids(profile, config); finish(answer(profile, grids, config))\n"
-        "print(memory(grids, profile.survey.sizes['datum'], 10) / (peak() - before))\n"
-    )
-    done = subprocess.run([sys.executable, "-c", code], cwd=small, capture_output=True, text=True, check=True)
-    assert 0.9 < float(done.stdout) < 1.6, "predicted over taken"
+    config, _ = load(small / "small.toml", ["ground.spacing=0.02 m", "solver.iterations=10"])
+    (profile,) = read_profiles(config)
+    grids = plan_grids(profile, config)
+    tracemalloc.start()
+    finish(answer(profile, grids, config))
+    _, peak = tracemalloc.get_traced_memory()
+    tracemalloc.stop()
+    predicted = memory(grids, profile.survey.sizes["datum"], 10)
+    assert 0.9 < predicted / peak < 1.6, "predicted over taken"
 
 
 def test_predicted_memory_grows_with_the_grid(small: Path) -> None:
