@@ -58,16 +58,22 @@ def read_profiles(config: Config) -> tuple[Profile, ...]:
     return tuple(found.values())
 
 
-def place(table: xr.Dataset, stem: str, config: Config) -> tuple[Profile, ...]:
-    """Checks a table and sets each of its lines into the ground; errors as `read_profiles`."""
+def checked(table: xr.Dataset, config: Config) -> tuple[xr.Dataset, SurveyReport]:
+    """The usable rows of a table, with errors as the configuration makes them; errors as `read_profiles`."""
     kind = plugins.kind(config.survey.kind)
-    usable, report = check(
+    return check(
         table,
         datum=kind.datum,
         expected=kind.columns,
         floor=config.errors.floor,
         relative=config.errors.relative,
     )
+
+
+def place(table: xr.Dataset, stem: str, config: Config) -> tuple[Profile, ...]:
+    """Checks a table and sets each of its lines into the ground; errors as `read_profiles`."""
+    kind = plugins.kind(config.survey.kind)
+    usable, report = checked(table, config)
     return tuple(
         Profile(name, line, report, kind.place(line, config.physics))
         for name, line in profiles(usable, stem).items()

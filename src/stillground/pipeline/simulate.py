@@ -12,8 +12,9 @@ from stillground.config import Config
 from stillground.config.settings import PlacesSettings, SimulateSettings
 from stillground.errors import ConfigError, OutputError
 from stillground.ground import Blob, Body, Box, Disc, Ground, Layer
+from stillground.pipeline.profiles import checked
 from stillground.protocols import Array
-from stillground.survey import check, read, write_table
+from stillground.survey import read, write_table
 
 
 def described_ground(settings: SimulateSettings, axes: tuple[str, ...]) -> Ground:
@@ -92,13 +93,7 @@ def _planned(config: Config, settings: SimulateSettings) -> xr.Dataset:
             )
         path = config.survey.files[0]
         table = read(path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns)
-        usable, _ = check(
-            table,
-            datum=kind.datum,
-            expected=kind.columns,
-            floor=config.errors.floor,
-            relative=config.errors.relative,
-        )
+        usable, _ = checked(table, config)
         return usable.drop_vars([kind.datum, f"{kind.datum}_error"])
     here, there = _places(settings.sources), _places(settings.receivers)
     pairs = {

@@ -4,12 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-import numpy as np
 from pylops import LinearOperator
 
 from stillground.protocols import Array, Iterate
-from stillground.solve.blocks import Order, interleaved, prepared, sequence
-from stillground.solve.columns import frozen
+from stillground.solve.blocks import Order, interleaved, prepared, sequence, sweeps
 
 
 def block_kaczmarz(
@@ -41,9 +39,9 @@ def block_kaczmarz(
     seed : int
         Of the random order.
 
-    Yields
-    ------
-    Iterate
+    Returns
+    -------
+    iterator of Iterate
 
     Notes
     -----
@@ -57,20 +55,15 @@ def block_kaczmarz(
     Algebra Appl. 40.
     """
     parts = prepared(operator, interleaved(operator, groups), ridge)
-    x, dual = np.zeros((operator.shape[1], b.shape[1])), np.zeros_like(b)
-    index = 0
-    yield Iterate(0, frozen(x), frozen(b), dual=frozen(dual))
-    while True:
-        for k in sequence(len(parts), order, seed + index):
+
+    def sweep(x: Array, dual: Array, number: int) -> None:
+        for k in sequence(len(parts), order, seed + number):
             part = parts[k]
             step = relaxation * part.step(b[part.index] - part.operator.matmat(x))
             x += part.operator.rmatmat(step)
             dual[part.index] += step
-        clipped = operator.clip(x)
-        free = clipped is x
-        x = clipped if free else clipped.copy()
-        index += 1
-        yield Iterate(index, frozen(x), frozen(b - operator.matmat(x)), dual=frozen(dual) if free else None)
+
+    return sweeps(operator, b, sweep)
 
 
 block_kaczmarz.keeps_bounds = True  # type: ignore[attr-defined]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Iterator
 from typing import Literal
 
 import numpy as np
@@ -9,7 +10,8 @@ from pylops import LinearOperator
 from scipy.linalg import LinAlgError, cho_factor, cho_solve
 
 from stillground.errors import ConfigError
-from stillground.protocols import Array, Integers, RowBlocks
+from stillground.protocols import Array, Integers, Iterate, RowBlocks
+from stillground.solve.columns import frozen
 
 Order = Literal["cyclic", "random", "golden"]
 
@@ -60,6 +62,26 @@ def require_rows(operator: LinearOperator) -> None:
         raise ConfigError(
             "solver.method: Kaczmarz' methods need the data by parts, which this operator does not offer"
         )
+
+
+def sweeps(
+    operator: LinearOperator, b: Array, sweep: Callable[[Array, Array, int], None]
+) -> Iterator[Iterate]:
+    """Iterates from zero, one sweep each, within the operator's bounds; endless.
+
+    ``sweep(x, dual, number)`` goes once through the data and changes ``x`` and ``dual`` in place. With
+    bounds no vector of data belongs to the solution any more, and the iterates have none.
+    """
+    x, dual = np.zeros((operator.shape[1], b.shape[1])), np.zeros_like(b)
+    index = 0
+    yield Iterate(0, frozen(x), frozen(b), dual=frozen(dual))
+    while True:
+        sweep(x, dual, index)
+        clipped = operator.clip(x)
+        free = clipped is x
+        x = clipped if free else clipped.copy()
+        index += 1
+        yield Iterate(index, frozen(x), frozen(b - operator.matmat(x)), dual=frozen(dual) if free else None)
 
 
 class Part:

@@ -8,8 +8,7 @@ import numpy as np
 from pylops import LinearOperator
 
 from stillground.protocols import Array, Iterate
-from stillground.solve.blocks import Order, require_rows, sequence
-from stillground.solve.columns import frozen
+from stillground.solve.blocks import Order, require_rows, sequence, sweeps
 
 
 def kaczmarz(
@@ -29,9 +28,9 @@ def kaczmarz(
     seed : int
         Of the random order.
 
-    Yields
-    ------
-    Iterate
+    Returns
+    -------
+    iterator of Iterate
 
     Notes
     -----
@@ -48,20 +47,15 @@ def kaczmarz(
     rows = [operator.rows(np.array([i])) for i in range(n_data)]
     vectors = [row.rmatmat(np.ones((1, 1))) for row in rows]
     squares = np.array([float(np.sum(vector**2)) for vector in vectors])
-    x, dual = np.zeros((operator.shape[1], b.shape[1])), np.zeros_like(b)
-    index = 0
-    yield Iterate(0, frozen(x), frozen(b), dual=frozen(dual))
-    while True:
-        for i in sequence(n_data, order, seed + index):
+
+    def sweep(x: Array, dual: Array, number: int) -> None:
+        for i in sequence(n_data, order, seed + number):
             if squares[i] > 0:
                 step = relaxation * (b[i] - vectors[i][:, 0] @ x) / squares[i]
                 x += vectors[i] * step
                 dual[i] += step
-        clipped = operator.clip(x)
-        free = clipped is x
-        x = clipped if free else clipped.copy()
-        index += 1
-        yield Iterate(index, frozen(x), frozen(b - operator.matmat(x)), dual=frozen(dual) if free else None)
+
+    return sweeps(operator, b, sweep)
 
 
 kaczmarz.keeps_bounds = True  # type: ignore[attr-defined]
