@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+import xarray as xr
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose, assert_array_equal
@@ -20,6 +21,7 @@ from stillground.errors import GridError
 from stillground.grid import Grid
 from stillground.ground import Blob, Disc
 from stillground.operators.straight_rays import StraightRays
+from stillground.physics.straight_ray import StraightRay, StraightRaySettings
 
 Rays = tuple[Grid, np.ndarray, np.ndarray]
 laws = settings(derandomize=True, deadline=None, max_examples=150)
@@ -358,3 +360,14 @@ class TestOtherSolvers:
         }
         for name, solution in found.items():
             assert_allclose(solution, model, rtol=0, atol=1e-7, err_msg=name)
+
+
+def test_rays_are_looked_at_by_offset_and_by_angle() -> None:
+    columns = {"source_x": 0.0, "source_y": 0.0, "source_z": -24.0, "receiver_x": 18.0}
+    columns |= {"receiver_y": 0.0, "receiver_z": 0.0, "time": 0.02, "time_error": 1e-4}
+    survey = xr.Dataset({name: ("datum", [value]) for name, value in columns.items()})
+    survey = survey.assign_coords(row=("datum", [1]))
+    against = StraightRay().place(survey, StraightRaySettings()).against
+    # 24 m up and 18 m across: by the 3-4-5 triangle 30 m and 53.13 degrees.
+    assert against["offset (m)"] == pytest.approx(30.0)
+    assert against["ray angle (degrees above level)"] == pytest.approx(53.1301, abs=1e-4)

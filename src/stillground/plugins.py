@@ -71,10 +71,16 @@ def kind(name: str) -> Kind:
     Raises
     ------
     PluginError
-        For an unknown name, with the nearest known one.
+        For an unknown name, with the nearest known one; for something that is no `Kind`.
     """
     made = _load("physics", name)
-    return cast(Kind, made() if isinstance(made, type) else made)
+    found = made() if isinstance(made, type) else made
+    if not isinstance(found, Kind):
+        raise PluginError(
+            f"'{name}' from {_source(_entries('physics')[name])} is no kind of measurement: it must derive "
+            f"from stillground.protocols.Kind"
+        )
+    return found
 
 
 def solver(name: str) -> Solver:

@@ -7,6 +7,7 @@ flattened in C order it has ``n_nodes`` entries.
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -446,74 +447,104 @@ class Progress:
     detail: str = ""
 
 
-class Scene(Protocol):
-    """One profile's survey set into the ground: positions as arrays, labels behind it.
+@dataclass(frozen=True)
+class Differences:
+    """What practice reads off the data without an inversion: the property between two elevations, m.
 
-    ``lower`` and ``upper`` bound all positions along the axes of the ground, m. ``surface`` is the
-    known ground surface as (distance, elevation) arrays, or None. ``positions`` are distinct places
-    by what stands there ("source", "receiver"), shape (n, n_axes), in the order of the groupings.
-    ``paths`` are the two places of every datum, shape (n_data, n_axes) each, ``apparent`` the ground
-    property that would explain each datum alone. ``facts`` are sentences worth knowing
-    beforehand, ``doubts`` what looks wrong and may not be; ``inputs`` files that were read beside the survey.
+    ``lower``, ``upper`` and ``values`` have shape (n_intervals,); values in the property's unit.
     """
 
-    @property
-    def lower(self) -> tuple[float, ...]: ...
-    @property
-    def upper(self) -> tuple[float, ...]: ...
-    @property
-    def surface(self) -> tuple[Array, Array] | None: ...
-    @property
-    def positions(self) -> Mapping[str, Array]: ...
-    @property
-    def paths(self) -> tuple[Array, Array]: ...
-    @property
-    def apparent(self) -> Array: ...
-    @property
-    def facts(self) -> tuple[str, ...]: ...
-    @property
-    def doubts(self) -> tuple[str, ...]: ...
-    @property
-    def inputs(self) -> tuple[Path, ...]: ...
+    long_name: str
+    lower: Array
+    upper: Array
+    values: Array
 
+
+@dataclass(frozen=True, kw_only=True)
+class Scene(ABC):
+    """One profile's survey set into the ground: positions as arrays, labels behind it.
+
+    Places have one coordinate for each axis of the ground, m, elevation last.
+
+    Parameters
+    ----------
+    lower, upper : tuple of float
+        Bounds of all positions along the axes of the ground.
+    positions : mapping of str to array, shape (n, n_axes)
+        Distinct places by what stands there, as "source" or "station", in the order of the groupings.
+    apparent : array, shape (n_data,)
+        The ground property that would explain each datum alone.
+    against : mapping of str to array, shape (n_data,)
+        What the apparent property is best looked at against, with its unit, as "offset (m)".
+    paths : pair of array, shape (n_data, n_axes) each, or None
+        The two ends of every datum's way through the ground; None where it has none.
+    surface : pair of array or None
+        Distance and elevation of the known ground surface; in a column one point at distance 0.
+    differences : Differences or None
+        In a column, the usual estimate to compare the answer with.
+    facts, doubts : tuple of str
+        Sentences worth knowing beforehand; and what looks wrong and may not be.
+    inputs : tuple of Path
+        Files that were read beside the survey.
+    """
+
+    lower: tuple[float, ...]
+    upper: tuple[float, ...]
+    positions: Mapping[str, Array]
+    apparent: Array
+    against: Mapping[str, Array] = field(default_factory=dict)
+    paths: tuple[Array, Array] | None = None
+    surface: tuple[Array, Array] | None = None
+    differences: Differences | None = None
+    facts: tuple[str, ...] = ()
+    doubts: tuple[str, ...] = ()
+    inputs: tuple[Path, ...] = ()
+
+    @abstractmethod
     def assemble(self, grid: Grid) -> Measurement:
         """The measurement on a grid."""
 
+    @abstractmethod
     def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> Field:
         """How well the survey visits the ground, as means over about a correlation length."""
 
+    @abstractmethod
     def predict(self, ground: Ground) -> Array:
         """Data over a described ground, in closed form, shape (n_data,)."""
 
+    @abstractmethod
     def trace(self, distance: Array) -> tuple[Array, Array]:
-        """East and north of distances along the profile, m."""
+        """East and north of distances along the profile, m; of a column at distance 0."""
 
 
-class Kind(Protocol):
+class Kind(ABC):
     """A kind of measurement: its columns, its settings, and how it sees the ground.
 
     ``columns`` are the names that it needs of a survey table, ``datum`` the measured one and
     ``datum_units`` its SI unit; ``axes`` names the ground's axes, elevation last. On a prior of
     smoothness ``bounded_above`` or less the measurement has no limit under refinement. ``Settings``
-    is a pydantic model for the table ``[physics]`` of the configuration.
+    is a pydantic model for the table ``[physics]`` of the configuration, ``Plan`` one for those keys of
+    ``[simulate]`` that say where a survey stands that is only planned.
     """
 
-    @property
-    def name(self) -> str: ...
-    @property
-    def ground_property(self) -> GroundProperty: ...
-    @property
-    def columns(self) -> tuple[str, ...]: ...
-    @property
-    def datum(self) -> str: ...
-    @property
-    def datum_units(self) -> str: ...
-    @property
-    def axes(self) -> tuple[str, ...]: ...
-    @property
-    def bounded_above(self) -> float: ...
-    @property
-    def Settings(self) -> type[BaseModel]: ...  # noqa: N802
+    name: str
+    ground_property: GroundProperty
+    columns: tuple[str, ...]
+    datum: str
+    datum_units: str
+    axes: tuple[str, ...]
+    bounded_above: float
+    Settings: type[BaseModel]
+    Plan: type[BaseModel]
 
+    def configured(self, settings: Any) -> Kind:
+        """This kind once its ``Settings`` are known: where its property or its axes depend on them."""
+        return self
+
+    @abstractmethod
     def place(self, survey: Dataset, settings: Any) -> Scene:
         """Sets a checked survey, on the dimension ``datum``, into the ground."""
+
+    @abstractmethod
+    def plan(self, plan: Any) -> Dataset | None:
+        """The columns of a planned survey but for the data; None where ``plan`` names no places."""

@@ -5,6 +5,7 @@ from __future__ import annotations
 import tomllib
 import types
 from collections.abc import Iterable, Mapping, Sequence
+from contextlib import suppress
 from difflib import get_close_matches
 from pathlib import Path
 from typing import Any, Union, get_args, get_origin
@@ -75,8 +76,13 @@ def from_mapping(
     except LookupError as error:
         raise ConfigError(f"{source}: survey.kind: {error}") from error
     model = config_class(kind)
+    context: dict[str, Any] = {"folder": Path(folder), "kind": kind}
     try:
-        return model.model_validate(dict(data), context={"folder": Path(folder), "kind": kind})
+        # Faults of the kind's own settings are told with all others below.
+        with suppress(ValidationError):
+            settings = kind.Settings.model_validate(data.get("physics", {}), context=context)
+            context["kind"] = kind.configured(settings)
+        return model.model_validate(dict(data), context=context)
     except ValidationError as error:
         faults = [_explain(model, fault) for fault in error.errors(include_url=False)]
         listed = (

@@ -8,7 +8,7 @@ from typing import Any
 from pydantic import Field, create_model
 
 from stillground import plugins
-from stillground.config.settings import Config
+from stillground.config.settings import Config, SimulateSettings
 from stillground.protocols import Kind
 
 _DRAFT = "https://json-schema.org/draft/2020-12/schema"
@@ -16,14 +16,16 @@ _TITLE = "stillground configuration"
 
 
 def config_class(kind: Kind) -> type[Config]:
-    """`Config` with the kind's own settings under ``physics``."""
-    return _with_physics(kind.Settings)
+    """`Config` with the kind's own settings under ``physics``, and its plan among those of ``simulate``."""
+    return _with_own(kind.Settings, kind.Plan)
 
 
 @cache
-def _with_physics(settings: Any) -> type[Config]:
+def _with_own(settings: Any, plan: Any) -> type[Config]:
     physics = (settings, Field(default_factory=settings, description="settings of the kind of survey"))
-    made: type[Config] = create_model("Config", __base__=Config, physics=physics)
+    simulate = create_model("SimulateSettings", __base__=(SimulateSettings, plan))
+    ground: Any = (simulate | None, Field(None, description=Config.model_fields["simulate"].description))
+    made: type[Config] = create_model("Config", __base__=Config, physics=physics, simulate=ground)
     return made
 
 

@@ -7,6 +7,7 @@ decides (the unit of its errors, its ground property) comes in the validation co
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from functools import cached_property
 from typing import Annotated, Any, Literal, Self
 
 import pyproj
@@ -298,15 +299,9 @@ class BoxSettings(Table):
     value: PropertyValue
 
 
-class PlacesSettings(Table):
-    """Evenly spaced places on a straight line, both ends included."""
-
-    first: tuple[Coordinate, Coordinate, Coordinate] = Field(description="x, y, z of the first")
-    last: tuple[Coordinate, Coordinate, Coordinate] = Field(description="x, y, z of the last")
-    count: Count = Field(ge=1, le=100_000)
-
-
 class SimulateSettings(Table):
+    """The described ground and the table to make; the kind adds where a planned survey stands."""
+
     output: InputPath = Field(description="table to write, relative to this file")
     seed: Count = Field(0, ge=0)
     noise: Datum | None = Field(None, description="standard deviation of the noise, with unit")
@@ -317,18 +312,15 @@ class SimulateSettings(Table):
     disc: list[DiscSettings] = []
     layer: list[LayerSettings] = []
     box: list[BoxSettings] = []
-    sources: PlacesSettings | None = Field(None, description="default: the places of survey.files")
-    receivers: PlacesSettings | None = None
-
-    @model_validator(mode="after")
-    def _both_or_none(self) -> Self:
-        if (self.sources is None) != (self.receivers is None):
-            raise ValueError("give sources and receivers, or neither for the places of survey.files")
-        return self
 
 
 class Config(Table):
     """All settings of a run, in SI."""
+
+    @cached_property
+    def kind(self) -> Kind:
+        """The kind of survey, once its own settings are known."""
+        return plugins.kind(self.survey.kind).configured(self.physics)
 
     @model_validator(mode="after")
     def _background_within_bounds(self) -> Self:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, Literal
+from typing import Literal
 
 import numpy as np
 import xarray as xr
@@ -14,7 +14,8 @@ from stillground.errors import SurveyError
 from stillground.grid import Grid
 from stillground.ground import Ground
 from stillground.operators.straight_rays import StraightRays
-from stillground.protocols import Array, Extra, GroundProperty, Integers, Measurement
+from stillground.physics import first_arrivals
+from stillground.protocols import Array, Extra, Integers, Kind, Measurement, Scene
 from stillground.protocols import Field as GroundField
 from stillground.survey import Section, fit_section, out_of_plane, plan_positions, read_surface, row_numbers
 from stillground.survey.quantities import InputPath, Length
@@ -25,11 +26,7 @@ _ANISOTROPY = 0.1
 # far above it, as on a tripod.
 _CORRIDOR, _ABOVE = 0.1, 2.0
 
-# Seismic velocities of the ground, m s-1: from loose dry soil to the hardest rock, both with room
-# (common practice, no source).
-_PLAUSIBLE = (50, 10_000)
-_LARGE_ERROR = 0.3
-_SHORTEST, _LONGEST = 0.1, 100_000.0
+_LONGEST = 100_000.0
 
 
 class StraightRaySettings(BaseModel):
@@ -48,8 +45,8 @@ class StraightRaySettings(BaseModel):
     )
 
 
-@dataclass(frozen=True)
-class RayScene:
+@dataclass(frozen=True, kw_only=True)
+class RayScene(Scene):
     """Straight rays in a section; coordinates are (distance, elevation), m.
 
     Parameters
@@ -62,8 +59,8 @@ class RayScene:
         Times and their standard deviations, s.
     groupings : mapping
         By source and by receiver.
-    positions, surface
-        As in `stillground.protocols.Scene`.
+    anisotropy : bool
+        Whether it is fitted.
     """
 
     section: Section
@@ -73,28 +70,7 @@ class RayScene:
     data: Array
     errors: Array
     groupings: dict[str, Integers]
-    positions: dict[str, Array]
-    surface: tuple[Array, Array] | None
-    inputs: tuple[Path, ...]
-    facts: tuple[str, ...]
     anisotropy: bool
-    doubts: tuple[str, ...]
-
-    @property
-    def paths(self) -> tuple[Array, Array]:
-        return self.starts, self.ends
-
-    @property
-    def apparent(self) -> Array:
-        return self.data / self.lengths
-
-    @property
-    def lower(self) -> tuple[float, ...]:
-        return tuple(np.minimum(self.starts.min(axis=0), self.ends.min(axis=0)).tolist())
-
-    @property
-    def upper(self) -> tuple[float, ...]:
-        return tuple(np.maximum(self.starts.max(axis=0), self.ends.max(axis=0)).tolist())
 
     def assemble(self, grid: Grid) -> Measurement:
         """The measurement on a section grid."""
@@ -136,23 +112,23 @@ class RayScene:
         return self.section.plan(distance)
 
 
-class StraightRay:
+class StraightRay(Kind):
     """First arrivals between boreholes, or along and across one, where rays are nearly straight."""
 
     name = "straight-ray"
-    ground_property = GroundProperty(
-        "slowness",
-        "s m-1",
-        "slowness of the first arrival",
-        ("velocity", "m s-1", "velocity of the first arrival"),
-    )
-    columns = ("source_x", "source_y", "source_z", "receiver_x", "receiver_y", "receiver_z", "time")
+    ground_property = first_arrivals.SLOWNESS
+    columns = first_arrivals.COLUMNS
     datum = "time"
     datum_units = "s"
     axes = ("distance", "elevation")
     # A line integral in two dimensions is bounded where s > (d - 1) / 2.
     bounded_above = 0.5
     Settings = StraightRaySettings
+    Plan = first_arrivals.ShotPlan
+
+    def plan(self, plan: first_arrivals.ShotPlan) -> xr.Dataset | None:
+        """Positions of every source with every receiver."""
+        return first_arrivals.planned(plan)
 
     def place(self, survey: xr.Dataset, settings: StraightRaySettings) -> RayScene:
         """Projects a survey on its section.
@@ -168,79 +144,62 @@ class StraightRay:
         section = fit_section(plan_positions(survey), first, source=name)
         _require_plausible(name, survey, section)
         aside, row = out_of_plane(survey, section, settings.out_of_plane)
-        ends = {
-            end: np.column_stack([survey[f"{end}_{axis}"].values for axis in "xyz"])
-            for end in ("source", "receiver")
-        }
-        flat = {
-            end: np.column_stack([section.along(places[:, 0], places[:, 1]), places[:, 2]])
-            for end, places in ends.items()
-        }
-        short = np.linalg.norm(flat["source"] - flat["receiver"], axis=1) < 1e-3
-        if short.any():
-            rows = ", ".join(str(row) for row in row_numbers(survey)[short][:5])
+        in_space = first_arrivals.ends(survey)
+        starts, ends = (
+            np.column_stack([section.along(places[:, 0], places[:, 1]), places[:, 2]]) for places in in_space
+        )
+        span = ends - starts
+        across = np.linalg.norm(span, axis=1)
+        if (across < 1e-3).any():
+            rows = ", ".join(str(row) for row in row_numbers(survey)[across < 1e-3][:5])
             raise SurveyError(name, [f"source and receiver fall on one point of the section in row {rows}"])
-        lengths = np.linalg.norm(ends["source"] - ends["receiver"], axis=1)
-        data, errors = _values(survey, "time"), _values(survey, "time_error")
-        # Of a survey that is only planned there is nothing to say.
-        apparent = lengths / data if "time" in survey else np.empty(0)
-        relative = errors / data if "time_error" in survey else np.empty(0)
+        lengths = np.linalg.norm(in_space[1] - in_space[0], axis=1)
+        data, errors = first_arrivals.times(survey)
         groupings, positions = {}, {}
-        for end, places in ends.items():
-            groupings[end], where = _numbered(places)
-            positions[end] = flat[end][where]
+        for end, places, flat in zip(first_arrivals.ENDS, in_space, (starts, ends), strict=True):
+            groupings[end], where = first_arrivals.numbered(places)
+            positions[end] = flat[where]
+        everywhere = np.vstack([starts, ends])
         surface = None
         if settings.surface is not None:
             corridor = max(_CORRIDOR * section.length, settings.out_of_plane or 0.0)
             surface = read_surface(settings.surface, section, corridor)
-            _require_below(settings.surface, surface, np.vstack([flat["source"], flat["receiver"]]))
+            _require_below(settings.surface, surface, everywhere)
         return RayScene(
+            lower=tuple(everywhere.min(axis=0).tolist()),
+            upper=tuple(everywhere.max(axis=0).tolist()),
+            positions=positions,
+            apparent=data / lengths,
+            against={
+                "offset (m)": across,
+                "ray angle (degrees above level)": np.degrees(np.arctan2(span[:, 1], np.abs(span[:, 0]))),
+            },
+            paths=(starts, ends),
+            surface=surface,
+            facts=(
+                f"section {section.length:.4g} m long; "
+                f"positions lie at most {aside:.2g} m off it (row {row})",
+                *first_arrivals.facts(survey, lengths),
+            ),
+            doubts=(*first_arrivals.doubts(survey, lengths), *_above(surface, everywhere)),
+            inputs=() if settings.surface is None else (settings.surface,),
             section=section,
-            starts=flat["source"],
-            ends=flat["receiver"],
+            starts=starts,
+            ends=ends,
             lengths=lengths,
             data=data,
             errors=errors,
             groupings=groupings,
-            positions=positions,
-            surface=surface,
-            inputs=() if settings.surface is None else (settings.surface,),
             anisotropy=settings.anisotropy == "fit",
-            facts=(
-                f"section {section.length:.4g} m long; "
-                f"positions lie at most {aside:.2g} m off it (row {row})",
-                *_velocities(apparent),
-            ),
-            doubts=_doubts(apparent, relative, surface, np.vstack([flat["source"], flat["receiver"]])),
         )
 
 
-def _velocities(apparent: Array) -> tuple[str, ...]:
-    if apparent.size == 0:
+def _above(surface: tuple[Array, Array] | None, places: Array) -> tuple[str, ...]:
+    if surface is None:
         return ()
-    low, middle, high = np.quantile(apparent, [0.0, 0.5, 1.0])
-    return (f"apparent velocities {low:.4g} to {high:.4g} m s-1, median {middle:.4g}",)
-
-
-def _doubts(
-    apparent: Array, relative: Array, surface: tuple[Array, Array] | None, places: Array
-) -> tuple[str, ...]:
-    doubts = []
-    slowest, fastest = _PLAUSIBLE
-    odd = int(np.sum((apparent < slowest) | (apparent > fastest)))
-    if odd:
-        doubts.append(
-            f"{odd} apparent velocities lie outside {slowest} to {fastest} m s-1: is the unit of time right?"
-        )
-    if relative.size and np.median(relative) > _LARGE_ERROR:
-        doubts.append(
-            f"errors are {np.median(relative):.2g} times the data: are the columns or units mixed up?"
-        )
-    if surface is not None:
-        above = int(np.sum(places[:, 1] > np.interp(places[:, 0], *surface) + 0.1))
-        if above:
-            doubts.append(f"{above} positions of the table stand above the surface: z is elevation, up")
-    return tuple(doubts)
+    above = int(np.sum(places[:, 1] > np.interp(places[:, 0], *surface) + 0.1))
+    said = f"{above} positions of the table stand above the surface: z is elevation, up"
+    return (said,) if above else ()
 
 
 def _require_plausible(name: str, survey: xr.Dataset, section: Section) -> None:
@@ -279,17 +238,3 @@ def _require_below(path: Path, surface: tuple[Array, Array], places: Array) -> N
                 f"the section, elevation {places[worst, 1]:.6g} m; check the elevations of both tables"
             ],
         )
-
-
-def _numbered(places: Array) -> tuple[Integers, Integers]:
-    """Numbers equal places (to the millimetre) in the order of the table; where each stands first."""
-    _, where, group = np.unique(places.round(3), axis=0, return_index=True, return_inverse=True)
-    order = np.argsort(where)
-    rank = np.empty_like(order)
-    rank[order] = np.arange(order.size)
-    return rank[group.reshape(-1)], where[order]
-
-
-def _values(survey: xr.Dataset, name: str) -> Any:
-    """A column, or ones where a survey is only planned."""
-    return survey[name].values if name in survey else np.ones(survey.sizes["datum"])

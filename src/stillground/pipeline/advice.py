@@ -4,14 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from stillground import plugins
 from stillground.config import Config
 from stillground.grid import Grid
 
 
 def advise(profile: str, grids: Sequence[Grid], config: Config) -> tuple[str, ...]:
     """Sentences on the grids and the prior of a profile; none is an error."""
-    kind = plugins.kind(config.survey.kind)
+    kind = config.kind
     ground = config.ground
     said: list[str] = []
     if ground.smoothness <= kind.bounded_above:

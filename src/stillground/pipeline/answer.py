@@ -92,7 +92,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     extras = {name: (values, units[name]) for name, values in finest.standard.extras(solution).items()}
     residual = finest.run.residual(chosen_stop) * finest.measurement.errors
     return Result(
-        property=plugins.kind(config.survey.kind).ground_property,
+        property=config.kind.ground_property,
         axes=finest.grid.axes,
         background=finest.standard.background.reshape(finest.grid.shape),
         model=top.model,
@@ -138,7 +138,7 @@ def plan_method(config: Config) -> Method:
 
 def assembly(profile: Profile, config: Config) -> Assemble:
     """From a grid to the measurement with the extra unknowns that the configuration asks for."""
-    units = plugins.kind(config.survey.kind).datum_units
+    units = config.kind.datum_units
 
     def assemble(grid: Grid) -> Measurement:
         measurement = with_statics(profile.scene.assemble(grid), config.errors.statics, units)
@@ -178,7 +178,7 @@ def rehearse_profile(
     method = plan_method(config)
     described = None
     if config.simulate is not None:
-        axes = plugins.kind(config.survey.kind).axes
+        axes = config.kind.axes
         ground = described_ground(config.simulate, axes)
         points = np.stack(np.meshgrid(*fine.axes, indexing="ij"), axis=-1).reshape(-1, len(axes))
         described = ground.values(points) - ground.background

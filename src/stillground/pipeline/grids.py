@@ -6,7 +6,6 @@ import math
 
 import numpy as np
 
-from stillground import plugins
 from stillground.config import Config
 from stillground.errors import ConfigError, GridError
 from stillground.grid import Grid, ladder
@@ -16,7 +15,7 @@ from stillground.pipeline.profiles import Profile
 
 def correlation(config: Config) -> tuple[float, ...]:
     """Correlation lengths along the axes of the ground, m."""
-    return config.ground.correlation.along(plugins.kind(config.survey.kind).axes)
+    return config.ground.correlation.along(config.kind.axes)
 
 
 def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
@@ -31,7 +30,7 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
         When the finest rung needs more memory than the machine has free.
     """
     scene, ground = profile.scene, config.ground
-    axes = plugins.kind(config.survey.kind).axes
+    axes = config.kind.axes
     spacing = ground.spacing.along(axes)
     margin = [length / 2 if ground.margin is None else ground.margin for length in correlation(config)]
     extent = max(high - low for low, high in zip(scene.lower, scene.upper, strict=True))

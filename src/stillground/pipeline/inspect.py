@@ -9,7 +9,6 @@ from pathlib import Path
 
 import psutil
 
-from stillground import plugins
 from stillground.config import Config
 from stillground.grid import Grid
 from stillground.pipeline.advice import advise
@@ -60,13 +59,13 @@ def _plan(profile: Profile, config: Config) -> Plan:
 def draw(plan: Plan, config: Config, folder: Path) -> Path:
     """Writes ``<profile>_survey`` into the figures of ``folder`` and gives the path of the PNG."""
     scene, grid = plan.profile.scene, plan.grids[-1]
-    sources, receivers = scene.paths
     figure = survey_figure(
         plan.profile.name,
-        sources=sources,
-        receivers=receivers,
+        paths=scene.paths,
+        positions=scene.positions,
         apparent=scene.apparent,
-        seen=plugins.kind(config.survey.kind).ground_property,
+        against=scene.against,
+        seen=config.kind.ground_property,
         nodes=grid.axes,
         coverage=scene.coverage(grid, correlation(config)),
         surface=scene.surface,

@@ -15,7 +15,6 @@ import pandas as pd
 import pyproj
 import xarray as xr
 
-from stillground import plugins
 from stillground.config import Config
 from stillground.grid import Grid
 from stillground.pipeline.advice import advise
@@ -103,7 +102,7 @@ def label(
     """Puts labels, units and coordinates back on an answer."""
     advice = advise(profile.name, grids, config)
     origin = replace(origin, cautions=". ".join([*profile.scene.doubts, *advice]))
-    kind = plugins.kind(config.survey.kind)
+    kind = config.kind
     crs = None if config.survey.crs is None else pyproj.CRS.from_user_input(config.survey.crs)
     metres = 1.0 if crs is None else crs.axis_info[0].unit_conversion_factor
     easting, northing = profile.scene.trace(result.axes[0])

@@ -6,7 +6,6 @@ from dataclasses import dataclass
 
 import xarray as xr
 
-from stillground import plugins
 from stillground.config import Config
 from stillground.errors import ConfigError, SurveyError
 from stillground.protocols import Scene
@@ -33,7 +32,7 @@ def read_profiles(config: Config) -> tuple[Profile, ...]:
     ConfigError
         When two files give profiles of one name.
     """
-    kind = plugins.kind(config.survey.kind)
+    kind = config.kind
     found: dict[str, Profile] = {}
     refused: list[SurveyError] = []
     for path in config.survey.files:
@@ -60,7 +59,7 @@ def read_profiles(config: Config) -> tuple[Profile, ...]:
 
 def checked(table: xr.Dataset, config: Config) -> tuple[xr.Dataset, SurveyReport]:
     """The usable rows of a table, with errors as the configuration makes them; errors as `read_profiles`."""
-    kind = plugins.kind(config.survey.kind)
+    kind = config.kind
     return check(
         table,
         datum=kind.datum,
@@ -72,7 +71,7 @@ def checked(table: xr.Dataset, config: Config) -> tuple[xr.Dataset, SurveyReport
 
 def place(table: xr.Dataset, stem: str, config: Config) -> tuple[Profile, ...]:
     """Checks a table and sets each of its lines into the ground; errors as `read_profiles`."""
-    kind = plugins.kind(config.survey.kind)
+    kind = config.kind
     usable, report = checked(table, config)
     return tuple(
         Profile(name, line, report, kind.place(line, config.physics))

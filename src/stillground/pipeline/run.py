@@ -209,8 +209,7 @@ def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Pro
             folder / "figures",
             result.name,
             result.arrays,
-            sources=scene.positions["source"],
-            receivers=scene.positions["receiver"],
+            positions=scene.positions,
             surface=scene.surface,
             tolerance=config.refinement.tolerance,
             options=RuleOptions(

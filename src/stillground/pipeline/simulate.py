@@ -7,14 +7,13 @@ from pathlib import Path
 import numpy as np
 import xarray as xr
 
-from stillground import plugins
 from stillground.config import Config
-from stillground.config.settings import PlacesSettings, SimulateSettings
+from stillground.config.settings import SimulateSettings
 from stillground.errors import ConfigError, OutputError
 from stillground.ground import Blob, Body, Box, Disc, Ground, Layer
 from stillground.pipeline.profiles import checked
-from stillground.protocols import Array
-from stillground.survey import read, write_table
+from stillground.survey import column, read, write_table
+from stillground.survey.columns import error_of
 
 
 def described_ground(settings: SimulateSettings, axes: tuple[str, ...]) -> Ground:
@@ -60,16 +59,16 @@ def simulate(config: Config, *, replace: bool = False) -> tuple[Path, int]:
         raise OutputError(
             f"{settings.output} exists; simulate.output names the table to write: give another, or --replace"
         )
-    kind = plugins.kind(config.survey.kind)
+    kind = config.kind
     planned = _planned(config, settings)
     scene = kind.place(planned, config.physics)
     data = scene.predict(described_ground(settings, kind.axes))
 
     random = np.random.default_rng(settings.seed)
-    spread = np.hypot(settings.noise or 0.0, settings.relative_noise * data)
+    spread = np.hypot(settings.noise or 0.0, settings.relative_noise * np.abs(data))
     noisy = data + spread * random.standard_normal(data.size)
     kept = np.sort(random.permutation(data.size)[: round(data.size * (1 - settings.lost))])
-    if (noisy[kept] <= 0).any():
+    if column(kind.datum).rule == "positive" and (noisy[kept] <= 0).any():
         raise ConfigError("simulate.noise: so large that data turn negative; take a smaller one")
     table = planned.assign({kind.datum: ("datum", noisy)}).isel(datum=kept)
     write_table(
@@ -84,32 +83,16 @@ def simulate(config: Config, *, replace: bool = False) -> tuple[Path, int]:
 
 
 def _planned(config: Config, settings: SimulateSettings) -> xr.Dataset:
-    """Positions of the survey, every source with every receiver, or those of the survey's tables."""
-    kind = plugins.kind(config.survey.kind)
-    if settings.sources is None or settings.receivers is None:
-        if len(config.survey.files) != 1:
-            raise ConfigError(
-                "simulate: give sources and receivers, or one table in survey.files to take places from"
-            )
-        path = config.survey.files[0]
-        table = read(path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns)
-        usable, _ = checked(table, config)
-        return usable.drop_vars([kind.datum, f"{kind.datum}_error"])
-    here, there = _places(settings.sources), _places(settings.receivers)
-    pairs = {
-        "source": np.repeat(here, len(there), axis=0),
-        "receiver": np.tile(there, (len(here), 1)),
-    }
-    variables = {
-        f"{end}_{axis}": ("datum", places[:, i])
-        for end, places in pairs.items()
-        for i, axis in enumerate("xyz")
-    }
-    rows = np.arange(1, len(pairs["source"]) + 1)
-    return xr.Dataset(variables, coords={"row": ("datum", rows)}, attrs={"source": "simulate"})
-
-
-def _places(line: PlacesSettings) -> Array:
-    first, last = np.array(line.first), np.array(line.last)
-    # Tables hold millimetres: the data are computed for the places that the table will name.
-    return np.asarray(np.round(first + np.linspace(0, 1, line.count)[:, None] * (last - first), 3))
+    """Positions of a planned survey, or those of the survey's table."""
+    kind = config.kind
+    planned = kind.plan(settings)
+    if planned is not None:
+        rows = np.arange(1, planned.sizes["datum"] + 1)
+        return planned.assign_coords(row=("datum", rows)).assign_attrs(source="simulate")
+    if len(config.survey.files) != 1:
+        places = " and ".join(kind.Plan.model_fields)
+        raise ConfigError(f"simulate: give {places}, or one table in survey.files to take places from")
+    path = config.survey.files[0]
+    table = read(path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns)
+    usable, _ = checked(table, config)
+    return usable.drop_vars([kind.datum, error_of(kind.datum)])

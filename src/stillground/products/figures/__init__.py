@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from pathlib import Path
 
 from stillground.products.figures.errors import errors_figure
@@ -25,8 +26,7 @@ def write_figures(
     tolerance: float,
     options: RuleOptions,
     surface: Surface | None,
-    sources: Array,
-    receivers: Array,
+    positions: Mapping[str, Array],
 ) -> tuple[Path, ...]:
     """Write the figures of a result as PNG and PDF.
 
@@ -45,8 +45,8 @@ def write_figures(
     options : RuleOptions
         As the rules took them.
     surface : pair of arrays (distance, elevation), m, or None
-    sources, receivers : array, shapes (n_sources, 2), (n_receivers, 2)
-        Distance and elevation, m.
+    positions : mapping of str to array, shape (n, 2)
+        Distance and elevation by what stands there, m.
 
     Raises
     ------
@@ -54,9 +54,7 @@ def write_figures(
         When the place cannot be written.
     """
     figures = {
-        "section": section_figure(
-            profile, result, tolerance=tolerance, surface=surface, sources=sources, receivers=receivers
-        ),
+        "section": section_figure(profile, result, tolerance=tolerance, surface=surface, positions=positions),
         "errors": errors_figure(profile, result, tolerance=tolerance, surface=surface),
         "rules": rules_figure(profile, result, options=options),
         "ladder": ladder_figure(profile, result, tolerance=tolerance, surface=surface),

@@ -1,19 +1,33 @@
-"""Where sources and receivers stand, on any picture of the section."""
+"""Where sources, receivers or stations stand, on any picture of the ground."""
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import Any
 
 from matplotlib.axes import Axes
+from matplotlib.lines import Line2D
 
 from stillground.products.figures.sheet import INK, RUST
 from stillground.protocols import Array
 
-SOURCE: dict[str, Any] = {"marker": "*", "ms": 6.5, "mfc": RUST, "mec": "white", "mew": 0.4, "ls": ""}
-RECEIVER: dict[str, Any] = {"marker": "v", "ms": 4.2, "mfc": "white", "mec": INK, "mew": 0.7, "ls": ""}
+_RECEIVER: dict[str, Any] = {"marker": "v", "ms": 4.2, "mfc": "white", "mec": INK, "mew": 0.7, "ls": ""}
+_SIGNS: dict[str, dict[str, Any]] = {
+    "source": {"marker": "*", "ms": 6.5, "mfc": RUST, "mec": "white", "mew": 0.4, "ls": ""},
+    "receiver": _RECEIVER,
+}
 
 
-def draw_positions(axes: Axes, sources: Array, receivers: Array) -> None:
-    """Draw positions given as (distance, elevation), m, shapes (n_sources, 2) and (n_receivers, 2)."""
-    axes.plot(*receivers.T, **RECEIVER, clip_on=False, zorder=4)
-    axes.plot(*sources.T, **SOURCE, clip_on=False, zorder=4)
+def draw_positions(axes: Axes, positions: Mapping[str, Array]) -> None:
+    """Draw positions by what stands there, (distance, elevation) in m, shape (n, 2); sources on top."""
+    for name, places in sorted(positions.items(), key=lambda item: item[0] == "source"):
+        axes.plot(*places.T, **_sign(name), clip_on=False, zorder=4)
+
+
+def position_key(positions: Mapping[str, Array]) -> list[Line2D]:
+    """What the signs of positions mean, for a legend."""
+    return [Line2D([], [], **_sign(name), label=name) for name in positions]
+
+
+def _sign(name: str) -> dict[str, Any]:
+    return _SIGNS.get(name, _RECEIVER)

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 from matplotlib.cm import ScalarMappable
 from matplotlib.figure import Figure
-from matplotlib.lines import Line2D
 
 from stillground.products.figures.field import FIELD_COLOURS, colour_scale, draw_field, hatch_key, shown
-from stillground.products.figures.positions import RECEIVER, SOURCE, draw_positions
+from stillground.products.figures.positions import draw_positions, position_key
 from stillground.products.figures.sheet import FOOT, HEADING, panel, sheet, styled, unit_text
 from stillground.products.raster import Surface, ground
 from stillground.products.reliability import reliability
@@ -24,8 +25,7 @@ def section_figure(
     *,
     tolerance: float,
     surface: Surface | None,
-    sources: Array,
-    receivers: Array,
+    positions: Mapping[str, Array],
 ) -> Figure:
     """The answer with positions, surface and colour bar; unreliable ground faded and hatched.
 
@@ -37,8 +37,8 @@ def section_figure(
     tolerance : float
         As for `section_dataset`.
     surface : pair of arrays (distance, elevation), m, or None
-    sources, receivers : array, shapes (n_sources, 2), (n_receivers, 2)
-        Distance and elevation, m.
+    positions : mapping of str to array, shape (n, 2)
+        Distance and elevation by what stands there, m.
     """
     flags = reliability(result, tolerance, ground(result.axes, surface))
     values, long_name, units = shown(result.property, result.model)
@@ -61,7 +61,7 @@ def section_figure(
 
     axes = panel(figure, left, bottom, width, height)
     draw_field(axes, result.axes, values, scale, flags=flags, surface=surface, pixels=700)
-    draw_positions(axes, sources, receivers)
+    draw_positions(axes, positions)
     chosen = result.chosen
     axes.set(
         xlabel="distance (m)",
@@ -74,9 +74,5 @@ def section_figure(
     bar.set_label(f"{long_name} ({unit_text(units)})")
     bar.outline.set_linewidth(0.5)
 
-    positions = [
-        Line2D([], [], **SOURCE, label="source"),
-        Line2D([], [], **RECEIVER, label="receiver"),
-    ]
-    hatch_key(figure, flags, positions)
+    hatch_key(figure, flags, position_key(positions))
     return figure

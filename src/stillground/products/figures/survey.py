@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 import numpy as np
 from matplotlib.cm import ScalarMappable
 from matplotlib.collections import LineCollection
 from matplotlib.colors import LinearSegmentedColormap
 from matplotlib.figure import Figure
 
-from stillground.products.figures.field import colour_scale, draw_field
+from stillground.products.figures.field import colour_scale, draw_field, shown, shown_name
 from stillground.products.figures.positions import draw_positions
 from stillground.products.figures.sheet import FOOT, HEADING, INK, TEAL, panel, sheet, styled, unit_text
 from stillground.products.raster import Surface, ground
@@ -24,23 +26,27 @@ PICTURE = (3.1, 4.3)
 def survey_figure(
     profile: str,
     *,
-    sources: Array,
-    receivers: Array,
+    paths: tuple[Array, Array] | None,
+    positions: Mapping[str, Array],
     apparent: Array,
+    against: Mapping[str, Array],
     seen: GroundProperty,
     nodes: tuple[Array, ...],
     coverage: Field,
     surface: Surface | None,
 ) -> Figure:
-    """Straight rays over the coverage, and the apparent property against offset and ray angle.
+    """The ways of the data, or their positions, over the coverage; and the apparent property.
 
     Parameters
     ----------
     profile : str
-    sources, receivers : array, shape (n_data, 2)
-        Distance and elevation of both ends of every ray, m.
+    paths : pair of array, shape (n_data, 2) each, or None
+        Distance and elevation of both ends of every datum's way, m.
+    positions : mapping of str to array, shape (n, 2)
     apparent : array, shape (n_data,)
         The property that would explain each datum alone, in the units of ``seen``.
+    against : mapping of str to array, shape (n_data,)
+        What it is drawn against, by names with units.
     seen : GroundProperty
     nodes : tuple of two arrays
         Distance and elevation of the coverage's nodes, m, ascending.
@@ -48,14 +54,14 @@ def survey_figure(
     surface : pair of arrays (distance, elevation), m, or None
     """
     n_data = apparent.size
-    shown = np.unique(np.linspace(0, n_data - 1, MOST_RAYS).astype(int))
-    drawn = "all drawn" if shown.size == n_data else f"{shown.size} of them drawn"
+    drawn = np.unique(np.linspace(0, n_data - 1, MOST_RAYS).astype(int))
+    said = "" if drawn.size == n_data or paths is None else f", {drawn.size} of their rays drawn"
     bottom = FOOT + 0.5
     figure = sheet(
         7.4,
         bottom + PICTURE[1] + HEADING + 0.2,
         f"{profile}: survey",
-        f"{n_data} straight rays, {drawn}, over {coverage.long_name} ({unit_text(coverage.units)})",
+        f"{n_data} data{said}, over {coverage.long_name} ({unit_text(coverage.units)})",
     )
 
     across, up = (float(axis[-1] - axis[0]) for axis in nodes)
@@ -67,26 +73,25 @@ def survey_figure(
     draw_field(
         axes, nodes, coverage.values, scale, flags=None, surface=surface, pixels=500, colours=COVERAGE_COLOURS
     )
-    rays = list(np.stack([sources[shown], receivers[shown]], axis=1))
-    axes.add_collection(LineCollection(rays, colors=INK, linewidths=0.3, alpha=0.25), autolim=False)
-    draw_positions(axes, np.unique(sources, axis=0), np.unique(receivers, axis=0))
+    if paths is not None:
+        rays = list(np.stack([end[drawn] for end in paths], axis=1))
+        axes.add_collection(LineCollection(rays, colors=INK, linewidths=0.3, alpha=0.25), autolim=False)
+    draw_positions(axes, positions)
     axes.set(xlabel="distance (m)", ylabel="elevation (m)")
     bar = figure.colorbar(
         ScalarMappable(scale, COVERAGE_COLOURS), cax=panel(figure, 0.65 + width + 0.1, place[1], 0.12, height)
     )
     bar.outline.set_linewidth(0.5)
 
-    span = receivers - sources
-    offset = np.hypot(*span.T)
-    angle = np.degrees(np.arctan2(span[:, 1], np.abs(span[:, 0])))
-    label = f"apparent {seen.name} ({unit_text(seen.units)})"
-    height = (PICTURE[1] - 0.75) / 2
-    for row, (values, name) in enumerate(
-        ((offset, "offset (m)"), (angle, "ray angle (degrees above level)"))
-    ):
-        axes = panel(figure, 5.05, bottom + (1 - row) * (height + 0.75), 2.15, height)
+    apparent = shown(seen, apparent)[0]
+    name, units = shown_name(seen)
+    label = f"apparent {name} ({units})"
+    rows = max(len(against), 1)
+    height = (PICTURE[1] + 0.75) / rows - 0.75
+    for row, (beside, values) in enumerate(against.items()):
+        axes = panel(figure, 5.05, bottom + (rows - 1 - row) * (height + 0.75), 2.15, height)
         axes.plot(values, apparent, "o", ms=2.4, color=TEAL, alpha=0.4, mew=0)
         axes.axhline(np.median(apparent), color=INK, lw=0.8, ls=(0, (5, 3)), label="median")
-        axes.set(xlabel=name, ylabel=label)
+        axes.set(xlabel=beside, ylabel=label)
         axes.legend(loc="upper right", borderpad=0.1)
     return figure
