@@ -12,7 +12,7 @@ Read a survey, reconstruct it, look at the labelled result::
         errors={"floor": "0.05 ms"},
         ground={"spacing": "0.25 m", "correlation": {"horizontal": "4 m", "vertical": "2 m"}},
     )
-    result.verdict, result.section["velocity"]
+    result.verdict, result.picture["velocity"]
 
 A whole configuration, products on disk: ``stillground.run_config("line.toml")``.
 """

@@ -189,9 +189,9 @@ def test_python_gets_a_labelled_result_in_one_call(survey: xr.Dataset) -> None:
     )
     assert result.verdict == "settled"
     assert "settled" in repr(result)
-    assert result.section["velocity"].attrs["units"] == "m s-1"
-    fast = result.section["slowness"].sel(distance=3, elevation=-4, method="nearest")
-    slow = result.section["slowness"].sel(distance=6, elevation=-8, method="nearest")
+    assert result.picture["velocity"].attrs["units"] == "m s-1"
+    fast = result.picture["slowness"].sel(distance=3, elevation=-4, method="nearest")
+    slow = result.picture["slowness"].sel(distance=6, elevation=-8, method="nearest")
     assert float(fast) > 1 / 1800 > float(slow)
 
 
@@ -227,7 +227,7 @@ def test_true_lengths_keep_the_velocity_of_rays_out_of_the_plane(survey: xr.Data
     result = package.reconstruct_survey(
         shifted, ground={"spacing": "0.5 m", "correlation": "2 m"}, refinement={"levels": 2}
     )
-    np.testing.assert_allclose(result.section["velocity"], 1500, rtol=1e-5)
+    np.testing.assert_allclose(result.picture["velocity"], 1500, rtol=1e-5)
 
 
 def test_too_large_a_grid_is_refused_before_it_is_made(small: Path) -> None:
@@ -271,8 +271,8 @@ def test_a_survey_in_memory_needs_no_row_and_may_have_a_crs_and_strange_columns(
         ground={"spacing": "0.5 m", "correlation": "2 m"},
         refinement={"levels": 1},
     )
-    assert result.section["easting"].attrs["standard_name"] == "projection_x_coordinate"
-    assert float(result.section["easting"].sel(distance=0, method="nearest")) == pytest.approx(431250.0)
+    assert result.picture["easting"].attrs["standard_name"] == "projection_x_coordinate"
+    assert float(result.picture["easting"].sel(distance=0, method="nearest")) == pytest.approx(431250.0)
 
 
 def test_noise_on_even_ground_is_told_as_the_background(survey: xr.Dataset) -> None:
@@ -313,7 +313,7 @@ def test_positions_at_one_elevation_are_no_error(survey: xr.Dataset) -> None:
         ground={"spacing": "0.25 m", "correlation": "2 m"},
         refinement={"levels": 2},
     )
-    np.testing.assert_allclose(result.section["velocity"], 1800, rtol=1e-4)
+    np.testing.assert_allclose(result.picture["velocity"], 1800, rtol=1e-4)
 
 
 def test_resume_never_keeps_files_of_another_configuration(stillground: Command, small: Path) -> None:
@@ -339,7 +339,7 @@ def test_inputs_of_one_name_are_told_apart(small: Path, survey: xr.Dataset) -> N
         out=small / "out",
         overrides=["physics.surface=b/line.csv", "output.products=[]", "refinement.levels=1"],
     )
-    digests = results[0].section.attrs["input_sha256"].splitlines()
+    digests = results[0].picture.attrs["input_sha256"].splitlines()
     assert [line.split()[1] for line in digests] == ["a/line.csv", "b/line.csv"]
 
 

@@ -17,8 +17,8 @@ from pyproj import CRS
 
 from stillground.products.history import history_dataset, write_history
 from stillground.products.pattern import pattern_dataset, write_pattern
+from stillground.products.picture import picture_dataset, write_picture
 from stillground.products.provenance import Provenance
-from stillground.products.section import section_dataset, write_section
 from stillground.protocols import Result
 
 from .made_up_results import axes_of, make_patterns
@@ -30,7 +30,7 @@ PLACES = ((5.5, 53.0), (12.5, 40.25))
 def section(
     request: pytest.FixtureRequest, result: Result, surface: Any, provenance: Provenance, tmp_path: Path
 ) -> Path:
-    made = section_dataset(
+    made = picture_dataset(
         "crosshole-ab",
         result,
         easting=430_000 + 0.8 * result.axes[0],
@@ -40,7 +40,7 @@ def section(
         tolerance=0.02,
         provenance=provenance,
     )
-    return write_section(tmp_path, "crosshole-ab", made)
+    return write_picture(tmp_path, "crosshole-ab", made)
 
 
 @pytest.fixture

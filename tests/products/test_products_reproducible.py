@@ -14,8 +14,8 @@ from stillground.products.fit import fit_table, write_fit
 from stillground.products.history import history_dataset, write_history
 from stillground.products.ladder import ladder_dataset, write_ladder
 from stillground.products.pattern import pattern_dataset, write_pattern
+from stillground.products.picture import picture_dataset, write_picture
 from stillground.products.provenance import Provenance, timestamp
-from stillground.products.section import section_dataset, write_section
 from stillground.products.summary import profile_summary, run_summary, write_summary
 from stillground.protocols import Result
 
@@ -36,12 +36,12 @@ def test_files_written_twice_are_the_same(
     for folder in (tmp_path / "a", tmp_path / "b"):
         origin = replace(provenance, created=timestamp())
         common: dict[str, Any] = {"surface": surface, "provenance": origin}
-        section = section_dataset(
+        section = picture_dataset(
             "ab", result, easting=result.axes[0], northing=result.axes[0], crs=crs, tolerance=0.02, **common
         )
         fit = fit_table(result, rows=np.arange(625), datum="time", unit="s", si_factor=1)
         paths = (
-            write_section(folder, "ab", section),
+            write_picture(folder, "ab", section),
             write_history(folder, "ab", history_dataset("ab", result, **common)),
             write_ladder(folder, "ab", ladder_dataset("ab", result, tolerance=0.02, **common)),
             write_pattern(folder, "ab", pattern_dataset("ab", make_patterns(axes), axes, **common)),

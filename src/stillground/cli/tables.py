@@ -68,7 +68,7 @@ def profile(done: Done) -> None:
     colour = {"settled": "green", "drifting": "red", "undecided": "yellow"}[word]
     out().print(f"[bold {colour}]{word.upper()}[/]  ", end="")
     say(f"{reason}.")
-    flags = done.result.section["reliability"].values
+    flags = done.result.picture["reliability"].values
     known = flags != NO_DATA
     dependent = np.sum(flags == MESH_DEPENDENT) / max(np.sum(known), 1)
     if dependent:

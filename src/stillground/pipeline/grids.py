@@ -44,8 +44,8 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
         ground_point = scene.upper[-1]
         if scene.surface is not None:
             # Over the positions only: a surface may go on far beyond them.
-            reach = np.linspace(scene.lower[0], scene.upper[0], 200)
-            ground_point = float(np.interp(reach, *scene.surface).min())
+            reach = np.linspace(scene.lower[0], scene.upper[0], 200) if len(scene.lower) > 1 else 0.0
+            ground_point = float(np.min(np.interp(reach, *scene.surface)))
         bottom = ground_point - ground.depth
         if bottom > scene.lower[-1]:
             raise ConfigError(

@@ -22,8 +22,8 @@ from stillground.pipeline.profiles import Profile
 from stillground.products.fit import fit_table
 from stillground.products.history import history_dataset
 from stillground.products.ladder import ladder_dataset
+from stillground.products.picture import picture_dataset
 from stillground.products.provenance import Provenance, timestamp
-from stillground.products.section import section_dataset
 from stillground.products.summary import profile_summary
 from stillground.protocols import Result
 from stillground.survey import row_numbers, to_si
@@ -38,8 +38,9 @@ class ProfileResult:
     Parameters
     ----------
     name : str
-    section, history, ladder : xarray.Dataset
-        As in the files ``<name>_section.nc``, ``<name>_history.nc``, ``<name>_ladder.nc``.
+    picture, history, ladder : xarray.Dataset
+        As in the files ``<name>_section.nc`` (of a column ``<name>_column.nc``), ``<name>_history.nc``
+        and ``<name>_ladder.nc``.
     fit : pandas.DataFrame
         As in ``<name>_fit.csv``.
     profile : Profile
@@ -51,7 +52,7 @@ class ProfileResult:
     """
 
     name: str
-    section: xr.Dataset
+    picture: xr.Dataset
     history: xr.Dataset
     ladder: xr.Dataset
     fit: pd.DataFrame
@@ -105,12 +106,12 @@ def label(
     kind = config.kind
     crs = None if config.survey.crs is None else pyproj.CRS.from_user_input(config.survey.crs)
     metres = 1.0 if crs is None else crs.axis_info[0].unit_conversion_factor
-    easting, northing = profile.scene.trace(result.axes[0])
+    easting, northing = profile.scene.trace(result.axes[0] if len(result.axes) > 1 else np.zeros(1))
     surface, tolerance = profile.scene.surface, config.refinement.tolerance
     unit, factor = _table_unit(profile, kind.datum, kind.datum_units)
     return ProfileResult(
         name=profile.name,
-        section=section_dataset(
+        picture=picture_dataset(
             profile.name,
             result,
             easting=np.asarray(easting) / metres,
@@ -119,6 +120,7 @@ def label(
             surface=surface,
             tolerance=tolerance,
             provenance=origin,
+            differences=profile.scene.differences,
         ),
         history=history_dataset(profile.name, result, surface=surface, provenance=origin),
         ladder=ladder_dataset(profile.name, result, surface=surface, tolerance=tolerance, provenance=origin),

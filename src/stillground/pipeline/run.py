@@ -24,8 +24,8 @@ from stillground.products.figures import write_figures
 from stillground.products.fit import write_fit
 from stillground.products.history import write_history
 from stillground.products.ladder import write_ladder
+from stillground.products.picture import product, write_picture
 from stillground.products.provenance import Provenance
-from stillground.products.section import write_section
 from stillground.products.summary import SUMMARY, run_summary, write_summary
 from stillground.progress import finish
 from stillground.protocols import Progress, RuleOptions
@@ -199,7 +199,8 @@ def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Pro
         "fit": write_fit(folder, result.name, result.fit),
     }
     if "section" in wanted:
-        written["section"] = write_section(folder, result.name, result.section)
+        picture = write_picture(folder, result.name, result.picture)
+        written[product(len(result.arrays.axes))] = picture
     if "history" in wanted:
         written["history"] = write_history(folder, result.name, result.history)
     yield Progress("writing products", 1, 2)

@@ -122,6 +122,11 @@ def section_grid_mapping(crs: CRS | None) -> str:
     return "section_crs" if named else "section_crs: distance elevation"
 
 
+def plan_grid_mapping(crs: CRS | None) -> str:
+    """What ``grid_mapping`` says on what stands at a place in plan; nothing in a local frame."""
+    return "" if crs is None else "crs"
+
+
 def plan_attributes(name: str, crs: CRS | None) -> dict[str, str]:
     """Attributes of ``easting`` or ``northing``; in a local frame they carry no standard name."""
     if crs is None:

@@ -52,8 +52,9 @@ def ground(axes: tuple[Array, ...], surface: Surface | None) -> NDArray[np.bool_
     """Which nodes lie in the ground, as a nodal field: all without a surface."""
     if surface is None:
         return np.ones([axis.size for axis in axes], dtype=bool)
-    distance, elevation = axes
-    return np.greater_equal.outer(altitude(distance, surface) + 1e-9, elevation)
+    distance = axes[0] if len(axes) > 1 else np.zeros(1)
+    below = np.greater_equal.outer(altitude(distance, surface) + 1e-9, axes[-1])
+    return below.reshape([axis.size for axis in axes])
 
 
 def altitude(distance: Array, surface: Surface) -> Array:

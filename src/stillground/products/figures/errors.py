@@ -38,7 +38,7 @@ def errors_figure(profile: str, result: Result, *, tolerance: float, surface: Su
     result : Result
         On axes (distance, elevation).
     tolerance : float
-        As for `section_dataset`.
+        As for `picture_dataset`.
     surface : pair of arrays (distance, elevation), m, or None
     """
     flags = reliability(result, tolerance, ground(result.axes, surface))

@@ -35,7 +35,7 @@ def section_figure(
     result : Result
         On axes (distance, elevation).
     tolerance : float
-        As for `section_dataset`.
+        As for `picture_dataset`.
     surface : pair of arrays (distance, elevation), m, or None
     positions : mapping of str to array, shape (n, 2)
         Distance and elevation by what stands there, m.

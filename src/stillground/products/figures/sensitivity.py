@@ -47,7 +47,7 @@ def sensitivity_figure(profile: str, result: Result, *, tolerance: float, surfac
     result : Result
         On axes (distance, elevation), with ``sensitivity``.
     tolerance : float
-        As for `section_dataset`.
+        As for `picture_dataset`.
     surface : pair of arrays (distance, elevation), m, or None
 
     References

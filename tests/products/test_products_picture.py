@@ -14,10 +14,10 @@ import xarray as xr
 from pyproj import CRS
 
 from stillground.errors import OutputError
+from stillground.products.picture import picture_dataset, write_picture
 from stillground.products.provenance import CAUTION, Provenance
 from stillground.products.raster import ground
 from stillground.products.reliability import reliability
-from stillground.products.section import section_dataset, write_section
 from stillground.protocols import Result
 
 from .made_up_results import slowness
@@ -47,7 +47,7 @@ def section(result: Result, surface: Any, crs: CRS, provenance: Provenance) -> S
             "tolerance": 0.02,
             "provenance": provenance,
         }
-        return section_dataset("crosshole-ab", answer, **(arguments | changed))
+        return picture_dataset("crosshole-ab", answer, **(arguments | changed))
 
     return build
 
@@ -185,7 +185,7 @@ def test_one_rung_says_nothing_of_the_mesh(make: Callable[..., Result], section:
 
 
 def test_the_file_is_laid_out_as_the_recipe_says(section: Section, tmp_path: Path) -> None:
-    path = write_section(tmp_path, "crosshole-ab", section())
+    path = write_picture(tmp_path, "crosshole-ab", section())
     assert path.name == "crosshole-ab_section.nc"
     with netCDF4.Dataset(path) as file:
         file.set_auto_mask(False)
@@ -277,5 +277,5 @@ def test_places_that_the_crs_cannot_hold_have_no_bounds(section: Section, result
 def test_a_place_that_cannot_be_written_leaves_no_half_file(section: Section, tmp_path: Path) -> None:
     (tmp_path / "results").write_text("")
     with pytest.raises(OutputError, match=r"crosshole-ab_section\.nc"):
-        write_section(tmp_path / "results", "crosshole-ab", section())
+        write_picture(tmp_path / "results", "crosshole-ab", section())
     assert [path.name for path in tmp_path.iterdir()] == ["results"]
