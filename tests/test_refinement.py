@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from dataclasses import replace
+from functools import partial
 from typing import TypeVar
 
 import numpy as np
@@ -11,16 +13,18 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose
-from pylops import MatrixMult
+from pylops import LinearOperator, MatrixMult
 
 from stillground.grid import Grid, ladder, prolong
 from stillground.ground import Blob, Ground
 from stillground.operators.prior_root import PriorRoot
 from stillground.operators.straight_rays import StraightRays
+from stillground.physics.straight_ray import StraightRay
 from stillground.progress import finish
-from stillground.protocols import History, Measurement, Pick, RuleOptions
-from stillground.reconstruct import Method
-from stillground.refinement import Climb, climb, judge
+from stillground.protocols import GridIndex, History, Iterate, Measurement, Pick, RuleOptions, Verdict
+from stillground.reconstruct import Method, reconstruct
+from stillground.refinement import Climb, climb, compare, judge, rough_limit
+from stillground.refinement.jitter import jitter
 from stillground.solve import Run, iterate
 from stillground.solve.lsqr import lsqr
 from stillground.standard_form import standard_form
@@ -138,6 +142,87 @@ class TestVerdict:
         words = [judge((0.08, 0.02, 0.005), 0.001, t).word for t in (0.1, 0.01, 0.002, 0.0015, 0.0009)]
         assert words == ["settled", "settled", "settled", "undecided", "undecided"]
 
+    def test_one_small_change_does_not_promise_more_than_the_grid_can(self) -> None:
+        """80 times less at once is chance: what remains is reckoned at the order that theory gives."""
+        change = (0.4, 0.32, 0.004)
+        assert judge(change, 0.0, 0.02).remaining == pytest.approx(0.004 / 3)
+        assert judge(change, 0.0, 0.02, expected=1.0).remaining == pytest.approx(0.004)
+
+    def test_a_dip_between_larger_changes_tells_no_order(self) -> None:
+        verdict = judge((0.08, 0.001, 0.03), 0.0, 0.02, expected=2.0)
+        assert (verdict.word, verdict.order, verdict.remaining) == ("undecided", None, None)
+        assert "too small beside the others" in verdict.reason
+        assert judge((0.03, 0.001, 0.08), 0.0, 0.02).word == "drifting", "growth is no dip"
+
+    def test_changes_within_rounding_settle_without_an_order(self) -> None:
+        verdict = judge((0.04, 4e-3, 8e-3), 0.0, 0.02, expected=2.0, jitter=1e-3)
+        assert (verdict.word, verdict.order, verdict.remaining) == ("settled", None, 8e-3)
+        assert "at the floor: rounding in the iteration alone makes 0.1 %" in verdict.reason
+        assert judge((4e-3, 4e-3, 8e-3), 0.0, 0.02, expected=2.0, jitter=1e-4).order == -1.0
+
+    def test_rounding_above_the_tolerance_is_told_and_settles_nothing(self) -> None:
+        verdict = judge((0.3, 0.1, 0.12), 0.0, 0.02, jitter=0.05)
+        assert (verdict.word, verdict.order) == ("undecided", None)
+        assert "rounding in the iteration alone moves the picture by 5 %" in verdict.reason
+
+    def test_a_change_before_within_rounding_tells_no_rate(self) -> None:
+        verdict = judge((0.04, 1e-3, 0.03), 0.0, 0.02, jitter=2e-4)
+        assert (verdict.word, verdict.order) == ("undecided", None)
+
+    def test_a_prior_without_a_limit_never_settles_and_says_why(self) -> None:
+        rough = rough_limit(0.0, -0.5)
+        for change in ((0.08, 0.02, 0.005), (0.08, 0.02, 1e-6), (0.1, 0.1)):
+            verdict = judge(change, 0.0, 0.02, expected=0.0, rough=rough)
+            assert verdict.word == ("drifting" if change[-1] > 0.02 else "undecided")
+            assert verdict.remaining is None
+            assert "no limit as the grid is refined" in verdict.reason
+
+    @pytest.mark.parametrize("ratio", [1.05, 1.4, 1.5])
+    def test_a_slow_order_that_is_expected_is_no_drift(self, ratio: float) -> None:
+        change = (0.1 * ratio**2, 0.1 * ratio, 0.1)
+        slow = judge(change, 0.0, 0.02, expected=0.5, rough=rough_limit(0.0, 0.5))
+        assert slow.word == "undecided"
+        assert "staircase" in slow.reason
+        assert (judge(change, 0.0, 0.02, expected=2.0).word == "drifting") == (ratio < 1.2)
+        assert judge(change[::-1], 0.0, 0.02, expected=0.5).word == "drifting", "growth is drift at any order"
+
+
+class TestNotes:
+    """Outside source of the bound: the reverse triangle inequality, norms move no farther than pictures."""
+
+    fine = GridIndex(1e-3, 2.0, 1.0, 1e-3, 1e-3, None)
+
+    def test_what_fits_needs_no_note(self) -> None:
+        for order in (1.51, 2.0, 3.0):
+            assert compare(Verdict("settled", "", order, 2e-3, 2.0), self.fine, 0.02) == ()
+        assert compare(Verdict("settled", "", 0.3, 1e-3, 2.0), self.fine, 0.02) == (), "at the floor"
+        untold = GridIndex(None, None, None, None, None, "it oscillates")
+        assert compare(Verdict("undecided", "", None, None, None), untold, 0.02) == ()
+
+    def test_an_order_half_an_order_short_is_told_with_usual_causes(self) -> None:
+        (note,) = compare(Verdict("settled", "", 1.4, 5e-3, 2.0), self.fine, 0.02)
+        assert "order 1.4 where theory expects 2;" in note
+        assert "correlation lengths" in note
+        assert compare(Verdict("settled", "", 1.4, 5e-3, 1.5), self.fine, 0.02) == ()
+
+    @pytest.mark.parametrize(
+        ("verdict", "index", "words"),
+        [
+            (Verdict("settled", "", 2.0, 1e-3, 2.0), 2e-3, "the cross-check disagrees"),
+            (Verdict("settled", "", 2.0, 0.019, 2.0), 0.021, "above the tolerance of 2 %"),
+            (Verdict("drifting", "", 0.1, None, None), 1e-3, "alone would pass"),
+        ],
+    )
+    def test_a_cross_check_that_does_not_fit_is_told(
+        self, verdict: Verdict, index: float, words: str
+    ) -> None:
+        (note,) = compare(verdict, replace(self.fine, index=index), 0.02)
+        assert words in note
+
+    def test_an_order_beyond_the_grids_own_is_chance(self) -> None:
+        (note,) = compare(Verdict("settled", "", 2.0, 2e-3, 2.0), replace(self.fine, order=4.3), 0.02)
+        assert "order of 4.3 is beyond the 2" in note
+
 
 class TestIntegration:
     """The integration operator on an interval by two quadratures (common practice, no source)."""
@@ -230,7 +315,7 @@ def climbed(smoothness: float, choose: str, spacing: float, levels: int = 4) -> 
     # The coarsest rung has at least two nodes in a correlation length of 4 m.
     grids = ladder((-2.0, -27.0), (20.0, 1.0), (spacing, spacing), levels)
     method = Method((4.0, 4.0), smoothness, lsqr, 25, RULES, choose)
-    return finish(climb(survey, grids, method, 0.02))
+    return finish(climb(survey, grids, method, 0.02, StraightRay.regularity))
 
 
 @pytest.fixture(scope="module", params=list(RULES))
@@ -264,6 +349,65 @@ class TestCrosshole:
         ladder = climbed(0.0, choose, 0.25).ladder
         assert ladder.verdict.word != "settled"
         assert ladder.change[-1] > 0.1
+        assert ladder.verdict.expected == 0
+        assert "no limit as the grid is refined" in ladder.verdict.reason
+
+    def test_the_ladder_knows_the_order_that_it_should_have(self, smooth: Climb) -> None:
+        verdict, index = smooth.ladder.verdict, smooth.ladder.index
+        assert verdict.expected == 2.0
+        assert smooth.ladder.notes == ()
+        assert index.order == pytest.approx(2.0, abs=0.2)
+        assert index.extrapolated == pytest.approx(smooth.anomaly, rel=0.01)
+        assert verdict.remaining is not None
+        assert index.index is not None
+        assert index.index <= 1.25**2 * verdict.remaining
+
+    def test_rounding_is_far_below_the_changes_where_the_iteration_is_orthogonal(self, smooth: Climb) -> None:
+        assert smooth.ladder.jitter is not None
+        assert 0 < smooth.ladder.jitter < 1e-10
+
+    def test_rounding_is_measured_by_what_the_iteration_makes_of_the_last_bit(self) -> None:
+        """A made-up method that enlarges every departure from the data by 1e9: their last bit is 2.2e-16."""
+        seen: list[np.ndarray] = []
+
+        def enlarging(operator: LinearOperator, b: np.ndarray) -> Iterator[Iterate]:
+            seen.append(b)
+            first = next(each for each in seen if each.shape[0] == b.shape[0])[:, :1]
+            for index in range(3):
+                dual = 1e-4 * index * (b + 1e9 * (b - first))
+                yield Iterate(index, operator.rmatmat(dual), b / (1 + index))
+
+        def second(history: History, options: RuleOptions) -> Pick:
+            return Pick(1.5, True, "made up")
+
+        grid = Grid((-2.0, -27.0), (1.0, 1.0), (23, 29))
+        method = Method((4.0, 4.0), 2.0, enlarging, 2, {"second": second}, "second")
+        found = finish(reconstruct(survey(grid), grid, method))
+        moved = finish(jitter(found, 1.5))
+        anomaly = found.model(2.0).reshape(-1) - found.standard.background
+        ratio = np.linalg.norm(moved) / np.linalg.norm(anomaly)
+        # Signs at random cancel in part where each node sums over many data.
+        assert 1e-9 < ratio < 1e9 * np.finfo(float).eps
+
+    def test_an_iteration_that_rounding_disturbs_claims_no_order(self) -> None:
+        """Plain LSQR loses its orthogonality where singular values fall fast (Paige & Saunders 1982)."""
+
+        def late(history: History, options: RuleOptions) -> Pick:
+            return Pick(60.0, True, "made up")
+
+        grids = ladder((-2.0, -27.0), (20.0, 1.0), (0.5, 0.5), 3)
+        plain = partial(lsqr, reorthogonal=False)
+        found = {}
+        for name, solver in (("plain", plain), ("kept", lsqr)):
+            method = Method((8.0, 8.0), 4.0, solver, 60, {"late": late}, "late")
+            found[name] = finish(climb(survey, grids, method, 0.02, -0.5)).ladder
+        lost, kept = found["plain"].jitter, found["kept"].jitter
+        assert lost is not None
+        assert kept is not None
+        assert lost > 1e-3 > 1e-5 > kept
+        assert found["plain"].verdict.order is None
+        assert "rounding" in (found["plain"].index.reason or "")
+        assert found["kept"].verdict.order is not None
 
 
 class TestClimb:
@@ -290,6 +434,40 @@ class TestClimb:
         whole = found.finest.grid.norm(found.mesh_change)
         spread = found.anomaly * math.sqrt(math.prod(found.finest.grid.lengths))
         assert whole / spread == pytest.approx(found.ladder.change[-1], rel=1e-3)
+
+    def test_with_two_rungs_the_local_change_is_that_between_them(self) -> None:
+        found = climbed(2.0, "gcv", 0.5, levels=2)
+        whole = found.finest.grid.norm(found.mesh_change)
+        spread = found.anomaly * math.sqrt(math.prod(found.finest.grid.lengths))
+        assert whole / spread == pytest.approx(found.ladder.change[0], rel=1e-3)
+        assert found.ladder.index.reason == "2 grids, and it takes three"
+        assert found.ladder.jitter is None
+
+    def test_broken_off_on_the_last_rung_the_local_change_is_that_of_the_rungs_done(self) -> None:
+        grids = ladder((-2.0, -27.0), (20.0, 1.0), (0.5, 0.5), 3)
+        method = Method((4.0, 4.0), 2.0, lsqr, 15, RULES, "gcv")
+        work = climb(survey, grids, method, 0.02)
+        while "rung 3" not in next(work).stage:
+            pass
+        with pytest.raises(StopIteration) as end:
+            work.throw(KeyboardInterrupt)
+        found: Climb = end.value.value
+        assert found.interrupted
+        assert found.mesh_change.shape == grids[1].shape
+        spread = found.anomaly * math.sqrt(math.prod(grids[1].lengths))
+        assert grids[1].norm(found.mesh_change) / spread == pytest.approx(found.ladder.change[0], rel=1e-3)
+
+    def test_broken_off_in_the_check_of_rounding_the_ladder_stands(self) -> None:
+        grids = ladder((-2.0, -27.0), (20.0, 1.0), (0.5, 0.5), 3)
+        method = Method((4.0, 4.0), 2.0, lsqr, 15, RULES, "gcv")
+        work = climb(survey, grids, method, 0.02)
+        while "rounding" not in next(work).stage:
+            pass
+        with pytest.raises(StopIteration) as end:
+            work.throw(KeyboardInterrupt)
+        found: Climb = end.value.value
+        assert found.interrupted
+        assert (len(found.rungs), found.ladder.jitter) == (3, None)
 
     def test_a_single_rung_has_no_change(self) -> None:
         found = climbed(2.0, "gcv", 0.5, levels=1)
@@ -344,11 +522,15 @@ class TestClimb:
         assert other.ladder.verdict.word == one.ladder.verdict.word
 
     def test_data_without_any_anomaly_settle_on_the_background(self) -> None:
+        # The backgrounds of the three rungs differ by rounding.
+        slowness = 1 / 1763
+
         def level(grid: Grid) -> Measurement:
             seen = survey(grid)
-            return Measurement(seen.operator, seen.operator @ np.full(grid.n_nodes, SLOWNESS), seen.errors)
+            return Measurement(seen.operator, seen.operator @ np.full(grid.n_nodes, slowness), seen.errors)
 
         grids = ladder((-2.0, -27.0), (20.0, 1.0), (0.5, 0.5), 3)
         method = Method((4.0, 4.0), 2.0, lsqr, 5, RULES, "discrepancy")
         found = finish(climb(level, grids, method, 0.02))
-        assert_allclose(found.model, SLOWNESS, rtol=1e-9)
+        assert_allclose(found.model, slowness, rtol=1e-9)
+        assert not found.mesh_change.any(), "rounding is no change"

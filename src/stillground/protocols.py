@@ -259,12 +259,36 @@ class Rung:
 
 @dataclass(frozen=True)
 class Verdict:
-    """Whether the answer depends on the grid; ``order`` and ``remaining`` None where untold."""
+    """Whether the answer depends on the grid.
+
+    ``order`` is the observed one and ``remaining`` what refinement would still change, relative; both None
+    where untold. ``expected`` is the order that theory gives, 0 where there is no limit to come to, None
+    where the kind of measurement does not tell it.
+    """
 
     word: Word
     reason: str
     order: float | None
     remaining: float | None
+    expected: float | None
+
+
+@dataclass(frozen=True)
+class GridIndex:
+    """The published cross-check of a verdict, on one number of the answer: its grid convergence index.
+
+    ``index`` is the uncertainty of the number on the finest grid, relative, with its safety factor;
+    ``order`` the observed one, ``extrapolated`` the number without a grid, ``approximate_error`` its last
+    change and ``extrapolated_error`` its distance from the extrapolated one, both relative. All None where
+    it cannot be told, and then ``reason`` says why.
+    """
+
+    index: float | None
+    order: float | None
+    extrapolated: float | None
+    approximate_error: float | None
+    extrapolated_error: float | None
+    reason: str | None
 
 
 @dataclass(frozen=True)
@@ -273,13 +297,18 @@ class Ladder:
 
     ``change[i]`` is the relative L2 change from rung i to rung i+1 at equal iteration;
     ``pick_drift`` the relative change on the finest rung between its own pick and the pick of the
-    rung before it, None with a single rung or where a rule found none.
+    rung before it, None with a single rung or where a rule found none. ``jitter`` is the relative change
+    that the iteration's own rounding makes there, None where it was not needed. ``index`` is that of the
+    root mean square anomaly; ``notes`` are sentences on what of all this does not fit together.
     """
 
     rungs: tuple[Rung, ...]
     change: tuple[float, ...]
     pick_drift: float | None
+    jitter: float | None
     verdict: Verdict
+    index: GridIndex
+    notes: tuple[str, ...]
 
 
 @dataclass(frozen=True)
@@ -521,10 +550,13 @@ class Kind(ABC):
     """A kind of measurement: its columns, its settings, and how it sees the ground.
 
     ``columns`` are the names that it needs of a survey table, ``datum`` the measured one and
-    ``datum_units`` its SI unit; ``axes`` names the ground's axes, elevation last. On a prior of
-    smoothness ``bounded_above`` or less the measurement has no limit under refinement. ``Settings``
-    is a pydantic model for the table ``[physics]`` of the configuration, ``Plan`` one for those keys of
-    ``[simulate]`` that say where a survey stands that is only planned.
+    ``datum_units`` its SI unit; ``axes`` names the ground's axes, elevation last. ``regularity`` is the
+    Sobolev regularity of a datum as a functional of the ground, the largest r (but for an arbitrarily small
+    rest) such that it is in H^r: -1/2 for integrals along lines in two dimensions, -1 in three, -d/2 for
+    values at points, +1/2 for integrals over intervals in one. Answers have a limit under refinement only
+    on a prior smoother than ``-regularity``. ``Settings`` is a pydantic model for the table ``[physics]``
+    of the configuration, ``Plan`` one for those keys of ``[simulate]`` that say where a survey stands that
+    is only planned.
     """
 
     name: str
@@ -533,7 +565,7 @@ class Kind(ABC):
     datum: str
     datum_units: str
     axes: tuple[str, ...]
-    bounded_above: float
+    regularity: float
     Settings: type[BaseModel]
     Plan: type[BaseModel]
 

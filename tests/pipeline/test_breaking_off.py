@@ -38,6 +38,13 @@ def test_an_answer_stands_when_its_error_bars_are_broken_off(small: Path) -> Non
     assert "interrupted after the ladder" in result.remarks[0]
 
 
+def test_a_ladder_stands_when_its_check_of_rounding_is_broken_off(small: Path) -> None:
+    result = broken_at(small, "rounding", "stopping.choose=discrepancy", "stopping.tau=0.1")
+    assert result.interrupted
+    assert (len(result.ladder.rungs), result.ladder.jitter) == (3, None)
+    assert "interrupted after the ladder" in result.remarks[0]
+
+
 def test_a_rung_is_judged_as_far_as_it_came(small: Path) -> None:
     result = broken_at(small, "rung 2")
     assert result.interrupted

@@ -58,7 +58,7 @@ class CoreDensity(Kind):
     datum = "core_density"
     datum_units = "kg m-3"
     axes = ("elevation",)
-    bounded_above = -0.5
+    regularity = 0.5
     Settings = Nothing
     Plan = Nothing
 

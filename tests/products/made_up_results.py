@@ -8,6 +8,7 @@ from scipy.ndimage import gaussian_filter
 from stillground.protocols import (
     Choice,
     Field,
+    GridIndex,
     GroundProperty,
     History,
     Ladder,
@@ -187,7 +188,10 @@ def make_result(
         "undecided": "two rungs cannot tell an order: give refinement.levels 3 or more",
     }
     order = 2.0 if word == "settled" and levels > 2 else None
-    verdict = Verdict(word, reasons[word], order, 0.00065 if order else None)  # type: ignore[arg-type]
+    verdict = Verdict(word, reasons[word], order, 0.00065 if order else None, 2.0)  # type: ignore[arg-type]
+    index = GridIndex(None, None, None, None, None, "it oscillates from grid to grid")
+    if order:
+        index = GridIndex(0.0009, 1.9, 2.1e-5, 0.002, 0.0007, None)
     mesh_change = 1.2e-6 * (np.exp(-(((x - 12.5) / 2) ** 2) - ((z - 44.5) / 2) ** 2) + (np.abs(x - 9) > 10))
 
     return Result(
@@ -206,7 +210,15 @@ def make_result(
         choices=choices,
         chosen=choices[1] if n_rules > 1 else choices[0],
         snapshots=tuple((n, slowness(x, z, 1 - np.exp(-n / 4))) for n in range(0, 31, 5)),
-        ladder=Ladder(tuple(rungs), tuple(change), 0.001 if levels > 1 else None, verdict),
+        ladder=Ladder(
+            rungs=tuple(rungs),
+            change=tuple(change),
+            pick_drift=0.001 if levels > 1 else None,
+            jitter=3e-13 if levels > 2 else None,
+            verdict=verdict,
+            index=index,
+            notes=() if order else ("made-up note",),
+        ),
         weights=np.where(np.isin(np.arange(625), (17, 300)), 0.25, 1.0),
         noise=1.07,
         extras={

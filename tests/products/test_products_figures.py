@@ -31,7 +31,7 @@ from stillground.products.figures.residuals import residuals_figure
 from stillground.products.figures.rules import rules_figure
 from stillground.products.figures.section import section_figure
 from stillground.products.figures.sensitivity import sensitivity_figure
-from stillground.products.figures.sheet import VERDICTS, fitted, write_figure
+from stillground.products.figures.sheet import LINE, VERDICTS, fitted, write_figure
 from stillground.products.figures.survey import survey_figure
 from stillground.protocols import Result, RuleOptions
 
@@ -191,14 +191,29 @@ def test_verdicts_do_not_hang_on_colour() -> None:
     assert len({marker for marker, _, _ in VERDICTS.values()}) == 3
 
 
-def test_the_order_line_goes_through_the_last_change_with_the_orders_slope(
-    result: Result, surface: Any
+def test_the_order_lines_go_through_the_last_change_with_their_slopes(result: Result, surface: Any) -> None:
+    verdict = replace(result.ladder.verdict, order=1.7, expected=2.0)
+    made = replace(result, ladder=replace(result.ladder, verdict=verdict))
+    figure = ladder_figure("crosshole-ab", made, tolerance=0.02, surface=surface)
+    axes = figure.axes[0]
+    for style, order in (("--", 1.7), (":", 2.0)):
+        (line,) = (line for line in axes.lines if line.get_linestyle() == style and line.get_color() == LINE)
+        spacing, change = np.log(line.get_xdata()), np.log(line.get_ydata())
+        assert np.diff(change)[0] / np.diff(spacing)[0] == pytest.approx(order)
+        assert np.interp(np.log(0.25), spacing, change) == pytest.approx(np.log(result.ladder.change[-1]))
+    assert axes.get_title(loc="left") == "order 1.7 (dashed), expected 2 (dotted)"
+    assert any("index: 0.09 % of the rms anomaly" in text.get_text() for text in figure.texts)
+
+
+def test_without_a_limit_or_an_index_the_ladder_figure_says_so(
+    make: Callable[..., Result], surface: Any
 ) -> None:
-    axes = ladder_figure("crosshole-ab", result, tolerance=0.02, surface=surface).axes[0]
-    (dashed,) = (line for line in axes.lines if np.ptp(line.get_ydata()) > 0 and len(line.get_ydata()) == 2)
-    spacing, change = np.log(dashed.get_xdata()), np.log(dashed.get_ydata())
-    assert np.diff(change)[0] / np.diff(spacing)[0] == pytest.approx(2.0)
-    assert np.interp(np.log(0.25), spacing, change) == pytest.approx(np.log(result.ladder.change[-1]))
+    made = make(word="drifting")
+    verdict = replace(made.ladder.verdict, order=-0.1, expected=0.0)
+    made = replace(made, ladder=replace(made.ladder, verdict=verdict))
+    figure = ladder_figure("crosshole-ab", made, tolerance=0.02, surface=surface)
+    assert figure.axes[0].get_title(loc="left") == "order -0.1 (dashed), no limit (dotted)"
+    assert any("index: none" in text.get_text() for text in figure.texts)
 
 
 @pytest.mark.parametrize(("word", "levels"), [("undecided", 1), ("undecided", 2), ("drifting", 6)])

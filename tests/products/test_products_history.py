@@ -152,6 +152,13 @@ def test_the_ladder_keeps_every_rung_on_its_own_nodes(
     np.testing.assert_allclose(
         [file.remaining, file.pick_drift, file.tolerance], [0.00065, 0.001, 0.02], rtol=1e-6
     )
+    np.testing.assert_allclose(
+        [file.expected, file.jitter, file["index"], file.index_order, file.index_extrapolated],
+        [2.0, 3e-13, 0.0009, 1.9, 2.1e-5],
+        rtol=1e-6,
+    )
+    assert file.index_extrapolated.attrs["units"] == "s m-1"
+    assert file.index_reason.item() == file.notes.item() == ""
 
 
 def test_what_one_rung_cannot_tell_is_nan(
@@ -160,6 +167,8 @@ def test_what_one_rung_cannot_tell_is_nan(
     alone = make(word="undecided", levels=1, spacing=1.0)
     made = ladder_dataset("crosshole-ab", alone, surface=None, tolerance=0.02, provenance=provenance)
     file = reread(write_ladder(tmp_path, "crosshole-ab", made))
-    assert all(np.isnan(file[name]) for name in ("order", "remaining", "pick_drift"))
+    assert all(np.isnan(file[name]) for name in ("order", "remaining", "pick_drift", "jitter", "index"))
+    assert file.index_reason.item() == "it oscillates from grid to grid"
+    assert file.notes.item() == "made-up note"
     assert file.sizes["rung"] == 1
     assert file.change.size == 0

@@ -85,7 +85,27 @@ def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result
     assert [rule["rule"] for rule in profile["rules"]] == [choice.rule for choice in result.choices]
     assert profile["rules"][0]["iteration"] == 13.4
     refinement = profile["refinement"]
-    assert list(refinement) == ["verdict", "reason", "order", "change", "remaining", "pick_drift", "levels"]
+    assert list(refinement) == [
+        "verdict",
+        "reason",
+        "order",
+        "expected",
+        "change",
+        "remaining",
+        "pick_drift",
+        "jitter",
+        "index",
+        "index_order",
+        "index_reason",
+        "notes",
+        "levels",
+    ]
+    assert [refinement[name] for name in ("expected", "index", "index_order", "index_reason")] == [
+        2.0,
+        0.0009,
+        1.9,
+        None,
+    ]
     assert refinement["levels"][0] == {"spacing": 2.0, "nodes": 192, "iteration": 9}
     assert profile["files"] == {"section": "crosshole-ab_section.nc"}
 
@@ -149,7 +169,11 @@ def test_what_is_no_number_is_null(make: Callable[..., Result], tmp_path: Path) 
     read = json.loads(text, parse_constant=refuse)
     assert read["seconds"] is None
     refinement = read["profiles"][0]["refinement"]
-    assert [refinement[name] for name in ("order", "remaining", "pick_drift")] == [None] * 3
+    assert [refinement[name] for name in ("order", "remaining", "pick_drift", "jitter", "index")] == [
+        None
+    ] * 5
+    assert refinement["index_reason"] == "it oscillates from grid to grid"
+    assert refinement["notes"] == ["made-up note"]
     last = read["profiles"][0]["rules"][-1]
     assert (last["rule"], last["iteration"], last["roughness"], last["chi_square"]) == (
         "hanke-raus",

@@ -107,13 +107,24 @@ def _ladder(ladder: Ladder) -> None:
             f"{100 * ladder.change[number - 1]:.3g} %" if number else "",
         )
     _show(table)
-    verdict = ladder.verdict
+    verdict, index = ladder.verdict, ladder.index
+    order = f"order {_number(verdict.order)}"
+    if verdict.expected is not None:
+        order += f" (expected {verdict.expected:.2g})" if verdict.expected else " (no limit expected)"
     facts = [
-        f"order {_number(verdict.order)}",
+        order,
         "still to come " + ("-" if verdict.remaining is None else f"{100 * verdict.remaining:.2g} %"),
         "drift of the stop " + ("-" if ladder.pick_drift is None else f"{100 * ladder.pick_drift:.2g} %"),
     ]
     say(", ".join(facts))
+    say(
+        f"cross-check: no grid convergence index of the rms anomaly ({index.reason})"
+        if index.index is None
+        else f"cross-check: grid convergence index of the rms anomaly {100 * index.index:.2g} %, "
+        f"its order {_number(index.order)}"
+    )
+    for sentence in ladder.notes:
+        say(f"note: {sentence}")
 
 
 def rehearsal(found: Rehearsed) -> None:

@@ -121,8 +121,8 @@ class StraightRay(Kind):
     datum = "time"
     datum_units = "s"
     axes = ("distance", "elevation")
-    # A line integral in two dimensions is bounded where s > (d - 1) / 2.
-    bounded_above = 0.5
+    # Of a line in two dimensions: (1 - d) / 2.
+    regularity = -0.5
     Settings = StraightRaySettings
     Plan = first_arrivals.ShotPlan
 

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 
 from stillground.config import Config
 from stillground.grid import Grid
+from stillground.refinement import rough_limit
 
 
 def advise(profile: str, grids: Sequence[Grid], config: Config) -> tuple[str, ...]:
@@ -13,12 +14,9 @@ def advise(profile: str, grids: Sequence[Grid], config: Config) -> tuple[str, ..
     kind = config.kind
     ground = config.ground
     said: list[str] = []
-    if ground.smoothness <= kind.bounded_above:
-        said.append(
-            f"ground.smoothness = {ground.smoothness:g}: on so rough a prior a {kind.name} measurement has "
-            f"no limit as the grid is refined, so the answer cannot settle; take 2, or at least above "
-            f"{kind.bounded_above:g}"
-        )
+    rough = rough_limit(ground.smoothness, kind.regularity)
+    if rough is not None:
+        said.append(f"ground.smoothness = {ground.smoothness:g}: {rough}; take 2")
     for axis, length, h in zip(
         kind.axes, ground.correlation.along(kind.axes), grids[-1].spacing, strict=True
     ):

@@ -65,7 +65,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     def assemble(grid: Grid) -> Measurement:
         return reweighted(plain(grid), weights)
 
-    top = yield from climb(assemble, grids, method, config.refinement.tolerance)
+    top = yield from climb(assemble, grids, method, config.refinement.tolerance, config.kind.regularity)
     finest = top.finest
     chosen_stop = finest.stop(method.choose)
     rung = top.rungs[min(repeated_rung(grids), len(top.rungs) - 1)]
@@ -114,7 +114,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         noise_part=raise_(scatter),
         rehearsal=_raised_rehearsal(rehearsal, raise_),
         sensitivity=_raised_sensitivity(sensitivity, raise_),
-        remarks=_broken_off(top, interrupted) + remark(finest, weights, config),
+        remarks=_broken_off(top, len(grids), interrupted) + remark(finest, weights, config),
         interrupted=interrupted,
     )
 
@@ -195,10 +195,10 @@ def rehearse_profile(
     )
 
 
-def _broken_off(top: Climb, interrupted: bool) -> tuple[str, ...]:
+def _broken_off(top: Climb, n_rungs: int, interrupted: bool) -> tuple[str, ...]:
     if not interrupted:
         return ()
-    if not top.interrupted:
+    if len(top.rungs) == n_rungs and not top.finest.run.interrupted:
         return ("interrupted after the ladder: error bars, rehearsal or sensitivity are missing",)
     spacing = max(top.finest.grid.spacing)
     return (

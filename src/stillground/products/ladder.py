@@ -39,8 +39,9 @@ def ladder_dataset(
     xarray.Dataset
         ``<property>_rung_<i>(elevation_<i>, distance_<i>)``; over ``rung`` ``spacing``, ``nodes``
         and ``iteration`` (NaN where the rule found none); over ``step``, from a rung to the next,
-        ``change``; the scalars ``order``, ``remaining``, ``pick_drift`` (NaN where untold),
-        ``tolerance``, ``verdict`` and ``verdict_reason``.
+        ``change``; the scalars ``order``, ``expected``, ``remaining``, ``pick_drift``, ``jitter``, ``index``,
+        ``index_order`` and ``index_extrapolated`` (NaN where untold), ``tolerance``, ``verdict``,
+        ``verdict_reason``, ``index_reason`` (empty where the index is told) and ``notes``.
     """
     seen, ladder = result.property, result.ladder
     verdict = ladder.verdict
@@ -71,15 +72,25 @@ def ladder_dataset(
     variables["change"] = _number("step", list(ladder.change), "relative L2 change from a rung to the next")
     for label, value, long_name in (
         ("order", verdict.order, "observed order of convergence"),
+        ("expected", verdict.expected, "order of convergence that theory expects, 0 without a limit"),
         ("remaining", verdict.remaining, "relative change that further refinement would still bring"),
         ("pick_drift", ladder.pick_drift, "relative change between the picks of the last two rungs"),
+        ("jitter", ladder.jitter, "relative change that rounding in the iteration makes by itself"),
+        ("index", ladder.index.index, "grid convergence index of the rms anomaly on the finest rung"),
+        ("index_order", ladder.index.order, "observed order of the rms anomaly"),
         ("tolerance", tolerance, "relative change that counts as none"),
     ):
         variables[label] = _number((), value, long_name)
-    variables["verdict"] = xr.Variable(
-        (), verdict.word, {"long_name": "whether the answer depends on the grid"}
-    )
-    variables["verdict_reason"] = xr.Variable((), verdict.reason, {"long_name": "why"})
+    extrapolated = _number((), ladder.index.extrapolated, "rms anomaly extrapolated to no spacing at all")
+    variables["index_extrapolated"] = extrapolated
+    extrapolated.attrs["units"] = seen.units
+    for label, text, long_name in (
+        ("verdict", verdict.word, "whether the answer depends on the grid"),
+        ("verdict_reason", verdict.reason, "why"),
+        ("index_reason", ladder.index.reason or "", "why there is no grid convergence index"),
+        ("notes", "; ".join(ladder.notes), "what of all this does not fit together"),
+    ):
+        variables[label] = xr.Variable((), text, {"long_name": long_name})
     summary = (
         f"Answers of profile {name} on {len(rungs)} grids, coarse to fine, at equal iteration. "
         f"Dependence on the grid: {verdict.word}."

@@ -34,7 +34,8 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
     -------
     dict
         Of extra unknowns a lone one is told with its ``values``, many by their ``rms`` and ``largest``
-        size. ``rehearsal`` and ``sensitivity`` are None where they were not asked for.
+        size. ``index`` is the grid convergence index of the rms anomaly, None for ``index_reason``.
+        ``rehearsal`` and ``sensitivity`` are None where they were not asked for.
     """
     ladder, chosen = result.ladder, result.chosen
     return {
@@ -62,9 +63,15 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
             "verdict": ladder.verdict.word,
             "reason": ladder.verdict.reason,
             "order": ladder.verdict.order,
+            "expected": ladder.verdict.expected,
             "change": list(ladder.change),
             "remaining": ladder.verdict.remaining,
             "pick_drift": ladder.pick_drift,
+            "jitter": ladder.jitter,
+            "index": ladder.index.index,
+            "index_order": ladder.index.order,
+            "index_reason": ladder.index.reason,
+            "notes": list(ladder.notes),
             "levels": [
                 {
                     "spacing": rung_spacing(rung),

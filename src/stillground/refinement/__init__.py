@@ -1,6 +1,8 @@
 """Repeats a reconstruction on finer and finer grids and says whether the answer settles."""
 
 from stillground.refinement.climb import Climb, climb
-from stillground.refinement.verdict import judge
+from stillground.refinement.expected import expected_order, rough_limit
+from stillground.refinement.grid_index import grid_index
+from stillground.refinement.verdict import compare, judge
 
-__all__ = ["Climb", "climb", "judge"]
+__all__ = ["Climb", "climb", "compare", "expected_order", "grid_index", "judge", "rough_limit"]

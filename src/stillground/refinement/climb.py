@@ -12,7 +12,10 @@ from stillground.grid import Grid, prolong
 from stillground.progress import staged
 from stillground.protocols import Array, Ladder, Measurement, Progress, Rung
 from stillground.reconstruct import Method, Reconstruction, reconstruct
-from stillground.refinement.verdict import judge
+from stillground.refinement.expected import expected_order, rough_limit
+from stillground.refinement.grid_index import grid_index
+from stillground.refinement.jitter import jitter
+from stillground.refinement.verdict import CLEAR, compare, judge
 
 _ROUNDING = 1e-10
 
@@ -24,8 +27,7 @@ class Climb:
     ``model`` is the nodal field at the finest rung's pick, ``anomaly`` the root mean square of it
     less its best constant, ``mesh_change`` the local root mean square, over about a correlation
     length, of the change since the rung before (NaN with a single rung). ``interrupted``: the user
-    broke off, finer rungs are missing and the last one may not
-    be iterated to its end.
+    broke off; finer rungs may be missing and the last one not iterated to its end.
     """
 
     ladder: Ladder
@@ -41,7 +43,11 @@ class Climb:
 
 
 def climb(
-    assemble: Callable[[Grid], Measurement], grids: Sequence[Grid], method: Method, tolerance: float
+    assemble: Callable[[Grid], Measurement],
+    grids: Sequence[Grid],
+    method: Method,
+    tolerance: float,
+    regularity: float | None = None,
 ) -> Generator[Progress, None, Climb]:
     """Reconstructs on every rung, coarse to fine, and judges how the answer moves.
 
@@ -54,6 +60,9 @@ def climb(
     method : Method
     tolerance : float
         Relative change that counts as none.
+    regularity : float or None
+        Of the data as functionals of the ground, as in `stillground.protocols.Kind`; without it no order
+        is expected.
 
     Yields
     ------
@@ -106,6 +115,21 @@ def climb(
     drift = None
     if len(rungs) > 1 and all(rung.picks[method.choose].iteration is not None for rung in rungs[-2:]):
         drift = relative(finest.model(rungs[-2].stop(method.choose)) - model, fine)
+    shaken: float | None = None
+    if len(rungs) > 2 and spread > 0:
+        try:
+            shaken = relative((yield from staged(jitter(finest, stop), "what rounding alone changes")), fine)
+        except KeyboardInterrupt:
+            interrupted = True
+    expected = None if regularity is None else expected_order(method.smoothness, regularity)
+    rough = None if regularity is None else rough_limit(method.smoothness, regularity)
+    verdict = judge(change, drift, tolerance, expected=expected, rough=rough, jitter=shaken or 0.0)
+    sizes = [
+        rung.grid.norm(m - rung.grid.mean(m)) / float(np.sqrt(np.prod(rung.grid.lengths)))
+        for rung, m in zip(rungs, models, strict=True)
+    ]
+    blur = max(CLEAR * (shaken or 0.0) * sizes[-1], floor / float(np.sqrt(np.prod(fine.lengths))))
+    index = grid_index(sizes, [max(rung.grid.spacing) for rung in rungs], blur)
     ladder = Ladder(
         rungs=tuple(
             Rung(rung.grid.spacing, rung.grid.axes, m, rung.picks[method.choose].iteration)
@@ -113,16 +137,22 @@ def climb(
         ),
         change=change,
         pick_drift=drift,
-        verdict=judge(change, drift, tolerance),
+        jitter=shaken,
+        verdict=verdict,
+        index=index,
+        notes=compare(verdict, index, tolerance),
     )
+    local = np.full(fine.shape, np.nan)
+    if moved:
+        # Node by node the change would show the coarser rung's nodes and not the ground; and rounding alone,
+        # of a picture without an anomaly, is no change at all.
+        seen = moved[-1] if change[-1] > 0 else np.zeros(fine.shape)
+        local = np.sqrt(fine.local_mean(np.square(seen), method.correlation))
     return Climb(
         ladder=ladder,
         rungs=tuple(rungs),
         interrupted=interrupted,
         model=model,
         anomaly=spread / float(np.sqrt(np.prod(fine.lengths))),
-        # Node by node the change would show the coarser rung's nodes and not the ground.
-        mesh_change=np.sqrt(fine.local_mean(np.square(moved[-1]), method.correlation))
-        if moved
-        else np.full(fine.shape, np.nan),
+        mesh_change=local,
     )

@@ -20,7 +20,7 @@ GAP = (0.15, 0.34)
 
 @styled
 def ladder_figure(profile: str, result: Result, *, tolerance: float, surface: Surface | None) -> Figure:
-    """Change between rungs against spacing, with the fitted order, and the rungs side by side.
+    """Change between rungs against spacing, with the fitted and the expected order, and the rungs.
 
     Parameters
     ----------
@@ -42,6 +42,17 @@ def ladder_figure(profile: str, result: Result, *, tolerance: float, surface: Su
         verdict.word,
     )
     _changes(figure, result.ladder, tolerance, (0.72, bottom, 2.55, body))
+    index = result.ladder.index.index
+    checked = "none" if index is None else f"{100 * index:.2g} % of the rms anomaly"
+    across, up = figure.get_size_inches()
+    figure.text(
+        (0.72 + 2.55 / 2) / across,
+        (FOOT + 0.02) / up,
+        f"cross-check, grid convergence index: {checked}",
+        size=7,
+        color=MUTED,
+        ha="center",
+    )
     _rungs(figure, result, surface, tolerance, (3.55, bottom - 0.3))
     return figure
 
@@ -87,12 +98,18 @@ def _changes(
         axes.set_title("one rung: nothing to compare" if change.size == 0 else "no change at all")
         return
     axes.plot(spacings[1:][drawn], change[drawn], "o", color=TEAL, ms=6, zorder=4)
-    if ladder.verdict.order is not None and drawn[-1]:
-        along = np.array(axes.get_xlim())
-        axes.plot(
-            along, change[-1] * (along / spacings[-1]) ** ladder.verdict.order, color=LINE, lw=1.2, ls="--"
-        )
-        axes.set_title(f"dashed: fitted order {ladder.verdict.order:.2f}")
+    along = np.array(axes.get_xlim())
+    verdict = ladder.verdict
+    said = []
+    for order, name, style in (
+        (verdict.order, "order {:.2g} (dashed)", "--"),
+        (verdict.expected, "expected {:.2g} (dotted)" if verdict.expected else "no limit (dotted)", ":"),
+    ):
+        if order is not None and drawn[-1]:
+            line = change[-1] * (along / spacings[-1]) ** order
+            axes.plot(along, line, color=LINE, lw=1.2, ls=style)
+            said.append(name.format(order))
+    axes.set_title(", ".join(said), size=8)
 
 
 def _rungs(
