@@ -109,6 +109,10 @@ def silent(history: History, options: RuleOptions) -> Pick:
     return Pick(0.0, True, "")
 
 
+def says_it_in_prose(history: History, options: RuleOptions) -> Pick:
+    return Pick(None, False, "does not apply: said in words only")
+
+
 def greedy(history: History, options: RuleOptions) -> Pick:
     assert history.degrees_of_freedom is not None
     return Pick(0.0, True, "needs degrees of freedom")
@@ -131,6 +135,7 @@ class Remembers:
         (runs_ahead, "within the history"),
         (silent, "has a reason"),
         (greedy, "assert"),
+        (says_it_in_prose, r"told by Pick\.does_not_apply"),
         (Remembers(), "the same history gives the same pick"),
     ],
 )

@@ -2,18 +2,22 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+from itertools import count
+
 import numpy as np
 import pytest
 
 from stillground.errors import ConfigError
 from stillground.grid import Grid
 from stillground.progress import finish
-from stillground.protocols import Array, Measurement, Rehearsal
+from stillground.protocols import Array, History, Measurement, Pick, Rehearsal, RuleOptions
 from stillground.reconstruct import prepare
 from stillground.rehearsal import rank, rehearse, through_patterns
 from stillground.rehearsal.families import layered_grounds, prior_grounds
 from stillground.rehearsal.pattern import _pattern
-from stillground.solve import back, iterate
+from stillground.rehearsal.rehearse import _Errors, _GroundProduct
+from stillground.solve import back, inside, iterate
 from twins import a_method, crosshole_twin
 
 Pair = tuple[Grid, Measurement]
@@ -44,6 +48,16 @@ def test_a_rule_costs_its_mean_excess_in_its_worst_family() -> None:
     cost, groups = rank(ratios)
     assert cost == pytest.approx({"a": 0.9, "b": 0.5})
     assert groups == (("b",), ("a",)), "the best on the worst family comes first"
+
+
+def test_a_rule_that_a_family_lacks_is_not_ranked_with_those_that_all_have() -> None:
+    ratios = {
+        "prior": {"a": np.array([1.2, 1.2]), "b": np.array([1.0, 1.0])},
+        "layers": {"a": np.array([1.3, 1.3])},
+    }
+    cost, groups = rank(ratios)
+    assert cost == pytest.approx({"a": 0.3})
+    assert groups == (("a",),)
 
 
 def test_rules_within_three_percent_are_equals() -> None:
@@ -123,6 +137,57 @@ def test_a_rule_that_does_not_apply_is_left_out(pairs: tuple[Pair, Pair]) -> Non
     found = finish(rehearse(*pairs, a_method(solver="block-kaczmarz", iterations=6), twins=3, seed=0))
     assert "hanke-raus" not in found.cost
     assert "gcv" in found.cost
+    assert set(found.left_out) == {"hanke-raus"}
+    assert "no polynomial of the operator (3 of 3 prior grounds)" in found.left_out["hanke-raus"]
+
+
+def test_a_rule_that_does_not_apply_to_one_twin_has_no_cost(pairs: tuple[Pair, Pair]) -> None:
+    calls = count()
+
+    def fickle(history: History, options: RuleOptions) -> Pick:
+        return Pick.does_not_apply("a whim") if next(calls) == 4 else Pick(3.0, True, "always the third")
+
+    method = a_method(iterations=6)
+    found = finish(
+        rehearse(*pairs, replace(method, rules={**method.rules, "fickle": fickle}), twins=3, seed=0)
+    )
+    assert "fickle" in found.ratios["prior"]
+    assert "fickle" not in found.ratios["layers"]
+    assert "fickle" not in found.cost
+    assert found.left_out == {"fickle": "does not apply: a whim (1 of 3 layers grounds)"}
+
+
+def test_a_rehearsal_in_which_no_rule_applies_is_refused(pairs: tuple[Pair, Pair]) -> None:
+    method = a_method("hanke-raus", "block-kaczmarz", 6)
+    only = replace(method, rules={"hanke-raus": method.rules["hanke-raus"]})
+    with pytest.raises(ConfigError, match=r"stopping\.rules: none applies .* no polynomial"):
+        finish(rehearse(*pairs, only, twins=2, seed=0))
+
+
+@pytest.mark.parametrize("in_data_space", [True, False])
+def test_errors_are_those_of_the_grounds_whether_iterates_are_kept_or_not(
+    pairs: tuple[Pair, Pair], in_data_space: bool
+) -> None:
+    # Beside it the definition: every iterate's ground on the nodes, less the truth, in the grid's norm.
+    (grid, measurement), _ = pairs
+    method = a_method(iterations=8)
+    problem = prepare(measurement, grid, method, products=10**6 if in_data_space else 0)
+    random = np.random.default_rng(5)
+    truths = 1e-5 * prior_grounds(grid, method.correlation, 2.0, 3, random)
+    data = measurement.operator.matmat(truths) / measurement.errors[:, None]
+    errors = _Errors(_GroundProduct(problem), truths)
+    noisy = data + random.standard_normal(data.shape)
+    work = iterate(method.solver, problem.operator, noisy, 8, kept_bytes=0, watch=errors.note)
+    runs = finish(work)
+    stops = np.array([3.0, 4.25, 8.0])
+
+    def error(solutions: Array) -> list[float]:
+        grounds = problem.anomaly(back(problem.operator, solutions)) - truths
+        return [grid.norm(ground.reshape(grid.shape)) for ground in grounds.T]
+
+    every = [error(inside(runs, np.full(3, float(k)))) for k in range(9)]
+    np.testing.assert_allclose(errors.best(), np.min(every, axis=0), rtol=1e-6)
+    np.testing.assert_allclose(errors.at(stops), error(inside(runs, stops)), rtol=1e-6)
 
 
 def test_a_described_ground_is_a_family_of_its_own(pairs: tuple[Pair, Pair]) -> None:

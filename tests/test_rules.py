@@ -155,14 +155,33 @@ def test_a_rule_without_its_column_does_not_apply(name: str, column: str) -> Non
     found = plugins.rule(name)(missing, STATED)
     assert found.iteration is None
     assert not found.firm
-    assert found.reason.startswith("does not apply")
+    assert not found.applies
 
 
 @pytest.mark.parametrize("name", ["l-curve", "quasi-optimality", "hanke-raus"])
 def test_a_rule_of_shapes_does_not_apply_to_one_iteration(name: str) -> None:
     found = plugins.rule(name)(history(20 - K / 4, filter_slope=K**2).upto(1), STATED)
     assert found.iteration is None
-    assert found.reason.startswith("does not apply")
+    assert not found.applies
+
+
+@pytest.mark.parametrize("name", ["gcv", "risk", "whiteness", "hanke-raus", "monotone-error",
+                                  "quasi-optimality", "discrepancy"])  # fmt: skip
+@pytest.mark.parametrize("ended", [False, True])
+def test_more_iterations_are_advised_only_where_there_are_any(name: str, ended: bool) -> None:
+    h = history(
+        20 + 20 * np.exp(-K / 5),
+        degrees_of_freedom=1e-5 * K,
+        filter_slope=1 + 1e-6 * K,
+        error_bound=np.full(41, 30.0),
+        step_norm=np.where(K > 0, 1 / np.maximum(K, 1), 0),
+        whiteness={"source": 5 - K / 10},
+        ended=ended,
+    )
+    found = plugins.rule(name)(h, STATED)
+    assert found.iteration is None
+    assert ("the iteration ended by itself" in found.reason) == ended
+    assert ("solver.iterations" in found.reason) != ended
 
 
 @pytest.mark.parametrize("name", ["gcv", "risk", "whiteness", "hanke-raus"])

@@ -168,7 +168,7 @@ class TestGcv:
 
     def test_without_degrees_of_freedom_it_does_not_apply(self) -> None:
         pick = gcv(collinear(np.array([20.0, 10.0])), DEFAULT)
-        assert pick == Pick(None, False, "does not apply: this run has no degrees of freedom")
+        assert pick == Pick.does_not_apply("this run has no degrees of freedom")
 
     def test_a_curve_that_still_falls_asks_for_more_iterations(self) -> None:
         k = np.arange(6.0)

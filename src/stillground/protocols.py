@@ -115,7 +115,7 @@ class History:
 
     Everything is of the first column, in standard form: data have unit errors, the ground unit prior
     variance relative to the background. A column is None where the method or the run has none; a rule
-    that needs it then says that it does not apply.
+    that needs it then gives `Pick.does_not_apply`.
 
     Parameters
     ----------
@@ -136,6 +136,8 @@ class History:
     whiteness : mapping of str to array
         By grouping, how far the residual's cumulative periodogram within the groups is from that of
         white noise, in units in which white noise stays under 1.36 in 95 % of cases.
+    ended : bool
+        The iteration ended by itself at the last row: more iterations would add nothing.
     """
 
     n_data: int
@@ -148,11 +150,17 @@ class History:
     error_bound: Array | None = None
     filter_slope: Array | None = None
     whiteness: Mapping[str, Array] = field(default_factory=dict)
+    ended: bool = False
 
     @property
     def last(self) -> int:
         """Index of the last iteration."""
         return self.residual_norm.size - 1
+
+    @property
+    def advice(self) -> str:
+        """What to do where the last iteration came too early for a rule."""
+        return "the iteration ended by itself there" if self.ended else "raise solver.iterations"
 
     @property
     def chi_square(self) -> Array:
@@ -179,7 +187,8 @@ class History:
             if isinstance(value := getattr(self, name), np.ndarray)
         }
         whiteness = {name: column[: last + 1] for name, column in self.whiteness.items()}
-        return History(self.n_data, **columns, whiteness=whiteness)
+        ended = self.ended and last >= self.last
+        return History(self.n_data, **columns, whiteness=whiteness, ended=ended)
 
 
 @dataclass(frozen=True)
@@ -203,11 +212,27 @@ class RuleOptions:
 
 @dataclass(frozen=True)
 class Pick:
-    """Where a rule would stop: an iteration (fractions allowed) or None, how sure, and why."""
+    """Where a rule would stop: an iteration (fractions allowed) or None, how sure, and why.
+
+    ``applies`` tells a rule that found no stop from one that could not look for it, see
+    `does_not_apply`.
+    """
 
     iteration: float | None
     firm: bool
     reason: str
+    applies: bool = True
+
+    @classmethod
+    def does_not_apply(cls, why: str) -> Pick:
+        """No pick, since the history lacks what the rule needs.
+
+        Examples
+        --------
+        >>> Pick.does_not_apply("this run has no degrees of freedom").reason
+        'does not apply: this run has no degrees of freedom'
+        """
+        return cls(None, False, f"does not apply: {why}", applies=False)
 
 
 class Rule(Protocol):
@@ -336,11 +361,14 @@ class Rehearsal:
     Parameters
     ----------
     ratios : mapping of family to mapping of rule to array, shape (n_twins,)
-        Error at the rule's stop over the error of the best iterate, at least 1.
+        Error at the rule's stop over the error of the best iterate, at least 1; in a family whose twins
+        it applies to.
     cost : mapping of rule to float
-        Mean of the ratio less one in the rule's worst family.
+        Mean of the ratio less one in the rule's worst family; of rules that apply to all twins.
     groups : tuple of tuple of str
-        Rules that these twins cannot tell apart, best group first, in each the cheapest first.
+        Rules with a cost that these twins cannot tell apart, best group first, in each the cheapest first.
+    left_out : mapping of rule to str
+        Rules that do not apply to some twins, and why.
     total_error, resolved : array, nodal field on the grid rehearsed on
         Root mean square error over twins drawn from the prior at the chosen rule's stops, in the ground
         property's unit, and the share of the truth that comes back, ``cov(fit, truth) / var(truth)``.
@@ -349,6 +377,7 @@ class Rehearsal:
     ratios: Mapping[str, Mapping[str, Array]]
     cost: Mapping[str, float]
     groups: tuple[tuple[str, ...], ...]
+    left_out: Mapping[str, str]
     total_error: Array
     resolved: Array
 

@@ -379,3 +379,32 @@ def test_a_forked_child_computes_too(small: Path) -> None:
         [sys.executable, "-c", code], capture_output=True, text=True, timeout=120, check=True
     )
     assert done.stdout.strip() == "0"
+
+
+def test_a_rehearsal_writes_its_numbers_and_tells_where(stillground: Command, small: Path) -> None:
+    done = stillground(
+        "rehearse", small / "small.toml", "--out", small / "out", "--set", "rehearsal.twins=3",
+        "--set", "solver.method=block-kaczmarz", "--set", "solver.iterations=6",
+    )  # fmt: skip
+    assert done.returncode == 0, done.stderr
+    file = small / "out" / "small_rehearsal.json"
+    assert str(file) in done.stdout.replace("\n", "")
+    told = json.loads(file.read_text(encoding="utf-8"))
+    assert (told["name"], told["chosen"]) == ("small", "gcv")
+    assert set(told["cost"]) == {rule for group in told["groups"] for rule in group}
+    assert set(told["families"]["prior"]["gcv"]) == {"median", "p90", "worst"}
+    assert "hanke-raus" in told["left_out"]
+    assert "hanke-raus does not apply: the method is no polynomial" in " ".join(done.stdout.split())
+    assert all(float(f"{value:.6g}") == value for value in told["cost"].values())
+
+
+def test_few_data_that_are_used_up_are_not_told_to_iterate_on(survey: xr.Dataset) -> None:
+    # Four data: after as many iterations the residual is nil and the iteration over.
+    few = package.reconstruct_survey(
+        survey.isel(datum=[0, 13, 26, 39]), ground={"spacing": "0.5 m", "correlation": "2 m"},
+        errors={"outliers": "off"}, refinement={"levels": 2},
+    )  # fmt: skip
+    reasons = [choice.pick.reason for choice in few.arrays.choices]
+    assert few.arrays.history.ended
+    assert few.arrays.history.last < 10
+    assert not any("solver.iterations" in reason for reason in reasons), reasons

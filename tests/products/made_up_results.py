@@ -76,6 +76,7 @@ def make_rehearsal(x: np.ndarray) -> Rehearsal:
         ratios=ratios,
         cost=cost,
         groups=groups,
+        left_out={},
         total_error=2e-5 * (1.2 - inwards),
         resolved=0.2 + 0.7 * inwards,
     )

@@ -186,14 +186,14 @@ def test_groups_of_equals_are_bands_and_the_chosen_rule_is_told(rehearsal: Rehea
     assert (weights["l-curve"], weights["gcv"], weights["60 %"]) == ("bold", "normal", "bold")
 
 
-def test_a_rule_that_does_not_apply_in_a_family_has_no_dots_there(rehearsal: Rehearsal) -> None:
-    ratios = {family: dict(rules) for family, rules in rehearsal.ratios.items()}
-    del ratios["prior"]["gcv"]
-    figure = rehearsal_figure("ab", replace(rehearsal, ratios=ratios), "risk")
-    prior, layers = (axes for axes in figure.axes if axes.get_title(loc="left"))
-    for kind, full in zip(dots(prior), dots(layers), strict=True):
-        assert set(kind) == {1, 2, 3, 4, 5, 6, 7}
-        assert set(full) == set(kind) | {0}
+def test_a_rule_that_is_left_out_is_named_and_has_no_dots(rehearsal: Rehearsal) -> None:
+    last = len(rehearsal.groups) - 1
+    left_out = replace(rehearsal, groups=rehearsal.groups[:last], left_out={"hanke-raus": "does not apply"})
+    figure = rehearsal_figure("ab", left_out, "risk")
+    for axes in (axes for axes in figure.axes if axes.get_title(loc="left")):
+        for kind in dots(axes):
+            assert set(kind) == {0, 1, 2, 3, 4, 5, 6}
+    assert any("Not applicable here: hanke-raus" in text.get_text() for text in figure.texts)
 
 
 @pytest.mark.parametrize("worst", [1.0, 1.05, 40.0, 3000.0])

@@ -152,6 +152,8 @@ def rehearse(
     costs over the best iterate: median, 90 %, worst; groups of rules that cannot be told apart; and
     which to choose.
 
+    Writes the same numbers as <profile>_rehearsal.json, and a figure.
+
     With --pattern, prints and draws which sizes come back where, at the stop of the survey's own answer.
 
     \b

@@ -133,7 +133,7 @@ def rehearsal(found: Rehearsed) -> None:
     say(f"{found.name}: error over the best iterate's, on synthetic ground under this survey")
     say()
     _rehearsal(found.rehearsal, found.choose)
-    say(f"figure: {found.figure}")
+    say(f"written: {found.file}, {found.figure}")
 
 
 def _rehearsal(found: Rehearsal, choose: str) -> None:
@@ -153,6 +153,8 @@ def _rehearsal(found: Rehearsal, choose: str) -> None:
                     "" if number else str(group),
                 )
     _show(table)
+    for rule, why in found.left_out.items():
+        say(f"{rule} {why}: not ranked")
     best = found.groups[0]
     named = ", ".join(best)
     if choose in best:

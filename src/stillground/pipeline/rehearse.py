@@ -14,6 +14,7 @@ from stillground.pipeline.labels import provenance
 from stillground.pipeline.profiles import Profile, read_profiles
 from stillground.products.figures import write_pattern_figure, write_rehearsal_figure
 from stillground.products.pattern import pattern_dataset, write_pattern
+from stillground.products.summary import write_rehearsal
 from stillground.protocols import Pattern, Progress, Rehearsal
 from stillground.reconstruct import reconstruct
 from stillground.rehearsal import through_patterns
@@ -26,11 +27,12 @@ _SIZES = (0.5, 1.0, 2.0)
 
 @dataclass(frozen=True)
 class Rehearsed:
-    """One profile's rehearsal and the figure of it."""
+    """One profile's rehearsal, and where it was written."""
 
     name: str
     rehearsal: Rehearsal
     choose: str
+    file: Path
     figure: Path
 
 
@@ -69,8 +71,10 @@ def rehearse_all(
                 coarse, _ = two_rungs(grids)
                 noise = (yield from reconstruct(assemble(coarse), coarse, plan_method(config))).noise
             found = yield from rehearse_profile(profile, config, grids, assemble, noise)
-            figure = write_rehearsal_figure(folder / "figures", profile.name, found, config.stopping.choose)
-            yield Rehearsed(profile.name, found, config.stopping.choose, figure)
+            choose = config.stopping.choose
+            file = write_rehearsal(folder, profile.name, found, choose)
+            figure = write_rehearsal_figure(folder / "figures", profile.name, found, choose)
+            yield Rehearsed(profile.name, found, choose, file, figure)
 
 
 def _patterns(

@@ -91,10 +91,11 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
 
 
 def rehearsal_summary(rehearsal: Rehearsal) -> dict[str, Any]:
-    """Groups of equals, what trusting each rule costs, and its ratios by family in three numbers."""
+    """Groups of equals, what trusting each rule costs, who is left out, ratios by family in three numbers."""
     return {
         "groups": [list(group) for group in rehearsal.groups],
         "cost": dict(rehearsal.cost),
+        "left_out": dict(rehearsal.left_out),
         "families": {
             family: {rule: ratio_numbers(ratios) for rule, ratios in rules.items()}
             for family, rules in rehearsal.ratios.items()
@@ -148,7 +149,25 @@ def write_summary(folder: Path, summary: Mapping[str, Any]) -> Path:
     OutputError
         When the place cannot be written.
     """
-    path = folder / SUMMARY
+    return _write(folder / SUMMARY, summary)
+
+
+def write_rehearsal(folder: Path, name: str, rehearsal: Rehearsal, chosen: str) -> Path:
+    """Write ``<name>_rehearsal.json`` into ``folder``, in the numbers of ``summary.json``.
+
+    ``name`` is the profile's and ``chosen`` the rule that the configuration chooses; the rest is as in
+    `rehearsal_summary`.
+
+    Raises
+    ------
+    OutputError
+        When the place cannot be written.
+    """
+    told = {"schema": 1, "name": name, "chosen": chosen, **rehearsal_summary(rehearsal)}
+    return _write(folder / f"{name}_rehearsal.json", told)
+
+
+def _write(path: Path, summary: Mapping[str, Any]) -> Path:
     text = json.dumps(_plain(summary), indent=1, ensure_ascii=False, allow_nan=False)
     with whole(path) as temporary:
         temporary.write_text(text + "\n", encoding="utf-8", newline="\n")

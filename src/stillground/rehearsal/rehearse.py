@@ -9,11 +9,12 @@ import numpy as np
 from stillground.errors import ConfigError
 from stillground.grid import Grid
 from stillground.progress import staged
-from stillground.protocols import Array, Measurement, Progress, Rehearsal
+from stillground.protocols import Array, Measurement, Pick, Progress, Rehearsal
 from stillground.reconstruct import Method, Problem, judge, prepare
 from stillground.rehearsal.families import layered_grounds, prior_grounds
 from stillground.rehearsal.ranking import rank
-from stillground.solve import DataSpace, Run, back, iterate, n_probes
+from stillground.solve import DataSpace, Run, back, inside, iterate, n_probes
+from stillground.solve.columns import inner
 
 _LEAST_SIGNAL = 0.05
 
@@ -53,6 +54,11 @@ def rehearse(
     Returns
     -------
     Rehearsal
+
+    Raises
+    ------
+    ConfigError
+        With fewer than two twins, or when no rule applies to all of them.
     """
     if twins < 2:
         raise ConfigError(f"rehearsal.twins: {twins} tell nothing; take 30")
@@ -79,20 +85,32 @@ def rehearse(
         seen = fine_measurement.operator.matvec(described) / measurement.errors
         data["described"] = np.tile(seen[:, None], (1, twins))
 
-    known = _Grounds(problem)
+    inner_product = _GroundProduct(problem)
     ratios: dict[str, dict[str, Array]] = {}
+    left_out: dict[str, str] = {}
     total_error = resolved = np.empty(0)
     for number, (name, grounds) in enumerate(families.items(), start=1):
         truths = _on_coarse(grounds, fine_grid, grid)
         noisy = data[name] + noise * random.standard_normal((n_data, twins))
-        work = iterate(method.solver, problem.operator, noisy, method.iterations)
+        errors = _Errors(inner_product, truths)
+        work = iterate(method.solver, problem.operator, noisy, method.iterations, watch=errors.note)
         runs = yield from staged(work, f"rehearsing {name} grounds ({number} of {len(families)})")
-        stops = [_stops(run, method) for run in runs]
-        ratios[name], fits = _ratios(runs, stops, truths, known, method.choose)
+        picks = [judge(run.history, method)[0] for run in runs]
+        for rule in method.rules:
+            reasons = [each[rule].reason for each in picks if not each[rule].applies]
+            if reasons:
+                left_out.setdefault(rule, f"{reasons[0]} ({len(reasons)} of {twins} {name} grounds)")
+        applied = [rule for rule in method.rules if all(each[rule].applies for each in picks)]
+        stops = {rule: np.array([_stop(run, p[rule]) for run, p in zip(runs, picks, strict=True)])
+                 for rule in method.rules}  # fmt: skip
+        ratios[name] = _ratios({rule: errors.at(stops[rule]) for rule in applied}, errors.best())
         if name == "prior":
-            total_error, resolved = _maps(fits, truths, grid, method)
+            chosen = back(problem.operator, inside(runs, stops[method.choose]))
+            total_error, resolved = _maps(problem.anomaly(chosen), truths, grid, method)
     cost, groups = rank(ratios)
-    return Rehearsal(ratios, cost, groups, total_error, resolved)
+    if not cost:
+        raise ConfigError(f"stopping.rules: none applies to all twins: {'; '.join(left_out.values())}")
+    return Rehearsal(ratios, cost, groups, left_out, total_error, resolved)
 
 
 def _on_coarse(grounds: Array, fine: Grid, coarse: Grid) -> Array:
@@ -104,62 +122,85 @@ def _on_coarse(grounds: Array, fine: Grid, coarse: Grid) -> Array:
     )
 
 
-def _stops(run: Run, method: Method) -> dict[str, float]:
-    """Where each rule stops, the last iterate where it finds none; rules that do not apply are left out."""
-    picks, _ = judge(run.history, method)
-    last = float(run.history.last)
-    return {
-        name: last if pick.iteration is None else pick.iteration
-        for name, pick in picks.items()
-        if not pick.reason.startswith("does not apply")
-    }
+def _stop(run: Run, pick: Pick) -> float:
+    """Where a rule stops, the last iterate where it finds nothing."""
+    return float(run.history.last) if pick.iteration is None else pick.iteration
 
 
-class _Grounds:
-    """Grounds of many solutions, and their distances from a truth.
+class _GroundProduct:
+    """The L2 inner product of grounds, on solutions: ``<ground(x), ground(y)> = x . (M y)``.
 
-    In a data space the unknowns are few: what each of them does to the ground is computed once, and
-    distances then follow from inner products, without a transform for every iterate.
+    In a data space the unknowns are few: M is computed once, and no iterate needs a transform.
     """
 
     def __init__(self, problem: Problem) -> None:
         self._problem = problem
-        self._weights = problem.grid.weights()
-        self._basis = self._gram = None
+        self._weights = problem.grid.weights()[:, None]
+        self._basis = self._matrix = None
         if isinstance(problem.operator, DataSpace):
-            self._basis = self.grounds(np.eye(problem.operator.shape[1]))
-            self._gram = self._basis.T @ (self._weights[:, None] * self._basis)
+            self._basis = problem.anomaly(back(problem.operator, np.eye(problem.operator.shape[1])))
+            self._matrix = self._basis.T @ (self._weights * self._basis)
 
-    def grounds(self, solutions: Array) -> Array:
-        """Shape (n_nodes, n_solutions)."""
-        return self._problem.anomaly(back(self._problem.operator, solutions))
+    def __call__(self, solutions: Array) -> Array:
+        """``M x``, shape (n_unknowns, n_solutions)."""
+        if self._matrix is not None:
+            return np.asarray(self._matrix @ solutions)
+        return self.of(self._problem.anomaly(solutions))
 
-    def distances(self, solutions: Array, truth: Array) -> Array:
-        """L2 distances of the solutions' grounds from one truth, shape (n_solutions,)."""
-        weighted = self._weights * truth
-        if self._basis is None or self._gram is None:
-            return np.asarray(np.sqrt(self._weights @ np.square(self.grounds(solutions) - truth[:, None])))
-        squares = np.einsum("ij,ij->j", solutions, self._gram @ solutions)
-        squares += weighted @ truth - 2 * ((self._basis.T @ weighted) @ solutions)
-        return np.asarray(np.sqrt(np.maximum(squares, 0.0)))
+    def of(self, grounds: Array) -> Array:
+        """What the product with grounds is on solutions, shape (n_unknowns, n_grounds)."""
+        weighted = self._weights * grounds
+        if self._basis is not None:
+            return np.asarray(self._basis.T @ weighted)
+        root = self._problem.standard.prior_root
+        extras = np.zeros((self._problem.operator.shape[1] - root.shape[1], grounds.shape[1]))
+        return np.vstack([root.rmatmat(weighted), extras])
+
+    def square(self, grounds: Array) -> Array:
+        """Squared norms of grounds, shape (n_grounds,)."""
+        return np.asarray(np.sum(self._weights * grounds**2, axis=0))
 
 
-def _ratios(
-    runs: tuple[Run, ...], stops: list[dict[str, float]], truths: Array, known: _Grounds, choose: str
-) -> tuple[dict[str, Array], Array]:
-    """Error over the best by rule, and the fits at the chosen rule's stops, shape (n_nodes, n_twins)."""
-    found: dict[str, list[float]] = {}
-    chosen = []
-    for j, run in enumerate(runs):
-        stopped = {rule: run.inside(stop) for rule, stop in stops[j].items()}
-        chosen.append(stopped.get(choose, run.inside(run.history.last)))
-        solutions = np.column_stack([*run.solutions, *stopped.values()])
-        errors = known.distances(solutions, truths[:, j])
-        best = float(errors.min())
-        for rule, error in zip(stopped, errors[len(run.solutions) :], strict=True):
-            found.setdefault(rule, []).append(float(error) / best if best > 0 else 1.0)
-    ratios = {rule: np.array(values) for rule, values in found.items() if len(values) == len(runs)}
-    return ratios, known.grounds(np.column_stack(chosen))
+class _Errors:
+    """L2 errors of all iterates of the twins, noted as they pass: none of them needs to be kept."""
+
+    def __init__(self, product: _GroundProduct, truths: Array) -> None:
+        self._product = product
+        self._truths, self._size = product.of(truths), product.square(truths)
+        self._before: tuple[Array, Array] | None = None
+        self._squares: list[Array] = []
+        self._steps: list[Array] = []
+
+    def note(self, solutions: Array) -> None:
+        """Notes the next iterate of all twins, shape (n_unknowns, n_twins)."""
+        image = self._product(solutions)
+        x, seen = self._before or (solutions, image)
+        self._squares.append(self._size + inner(solutions, image - 2 * self._truths))
+        self._steps.append(inner(solutions - x, image - seen))
+        self._before = solutions, image
+
+    def at(self, stops: Array) -> Array:
+        """Errors at a fractional iteration of each twin, shape (n_twins,)."""
+        k = np.minimum(stops.astype(int), max(len(self._squares) - 2, 0))
+        after = np.minimum(k + 1, len(self._squares) - 1)
+        t, twin = stops - k, np.arange(stops.size)
+        squares, steps = np.array(self._squares), np.array(self._steps)
+        # |(1 - t) e + t e'|^2 from the errors e and e' and the step between them.
+        between = (1 - t) * squares[k, twin] + t * squares[after, twin] - t * (1 - t) * steps[after, twin]
+        return np.asarray(np.sqrt(np.maximum(between, 0.0)))
+
+    def best(self) -> Array:
+        """Errors of the best iterates, shape (n_twins,)."""
+        return np.asarray(np.sqrt(np.maximum(np.min(self._squares, axis=0), 0.0)))
+
+
+def _ratios(errors: dict[str, Array], best: Array) -> dict[str, Array]:
+    """Errors at the stops of rules over the best; a stop between iterates may be better than all of them."""
+    least = np.minimum.reduce([best, *errors.values()])
+    return {
+        rule: np.divide(error, least, out=np.ones_like(error), where=least > 0)
+        for rule, error in errors.items()
+    }
 
 
 def _maps(fits: Array, truths: Array, grid: Grid, method: Method) -> tuple[Array, Array]:

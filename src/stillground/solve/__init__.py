@@ -1,6 +1,6 @@
 """Iterations in standard form and their history."""
 
 from stillground.solve.data_space import DataSpace
-from stillground.solve.run import Run, back, iterate, n_probes
+from stillground.solve.run import Run, back, inside, iterate, n_probes
 
-__all__ = ["DataSpace", "Run", "back", "iterate", "n_probes"]
+__all__ = ["DataSpace", "Run", "back", "inside", "iterate", "n_probes"]

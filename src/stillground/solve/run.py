@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import math
 from collections import defaultdict
-from collections.abc import Generator
+from collections.abc import Callable, Generator, Iterable, Sequence
 from dataclasses import dataclass
 from itertools import islice
 
 import numpy as np
+from numpy.typing import ArrayLike
 from pylops import LinearOperator
 
 from stillground.protocols import Array, History, Integers, Iterate, Progress, RowBlocks, Solver
@@ -54,14 +55,7 @@ class Run:
 
     def inside(self, iteration: float) -> Array:
         """The same as the iteration knows it: in its data space, where it ran in one."""
-        whole, part = self._split(iteration)
-        wanted = [whole] if part == 0 else [whole, whole + 1]
-        if wanted[-1] < len(self.solutions):
-            found = [self.solutions[k] for k in wanted]
-        else:
-            again = islice(self.solver(self.operator, self.columns), wanted[0], wanted[-1] + 1)
-            found = [iterate.solution[:, self.column] for iterate in again]
-        return np.asarray(found[0] if part == 0 else (1 - part) * found[0] + part * found[1])
+        return inside((self,), [iteration])[:, 0]
 
     def residual(self, iteration: float) -> Array:
         """Whitened residual at a fractional iteration, shape (n_data,)."""
@@ -73,6 +67,29 @@ class Run:
     def _split(self, iteration: float) -> tuple[int, float]:
         inside = min(max(iteration, 0.0), float(self.history.last))
         return int(inside), inside - int(inside)
+
+
+def inside(runs: Sequence[Run], iterations: ArrayLike) -> Array:
+    """Fractional iterates, one of each run of one `iterate`, shape (n_unknowns, n_runs).
+
+    As the iteration knows them, see `Run.inside`. Those that were not kept are made again, all at once.
+    """
+    first = runs[0]
+    stops = np.clip(np.asarray(iterations, dtype=float), 0.0, first.history.last)
+    rows = np.arange(int(np.ceil(stops.max())) + 1)
+    shares = np.maximum(1.0 - np.abs(stops - rows[:, None]), 0.0)
+    wanted = np.flatnonzero(shares.any(axis=1)).tolist()
+    found: Iterable[Array]
+    if rows.size <= len(first.solutions):
+        found = (np.column_stack([run.solutions[k] for run in runs]) for k in wanted)
+    else:
+        own = [run.column for run in runs]
+        again = islice(first.solver(first.operator, first.columns), rows.size)
+        found = (iterate.solution[:, own] for iterate in again if iterate.index in wanted)
+    mixed = np.zeros((first.operator.shape[1], len(runs)))
+    for k, solutions in zip(wanted, found, strict=True):
+        mixed += shares[k] * solutions
+    return mixed
 
 
 def back(operator: LinearOperator, solutions: Array) -> Array:
@@ -90,6 +107,7 @@ def iterate(
     seed: int = 0,
     kept_bytes: int = KEPT_BYTES,
     breakable: bool = False,
+    watch: Callable[[Array], None] | None = None,
 ) -> Generator[Progress, None, tuple[Run, ...]]:
     """Runs ``solver`` for ``iterations`` steps, or fewer where it ends by itself.
 
@@ -113,6 +131,8 @@ def iterate(
         Memory for kept iterates.
     breakable : bool
         Whether a keyboard interrupt ends the iteration early, for what is done to be judged.
+    watch : callable, optional
+        Is given every iterate of all problems, shape (n_unknowns, n_problems), whether it is kept or not.
 
     Yields
     ------
@@ -158,8 +178,11 @@ def iterate(
                 freedom = np.mean(np.sum(signs * moved, axis=0), axis=-1)
                 known = table["degrees_of_freedom"][-1:] or [freedom]
                 row["degrees_of_freedom"] = np.maximum(freedom, known[0])
+            x = step.solution[:, own]
             if step.index < n_kept:
-                solutions.append(frozen(step.solution[:, own]))
+                solutions.append(frozen(x))
+            if watch is not None:
+                watch(x)
             for name, values in row.items():
                 table[name].append(values)
             table["residual"].append(r)
@@ -182,6 +205,7 @@ def iterate(
         Run(
             history=History(
                 n_data=n_data,
+                ended=len(kept) <= iterations and not interrupted,
                 residual_norm=norms[:, j],
                 residual_step=residual_steps[:, j],
                 whiteness={

@@ -39,11 +39,12 @@ def discrepancy(history: History, options: RuleOptions) -> Pick:
     pick = _crossing(history, target)
     chi_square = float(history.chi_square[-1])
     if pick is None:
+        more = f"; {history.advice}" if history.ended else ", or solver.iterations too few"
         return Pick(
             None,
             False,
             f"never reached: the misfit is {chi_square:.3g} after {history.last} iterations, the target "
-            f"{aim:.3g}; the errors may be too small, or solver.iterations too few",
+            f"{aim:.3g}; the errors may be too small{more}",
         )
     if pick == 0:
         return Pick(

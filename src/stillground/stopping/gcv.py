@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from stillground.protocols import History, Pick, RuleOptions
-from stillground.stopping.minimum import minimum
+from stillground.stopping.minimum import minimum, still_falling
 
 
 def gcv(history: History, options: RuleOptions) -> Pick:
@@ -21,13 +21,13 @@ def gcv(history: History, options: RuleOptions) -> Pick:
     """
     curve = history.gcv(options.gcv_factor)
     if curve is None:
-        return Pick(None, False, "does not apply: this run has no degrees of freedom")
+        return Pick.does_not_apply("this run has no degrees of freedom")
     lowest = minimum(curve)
     if lowest.iteration == 0:
         return Pick(
             0.0, False, "no iterate predicts better than the background: the data say nothing of the ground"
         )
     if lowest.at_end:
-        return Pick(None, False, lowest.falling)
+        return still_falling(history)
     words = "a clear minimum" if lowest.sharp else "the curve is flat"
     return Pick(lowest.iteration, lowest.sharp, f"{words}, {lowest.span}")

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from stillground.protocols import History, Pick, RuleOptions
-from stillground.stopping.minimum import minimum
+from stillground.stopping.minimum import minimum, still_falling
 
 
 def hanke_raus(history: History, options: RuleOptions) -> Pick:
@@ -21,12 +21,12 @@ def hanke_raus(history: History, options: RuleOptions) -> Pick:
     problems, SIAM J. Sci. Comput. 17.
     """
     if history.filter_slope is None:
-        return Pick(None, False, "does not apply: the method is no polynomial of the operator")
+        return Pick.does_not_apply("the method is no polynomial of the operator")
     if history.last < 2:
-        return Pick(None, False, f"does not apply: {history.last} iterations are too few")
+        return Pick.does_not_apply(f"{history.last} iterations are too few")
     lowest = minimum(np.sqrt(np.maximum(history.filter_slope, 0.0)) * history.residual_norm, first=1)
     if lowest.at_end:
-        return Pick(None, False, lowest.falling)
+        return still_falling(history)
     if lowest.iteration <= 1:
         return Pick(1.0, False, "least at the first iterate already: the estimate tells nothing here")
     words = "a clear minimum" if lowest.sharp else "the curve is flat"

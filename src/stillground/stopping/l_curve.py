@@ -29,7 +29,7 @@ def l_curve(history: History, options: RuleOptions) -> Pick:
     # Row 0 has no roughness, and a vanishing residual no logarithm.
     rows = np.flatnonzero((history.solution_norm > 0) & (history.residual_norm > 0))
     if rows.size < _LEAST_ROWS:
-        return Pick(None, False, f"does not apply: {rows.size} iterations, too few for a corner")
+        return Pick.does_not_apply(f"{rows.size} iterations, too few for a corner")
     # Equal steps in the logarithm of the iteration: the curve is passed ever more slowly.
     at = np.log(rows)
     with warnings.catch_warnings():

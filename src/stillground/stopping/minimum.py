@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from stillground.protocols import Array
+from stillground.protocols import Array, History, Pick
 
 _NEAR = 1.01
 
@@ -26,11 +26,6 @@ class Minimum:
     def at_end(self) -> bool:
         """The curve still falls at its last iteration."""
         return self.iteration >= self.last
-
-    @property
-    def falling(self) -> str:
-        """That, in words."""
-        return f"still falling at the last iteration, {self.last}: raise solver.iterations"
 
     @property
     def sharp(self) -> bool:
@@ -54,3 +49,8 @@ def minimum(curve: Array, first: int = 0) -> Minimum:
             place += float(0.5 * (before - after) / bend)
     near = first + np.flatnonzero(curve[first:] <= _NEAR * curve[k])
     return Minimum(place, (int(near[0]), int(near[-1])), curve.size - 1)
+
+
+def still_falling(history: History) -> Pick:
+    """No pick, since the curve is lowest at its end."""
+    return Pick(None, False, f"still falling at the last iteration, {history.last}: {history.advice}")

@@ -22,11 +22,11 @@ def monotone_error(history: History, options: RuleOptions) -> Pick:
     ill-posed problems, Inverse Problems 15.
     """
     if history.error_bound is None:
-        return Pick(None, False, "does not apply: the method does not give its steps in the data")
+        return Pick.does_not_apply("the method does not give its steps in the data")
     target = options.tau * options.noise * math.sqrt(history.n_data)
     short = np.flatnonzero(history.error_bound < target)
     if short.size == 0:
-        return Pick(None, False, f"never reached in {history.last} iterations: raise solver.iterations")
+        return Pick(None, False, f"never reached in {history.last} iterations: {history.advice}")
     k = int(short[0])
     if k == 1:
         return Pick(0.0, False, "no step is sure to help: the errors may be too large")

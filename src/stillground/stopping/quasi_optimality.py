@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from stillground.protocols import History, Pick, RuleOptions
-from stillground.stopping.minimum import minimum
+from stillground.stopping.minimum import minimum, still_falling
 
 
 def quasi_optimality(history: History, options: RuleOptions) -> Pick:
@@ -20,9 +20,9 @@ def quasi_optimality(history: History, options: RuleOptions) -> Pick:
     USSR Comput. Math. Math. Phys. 4.
     """
     if history.last < 2:
-        return Pick(None, False, f"does not apply: {history.last} iterations are too few")
+        return Pick.does_not_apply(f"{history.last} iterations are too few")
     lowest = minimum(history.step_norm, first=1)
     if lowest.at_end:
-        return Pick(None, False, lowest.falling)
+        return still_falling(history)
     words = "the least step" if lowest.sharp else "steps hardly differ"
     return Pick(lowest.iteration, lowest.sharp, f"{words}, {lowest.span}")

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from stillground.protocols import History, Pick, RuleOptions
-from stillground.stopping.minimum import minimum
+from stillground.stopping.minimum import minimum, still_falling
 
 
 def risk(history: History, options: RuleOptions) -> Pick:
@@ -18,11 +18,11 @@ def risk(history: History, options: RuleOptions) -> Pick:
     multivariate normal distribution, Ann. Stat. 9.
     """
     if history.degrees_of_freedom is None:
-        return Pick(None, False, "does not apply: this run has no degrees of freedom")
+        return Pick.does_not_apply("this run has no degrees of freedom")
     curve = history.chi_square + 2 * options.noise**2 * history.degrees_of_freedom / history.n_data
     lowest = minimum(curve)
     if lowest.at_end:
-        return Pick(None, False, lowest.falling)
+        return still_falling(history)
     words = "a clear minimum" if lowest.sharp else "the curve is flat"
     firm = lowest.sharp and lowest.iteration > 0
     return Pick(lowest.iteration, firm, f"{words}, {lowest.span}; {options.proviso}")

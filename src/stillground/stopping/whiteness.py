@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from stillground.protocols import History, Pick, RuleOptions
-from stillground.stopping.minimum import minimum
+from stillground.stopping.minimum import minimum, still_falling
 
 WHITE = 1.36
 """Kolmogorov-Smirnov limit that white noise keeps in 95 % of cases."""
@@ -24,12 +24,12 @@ def whiteness(history: History, options: RuleOptions) -> Pick:
     discrete ill-posed problems, BIT 46.
     """
     if not history.whiteness:
-        return Pick(None, False, "does not apply: the data are in no groups of 4 or more")
+        return Pick.does_not_apply("the data are in no groups of 4 or more")
     curve = np.max(list(history.whiteness.values()), axis=0)
     lowest = minimum(curve)
     least = float(curve.min())
     if lowest.at_end:
-        return Pick(None, False, lowest.falling)
+        return still_falling(history)
     passing = np.flatnonzero(curve <= WHITE)
     if passing.size:
         reason = f"residuals pass as white (95 %) from iteration {passing[0]} to {passing[-1]}, best here"

@@ -72,7 +72,7 @@ def rehearsal_figure(profile: str, rehearsal: Rehearsal, chosen: str) -> Figure:
 
     families = rehearsal.ratios
     width = (WIDTH - NAMES - COST + BETWEEN) / len(families) - BETWEEN
-    worst = max(float(ratios.max()) for family in families.values() for ratios in family.values())
+    worst = max(float(family[rule].max()) for family in families.values() for rule in rules)
     for i, (family, ratios) in enumerate(families.items()):
         axes = panel(figure, NAMES + i * (width + BETWEEN), bottom, width, height)
         axes.set_facecolor("none")
@@ -108,6 +108,8 @@ def _said(rehearsal: Rehearsal, chosen: str) -> str:
         if chosen in group:
             said += f": {chosen}, the chosen one, is in band {place} of {len(rehearsal.groups)}"
     said += ". Cost: mean loss in a rule's worst family"
+    if rehearsal.left_out:
+        said += f". Not applicable here: {', '.join(rehearsal.left_out)}"
     return said
 
 
@@ -125,10 +127,9 @@ def _axis(axes: Axes, worst: float, width: float) -> None:
 
 
 def _dots(axes: Axes, ratios: Mapping[str, Array], rows: Mapping[str, int]) -> None:
-    shown = [rule for rule in rows if rule in ratios]
-    at, colours = [rows[rule] for rule in shown], [badge_of(rule).colour for rule in shown]
+    at, colours = list(rows.values()), [badge_of(rule).colour for rule in rows]
     median, ninety, worst = (
-        [ratio_numbers(ratios[rule])[key] for rule in shown] for key in ("median", "p90", "worst")
+        [ratio_numbers(ratios[rule])[key] for rule in rows] for key in ("median", "p90", "worst")
     )
     axes.hlines(at, median, worst, colors=colours, lw=1)
     axes.scatter(worst, at, 49, colours, marker="|", lw=1.4)
