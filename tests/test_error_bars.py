@@ -7,11 +7,12 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from stillground.operators.prior_root import PriorRoot
 from stillground.progress import finish
-from stillground.reconstruct import prepare
+from stillground.reconstruct import prepare, with_delay
 from stillground.solve import back, iterate
-from stillground.uncertainty import noise_part
-from twins import BLOBS, a_method, crosshole_twin, reconstructed
+from stillground.uncertainty import extra_deviations, noise_part
+from twins import BACKGROUND, BLOBS, a_method, crosshole_twin, reconstructed
 
 SIGMA = 0.02e-3
 
@@ -56,3 +57,40 @@ def test_the_noise_part_takes_the_size_of_the_noise_from_the_data(factor: float)
 def test_at_the_background_there_is_no_noise_part() -> None:
     twin = crosshole_twin(10, SIGMA, 0, spacing=1.0)
     np.testing.assert_array_equal(finish(noise_part(reconstructed(twin), 0.0, members=4, seed=1)), 0.0)
+
+
+@pytest.mark.parametrize("background", [None, BACKGROUND])
+def test_the_deviation_of_a_delay_is_that_of_the_normal_equations(background: float | None) -> None:
+    # Dense beside it: the inverse of (A^T A / noise^2 + prior), the background with no prior where it is
+    # fitted (Gauss-Markov; a linear problem's posterior covariance, from memory).
+    twin = crosshole_twin(8, SIGMA, 0, spacing=1.0)
+    measurement = with_delay(twin.measurement, "s")
+    found = reconstructed(replace(twin, measurement=measurement), a_method(background=background))
+    operator, noise = found.standard.operator, found.noise
+    dense = operator.matmat(np.eye(operator.shape[1])) / noise
+    precision = dense.T @ dense + np.eye(dense.shape[1])
+    if background is None:
+        constant = measurement.operator.matvec(np.ones(twin.grid.n_nodes)) / measurement.errors / noise
+        cross = dense.T @ constant
+        precision -= np.outer(cross, cross) / (constant @ constant)
+    wanted = measurement.extras[0].deviation * np.sqrt(np.linalg.inv(precision)[-1, -1])
+    assert extra_deviations(found) == pytest.approx({"delay": wanted}, rel=1e-4)
+
+
+def test_the_deviation_of_a_delay_covers_delays_found_where_there_are_none() -> None:
+    # A Monte Carlo of the definition over grounds of the prior; stopping early adds some scatter.
+    twin = crosshole_twin(14, SIGMA, 0)
+    random, ratios = np.random.default_rng(1), []
+    root = PriorRoot(twin.grid, (3.0, 2.0), 2.0)
+    for _ in range(24):
+        ground = BACKGROUND * (1 + 0.03 * root.matvec(random.standard_normal(twin.grid.n_nodes)))
+        data = twin.measurement.operator.matvec(ground) + SIGMA * random.standard_normal(14 * 14)
+        late = replace(twin, measurement=with_delay(replace(twin.measurement, data=data), "s"))
+        found = reconstructed(late)
+        value = found.standard.extras(found.run.solution(found.stop("gcv")))["delay"][0]
+        ratios.append(value / extra_deviations(found)["delay"])
+    assert 0.75 < float(np.sqrt(np.mean(np.square(ratios)))) < 1.35
+
+
+def test_statics_and_grounds_alone_have_no_single_deviation() -> None:
+    assert extra_deviations(reconstructed(crosshole_twin(10, SIGMA, 0, spacing=1.0))) == {}

@@ -99,6 +99,11 @@ def keeps_bounds(name: str) -> bool:
     return bool(getattr(solver(name), "keeps_bounds", False))
 
 
+def holds_rows(name: str) -> bool:
+    """Whether a solver holds all rows of its operator: it says so by ``holds_rows = True``."""
+    return bool(getattr(solver(name), "holds_rows", False))
+
+
 def rule(name: str) -> Rule:
     """The stopping rule registered under a name; errors as `kind`."""
     return cast(Rule, _load("rules", name))

@@ -68,6 +68,19 @@ class Extra:
 
 
 @dataclass(frozen=True)
+class Found:
+    """What came out for an `Extra`: its ``values`` in ``units``.
+
+    ``deviation`` is the posterior standard deviation of an unknown that stands alone, in the same units,
+    None of others and where it was not computed.
+    """
+
+    values: Array
+    units: str
+    deviation: float | None = None
+
+
+@dataclass(frozen=True)
 class Measurement:
     """A linear measurement of the ground on one grid; labels and units end here.
 
@@ -457,8 +470,8 @@ class Result:
         Of the data, 1 but for outliers; the errors of the fit are ``errors / sqrt(weights)``.
     noise : float
         Estimated size of the errors over what is stated.
-    extras : mapping of str to (array, str)
-        Unknowns beside the ground, such as statics, and their units.
+    extras : mapping of str to Found
+        Unknowns beside the ground, such as statics.
     noise_part : array, nodal field
         Standard deviation of the answer under the noise, in the property's unit.
     rehearsal, sensitivity
@@ -487,7 +500,7 @@ class Result:
     ladder: Ladder
     weights: Array
     noise: float
-    extras: Mapping[str, tuple[Array, str]]
+    extras: Mapping[str, Found]
     noise_part: Array
     rehearsal: Rehearsal | None
     sensitivity: Sensitivity | None

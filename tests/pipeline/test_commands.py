@@ -11,6 +11,7 @@ import time
 import tracemalloc
 from collections.abc import Callable
 from pathlib import Path
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -20,7 +21,7 @@ import stillground as package
 from stillground.config import load
 from stillground.errors import CapacityError, ConfigError, SurveyError
 from stillground.pipeline.answer import answer
-from stillground.pipeline.capacity import memory
+from stillground.pipeline.capacity import memory, rows_on_grid
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.profiles import read_profiles
 from stillground.progress import finish
@@ -249,6 +250,38 @@ def test_predicted_memory_covers_what_a_climb_takes(small: Path) -> None:
     tracemalloc.stop()
     predicted = memory(grids, profile.survey.sizes["datum"], 10)
     assert 0.9 < predicted / peak < 1.6, "predicted over taken"
+
+
+def test_rows_that_row_action_holds_are_predicted(small: Path) -> None:
+    config, _ = load(
+        small / "small.toml",
+        ["ground.spacing=0.04 m", "solver.iterations=4", "solver.method=kaczmarz",
+         'ground.bounds=["1000 m/s", "3000 m/s"]'],
+    )  # fmt: skip
+    (profile,) = read_profiles(config)
+    grids, n_data = plan_grids(profile, config), profile.survey.sizes["datum"]
+    assert rows_on_grid(config, n_data)
+    tracemalloc.start()
+    finish(answer(profile, grids, config))
+    _, peak = tracemalloc.get_traced_memory()
+    tracemalloc.stop()
+    assert memory(grids, n_data, 4) < 0.6 * peak, "the rows are most of it"
+    assert 0.9 < memory(grids, n_data, 4, rows=True) / peak < 1.6, "predicted over taken"
+
+
+def test_rows_too_many_to_hold_are_refused_with_a_method_that_holds_none(
+    small: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    settings = ["ground.spacing=0.04 m", 'ground.bounds=["1000 m/s", "3000 m/s"]', "solver.iterations=4"]
+    config, _ = load(small / "small.toml", [*settings, "solver.method=kaczmarz"])
+    (profile,) = read_profiles(config)
+    grids, n_data = plan_grids(profile, config), profile.survey.sizes["datum"]
+    free = (memory(grids, n_data, 4) + memory(grids, n_data, 4, rows=True)) // 2
+    monkeypatch.setattr("psutil.virtual_memory", lambda: SimpleNamespace(available=free))
+    with pytest.raises(CapacityError, match="kaczmarz holds all rows, block-kaczmarz does not"):
+        plan_grids(profile, config)
+    config, _ = load(small / "small.toml", [*settings, "solver.method=block-kaczmarz"])
+    plan_grids(profile, config)
 
 
 def test_predicted_memory_grows_with_the_grid(small: Path) -> None:

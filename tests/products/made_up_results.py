@@ -8,6 +8,7 @@ from scipy.ndimage import gaussian_filter
 from stillground.protocols import (
     Choice,
     Field,
+    Found,
     GridIndex,
     GroundProperty,
     History,
@@ -223,8 +224,8 @@ def make_result(
         weights=np.where(np.isin(np.arange(625), (17, 300)), 0.25, 1.0),
         noise=1.07,
         extras={
-            "source_static": (1e-4 * np.sin(np.arange(25.0)), "s"),
-            "delay": (np.array([3e-4]), "s"),
+            "source_static": Found(1e-4 * np.sin(np.arange(25.0)), "s"),
+            "delay": Found(np.array([3e-4]), "s", 2e-4),
         },
         noise_part=4e-6 + 1e-7 * np.abs(x - 9),
         rehearsal=make_rehearsal(x) if argued else None,

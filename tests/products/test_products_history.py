@@ -78,7 +78,7 @@ def test_noise_and_unknowns_beside_the_ground_are_kept(
     file = written(result, provenance, tmp_path)
     np.testing.assert_allclose(file.noise, 1.07, rtol=1e-6)
     assert file.source_static.dims == ("source_static_number",)
-    np.testing.assert_allclose(file.source_static, result.extras["source_static"][0], rtol=1e-6)
+    np.testing.assert_allclose(file.source_static, result.extras["source_static"].values, rtol=1e-6)
     assert file.delay.dims == ()
     np.testing.assert_allclose(file.delay, 3e-4, rtol=1e-6)
     assert file.source_static.attrs["units"] == file.delay.attrs["units"] == "s"

@@ -117,9 +117,9 @@ def test_the_summary_tells_noise_remarks_and_extra_unknowns(
     profile = json.loads(made.read_text(encoding="utf-8"))["profiles"][0]
     assert profile["noise"] == 1.07
     assert profile["remarks"] == ["2 of 625 data look like outliers"]
-    statics = result.extras["source_static"][0]
+    statics = result.extras["source_static"].values
     assert list(profile["extras"]) == ["source_static", "delay"]
-    assert profile["extras"]["delay"] == {"units": "s", "values": [3e-4]}
+    assert profile["extras"]["delay"] == {"units": "s", "values": [3e-4], "deviation": 2e-4}
     assert profile["extras"]["source_static"] == {
         "units": "s",
         "rms": pytest.approx(math.sqrt(sum(x * x for x in statics) / 25), rel=1e-5),

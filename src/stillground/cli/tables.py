@@ -56,11 +56,14 @@ def profile(done: Done) -> None:
         say()
     if result.sensitivity is not None:
         _sensitivity(result.sensitivity)
-    for name, (values, units) in result.extras.items():
-        if values.size == 1:
-            say(f"{name}: {values[0]:.3g} {units}")
+    for name, found in result.extras.items():
+        values, units = found.values, "" if found.units == "1" else f" {found.units}"
+        if values.size > 1:
+            say(f"{name}: rms {np.sqrt(np.mean(values**2)):.3g}, largest {np.abs(values).max():.3g}{units}")
+        elif found.deviation is None:
+            say(f"{name}: {values[0]:.3g}{units}")
         else:
-            say(f"{name}: rms {np.sqrt(np.mean(values**2)):.3g}, largest {np.abs(values).max():.3g} {units}")
+            say(f"{name}: {values[0]:.3g} +- {found.deviation:.2g}{units} (one standard deviation)")
     _ladder(result.ladder)
     for sentence in result.remarks:
         say(f"warning: {sentence}")

@@ -21,6 +21,7 @@ from stillground.progress import staged
 from stillground.protocols import (
     Array,
     Choice,
+    Found,
     Measurement,
     Progress,
     Rehearsal,
@@ -33,7 +34,7 @@ from stillground.refinement import Climb, climb
 from stillground.rehearsal import rehearse
 from stillground.sensitivity import vary
 from stillground.solve.columns import norm
-from stillground.uncertainty import noise_part
+from stillground.uncertainty import extra_deviations, noise_part
 
 Assemble = Callable[[Grid], Measurement]
 
@@ -71,10 +72,12 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     rung = top.rungs[min(repeated_rung(grids), len(top.rungs) - 1)]
     scatter = np.full(rung.grid.shape, np.nan)
     rehearsal = sensitivity = None
+    deviations: dict[str, float] = {}
     interrupted = top.interrupted
     try:
         if not interrupted:
             scatter = yield from noise_part(rung, chosen_stop, members=_MEMBERS, seed=0)
+            deviations = extra_deviations(rung)
         if config.rehearsal.twins and not interrupted:
             noise = 1.0 if config.errors.trust else finest.noise
             rehearsal = yield from rehearse_profile(profile, config, grids, assemble, noise)
@@ -89,7 +92,10 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     raise_ = partial(prolong, coarse=rung.grid, fine=finest.grid)
     solution = finest.run.solution(chosen_stop)
     units = {extra.name: extra.units for extra in finest.measurement.extras}
-    extras = {name: (values, units[name]) for name, values in finest.standard.extras(solution).items()}
+    extras = {
+        name: Found(values, units[name], deviations.get(name))
+        for name, values in finest.standard.extras(solution).items()
+    }
     residual = finest.run.residual(chosen_stop) * finest.measurement.errors
     return Result(
         property=config.kind.ground_property,

@@ -61,7 +61,7 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
         widths = [high - low for low, high in zip(lower, upper, strict=True)]
         most = _round_down(min(widths) / 2**config.refinement.levels)
         raise ConfigError(f"profile {profile.name}: {error}, such as {most} m") from error
-    refuse_too_large(profile.name, grids, profile.survey.sizes["datum"], config.solver.iterations)
+    refuse_too_large(profile.name, grids, profile.survey.sizes["datum"], config)
     return grids
 
 

@@ -13,7 +13,7 @@ from stillground.config import Config
 from stillground.grid import Grid
 from stillground.pipeline.advice import advise
 from stillground.pipeline.answer import plan_method
-from stillground.pipeline.capacity import memory
+from stillground.pipeline.capacity import memory, rows_on_grid
 from stillground.pipeline.grids import correlation, plan_grids
 from stillground.pipeline.profiles import Profile, read_profiles
 from stillground.products.figures.sheet import write_figure
@@ -51,7 +51,8 @@ def _plan(profile: Profile, config: Config) -> Plan:
         profile,
         grids,
         advise(profile.name, grids, config),
-        memory(grids, n_data, config.solver.iterations) + psutil.Process().memory_info().rss,
+        memory(grids, n_data, config.solver.iterations, rows=rows_on_grid(config, n_data))
+        + psutil.Process().memory_info().rss,
         _seconds(profile, grids, config),
     )
 

@@ -75,8 +75,8 @@ def history_dataset(
     variables |= _picks(choices)
     size = np.array(result.noise)
     variables["noise"] = _numbers((), size, "estimated size of the errors over what is stated")
-    for label, (values, units) in result.extras.items():
-        variables[label] = _extra(label, values, units)
+    for label, found in result.extras.items():
+        variables[label] = _extra(label, found.values, found.units)
     seen = result.property
     pictures = [
         Field(f"{seen.name}_at_pick", choice.model, seen.units, f"{seen.long_name} at the pick of the rule")

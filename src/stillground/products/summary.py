@@ -12,7 +12,7 @@ import numpy as np
 
 from stillground.products.ladder import rung_spacing
 from stillground.products.ratios import ratio_numbers
-from stillground.protocols import Array, Rehearsal, Result, Sensitivity
+from stillground.protocols import Found, Rehearsal, Result, Sensitivity
 from stillground.whole import whole
 
 WORST_FIRST = ("drifting", "undecided", "settled")
@@ -33,9 +33,9 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
     Returns
     -------
     dict
-        Of extra unknowns a lone one is told with its ``values``, many by their ``rms`` and ``largest``
-        size. ``index`` is the grid convergence index of the rms anomaly, None for ``index_reason``.
-        ``rehearsal`` and ``sensitivity`` are None where they were not asked for.
+        Of extra unknowns a lone one is told with its ``values`` and posterior ``deviation``, many by their
+        ``rms`` and ``largest`` size. ``index`` is the grid convergence index of the rms anomaly, None for
+        ``index_reason``. ``rehearsal`` and ``sensitivity`` are None where they were not asked for.
     """
     ladder, chosen = result.ladder, result.chosen
     return {
@@ -83,7 +83,7 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
         },
         "noise": result.noise,
         "remarks": list(result.remarks),
-        "extras": {name: _extra(*extra) for name, extra in result.extras.items()},
+        "extras": {name: _extra(extra) for name, extra in result.extras.items()},
         "rehearsal": None if result.rehearsal is None else rehearsal_summary(result.rehearsal),
         "sensitivity": None if result.sensitivity is None else _variations(result.sensitivity),
         "files": dict(files),
@@ -110,11 +110,12 @@ def _variations(sensitivity: Sensitivity) -> list[dict[str, Any]]:
     ]
 
 
-def _extra(values: Array, units: str) -> dict[str, Any]:
+def _extra(found: Found) -> dict[str, Any]:
+    values = found.values
     if values.size == 1:
-        return {"units": units, "values": values.tolist()}
+        return {"units": found.units, "values": values.tolist(), "deviation": found.deviation}
     rms, largest = float(np.sqrt(np.mean(values**2))), float(np.abs(values).max())
-    return {"units": units, "rms": rms, "largest": largest}
+    return {"units": found.units, "rms": rms, "largest": largest}
 
 
 def run_summary(

@@ -9,6 +9,7 @@ from stillground.reconstruct.reconstruction import (
     judge,
     prepare,
     reconstruct,
+    takes_data_space,
 )
 from stillground.reconstruct.suspicion import noise_size, shared_constants
 
@@ -23,6 +24,7 @@ __all__ = [
     "reconstruct",
     "reweighted",
     "shared_constants",
+    "takes_data_space",
     "with_delay",
     "with_statics",
 ]

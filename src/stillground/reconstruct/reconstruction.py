@@ -94,11 +94,15 @@ class Problem:
         return np.asarray(self.standard.prior_root.matmat(solutions[: self.grid.n_nodes]))
 
 
+def takes_data_space(n_data: int, products: int, bounds: tuple[float, float] | None) -> bool:
+    """Whether making the data space, n_data products each way, costs less than ``products`` on the grid."""
+    return bounds is None and n_data <= min(products, MOST_DATA)
+
+
 def prepare(measurement: Measurement, grid: Grid, method: Method, *, products: int) -> Problem:
     """Brings a measurement to standard form.
 
-    The data space is taken where making it, n_data products each way, costs less than the ``products``
-    that iterations on the grid would take: their number times that of columns.
+    ``products`` is the number of iterations times that of columns.
     """
     constant = fit_background(measurement) if method.background is None else method.background
     # Relative to the background, solutions have no unit. Iterates do not depend on the scale, but for how
@@ -113,8 +117,7 @@ def prepare(measurement: Measurement, grid: Grid, method: Method, *, products: i
         np.full(grid.n_nodes, constant),
         method.bounds,
     )
-    n_data = measurement.data.size
-    if method.bounds is None and n_data <= min(products, MOST_DATA):
+    if takes_data_space(measurement.data.size, products, method.bounds):
         return Problem(grid, standard, DataSpace(standard.operator))
     return Problem(grid, standard, standard.operator)
 

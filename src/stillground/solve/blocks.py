@@ -12,6 +12,7 @@ from scipy.linalg import LinAlgError, cho_factor, cho_solve
 from stillground.errors import ConfigError
 from stillground.protocols import Array, Integers, Iterate, RowBlocks
 from stillground.solve.columns import frozen
+from stillground.solve.gram import gram
 
 Order = Literal["cyclic", "random", "golden"]
 
@@ -93,8 +94,7 @@ class Part:
     def __init__(self, operator: LinearOperator, index: Integers) -> None:
         self.index = index
         self.operator = operator.rows(index)
-        gram = self.operator.matmat(self.operator.rmatmat(np.eye(index.size)))
-        self.gram = 0.5 * (gram + gram.T)
+        self.gram = gram(self.operator)
 
     def prepare(self, ridge: float) -> None:
         """Factors the Gram matrix with ``ridge`` on its diagonal; `ConfigError` where that is singular."""

@@ -9,11 +9,11 @@ from pylops import LinearOperator, MatrixMult
 from scipy.linalg import cholesky, solve_triangular
 
 from stillground.protocols import Array, Integers, RowBlocks
+from stillground.solve.gram import gram
 
 MOST_DATA = 2000
 """Beyond this many data the dense matrix costs more than it saves."""
 
-_BATCH = 64
 _RIDGE = 1e-15
 
 
@@ -34,16 +34,11 @@ class DataSpace(LinearOperator):  # type: ignore[misc]
     def __init__(self, operator: LinearOperator) -> None:
         self.groupings: Mapping[str, Integers] = operator.groupings if isinstance(operator, RowBlocks) else {}
         n_data = operator.shape[0]
-        gram = np.empty((n_data, n_data))
-        for start in range(0, n_data, _BATCH):
-            stop = min(start + _BATCH, n_data)
-            some = np.zeros((n_data, stop - start))
-            some[np.arange(start, stop), np.arange(stop - start)] = 1.0
-            gram[:, start:stop] = operator.matmat(operator.rmatmat(some))
+        products = gram(operator)
         # Repeated data make the matrix singular; this much more on its diagonal is under its rounding.
-        ridge = _RIDGE * float(np.trace(gram))
+        ridge = _RIDGE * float(np.trace(products))
         self._operator = operator
-        self._matrix = cholesky(0.5 * (gram + gram.T) + ridge * np.eye(n_data), lower=True)
+        self._matrix = cholesky(products + ridge * np.eye(n_data), lower=True)
         super().__init__(dtype=np.dtype(np.float64), dims=(n_data,), dimsd=(n_data,))
 
     def _matmat(self, X: Array) -> Array:
