@@ -23,6 +23,7 @@ from stillground.errors import CapacityError, ConfigError, SurveyError
 from stillground.pipeline.answer import answer
 from stillground.pipeline.capacity import memory, rows_on_grid
 from stillground.pipeline.grids import plan_grids
+from stillground.pipeline.inspect import inspect
 from stillground.pipeline.profiles import read_profiles
 from stillground.progress import finish
 from stillground.survey import write_table
@@ -229,6 +230,22 @@ def test_true_lengths_keep_the_velocity_of_rays_out_of_the_plane(survey: xr.Data
         shifted, ground={"spacing": "0.5 m", "correlation": "2 m"}, refinement={"levels": 2}
     )
     np.testing.assert_allclose(result.picture["velocity"], 1500, rtol=1e-5)
+
+
+@pytest.mark.parametrize(
+    ("settings", "asked"),
+    [
+        ([], ["ladder"]),
+        (["rehearsal.twins=3", "sensitivity.vary=true"], ["ladder", "rehearsal", "sensitivity"]),
+    ],
+)
+def test_all_long_work_that_is_asked_for_is_timed_beforehand(
+    small: Path, settings: list[str], asked: list[str]
+) -> None:
+    config, _ = load(small / "small.toml", ["rehearsal.twins=0", *settings])
+    (plan,) = inspect(config)
+    assert list(plan.seconds) == asked
+    assert min(plan.seconds.values()) > 0
 
 
 def test_too_large_a_grid_is_refused_before_it_is_made(small: Path) -> None:

@@ -255,7 +255,8 @@ def plan(planned: Plan, figure: Path) -> None:
     _show(rungs)
     for sentence in (*planned.profile.scene.doubts, *planned.advice):
         say(f"warning: {sentence}")
-    say(f"a run will take about {_time(planned.seconds)} for the ladder and {planned.memory / 2**20:.0f} MiB")
+    times = ", ".join(f"{_time(seconds)} for the {what}" for what, seconds in planned.seconds.items())
+    say(f"a run will take about {times}, and {planned.memory / 2**20:.0f} MiB")
     say(f"figure: {figure}")
 
 

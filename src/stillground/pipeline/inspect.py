@@ -4,22 +4,26 @@ from __future__ import annotations
 
 import time
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from pathlib import Path
 
+import numpy as np
 import psutil
 
 from stillground.config import Config
 from stillground.grid import Grid
 from stillground.pipeline.advice import advise
-from stillground.pipeline.answer import plan_method
+from stillground.pipeline.answer import assembly, plan_method, repeated_rung
 from stillground.pipeline.capacity import memory, rows_on_grid
 from stillground.pipeline.grids import correlation, plan_grids
 from stillground.pipeline.profiles import Profile, read_profiles
 from stillground.products.figures.sheet import write_figure
 from stillground.products.figures.survey import survey_figure
-from stillground.progress import finish
-from stillground.reconstruct import reconstruct
+from stillground.protocols import Measurement
+from stillground.reconstruct import Method, prepare
+from stillground.rehearsal import FAMILIES
+from stillground.sensitivity import RECONSTRUCTIONS
+from stillground.solve import iterate, n_probes
 
 _TIMED_STEPS = 3
 
@@ -28,15 +32,15 @@ _TIMED_STEPS = 3
 class Plan:
     """What a run of one profile will do and cost.
 
-    ``memory`` of the whole process in bytes is predicted from sizes, ``seconds`` from a few timed steps on
-    the finest rung; both leave figures out.
+    ``memory`` of the whole process in bytes is predicted from sizes, ``seconds`` from a few timed steps: of
+    the ladder, and of the rehearsal and the sensitivity where they are asked for. Both leave figures out.
     """
 
     profile: Profile
     grids: tuple[Grid, ...]
     advice: tuple[str, ...]
     memory: int
-    seconds: float
+    seconds: dict[str, float]
 
 
 def inspect(config: Config) -> tuple[Plan, ...]:
@@ -74,15 +78,33 @@ def draw(plan: Plan, config: Config, folder: Path) -> Path:
     return write_figure(folder / "figures", f"{plan.profile.name}_survey", figure)[0]
 
 
-def _seconds(profile: Profile, grids: Sequence[Grid], config: Config) -> float:
-    """Times a few steps of the iteration on the finest rung; coarser rungs cost by their nodes."""
-    few = replace(plan_method(config), iterations=_TIMED_STEPS, rules={})
-    measurement = profile.scene.assemble(grids[-1])
-    took = 0.0
-    # Twice, since the first includes compiling.
-    for _ in range(2):
-        begin = time.perf_counter()
-        finish(reconstruct(measurement, grids[-1], few))
-        took = time.perf_counter() - begin
+def _seconds(profile: Profile, grids: Sequence[Grid], config: Config) -> dict[str, float]:
+    """Coarser rungs cost by their nodes; repeated work is timed on its own grid."""
+    method, assemble = plan_method(config), assembly(profile, config)
+    finest = assemble(grids[-1])
     share = sum(grid.n_nodes for grid in grids) / grids[-1].n_nodes
-    return took / _TIMED_STEPS * share * config.solver.iterations
+    # Once before it counts, since that includes compiling.
+    _seconds_of(finest, grids[-1], method, 1)
+    found = {"ladder": share * _seconds_of(finest, grids[-1], method, 1)}
+    repeated = grids[repeated_rung(grids)]
+    if config.rehearsal.twins:
+        families = len(FAMILIES) + (config.simulate is not None)
+        together = _seconds_of(assemble(repeated), repeated, method, config.rehearsal.twins)
+        found["rehearsal"] = families * together
+    if config.sensitivity.vary:
+        found["sensitivity"] = RECONSTRUCTIONS * _seconds_of(assemble(repeated), repeated, method, 1)
+    return found
+
+
+def _seconds_of(measurement: Measurement, grid: Grid, method: Method, problems: int) -> float:
+    """What an iteration with so many problems beside each other will take, from a few timed steps."""
+    begin = time.perf_counter()
+    columns = problems * (1 + n_probes(measurement.data.size))
+    problem = prepare(measurement, grid, method, products=columns * method.iterations)
+    b = np.tile(problem.standard.b[:, None], problems)
+    stamps = [
+        time.perf_counter()
+        for _ in iterate(method.solver, problem.operator, b, min(_TIMED_STEPS, method.iterations))
+    ]
+    step = (stamps[-1] - stamps[0]) / max(len(stamps) - 1, 1)
+    return stamps[0] - begin + method.iterations * step

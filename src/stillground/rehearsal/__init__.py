@@ -2,6 +2,6 @@
 
 from stillground.rehearsal.pattern import through_patterns
 from stillground.rehearsal.ranking import rank
-from stillground.rehearsal.rehearse import rehearse
+from stillground.rehearsal.rehearse import FAMILIES, rehearse
 
-__all__ = ["rank", "rehearse", "through_patterns"]
+__all__ = ["FAMILIES", "rank", "rehearse", "through_patterns"]

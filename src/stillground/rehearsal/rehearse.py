@@ -18,6 +18,9 @@ from stillground.solve.columns import inner
 
 _LEAST_SIGNAL = 0.05
 
+FAMILIES = ("prior", "layers")
+"""Of synthetic grounds in every rehearsal, beside a described one."""
+
 
 def rehearse(
     coarse: tuple[Grid, Measurement],
@@ -71,10 +74,11 @@ def rehearse(
     n_data = measurement.data.size
     signal = max(float(problem.standard.b @ problem.standard.b) - noise**2 * n_data, _LEAST_SIGNAL * n_data)
 
-    families = {
-        "prior": prior_grounds(fine_grid, method.correlation, method.smoothness, twins, random),
-        "layers": layered_grounds(fine_grid, method.correlation[-1], twins, random),
-    }
+    drawn = (
+        prior_grounds(fine_grid, method.correlation, method.smoothness, twins, random),
+        layered_grounds(fine_grid, method.correlation[-1], twins, random),
+    )
+    families = dict(zip(FAMILIES, drawn, strict=True))
     data = {}
     for name, grounds in families.items():
         seen = fine_measurement.operator.matmat(grounds) / measurement.errors[:, None]

@@ -1,5 +1,5 @@
 """Repeats a reconstruction with other lengths, another smoothness and other backgrounds."""
 
-from stillground.sensitivity.vary import vary
+from stillground.sensitivity.vary import RECONSTRUCTIONS, vary
 
-__all__ = ["vary"]
+__all__ = ["RECONSTRUCTIONS", "vary"]

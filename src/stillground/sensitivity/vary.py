@@ -16,6 +16,9 @@ _LENGTHS = {"lengths halved": 0.5, "lengths doubled": 2.0}
 _SMOOTHNESS = {"smoothness less 0.5": -0.5, "smoothness plus 0.5": 0.5}
 _BACKGROUNDS = {"background less 10 %": 0.9, "background plus 10 %": 1.1}
 
+RECONSTRUCTIONS = 1 + len(_LENGTHS) + len(_SMOOTHNESS) + len(_BACKGROUNDS)
+"""How many of them `vary` makes."""
+
 
 def vary(measurement: Measurement, grid: Grid, method: Method) -> Generator[Progress, None, Sensitivity]:
     """Reconstructs once as asked and once for each variation, every time with its own pick.
