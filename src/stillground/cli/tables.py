@@ -143,7 +143,7 @@ def _rehearsal(found: Rehearsal, choose: str) -> None:
     table = _table("rule", "ground", ">median", ">90 %", ">worst", ">cost", ">group")
     for group, rules in enumerate(found.groups, start=1):
         for rule in rules:
-            families = [(name, each[rule]) for name, each in found.ratios.items() if rule in each]
+            families = [(name, each[rule]) for name, each in found.ratios.items()]
             for number, (name, ratios) in enumerate(families):
                 table.add_row(
                     "" if number else (f"{rule} (chosen)" if rule == choose else rule),
@@ -170,7 +170,7 @@ def _rehearsal(found: Rehearsal, choose: str) -> None:
             f'family, "{choose}" {cost:.0f} %.'
         )
     else:
-        say(f'stopping.choose = "{choose}" does not apply to this method; best here: {named}.')
+        say(f'stopping.choose = "{choose}" does not apply to all of these grounds; best here: {named}.')
 
 
 def pattern(found: Patterns) -> None:
