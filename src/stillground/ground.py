@@ -48,6 +48,14 @@ class Body(ABC):
     def mean_shape(self, starts: Array, ends: Array) -> Array:
         """Mean of ``shape`` along straight segments, shapes (n, d) to (n,); finite at length 0."""
 
+    @abstractmethod
+    def cuts(self, places: Array) -> Array:
+        """Elevations between which the body is smooth on the uprights at ``places``, shape (n, d - 1) to (n, m).
+
+        They are its edges, where it has such; elsewhere, and of a body without edges, they are lengths
+        apart over which few Gauss points are exact to rounding. They may be infinite.
+        """
+
     def values(self, points: Array) -> Array:
         """Difference from the background at ``points``, shape (n, d) to (n,)."""
         return self.excess * self.shape(points)
@@ -127,6 +135,10 @@ class Blob(Centred):
         short = 0.5 * np.exp(-0.5 * nodes**2) @ GAUSS_WEIGHTS
         return np.asarray(np.exp(-0.5 * distance**2) * np.where(width < SHORT, short, long))
 
+    def cuts(self, places: Array) -> Array:
+        levels = self.centre[-1] + self.radii[-1] * np.arange(-8.5, 9.0)
+        return np.broadcast_to(levels, (len(places), levels.size))
+
 
 @dataclass(frozen=True)
 class Disc(Centred):
@@ -146,6 +158,13 @@ class Disc(Centred):
         half_chord = np.sqrt(np.maximum((1 - distance) * (1 + distance), 0))[:, None]
         low, high = (place - width / 2)[:, None], (place + width / 2)[:, None]
         return _share_inside(low, high, -half_chord, half_chord)
+
+    def cuts(self, places: Array) -> Array:
+        aside = (places - np.array(self.centre[:-1])) / np.array(self.radii[:-1])
+        half = np.sqrt(np.maximum(1 - np.sum(aside**2, axis=1), 0))[:, None]
+        # An ellipse without end upright has no edges there, and beside an ellipse there are none.
+        reach = np.where(half > 0, self.radii[-1] * np.maximum(half, 1e-300), 0.0)
+        return np.asarray(self.centre[-1] + reach * [-1.0, 1.0])
 
 
 @dataclass(frozen=True)
@@ -181,6 +200,9 @@ class Box(Body):
         _require_axes(self, starts, len(self.lower))
         return _share_inside(starts, ends, np.array(self.lower), np.array(self.upper))
 
+    def cuts(self, places: Array) -> Array:
+        return np.broadcast_to([self.lower[-1], self.upper[-1]], (len(places), 2))
+
 
 @dataclass(frozen=True)
 class Layer(Body):
@@ -213,6 +235,10 @@ class Layer(Body):
     def mean_shape(self, starts: Array, ends: Array) -> Array:
         low, high = self._height(starts)[:, None], self._height(ends)[:, None]
         return _share_inside(low, high, np.array(self.bottom), np.array(self.top))
+
+    def cuts(self, places: Array) -> Array:
+        lift = self.dip * places[:, :1] if self.dip else np.zeros((len(places), 1))
+        return np.asarray(lift + [self.bottom, self.top])
 
     def _height(self, points: Array) -> Array:
         if self.dip == 0:
@@ -265,6 +291,10 @@ class Ground:
         for body in self.bodies:
             total += body.line_integrals(starts, ends)
         return total
+
+    def cuts(self, places: Array) -> Array:
+        """The `Body.cuts` of all bodies, shape (n, d - 1) to (n, m)."""
+        return np.hstack([np.empty((len(places), 0)), *(body.cuts(places) for body in self.bodies)])
 
 
 def _lengths(starts: Array, ends: Array) -> Array:

@@ -551,6 +551,9 @@ class Scene(ABC):
         The two ends of every datum's way through the ground; None where it has none.
     surface : pair of array or None
         Distance and elevation of the known ground surface; in a column one point at distance 0.
+    depth : float or None
+        How far below the lowest ground point the data see, m, where that is below all positions: the
+        ground is modelled down to there unless the user says otherwise.
     differences : Differences or None
         In a column, the usual estimate to compare the answer with.
     facts, doubts : tuple of str
@@ -566,6 +569,7 @@ class Scene(ABC):
     against: Mapping[str, Array] = field(default_factory=dict)
     paths: tuple[Array, Array] | None = None
     surface: tuple[Array, Array] | None = None
+    depth: float | None = None
     differences: Differences | None = None
     facts: tuple[str, ...] = ()
     doubts: tuple[str, ...] = ()

@@ -129,7 +129,7 @@ class ErrorSettings(Table):
         "auto", description="reweight outlying data: where the data say so, always, never"
     )
     statics: dict[str, Annotated[Number, Field(gt=0)]] = Field(
-        {}, description="constants of each 'source' or 'receiver' as unknowns: their size in errors"
+        {}, description="constants of each group, as 'source' or 'configuration', as unknowns: size in errors"
     )
     delay: Literal["fit", "off"] = Field("off", description="one constant common to all data as an unknown")
 
@@ -158,7 +158,7 @@ class GroundSettings(Table):
         None, description="ground kept around the positions; default: half the correlation length"
     )
     depth: Length | None = Field(
-        None, description="below the lowest ground point; default: down to the deepest position"
+        None, description="below the lowest ground point; default: what the kind sees, or the deepest position"
     )
     background: Background = Field(None, description="'fit' (default), or a value with unit")
     bounds: tuple[PropertyValue, PropertyValue] | None = Field(

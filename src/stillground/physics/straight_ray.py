@@ -17,7 +17,15 @@ from stillground.operators.straight_rays import StraightRays
 from stillground.physics import first_arrivals
 from stillground.protocols import Array, Extra, Integers, Kind, Measurement, Scene
 from stillground.protocols import Field as GroundField
-from stillground.survey import Section, fit_section, out_of_plane, plan_positions, read_surface, row_numbers
+from stillground.survey import (
+    Section,
+    fit_section,
+    out_of_plane,
+    plan_positions,
+    read_surface,
+    require_plausible,
+    row_numbers,
+)
 from stillground.survey.quantities import InputPath, Length
 
 # Prior standard deviation of the anisotropy: sediments seldom pass a tenth (common practice, no source).
@@ -25,8 +33,6 @@ _ANISOTROPY = 0.1
 # Points of the surface are taken within this share of the section's length; positions may stand this
 # far above it, as on a tripod.
 _CORRIDOR, _ABOVE = 0.1, 2.0
-
-_LONGEST = 100_000.0
 
 
 class StraightRaySettings(BaseModel):
@@ -142,7 +148,7 @@ class StraightRay(Kind):
         name = str(survey.attrs.get("source", "survey"))
         first = (float(survey["source_x"][0]), float(survey["source_y"][0]))
         section = fit_section(plan_positions(survey), first, source=name)
-        _require_plausible(name, survey, section)
+        require_plausible(survey, section)
         aside, row = out_of_plane(survey, section, settings.out_of_plane)
         in_space = first_arrivals.ends(survey)
         starts, ends = (
@@ -200,31 +206,6 @@ def _above(surface: tuple[Array, Array] | None, places: Array) -> tuple[str, ...
     above = int(np.sum(places[:, 1] > np.interp(places[:, 0], *surface) + 0.1))
     said = f"{above} positions of the table stand above the surface: z is elevation, up"
     return (said,) if above else ()
-
-
-def _require_plausible(name: str, survey: xr.Dataset, section: Section) -> None:
-    x, y = plan_positions(survey).T
-    if section.length > _LONGEST:
-        raise SurveyError(
-            name,
-            [
-                f"the section is {section.length / 1000:.4g} km long; are x and y of sources and receivers "
-                f"mixed up, or in other units?"
-            ],
-        )
-    if (
-        section.length < 1
-        and np.abs(x).max() <= 180
-        and np.abs(y).max() <= 90
-        and x.min() != x.round(1).min()
-    ):
-        raise SurveyError(
-            name,
-            [
-                f"the section is {section.length:.2g} m long and x and y look like degrees; project them to "
-                f"a system in metres"
-            ],
-        )
 
 
 def _require_below(path: Path, surface: tuple[Array, Array], places: Array) -> None:

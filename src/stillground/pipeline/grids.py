@@ -40,16 +40,17 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
             f"across; take at most {_round_down(extent / 2 ** (config.refinement.levels + 2))} m"
         )
     bottom = scene.lower[-1]
-    if ground.depth is not None:
+    depth = scene.depth if ground.depth is None else ground.depth
+    if depth is not None:
         ground_point = scene.upper[-1]
         if scene.surface is not None:
             # Over the positions only: a surface may go on far beyond them.
             reach = np.linspace(scene.lower[0], scene.upper[0], 200) if len(scene.lower) > 1 else 0.0
             ground_point = float(np.min(np.interp(reach, *scene.surface)))
-        bottom = ground_point - ground.depth
+        bottom = ground_point - depth
         if bottom > scene.lower[-1]:
             raise ConfigError(
-                f"ground.depth: {ground.depth:g} m reach down to {bottom:.6g} m, but {profile.name} has "
+                f"ground.depth: {depth:g} m reach down to {bottom:.6g} m, but {profile.name} has "
                 f"a position at {scene.lower[-1]:.6g} m; take at least {ground_point - scene.lower[-1]:.3g} m"
             )
     lower = [low - pad for low, pad in zip(scene.lower, margin, strict=True)]

@@ -12,7 +12,7 @@ from stillground.config.settings import SimulateSettings
 from stillground.errors import ConfigError, OutputError
 from stillground.ground import Blob, Body, Box, Disc, Ground, Layer
 from stillground.pipeline.profiles import checked
-from stillground.survey import column, read, write_table
+from stillground.survey import column, profiles, read, write_table
 from stillground.survey.columns import error_of
 
 
@@ -61,8 +61,11 @@ def simulate(config: Config, *, replace: bool = False) -> tuple[Path, int]:
         )
     kind = config.kind
     planned = _planned(config, settings)
-    scene = kind.place(planned, config.physics)
-    data = scene.predict(described_ground(settings, kind.axes))
+    ground = described_ground(settings, kind.axes)
+    data = np.empty(planned.sizes["datum"])
+    numbered = planned.assign_coords(datum=np.arange(data.size))
+    for line in profiles(numbered, "simulate").values():
+        data[line["datum"]] = kind.place(line, config.physics).predict(ground)
 
     random = np.random.default_rng(settings.seed)
     spread = np.hypot(settings.noise or 0.0, settings.relative_noise * np.abs(data))

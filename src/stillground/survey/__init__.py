@@ -7,7 +7,14 @@ The way of a table: ``read`` (the file's own faults raise), ``check`` (all other
 from stillground.survey.check import SurveyReport, check
 from stillground.survey.columns import COLUMNS, Column, column
 from stillground.survey.faults import row_numbers
-from stillground.survey.plane import Section, fit_section, out_of_plane, plan_positions
+from stillground.survey.plane import (
+    Section,
+    fit_section,
+    out_of_plane,
+    plan_positions,
+    require_plausible,
+)
+from stillground.survey.polyline import Polyline, through_stations
 from stillground.survey.read import profiles, read
 from stillground.survey.surface import read_surface
 from stillground.survey.units import quantity, to_si
@@ -16,6 +23,7 @@ from stillground.survey.write import write_table
 __all__ = [
     "COLUMNS",
     "Column",
+    "Polyline",
     "Section",
     "SurveyReport",
     "check",
@@ -27,7 +35,9 @@ __all__ = [
     "quantity",
     "read",
     "read_surface",
+    "require_plausible",
     "row_numbers",
+    "through_stations",
     "to_si",
     "write_table",
 ]

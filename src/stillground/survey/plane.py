@@ -16,6 +16,7 @@ _COINCIDE = 1e-6
 _PASSES = 20
 # Distances under this share of the length count alike: within it the fit is that of least squares.
 _NEAR = 0.02
+_LONGEST = 100_000.0
 
 
 @dataclass(frozen=True)
@@ -118,6 +119,38 @@ def fit_section(positions: Array, first: ArrayLike, *, source: str = "survey") -
         east, north, low = -east, -north, -high
     origin = center + low * np.array([east, north])
     return Section((float(origin[0]), float(origin[1])), (float(east), float(north)), length)
+
+
+def require_plausible(ds: xr.Dataset, section: Section) -> None:
+    """Refuse a section so long or so short that its coordinates must be in other units.
+
+    Raises
+    ------
+    SurveyError
+        When it is longer than 100 km, or its coordinates look like degrees.
+    """
+    x, y = plan_positions(ds).T
+    if section.length > _LONGEST:
+        raise SurveyError(
+            source_of(ds),
+            [
+                f"the section is {section.length / 1000:.4g} km long; are columns of x and y mixed up, or in "
+                f"other units?"
+            ],
+        )
+    if (
+        section.length < 1
+        and np.abs(x).max() <= 180
+        and np.abs(y).max() <= 90
+        and x.min() != x.round(1).min()
+    ):
+        raise SurveyError(
+            source_of(ds),
+            [
+                f"the section is {section.length:.2g} m long and x and y look like degrees; project them to "
+                f"a system in metres"
+            ],
+        )
 
 
 def out_of_plane(ds: xr.Dataset, section: Section, tolerance: float | None = None) -> tuple[float, int]:
