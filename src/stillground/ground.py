@@ -50,10 +50,10 @@ class Body(ABC):
 
     @abstractmethod
     def cuts(self, places: Array) -> Array:
-        """Elevations between which the body is smooth on the uprights at ``places``, shape (n, d - 1) to (n, m).
+        """Elevations between which the body is smooth below ``places`` in plan, (n, d - 1) to (n, m).
 
-        They are its edges, where it has such; elsewhere, and of a body without edges, they are lengths
-        apart over which few Gauss points are exact to rounding. They may be infinite.
+        They are its edges; of a body without edges they are so near each other that a few Gauss points
+        between two of them are exact to rounding. They may be infinite.
         """
 
     def values(self, points: Array) -> Array:
@@ -238,7 +238,7 @@ class Layer(Body):
 
     def cuts(self, places: Array) -> Array:
         lift = self.dip * places[:, :1] if self.dip else np.zeros((len(places), 1))
-        return np.asarray(lift + [self.bottom, self.top])
+        return np.asarray(lift + np.array([self.bottom, self.top]))
 
     def _height(self, points: Array) -> Array:
         if self.dip == 0:

@@ -158,7 +158,8 @@ class GroundSettings(Table):
         None, description="ground kept around the positions; default: half the correlation length"
     )
     depth: Length | None = Field(
-        None, description="below the lowest ground point; default: what the kind sees, or the deepest position"
+        None,
+        description="below the lowest ground point; default: what the kind sees, or the deepest position",
     )
     background: Background = Field(None, description="'fit' (default), or a value with unit")
     bounds: tuple[PropertyValue, PropertyValue] | None = Field(

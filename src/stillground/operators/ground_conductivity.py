@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numpy.typing import NDArray
 from pylops import LinearOperator
@@ -15,7 +17,7 @@ Array = NDArray[np.float64]
 Integers = NDArray[np.int64]
 
 
-class GroundConductivity(LinearOperator):  # type: ignore[misc]
+class GroundConductivity(LinearOperator):
     """Exact responses at low induction number to bilinear nodal fields of conductivity, level by station.
 
     Below each station the ground is taken as level layers, as the cumulative response has it. Below the grid
@@ -82,7 +84,7 @@ class GroundConductivity(LinearOperator):  # type: ignore[misc]
                     f"{nodes[-1]:.6g} m"
                 )
         self._grid, self._tail = grid, tail
-        self._data = (distance, surface, height, spacing, vertical)
+        self._data: tuple[Any, ...] = (distance, surface, height, spacing, vertical)
         stations, station = np.unique(distance, return_inverse=True)
         order = np.argsort(station, kind="stable")
         counts = np.bincount(station)

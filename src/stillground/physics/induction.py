@@ -50,13 +50,14 @@ _ROUNDING = 0.01
 # Apparent conductivities of the ground, S m-1, both with room (common practice, no source).
 _PLAUSIBLE = (1e-5, 10.0)
 _LARGE_ERROR = 0.3
-# Spacing over skin depth from which on it is said. Over uniform ground vertical dipoles then read 11 % low and
-# horizontal ones 5 % (McNeill 1980).
+# Spacing over skin depth from which on it is said. Over uniform ground vertical dipoles then read 11 % low
+# and horizontal ones 5 % (McNeill 1980).
 _LARGE_NUMBER = 0.1
 _MU_0 = 4e-7 * math.pi
 # The column on which the readings of a station are counted: levels to a least spacing, smoothness, and the
 # scatter of its conductivity over the apparent one.
 _LEVELS, _SMOOTHNESS, _SCATTER = 8, 2.0, 0.5
+_SHOWN = 8
 _GAUSS_NODES, _GAUSS_WEIGHTS = np.polynomial.legendre.leggauss(12)
 
 
@@ -250,7 +251,9 @@ class Induction(Kind):
             laid = f"{line.length:.4g} m long from station to station"
         else:
             first = (float(survey["x"][0]), float(survey["y"][0]))
-            line = fit_section(plan_positions(survey), first, source=str(survey.attrs.get("source", "survey")))
+            line = fit_section(
+                plan_positions(survey), first, source=str(survey.attrs.get("source", "survey"))
+            )
             require_plausible(survey, line)
             aside, row = out_of_plane(survey, line, settings.out_of_plane)
             along = line.along(survey["x"].values, survey["y"].values)
@@ -322,8 +325,8 @@ def _configurations(
     found, configuration = np.unique(keys, axis=0, return_inverse=True)
     named = ", ".join(f"{sizes[i].mean():.3g} m {ORIENTATIONS[int(level)]}" for level, i in found)
     merged = tuple(
-        f"coil spacings {', '.join(f'{each:.6g}' for each in size)} m are taken as one configuration: are they "
-        f"rounded differently?"
+        f"coil spacings {', '.join(f'{each:.6g}' for each in size)} m are taken as one configuration: "
+        f"are they rounded differently?"
         for size in sizes
         if size.size > 1
     )
@@ -342,7 +345,7 @@ def _told(scene: InductionScene, frequency: float | None, rows: Integers) -> Ind
     low, middle, high = np.quantile(scene.apparent, [0.0, 0.5, 1.0]) / milli
     facts = [
         *scene.facts,
-        f"apparent conductivities {low:.4g} to {high:.4g} mS/m, median {middle:.4g}, with the height allowed for",
+        f"apparent conductivities {low:.4g} to {high:.4g} mS/m, median {middle:.4g}, the height allowed for",
         _informative(scene, _SCATTER * abs(middle) * milli),
     ]
     doubts = [*scene.doubts]
@@ -351,8 +354,8 @@ def _told(scene: InductionScene, frequency: float | None, rows: Integers) -> Ind
     if negative.any():
         doubts.append(
             f"{int(negative.sum())} readings are zero or negative (row {rows[negative][0]}"
-            f"{' first' if negative.sum() > 1 else ''}); they are kept: look for metal and for the zero of the "
-            f"instrument"
+            f"{' first' if negative.sum() > 1 else ''}); they are kept: look for metal and for the zero of "
+            f"the instrument"
         )
     odd = int(np.sum((size > 0) & ((size < _PLAUSIBLE[0]) | (size > _PLAUSIBLE[1]))))
     if odd:
@@ -372,23 +375,23 @@ def _told(scene: InductionScene, frequency: float | None, rows: Integers) -> Ind
         if number[worst] > _LARGE_NUMBER:
             doubts.append(
                 f"{said}, above {_LARGE_NUMBER:g}: {int(np.sum(number > _LARGE_NUMBER))} readings are lower "
-                f"than at low induction number, by 11 % at {_LARGE_NUMBER:g} with vertical dipoles and 5 % with "
+                f"than the response assumes, by 11 % at {_LARGE_NUMBER:g} with vertical dipoles and 5 % with "
                 f"horizontal ones"
             )
     return replace(scene, facts=tuple(facts), doubts=tuple(doubts))
 
 
 def _informative(scene: InductionScene, deviation: float) -> str:
-    """How many numbers the readings of the fullest station carry, by their singular values in errors."""
+    """How many numbers the readings of the station with most of them carry, by their singular values."""
     station = scene.groupings["station"]
     here = np.flatnonzero(station == np.argmax(np.bincount(station)))
     values = informative(
         scene.height[here], scene.spacing[here], scene.vertical[here], scene.errors[here], deviation
     )
-    shown = ", ".join(f"{value:.2g}" for value in values)
+    shown = ", ".join(f"{value:.2g}" for value in values[:_SHOWN])
     return (
-        f"{int(np.sum(values > 1))} of the {here.size} readings of a station are informative: singular values "
-        f"{shown} (in errors; above 1 is signal) on level ground whose conductivity scatters by "
+        f"{int(np.sum(values > 1))} of the {here.size} readings of a station are informative: singular "
+        f"values {shown} (in errors; above 1 is signal) on level ground whose conductivity scatters by "
         f"{1000 * deviation:.3g} mS/m, correlated over {scene.spacing[here].min():.3g} m"
     )
 

@@ -18,6 +18,7 @@ from matplotlib.figure import Figure
 from matplotlib.patches import Patch, Polygon
 from numpy.typing import NDArray
 
+from stillground.products.figures.aspect import exaggeration, proportions
 from stillground.products.figures.sheet import FOOT, INK, PAPER, unit_text
 from stillground.products.raster import Surface, altitude
 from stillground.products.reliability import MESH_DEPENDENT, NO_DATA, POORLY_COVERED, RELIABLE
@@ -75,7 +76,7 @@ def draw_field(
     colours: Colormap = FIELD_COLOURS,
     lines: Sequence[float] = (),
 ) -> None:
-    """Draw a field on (distance, elevation) with equal scales both ways.
+    """Draw a field on (distance, elevation), its elevation exaggerated where the section is long and thin.
 
     Parameters
     ----------
@@ -96,7 +97,7 @@ def draw_field(
     """
     distance, elevation = nodes
     low, high = (distance[0], elevation[0]), (distance[-1], elevation[-1])
-    across, up = high[0] - low[0], high[1] - low[1]
+    across, up = proportions(nodes)
     per_metre = pixels / max(across, up)
     shape = (max(2, round(across * per_metre)), max(2, round(up * per_metre)))
 
@@ -127,7 +128,7 @@ def draw_field(
 def frame_ground(
     axes: Axes, nodes: tuple[Array, ...], artists: Sequence[Artist], surface: Surface | None
 ) -> None:
-    """Frame the extent of the nodes with equal scales, and cut what is drawn off at the surface."""
+    """Frame the extent of the nodes in its proportions, and cut what is drawn off at the surface."""
     distance, elevation = nodes
     low, high = (distance[0], elevation[0]), (distance[-1], elevation[-1])
     if surface is not None:
@@ -138,7 +139,7 @@ def frame_ground(
         for artist in artists:
             artist.set_clip_path(below)
         axes.plot(corners, top, color=INK, lw=1.2, clip_on=False)
-    axes.set(xlim=(low[0], high[0]), ylim=(low[1], high[1]), aspect="equal")
+    axes.set(xlim=(low[0], high[0]), ylim=(low[1], high[1]), aspect=exaggeration(nodes))
     axes.locator_params(steps=[1, 2, 5, 10])
     axes.grid(visible=False)
 

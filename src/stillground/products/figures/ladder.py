@@ -6,6 +6,7 @@ import numpy as np
 from matplotlib.figure import Figure
 from matplotlib.ticker import LogLocator, NullLocator
 
+from stillground.products.figures.aspect import exaggeration
 from stillground.products.figures.field import colour_scale, draw_field, shown
 from stillground.products.figures.maps import tiling
 from stillground.products.figures.sheet import FOOT, HEADING, LINE, MUTED, TEAL, panel, sheet, styled
@@ -127,6 +128,8 @@ def _rungs(
     step = ((room[0] + GAP[0]) / tiles.columns, room[1] / tiles.rows)
     across_sheet, up_sheet = figure.get_size_inches()
     said = f"{shown(result.property, result.model)[1]}, colours as in the section"
+    if (times := exaggeration(result.axes)) > 1:
+        said += f", elevation {times} times exaggerated"
     middle = (corner[0] + MAPS[0] / 2) / across_sheet
     figure.text(middle, (FOOT + 0.02) / up_sheet, said, size=7, color=MUTED, ha="center")
     for i, rung in enumerate(rungs):

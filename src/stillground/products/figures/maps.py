@@ -11,6 +11,7 @@ from matplotlib.colors import Colormap, LinearSegmentedColormap, Normalize
 from matplotlib.figure import Figure
 from numpy.typing import NDArray
 
+from stillground.products.figures.aspect import elevation_label, proportions
 from stillground.products.figures.field import draw_field, shown_change
 from stillground.products.figures.sheet import TEAL, panel
 from stillground.products.raster import Surface
@@ -72,7 +73,7 @@ def tiling(
     columns : sequence of int, optional
         Numbers of columns to choose from; default all.
     """
-    across, up = (float(axis[-1] - axis[0]) for axis in nodes)
+    across, up = proportions(nodes)
 
     def scale(columns: int) -> float:
         wide = (room[0] - (columns - 1) * gap[0]) / columns
@@ -128,7 +129,7 @@ def draw_maps(
         axes.set_title(one.title)
         axes.set_xlabel("distance (m)")
         if column == 0:
-            axes.set_ylabel("elevation (m)")
+            axes.set_ylabel(elevation_label(nodes))
         bar = figure.colorbar(
             ScalarMappable(one.scale, one.colours),
             cax=panel(figure, left, bottom - 0.56, tiles.width, 0.1),

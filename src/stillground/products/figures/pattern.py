@@ -13,6 +13,7 @@ from matplotlib.colors import Normalize
 from matplotlib.figure import Figure
 from matplotlib.patches import Patch, Rectangle
 
+from stillground.products.figures.aspect import elevation_label, proportions
 from stillground.products.figures.field import HATCHES, draw_field, frame_ground
 from stillground.products.figures.maps import GOOD_COLOURS, PIXELS, Tiling, tiling
 from stillground.products.figures.sheet import FOOT, HEADING, MARGIN, MUTED, PAPER, panel, sheet, styled
@@ -49,7 +50,7 @@ def pattern_figure(
     names = list(dict.fromkeys(pattern.name for pattern in patterns))
     ordered = sorted(patterns, key=lambda pattern: (pattern.size, names.index(pattern.name)))
     bodies = [pattern for pattern in ordered if pattern.name == "bodies"]
-    across, up = (float(axis[-1] - axis[0]) for axis in axes)
+    across, up = proportions(axes)
     beside = bool(bodies) and up > across
 
     room = WIDTH - NAMES - MARGIN - PAIR * (len(names) - 1) - (SMALLEST + 0.55 if beside else 0.0)
@@ -146,7 +147,7 @@ def _smallest(
         if body.share.max() >= BACK
     ]
     frame_ground(axes, nodes, areas, surface)
-    axes.set(xlabel="distance (m)", ylabel="elevation (m)", title="smallest bodies that come back")
+    axes.set(xlabel="distance (m)", ylabel=elevation_label(nodes), title="smallest bodies that come back")
     key = [
         Patch(facecolor=shade, label=f"{body.size:g} m") for body, shade in zip(bodies, shades, strict=True)
     ]

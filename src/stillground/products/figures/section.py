@@ -7,6 +7,7 @@ from collections.abc import Mapping
 from matplotlib.cm import ScalarMappable
 from matplotlib.figure import Figure
 
+from stillground.products.figures.aspect import elevation_label, proportions
 from stillground.products.figures.field import FIELD_COLOURS, colour_scale, draw_field, hatch_key, shown
 from stillground.products.figures.positions import draw_positions, position_key
 from stillground.products.figures.sheet import FOOT, HEADING, panel, sheet, styled, unit_text
@@ -44,7 +45,7 @@ def section_figure(
     values, long_name, units = shown(result.property, result.model)
     scale = colour_scale(values, flags)
 
-    across, up = (float(axis[-1] - axis[0]) for axis in result.axes)
+    across, up = proportions(result.axes)
     inches = min(LARGEST[0] / across, LARGEST[1] / up)
     width, height = across * inches, up * inches
     whole_width = max(width + 1.95, LEAST_WIDTH)
@@ -65,7 +66,7 @@ def section_figure(
     chosen = result.chosen
     axes.set(
         xlabel="distance (m)",
-        ylabel="elevation (m)",
+        ylabel=elevation_label(result.axes),
         title=f"{long_name.capitalize()} at the pick of {chosen.rule}, iteration {chosen.iteration:.3g}",
     )
     bar = figure.colorbar(

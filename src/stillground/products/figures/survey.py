@@ -10,6 +10,7 @@ from matplotlib.collections import LineCollection
 from matplotlib.colors import LinearSegmentedColormap
 from matplotlib.figure import Figure
 
+from stillground.products.figures.aspect import elevation_label, proportions
 from stillground.products.figures.field import colour_scale, draw_field, shown, shown_name
 from stillground.products.figures.positions import draw_positions
 from stillground.products.figures.sheet import FOOT, HEADING, INK, TEAL, panel, sheet, styled, unit_text
@@ -64,7 +65,7 @@ def survey_figure(
         f"{n_data} data{said}, over {coverage.long_name} ({unit_text(coverage.units)})",
     )
 
-    across, up = (float(axis[-1] - axis[0]) for axis in nodes)
+    across, up = proportions(nodes)
     inches = min(PICTURE[0] / across, PICTURE[1] / up)
     width, height = across * inches, up * inches
     place = (0.65, bottom + PICTURE[1] - height, width, height)
@@ -77,7 +78,7 @@ def survey_figure(
         rays = list(np.stack([end[drawn] for end in paths], axis=1))
         axes.add_collection(LineCollection(rays, colors=INK, linewidths=0.3, alpha=0.25), autolim=False)
     draw_positions(axes, positions)
-    axes.set(xlabel="distance (m)", ylabel="elevation (m)")
+    axes.set(xlabel="distance (m)", ylabel=elevation_label(nodes))
     bar = figure.colorbar(
         ScalarMappable(scale, COVERAGE_COLOURS), cax=panel(figure, 0.65 + width + 0.1, place[1], 0.12, height)
     )

@@ -1,0 +1,41 @@
+"""How tall the ground is drawn: as it is, or exaggerated where a long thin section would be a mere strip."""
+
+from __future__ import annotations
+
+from stillground.protocols import Array
+
+# A picture more than this wider than tall is exaggerated, by the least of these that makes it no wider.
+WIDEST = 3.0
+STEPS = (1, 2, 3, 4, 5, 8, 10, 20, 50, 100)
+
+
+def exaggeration(nodes: tuple[Array, ...]) -> int:
+    """Inches for a metre of elevation over inches for one of distance; 1 unless the section is long and thin.
+
+    Parameters
+    ----------
+    nodes : tuple of two arrays
+        Distance and elevation, m, ascending.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> exaggeration((np.array([0.0, 18.0]), np.array([186.0, 212.0])))
+    1
+    >>> exaggeration((np.array([0.0, 60.0]), np.array([204.0, 212.0])))
+    3
+    """
+    across, up = (float(axis[-1] - axis[0]) for axis in nodes)
+    return next((step for step in STEPS if across <= WIDEST * up * step), STEPS[-1])
+
+
+def proportions(nodes: tuple[Array, ...]) -> tuple[float, float]:
+    """Width and height of a picture of the section, in the metres of its distance axis."""
+    across, up = (float(axis[-1] - axis[0]) for axis in nodes)
+    return across, up * exaggeration(nodes)
+
+
+def elevation_label(nodes: tuple[Array, ...]) -> str:
+    """The words at the elevation axis."""
+    times = exaggeration(nodes)
+    return "elevation (m)" if times == 1 else f"elevation (m), {times} times exaggerated"
