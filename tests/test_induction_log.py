@@ -9,7 +9,6 @@ from __future__ import annotations
 import subprocess
 import sys
 import tarfile
-from pathlib import Path
 
 import numpy as np
 import pytest
@@ -116,11 +115,11 @@ def test_the_answer_is_the_log_seen_through_the_resolution(scene: InductionScene
     assert 0.5 < np.sqrt(np.mean(over**2)) < 1.5
     answered, seen = found.mean(axis=0)[inside], filtered.mean(axis=0)[inside]
     assert np.corrcoef(answered, seen)[0, 1] > 0.99
-    # Measured: a resistive bed in the uppermost 20 m over ground some four times as conductive.
+    # Measured: a resistive bed in the uppermost 20 m over ground more than twice as conductive.
     elevation = grid.axes[1][inside]
     truth = on_nodes(log, grid)[0, inside]
     for values in (truth, answered):
-        assert values[elevation < -30].mean() > 3 * values[(elevation > -18) & (elevation < -4)].mean()
+        assert values[elevation < -30].mean() > 2 * values[(elevation > -18) & (elevation < -4)].mean()
 
 
 def on_nodes(log: np.ndarray, grid: Grid) -> np.ndarray:

@@ -24,6 +24,7 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from stillground.config import load as load_config
     from stillground.grid import Grid
+    from stillground.operators.ground_conductivity import GroundConductivity
     from stillground.operators.prior_root import PriorRoot
     from stillground.operators.straight_rays import StraightRays
     from stillground.pipeline.run import reconstruct_survey, run_config
@@ -32,6 +33,7 @@ if TYPE_CHECKING:
 # Loaded when first asked for: the command line's help need not wait for compilers and plotting.
 _PUBLIC = {
     "Grid": ("stillground.grid", "Grid"),
+    "GroundConductivity": ("stillground.operators.ground_conductivity", "GroundConductivity"),
     "PriorRoot": ("stillground.operators.prior_root", "PriorRoot"),
     "StraightRays": ("stillground.operators.straight_rays", "StraightRays"),
     "load_config": ("stillground.config", "load"),
@@ -42,6 +44,7 @@ _PUBLIC = {
 
 __all__ = [
     "Grid",
+    "GroundConductivity",
     "PriorRoot",
     "StraightRays",
     "load_config",

@@ -23,6 +23,7 @@ from matplotlib.textpath import text_to_path
 from stillground.errors import OutputError
 from stillground.products import figures
 from stillground.products.figures import write_figures
+from stillground.products.figures.aspect import WIDEST, elevation_label, exaggeration, proportions
 from stillground.products.figures.errors import errors_figure
 from stillground.products.figures.ladder import ladder_figure
 from stillground.products.figures.pattern import pattern_figure
@@ -344,3 +345,49 @@ def test_figures_do_without_the_stateful_interface() -> None:
     # It costs import time and keeps every figure alive.
     sources = Path(figures.__file__).parent.glob("*.py")
     assert not [path.name for path in sources if "pyplot" in path.read_text(encoding="utf-8")]
+
+
+@pytest.mark.parametrize(
+    ("across", "up", "times"),
+    [(18.0, 25.0, 1), (60.0, 20.0, 1), (60.0, 16.0, 2), (60.0, 8.0, 3), (900.0, 20.0, 20)],
+)
+def test_long_thin_sections_are_exaggerated_and_say_so(across: float, up: float, times: int) -> None:
+    nodes = (np.array([0.0, across]), np.array([0.0, up]))
+    assert exaggeration(nodes) == times
+    wide, tall = proportions(nodes)
+    assert wide == across
+    assert wide / tall <= WIDEST
+    assert elevation_label(nodes) == (
+        "elevation (m)" if times == 1 else f"elevation (m), {times} times exaggerated"
+    )
+
+
+def test_every_picture_of_a_long_thin_section_has_its_exaggeration(result: Result) -> None:
+    """Ten times as long as it is: as wide as three heights in every figure, the field in its true place."""
+    distance, elevation = result.axes
+    long = replace(result, axes=(10 * distance, elevation))
+    times = exaggeration(long.axes)
+    assert times > 1
+    arguments: dict[str, Any] = {"tolerance": 0.02, "surface": None}
+    ladder = replace(
+        long.ladder, rungs=tuple(replace(r, axes=(10 * r.axes[0], r.axes[1])) for r in long.ladder.rungs)
+    )
+    long = replace(long, ladder=ladder)
+    drawn = {
+        "section": section_figure("long", long, positions={}, **arguments),
+        "errors": errors_figure("long", long, **arguments),
+        "ladder": ladder_figure("long", long, **arguments),
+    }
+    for name, figure in drawn.items():
+        maps = [axes for axes in figure.axes if axes.images]
+        assert maps, name
+        for axes in maps:
+            assert axes.get_aspect() == times
+            figure.draw_without_rendering()
+            place, size = axes.get_position(), figure.get_size_inches()
+            # The frame already has the proportions: nothing is shrunk into it.
+            extent = axes.get_window_extent().width / axes.get_window_extent().height
+            assert extent == pytest.approx(place.width * size[0] / (place.height * size[1]), rel=1e-6)
+            assert extent == pytest.approx(np.divide(*proportions(long.axes)), rel=1e-3)
+        words = [axes.get_ylabel() for axes in figure.axes] + [text.get_text() for text in figure.texts]
+        assert any(f"{times} times exaggerated" in word for word in words), name
