@@ -358,19 +358,20 @@ def test_long_thin_sections_are_exaggerated_and_say_so(across: float, up: float,
     assert wide == across
     assert wide / tall <= WIDEST
     assert elevation_label(nodes) == (
-        "elevation (m)" if times == 1 else f"elevation (m), {times} times exaggerated"
+        "elevation (m)" if times == 1 else f"elevation (m)\n{times} times exaggerated"
     )
 
 
 def test_every_picture_of_a_long_thin_section_has_its_exaggeration(result: Result) -> None:
     """Ten times as long as it is: as wide as three heights in every figure, the field in its true place."""
     distance, elevation = result.axes
-    long = replace(result, axes=(10 * distance, elevation))
+    long = replace(result, axes=(10 * distance, elevation + 2000))
     times = exaggeration(long.axes)
     assert times > 1
     arguments: dict[str, Any] = {"tolerance": 0.02, "surface": None}
     ladder = replace(
-        long.ladder, rungs=tuple(replace(r, axes=(10 * r.axes[0], r.axes[1])) for r in long.ladder.rungs)
+        long.ladder,
+        rungs=tuple(replace(r, axes=(10 * r.axes[0], r.axes[1] + 2000)) for r in long.ladder.rungs),
     )
     long = replace(long, ladder=ladder)
     drawn = {
@@ -389,5 +390,6 @@ def test_every_picture_of_a_long_thin_section_has_its_exaggeration(result: Resul
             extent = axes.get_window_extent().width / axes.get_window_extent().height
             assert extent == pytest.approx(place.width * size[0] / (place.height * size[1]), rel=1e-6)
             assert extent == pytest.approx(np.divide(*proportions(long.axes)), rel=1e-3)
+        assert figure.get_tightbbox().x0 >= 0, "the words at the axis stay on the sheet"
         words = [axes.get_ylabel() for axes in figure.axes] + [text.get_text() for text in figure.texts]
         assert any(f"{times} times exaggerated" in word for word in words), name

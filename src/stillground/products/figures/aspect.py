@@ -36,6 +36,6 @@ def proportions(nodes: tuple[Array, ...]) -> tuple[float, float]:
 
 
 def elevation_label(nodes: tuple[Array, ...]) -> str:
-    """The words at the elevation axis."""
+    """The words at the elevation axis, in two lines where it is exaggerated: small maps are not tall."""
     times = exaggeration(nodes)
-    return "elevation (m)" if times == 1 else f"elevation (m), {times} times exaggerated"
+    return "elevation (m)" if times == 1 else f"elevation (m)\n{times} times exaggerated"
