@@ -378,9 +378,9 @@ def test_a_bent_line_follows_its_stations() -> None:
         placed(bent)
     scene = placed(bent, trace="stations")
     assert_allclose(scene.along, np.repeat(np.arange(31.0), 6))
-    east, north = scene.trace(np.array([-2.0, 5.0, 20.5, 32.0]))
-    assert_allclose(east, [-2.0, 5.0, 12.0, 12.0])
-    assert_allclose(north, [0.0, 0.0, 8.5, 20.0])
+    east, north = scene.trace(np.array([-2.0, 5.0, 11.5, 20.5, 32.0]))
+    assert_allclose(east, [-2.0, 5.0, 11.5, 12.0, 12.0])
+    assert_allclose(north, [0.0, 0.0, 0.0, 8.5, 20.0])
     back = bent.isel(datum=np.r_[0:60, 120:186, 60:120])
     with pytest.raises(SurveyError, match="turns back at the station of row 121"):
         placed(back, trace="stations")

@@ -385,7 +385,7 @@ def test_every_picture_of_a_long_thin_section_has_its_exaggeration(result: Resul
         for axes in maps:
             assert axes.get_aspect() == times
             figure.draw_without_rendering()
-            place, size = axes.get_position(), figure.get_size_inches()
+            place, size = axes.get_position(original=True), figure.get_size_inches()
             # The frame already has the proportions: nothing is shrunk into it.
             extent = axes.get_window_extent().width / axes.get_window_extent().height
             assert extent == pytest.approx(place.width * size[0] / (place.height * size[1]), rel=1e-6)

@@ -216,10 +216,8 @@ class Induction(Kind):
         """Every station of every line with every coil spacing and orientation."""
         if not plan.lines:
             return None
-        names = list(dict.fromkeys(leg.name for leg in plan.lines))
-        ordered = [leg for name in names for leg in plan.lines if leg.name == name]
-        places = np.vstack([leg.positions() for leg in ordered])
-        lines = np.repeat([leg.name for leg in ordered], [leg.count for leg in ordered])
+        places = np.vstack([leg.positions() for leg in plan.lines])
+        lines = np.repeat([leg.name for leg in plan.lines], [leg.count for leg in plan.lines])
         configurations = [(each, way) for way in plan.orientations for each in plan.coil_spacings]
         n_places, n_each = len(places), len(configurations)
         x, y, z = np.repeat(places, n_each, axis=0).T
