@@ -312,6 +312,30 @@ def test_lateral_correlation_beats_station_by_station(noise: float) -> None:
     assert np.sum(joint < alone) >= 10
 
 
+def test_a_calibration_offset_of_one_configuration_is_told_and_taken_up() -> None:
+    """Of 1.5 mS/m in the readings of 2 m coils with vertical dipoles, some three errors."""
+    survey = line(relief=0.4)
+    readings = placed(survey).predict(GAP)
+    offset = np.where(np.arange(186) % 6 == 1, 0.0015, 0.0)
+    survey = measured(survey, readings + offset, 0.02 * readings).assign_attrs(source="line.csv")
+    plain = stillground.reconstruct_survey(survey, kind="induction", **TABLES)
+    assert any("errors.statics = { configuration" in remark for remark in plain.arrays.remarks)
+    statics = TABLES | {"errors": TABLES["errors"] | {"statics": {"configuration": 1.0}}}
+    mended = stillground.reconstruct_survey(survey, kind="induction", **statics)
+    values, units = mended.arrays.extras["configuration_static"]
+    assert units == "S m-1"
+    assert values[1] == pytest.approx(0.0015, rel=0.2)
+    assert np.abs(np.delete(values, 1)).max() < 0.0006
+    axes = mended.arrays.axes
+    truth = GAP.values(np.stack(np.meshgrid(*axes, indexing="ij"), axis=-1).reshape(-1, 2))
+    shallow = (axes[1] > -8.0) & (axes[1] < -0.4)
+    with_, without = (
+        np.sqrt(np.mean((found.arrays.model - truth.reshape(found.arrays.model.shape))[:, shallow] ** 2))
+        for found in (mended, plain)
+    )
+    assert with_ < 0.85 * without
+
+
 @pytest.mark.parametrize(("number", "low"), [(0.1, (0.11, 0.05)), (0.01, (0.011, 0.005))])
 def test_readings_fall_short_as_the_induction_number_grows(number: float, low: tuple[float, float]) -> None:
     """What the warning says, by the exact quadrature response over a uniform half-space.

@@ -207,8 +207,8 @@ class Induction(Kind):
     datum = "reading"
     datum_units = "S m-1"
     axes = ("distance", "elevation")
-    # Along the line a reading sees a point, which in two dimensions takes s > (d - 1) / 2.
-    bounded_above = 0.5
+    # Spread over depth and a point along the line, as an upright line in two dimensions.
+    regularity = -0.5
     Settings = InductionSettings
     Plan = InductionPlan
 
