@@ -10,7 +10,11 @@ import pytest
 from stillground.config import json_schema
 
 
-def test_the_schema_is_one_and_takes_the_demo(demo: Path) -> None:
+CONFIGS = sorted((Path(__file__).parents[2] / "configs").glob("*.toml"))
+
+
+@pytest.mark.parametrize("demo", CONFIGS, ids=lambda config: config.stem)
+def test_the_schema_is_one_and_takes_every_demo(demo: Path) -> None:
     # jsonschema, a general validator of the published standard (draft 2020-12).
     jsonschema = pytest.importorskip("jsonschema")
     schema = json_schema()

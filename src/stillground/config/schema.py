@@ -34,8 +34,10 @@ def json_schema() -> dict[str, Any]:
     choices = []
     definitions: dict[str, Any] = {}
     for plugin in plugins.registered("physics"):
-        schema = config_class(plugins.kind(plugin.name)).model_json_schema()
-        definitions |= schema.pop("$defs", {})
+        # Classes of one name differ from kind to kind.
+        template = f"#/$defs/{plugin.name}.{{model}}"
+        schema = config_class(plugins.kind(plugin.name)).model_json_schema(ref_template=template)
+        definitions |= {f"{plugin.name}.{name}": model for name, model in schema.pop("$defs", {}).items()}
         survey = {"properties": {"kind": {"const": plugin.name}}}
         schema["properties"]["survey"] = {"allOf": [schema["properties"]["survey"], survey]}
         choices.append(schema | {"title": plugin.name})
