@@ -9,7 +9,6 @@ import pytest
 
 from stillground.config import json_schema
 
-
 CONFIGS = sorted((Path(__file__).parents[2] / "configs").glob("*.toml"))
 
 

@@ -180,9 +180,11 @@ def test_every_command_teaches_by_example(stillground: Command) -> None:
 
 def test_plugins_and_schema_print(stillground: Command) -> None:
     listed = stillground("plugins").stdout
-    for name in ("straight-ray", "lsqr", "cgls", "discrepancy", "gcv", "stillground"):
+    for name in ("straight-ray", "induction", "lsqr", "cgls", "discrepancy", "gcv", "stillground"):
         assert name in listed
-    assert json.loads(stillground("schema").stdout)["properties"]["ground"]
+    choices = json.loads(stillground("schema").stdout)["oneOf"]
+    assert {"straight-ray", "induction"} <= {choice["title"] for choice in choices}
+    assert all(choice["properties"]["ground"] for choice in choices)
 
 
 def test_python_gets_a_labelled_result_in_one_call(survey: xr.Dataset) -> None:
