@@ -385,6 +385,8 @@ class Rehearsal:
     total_error, resolved : array, nodal field on the grid rehearsed on
         Root mean square error over twins drawn from the prior at the chosen rule's stops, in the ground
         property's unit, and the share of the truth that comes back, ``cov(fit, truth) / var(truth)``.
+    average_errors : mapping of str to float
+        Root mean square errors of the scene's averages over the same twins.
     """
 
     ratios: Mapping[str, Mapping[str, Array]]
@@ -393,6 +395,7 @@ class Rehearsal:
     left_out: Mapping[str, str]
     total_error: Array
     resolved: Array
+    average_errors: Mapping[str, float] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -431,6 +434,19 @@ class Pattern:
     truth: Array
     returned: Array
     share: Array
+
+
+@dataclass(frozen=True)
+class Average:
+    """A mean of the ground property, with its errors in the property's unit.
+
+    ``noise_part`` is its standard deviation under the noise, NaN where the user broke off before;
+    ``total_error`` the root mean square error over twins drawn from the prior, None without a rehearsal.
+    """
+
+    value: float
+    noise_part: float
+    total_error: float | None
 
 
 @dataclass(frozen=True)
@@ -480,6 +496,8 @@ class Result:
         What the data say of the settings, with what to do.
     interrupted : bool
         The user broke off: this is what had been done by then.
+    averages : mapping of str to Average
+        Means that practice asks for, by what they are over, as "down to 30 m".
     """
 
     property: GroundProperty
@@ -506,6 +524,7 @@ class Result:
     sensitivity: Sensitivity | None
     remarks: tuple[str, ...]
     interrupted: bool = False
+    averages: Mapping[str, Average] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -582,6 +601,13 @@ class Scene(ABC):
     @abstractmethod
     def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> Field:
         """How well the survey visits the ground, as means over about a correlation length."""
+
+    def averages(self, grid: Grid) -> Mapping[str, Array]:
+        """Means of the property that practice asks for, by what they are over: weights of the nodes.
+
+        Shape (n_nodes,) each, of sum 1; none unless a kind has some.
+        """
+        return {}
 
     @abstractmethod
     def predict(self, ground: Ground) -> Array:

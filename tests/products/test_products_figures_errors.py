@@ -13,10 +13,10 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from stillground.products.figures.errors import errors_figure
-from stillground.products.figures.field import shown_change
 from stillground.products.figures.maps import ERROR_COLOURS, GOOD_COLOURS, tiling
 from stillground.products.figures.pattern import pattern_figure
 from stillground.products.figures.sensitivity import sensitivity_figure
+from stillground.products.reading import shown_change
 from stillground.protocols import GroundProperty, Result
 
 from .made_up_results import axes_of, make_patterns

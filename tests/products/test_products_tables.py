@@ -63,6 +63,7 @@ def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result
         "chosen",
         "rules",
         "refinement",
+        "averages",
         "noise",
         "remarks",
         "extras",

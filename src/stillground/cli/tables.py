@@ -14,6 +14,7 @@ from stillground.cli.console import out, say
 from stillground.pipeline.inspect import Plan
 from stillground.pipeline.rehearse import Patterns, Rehearsed
 from stillground.pipeline.run import Done, Outcome
+from stillground.products.averages import read_averages
 from stillground.products.provenance import CAUTION
 from stillground.products.reliability import MESH_DEPENDENT, NO_DATA
 from stillground.protocols import Choice, Ladder, Rehearsal, Result, Sensitivity
@@ -64,6 +65,11 @@ def profile(done: Done) -> None:
             say(f"{name}: {values[0]:.3g}{units}")
         else:
             say(f"{name}: {values[0]:.3g} +- {found.deviation:.2g}{units} (one standard deviation)")
+    averages = read_averages(result)
+    for mean in averages:
+        say(mean.sentence)
+    if averages:
+        say()
     _ladder(result.ladder)
     for sentence in result.remarks:
         say(f"warning: {sentence}")
@@ -235,7 +241,10 @@ def plan(planned: Plan, figure: Path) -> None:
     survey, report = planned.profile.survey, planned.profile.report
     say()
     say(f"{planned.profile.name}: {survey.sizes['datum']} data of {report.rows} rows in {report.source}")
-    counts = ", ".join(f"{len(places)} {what}s" for what, places in planned.profile.scene.positions.items())
+    counts = ", ".join(
+        f"{len(places)} {what}{'s' * (len(places) > 1)}"
+        for what, places in planned.profile.scene.positions.items()
+    )
     say(f"{counts}; errors {report.errors}")
     for fact in planned.profile.scene.facts:
         say(fact)

@@ -20,6 +20,7 @@ from stillground.pipeline.simulate import described_ground
 from stillground.progress import staged
 from stillground.protocols import (
     Array,
+    Average,
     Choice,
     Found,
     Measurement,
@@ -70,13 +71,16 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     finest = top.finest
     chosen_stop = finest.stop(method.choose)
     rung = top.rungs[min(repeated_rung(grids), len(top.rungs) - 1)]
-    scatter = np.full(rung.grid.shape, np.nan)
+    scatter, average_scatter = np.full(rung.grid.shape, np.nan), dict[str, float]()
+    averages = profile.scene.averages
     rehearsal = sensitivity = None
     deviations: dict[str, float] = {}
     interrupted = top.interrupted
     try:
         if not interrupted:
-            scatter = yield from noise_part(rung, chosen_stop, members=_MEMBERS, seed=0)
+            scatter, average_scatter = yield from noise_part(
+                rung, chosen_stop, members=_MEMBERS, seed=0, averages=averages(rung.grid)
+            )
             deviations = extra_deviations(rung)
         if config.rehearsal.twins and not interrupted:
             noise = 1.0 if config.errors.trust else finest.noise
@@ -122,6 +126,14 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         sensitivity=_raised_sensitivity(sensitivity, raise_),
         remarks=_broken_off(top, len(grids), interrupted) + remark(finest, weights, config),
         interrupted=interrupted,
+        averages={
+            name: Average(
+                float(weights @ top.model.reshape(-1)),
+                average_scatter.get(name, np.nan),
+                None if rehearsal is None else rehearsal.average_errors[name],
+            )
+            for name, weights in averages(finest.grid).items()
+        },
     )
 
 
@@ -197,6 +209,7 @@ def rehearse_profile(
             seed=config.rehearsal.seed,
             noise=noise,
             described=described,
+            averages=profile.scene.averages,
         )
     )
 

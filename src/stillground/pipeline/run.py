@@ -211,6 +211,7 @@ def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Pro
             result.name,
             result.arrays,
             positions=scene.positions,
+            differences=scene.differences,
             surface=scene.surface,
             tolerance=config.refinement.tolerance,
             options=RuleOptions(

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import re
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -62,7 +64,7 @@ def picture_dataset(
     xarray.Dataset
         The ground property, its reciprocal where it has one, all `qualities`, ``reliability``,
         ``easting``, ``northing``, ``surface_altitude`` where there is a surface, and ``crs``; in a section
-        the trace as a line geometry and ``section_crs``.
+        the trace as a line geometry and ``section_crs``; averages as scalars, ``<property>_average_<over>``.
     """
     seen = result.property
     section = len(result.axes) == 2
@@ -107,6 +109,7 @@ def picture_dataset(
         variables |= _trace(name, easting.size, {} if crs is None else {"grid_mapping": "crs"})
         frame = cf.section_crs_attributes(crs, result.axes[0], axes["elevation"].to_numpy())
         variables["section_crs"] = xr.Variable((), np.int32(0), frame)
+    variables |= _averages(result)
     if differences is not None:
         variables |= _differences(differences, seen)
     plan = {
@@ -151,16 +154,40 @@ def as_read(field: Field, seen: GroundProperty) -> list[Field]:
     return [field, Field(field.name.replace(seen.name, name, 1), 1 / field.values, units, long_name)]
 
 
+def _averages(result: Result) -> dict[str, xr.Variable]:
+    """Every average and its reciprocal as scalars, its errors in the unit of the property."""
+    seen = result.property
+    variables = {}
+    for over, mean in result.averages.items():
+        place = re.sub(r"\W+", "_", over)
+        fields = as_read(
+            Field(f"{seen.name}_average_{place}", np.array(mean.value), seen.units, seen.long_name), seen
+        )
+        for error, values in (("noise_part", mean.noise_part), ("total_error", mean.total_error)):
+            if values is not None:
+                said = f"{error.replace('_', ' ')} of {seen.long_name}"
+                named = f"{fields[0].name}_{error}"
+                fields.append(Field(named, np.array(values), seen.units, said))
+        for field in fields:
+            labels = {"long_name": f"{field.long_name}, average {over}", "units": field.units}
+            variables[field.name] = xr.Variable((), field.values, labels)
+    return variables
+
+
 def _differences(given: Differences, seen: GroundProperty) -> dict[str, xr.Variable]:
-    """The usual estimate between pairs of elevations."""
+    """The usual estimate between pairs of elevations; a reciprocal is missing where there is none."""
     variables = {
         f"interval_{end}": xr.Variable(
             "interval", values, {"long_name": f"{end} end of the interval, elevation", "units": "m"}
         )
         for end, values in (("lower", given.lower), ("upper", given.upper))
     }
-    for field in as_read(Field(f"{seen.name}_of_interval", given.values, seen.units, ""), seen):
+    plain = Field(f"{seen.name}_of_interval", given.values, seen.units, "")
+    positive = np.where(given.values > 0, given.values, np.nan)
+    for field in (plain, *as_read(replace(plain, values=positive), seen)[1:]):
         labels = {"long_name": f"{given.long_name}: {field.name.split('_')[0]}", "units": field.units}
+        if field is not plain:
+            labels["comment"] = f"Missing where noise makes {seen.name} zero or less."
         variables[field.name] = xr.Variable("interval", field.values.astype(np.float32), labels)
     return variables
 

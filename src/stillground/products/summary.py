@@ -10,6 +10,7 @@ from typing import Any
 
 import numpy as np
 
+from stillground.products.averages import read_averages
 from stillground.products.ladder import rung_spacing
 from stillground.products.ratios import ratio_numbers
 from stillground.protocols import Found, Rehearsal, Result, Sensitivity
@@ -35,7 +36,8 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
     dict
         Of extra unknowns a lone one is told with its ``values`` and posterior ``deviation``, many by their
         ``rms`` and ``largest`` size. ``index`` is the grid convergence index of the rms anomaly, None for
-        ``index_reason``. ``rehearsal`` and ``sensitivity`` are None where they were not asked for.
+        ``index_reason``. ``averages`` are of what people read, as velocity. ``rehearsal`` and
+        ``sensitivity`` are None where they were not asked for.
     """
     ladder, chosen = result.ladder, result.chosen
     return {
@@ -81,6 +83,17 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
                 for rung in ladder.rungs
             ],
         },
+        "averages": [
+            {
+                "name": mean.over,
+                "property": mean.of,
+                "units": mean.units,
+                "value": mean.value,
+                "noise_part": mean.noise_part,
+                "total_error": mean.total_error,
+            }
+            for mean in read_averages(result)
+        ],
         "noise": result.noise,
         "remarks": list(result.remarks),
         "extras": {name: _extra(extra) for name, extra in result.extras.items()},

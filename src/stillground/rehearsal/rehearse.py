@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Generator
+from collections.abc import Callable, Generator, Mapping
 
 import numpy as np
 
@@ -22,6 +22,11 @@ FAMILIES = ("prior", "layers")
 """Of synthetic grounds in every rehearsal, beside a described one."""
 
 
+def no_averages(grid: Grid) -> Mapping[str, Array]:
+    """What most kinds of measurement say of means that practice asks for."""
+    return {}
+
+
 def rehearse(
     coarse: tuple[Grid, Measurement],
     fine: tuple[Grid, Measurement],
@@ -31,6 +36,7 @@ def rehearse(
     seed: int,
     noise: float = 1.0,
     described: Array | None = None,
+    averages: Callable[[Grid], Mapping[str, Array]] = no_averages,
 ) -> Generator[Progress, None, Rehearsal]:
     """Draws grounds, takes their data on a finer grid with the survey's own errors, and lets every rule stop.
 
@@ -49,6 +55,8 @@ def rehearse(
         Size of the errors over what is stated.
     described : array, shape (n_nodes of fine,), optional
         A ground less the background, in the property's unit; it is not scaled.
+    averages : callable
+        From a grid to weights of its nodes by name: means whose errors are wanted.
 
     Yields
     ------
@@ -93,6 +101,7 @@ def rehearse(
     ratios: dict[str, dict[str, Array]] = {}
     left_out: dict[str, str] = {}
     total_error = resolved = np.empty(0)
+    average_errors: dict[str, float] = {}
     for number, (name, grounds) in enumerate(families.items(), start=1):
         truths = _on_coarse(grounds, fine_grid, grid)
         noisy = data[name] + noise * random.standard_normal((n_data, twins))
@@ -110,11 +119,16 @@ def rehearse(
         ratios[name] = _ratios({rule: errors.at(stops[rule]) for rule in applied}, errors.best())
         if name == "prior":
             chosen = back(problem.operator, inside(runs, stops[method.choose]))
-            total_error, resolved = _maps(problem.anomaly(chosen), truths, grid, method)
+            fits = problem.anomaly(chosen)
+            total_error, resolved = _maps(fits, truths, grid, method)
+            wanted = averages(fine_grid)
+            for mean, weights in averages(grid).items():
+                missed = weights @ fits - wanted[mean] @ grounds
+                average_errors[mean] = float(np.sqrt(np.mean(np.square(missed))))
     cost, groups = rank(ratios)
     if not cost:
         raise ConfigError(f"stopping.rules: none applies to all twins: {'; '.join(left_out.values())}")
-    return Rehearsal(ratios, cost, groups, left_out, total_error, resolved)
+    return Rehearsal(ratios, cost, groups, left_out, total_error, resolved, average_errors)
 
 
 def _on_coarse(grounds: Array, fine: Grid, coarse: Grid) -> Array:

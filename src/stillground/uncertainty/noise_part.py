@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Generator
+from collections.abc import Generator, Mapping
 from itertools import islice
+from types import MappingProxyType
 
 import numpy as np
 
@@ -16,8 +17,13 @@ _SHARE = 0.5
 
 
 def noise_part(
-    reconstruction: Reconstruction, stop: float, *, members: int, seed: int
-) -> Generator[Progress, None, Array]:
+    reconstruction: Reconstruction,
+    stop: float,
+    *,
+    members: int,
+    seed: int,
+    averages: Mapping[str, Array] = MappingProxyType({}),
+) -> Generator[Progress, None, tuple[Array, dict[str, float]]]:
     """Standard deviation of the answer under the noise, at a fixed stop, in the property's unit.
 
     Half the noise is drawn anew on top of the data, the iteration repeated to the same stop, and the
@@ -34,6 +40,8 @@ def noise_part(
     members : int
         32 give it to some 12 %.
     seed : int
+    averages : mapping of str to array, shape (n_nodes,)
+        Weights of means of the ground property.
 
     Yields
     ------
@@ -43,6 +51,8 @@ def noise_part(
     -------
     array, nodal field
         A local mean over half a correlation length of the variance, its root.
+    dict of str to float
+        Standard deviations of the averages.
     """
     grid, method = reconstruction.grid, reconstruction.method
     whole = int(stop)
@@ -56,5 +66,8 @@ def noise_part(
         yield Progress("noise part of the error", step.index, whole + 1)
     solutions = back(problem.operator, before + (stop - whole) * (after - before))
     grounds = problem.anomaly(solutions)
-    scatter = np.mean(np.square(grounds[:, 1:] - grounds[:, :1]), axis=1) / _SHARE**2
-    return np.sqrt(grid.local_mean(scatter, method.correlation))
+    moved = (grounds[:, 1:] - grounds[:, :1]) / _SHARE
+    scatter = np.sqrt(grid.local_mean(np.mean(np.square(moved), axis=1), method.correlation))
+    return scatter, {
+        name: float(np.sqrt(np.mean(np.square(weights @ moved)))) for name, weights in averages.items()
+    }

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from pathlib import Path
 
+from stillground.products.figures.column import column_figure
 from stillground.products.figures.errors import errors_figure
 from stillground.products.figures.ladder import ladder_figure
 from stillground.products.figures.pattern import pattern_figure
@@ -14,8 +15,9 @@ from stillground.products.figures.rules import rules_figure
 from stillground.products.figures.section import section_figure
 from stillground.products.figures.sensitivity import sensitivity_figure
 from stillground.products.figures.sheet import write_figure
+from stillground.products.picture import product
 from stillground.products.raster import Surface
-from stillground.protocols import Array, Pattern, Rehearsal, Result, RuleOptions
+from stillground.protocols import Array, Differences, Pattern, Rehearsal, Result, RuleOptions
 
 
 def write_figures(
@@ -27,11 +29,12 @@ def write_figures(
     options: RuleOptions,
     surface: Surface | None,
     positions: Mapping[str, Array],
+    differences: Differences | None = None,
 ) -> tuple[Path, ...]:
     """Write the figures of a result as PNG and PDF.
 
-    ``<profile>_section``, ``_errors``, ``_rules``, ``_ladder`` and ``_residuals`` always, ``_rehearsal``
-    and ``_sensitivity`` where the result has them.
+    ``<profile>_section`` (of a column ``_column``), ``_errors``, ``_rules``, ``_ladder`` and ``_residuals``
+    always, ``_rehearsal`` and ``_sensitivity`` where the result has them.
 
     Parameters
     ----------
@@ -39,22 +42,35 @@ def write_figures(
         Is created.
     profile : str
     result : Result
-        On axes (distance, elevation).
+        On axes (distance, elevation) or (elevation,).
     tolerance : float
         Of the refinement, relative to the anomaly.
     options : RuleOptions
         As the rules took them.
     surface : pair of arrays (distance, elevation), m, or None
-    positions : mapping of str to array, shape (n, 2)
-        Distance and elevation by what stands there, m.
+    positions : mapping of str to array, shape (n, n_axes)
+        Places by what stands there, m.
+    differences : Differences, optional
+        In a column, the usual estimate to draw behind the answer.
 
     Raises
     ------
     OutputError
         When the place cannot be written.
     """
+    if len(result.axes) == 1:
+        picture = column_figure(
+            profile,
+            result,
+            tolerance=tolerance,
+            surface=surface,
+            positions=positions,
+            differences=differences,
+        )
+    else:
+        picture = section_figure(profile, result, tolerance=tolerance, surface=surface, positions=positions)
     figures = {
-        "section": section_figure(profile, result, tolerance=tolerance, surface=surface, positions=positions),
+        product(len(result.axes)): picture,
         "errors": errors_figure(profile, result, tolerance=tolerance, surface=surface),
         "rules": rules_figure(profile, result, options=options),
         "ladder": ladder_figure(profile, result, tolerance=tolerance, surface=surface),

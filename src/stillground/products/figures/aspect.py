@@ -14,8 +14,8 @@ def exaggeration(nodes: tuple[Array, ...]) -> int:
 
     Parameters
     ----------
-    nodes : tuple of two arrays
-        Distance and elevation, m, ascending.
+    nodes : tuple of array
+        Distance and elevation, or elevation alone, m, ascending.
 
     Examples
     --------
@@ -25,6 +25,8 @@ def exaggeration(nodes: tuple[Array, ...]) -> int:
     >>> exaggeration((np.array([0.0, 60.0]), np.array([204.0, 212.0])))
     3
     """
+    if len(nodes) == 1:
+        return 1
     across, up = (float(axis[-1] - axis[0]) for axis in nodes)
     return next((step for step in STEPS if across <= WIDEST * up * step), STEPS[-1])
 

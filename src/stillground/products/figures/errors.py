@@ -6,7 +6,7 @@ from matplotlib.colors import Normalize
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 
-from stillground.products.figures.field import hatch_key, shown_change, shown_name
+from stillground.products.figures.field import hatch_key, shown_name
 from stillground.products.figures.maps import (
     ERROR_COLOURS,
     GAP,
@@ -19,6 +19,7 @@ from stillground.products.figures.maps import (
 )
 from stillground.products.figures.sheet import FOOT, HEADING, INK, sheet, styled
 from stillground.products.raster import Surface, ground
+from stillground.products.reading import shown_change
 from stillground.products.reliability import reliability
 from stillground.protocols import Result
 
@@ -36,7 +37,7 @@ def errors_figure(profile: str, result: Result, *, tolerance: float, surface: Su
     ----------
     profile : str
     result : Result
-        On axes (distance, elevation).
+        On axes (distance, elevation) or (elevation,).
     tolerance : float
         As for `picture_dataset`.
     surface : pair of arrays (distance, elevation), m, or None
@@ -51,7 +52,7 @@ def errors_figure(profile: str, result: Result, *, tolerance: float, surface: Su
     else:
         errors["Total error"] = shown_change(seen, result.model, rehearsal.total_error)
         said += ". Total error: root mean square on synthetic ground drawn from the prior"
-    said += f". Rms anomaly: {shown_anomaly(result):.2g} {units}"
+    said += f". Rms anomaly: {shown_anomaly(result):.3g} {units}"
     scale = error_scale(result, list(errors.values()), flags)
     maps = [
         Map(title, f"of {name} ({units})", values, scale, ERROR_COLOURS) for title, values in errors.items()

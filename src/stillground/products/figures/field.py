@@ -30,26 +30,6 @@ HATCHES = {POORLY_COVERED: "////", MESH_DEPENDENT: "...."}
 HATCH_NAMES = {POORLY_COVERED: "poorly covered", MESH_DEPENDENT: "depends on the grid"}
 
 
-def shown(seen: GroundProperty, values: Array) -> tuple[Array, str, str]:
-    """Values as people read them, with long name and units: the reciprocal where there is one."""
-    if seen.reciprocal is None:
-        return values, seen.long_name, seen.units
-    _, units, long_name = seen.reciprocal
-    return 1 / values, long_name, units
-
-
-def shown_change(seen: GroundProperty, model: Array, change: Array) -> Array:
-    """Small changes or errors of the property at its values as those of what people read.
-
-    Examples
-    --------
-    >>> slowness = GroundProperty("slowness", "s m-1", "slowness", ("velocity", "m s-1", "velocity"))
-    >>> shown_change(slowness, np.array([1 / 2000]), np.array([5e-6]))
-    array([20.])
-    """
-    return change if seen.reciprocal is None else change / model**2
-
-
 def shown_name(seen: GroundProperty) -> tuple[str, str]:
     """Name and units of what people read, as ``velocity`` and ``m s⁻¹``."""
     name, units = (seen.name, seen.units) if seen.reciprocal is None else seen.reciprocal[:2]

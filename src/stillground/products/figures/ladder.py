@@ -7,12 +7,24 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import LogLocator, NullLocator
 
 from stillground.products.figures.aspect import exaggeration
-from stillground.products.figures.field import colour_scale, draw_field, shown
-from stillground.products.figures.maps import tiling
-from stillground.products.figures.sheet import FOOT, HEADING, LINE, MUTED, TEAL, panel, sheet, styled
+from stillground.products.figures.curves import draw_curve, frame_column
+from stillground.products.figures.field import colour_scale, draw_field
+from stillground.products.figures.maps import GOOD_COLOURS, tiling
+from stillground.products.figures.sheet import (
+    FOOT,
+    HEADING,
+    LINE,
+    MUTED,
+    TEAL,
+    panel,
+    sheet,
+    styled,
+    unit_text,
+)
 from stillground.products.ladder import rung_spacing
 from stillground.products.raster import Surface, ground
-from stillground.products.reliability import reliability
+from stillground.products.reading import shown
+from stillground.products.reliability import NO_DATA, RELIABLE, reliability
 from stillground.protocols import Ladder, Result
 
 MAPS = (3.7, 3.5)
@@ -27,7 +39,7 @@ def ladder_figure(profile: str, result: Result, *, tolerance: float, surface: Su
     ----------
     profile : str
     result : Result
-        On axes (distance, elevation).
+        On axes (distance, elevation) or (elevation,).
     tolerance : float
         Of the refinement, relative to the anomaly.
     surface : pair of arrays (distance, elevation), m, or None
@@ -54,7 +66,10 @@ def ladder_figure(profile: str, result: Result, *, tolerance: float, surface: Su
         color=MUTED,
         ha="center",
     )
-    _rungs(figure, result, surface, tolerance, (3.55, bottom - 0.3))
+    if len(result.axes) == 1:
+        _curves(figure, result, surface, (4.1, bottom, 3.1, body))
+    else:
+        _rungs(figure, result, surface, tolerance, (3.55, bottom - 0.3))
     return figure
 
 
@@ -153,3 +168,36 @@ def _rungs(
         axes.set(xticks=[], yticks=[])
         axes.spines[:].set_visible(False)
         axes.set_title(f"{rung_spacing(rung):g} m · {rung.n_nodes} nodes", size=7)
+
+
+def _curves(
+    figure: Figure,
+    result: Result,
+    surface: Surface | None,
+    place: tuple[float, float, float, float],
+) -> None:
+    """Rungs over one another, the finest darkest: where only that one is seen, they agree."""
+    rungs = result.ladder.rungs
+    values, long_name, units = shown(result.property, result.model)
+    scale = colour_scale(values, np.where(ground(result.axes, surface), RELIABLE, NO_DATA).astype(np.int8))
+    axes = panel(figure, *place)
+    shades = GOOD_COLOURS(np.linspace(0.4, 1.0, len(rungs)) if len(rungs) > 1 else [1.0])
+    for rung, shade in zip(rungs, shades, strict=True):
+        draw_curve(
+            axes,
+            rung.axes[0],
+            shown(result.property, rung.model)[0],
+            flags=None,
+            colour=shade,
+            label=f"{rung_spacing(rung):g} m · {rung.n_nodes} nodes",
+        )
+    frame_column(axes, result.axes[0], surface)
+    low, high = float(scale.vmin or 0.0), float(scale.vmax or 0.0)
+    room = 0.08 * (high - low)
+    axes.set(
+        xlim=(low - room, high + room),
+        xlabel=f"{long_name} ({unit_text(units)})",
+        ylabel="elevation (m)",
+        title="the rungs over one another",
+    )
+    axes.legend(loc="best", frameon=True, facecolor=axes.get_facecolor(), edgecolor="none")

@@ -11,12 +11,14 @@ from matplotlib.axes import Axes
 from matplotlib.cm import ScalarMappable
 from matplotlib.colors import Normalize
 from matplotlib.figure import Figure
+from matplotlib.lines import Line2D
 from matplotlib.patches import Patch, Rectangle
 
 from stillground.products.figures.aspect import elevation_label, proportions
+from stillground.products.figures.curves import draw_curve, frame_column
 from stillground.products.figures.field import HATCHES, draw_field, frame_ground
 from stillground.products.figures.maps import GOOD_COLOURS, PIXELS, Tiling, tiling
-from stillground.products.figures.sheet import FOOT, HEADING, MARGIN, MUTED, PAPER, panel, sheet, styled
+from stillground.products.figures.sheet import FOOT, HEADING, MARGIN, MUTED, PAPER, TEAL, panel, sheet, styled
 from stillground.products.pattern import BACK
 from stillground.products.raster import Surface
 from stillground.products.reliability import POORLY_COVERED
@@ -30,6 +32,12 @@ NAMES, ABOVE, BAR = 1.05, 0.3, 0.72
 """Room for words before and above the maps and for the scale below, inches."""
 SMALLEST, KEY = 1.75, 1.0
 """Width of the map of sizes where it stands beside the others, and room for words below it, inches."""
+SAID = (
+    "Synthetic patterns, as strong as the survey's own signal and with its errors, through the survey "
+    "and its stop. One exercise and no measure of resolution: it depends on how a pattern falls"
+)
+CURVE, ROW = (0.78, 3.6), 7
+"""Size of a column's panel, inches, and how many stand in a row."""
 
 
 @styled
@@ -43,13 +51,15 @@ def pattern_figure(
     profile : str
     patterns : tuple of Pattern
         Every name with every size; the map of sizes is drawn where there are ``bodies``.
-    axes : tuple of two arrays
-        Distance and elevation of the patterns' nodes, m.
+    axes : tuple of array
+        Distance and elevation of the patterns' nodes, or elevation alone, m.
     surface : pair of arrays (distance, elevation), m, or None
     """
     names = list(dict.fromkeys(pattern.name for pattern in patterns))
     ordered = sorted(patterns, key=lambda pattern: (pattern.size, names.index(pattern.name)))
     bodies = [pattern for pattern in ordered if pattern.name == "bodies"]
+    if len(axes) == 1:
+        return _column(profile, ordered, bodies, axes[0], surface)
     across, up = proportions(axes)
     beside = bool(bodies) and up > across
 
@@ -62,8 +72,7 @@ def pattern_figure(
         WIDTH,
         bottom + body + ABOVE + HEADING,
         f"{profile}: what comes back",
-        "Synthetic patterns, as strong as the survey's own signal and with its errors, through the survey "
-        "and its stop. One exercise and no measure of resolution: it depends on how a pattern falls",
+        SAID,
     )
     _patterns(figure, ordered, axes, tiles, bottom, surface)
     if bodies:
@@ -162,3 +171,53 @@ def _smallest(
         columnspacing=1.2,
         handletextpad=0.5,
     )
+
+
+def _column(
+    profile: str, patterns: list[Pattern], bodies: list[Pattern], elevation: Array, surface: Surface | None
+) -> Figure:
+    """What came back of each pattern over what went in, and where bodies of each size come back."""
+    step = (CURVE[0] + 0.15, CURVE[1] + 0.75)
+    n_panels = len(patterns) + bool(bodies)
+    rows = -(-n_panels // ROW)
+    bottom = FOOT + 0.75
+    figure = sheet(
+        WIDTH, bottom + rows * step[1] - 0.75 + HEADING + 0.35, f"{profile}: what comes back", SAID
+    )
+
+    def panel_at(number: int) -> Axes:
+        row, column = divmod(number, ROW)
+        axes = panel(figure, 0.7 + column * step[0], bottom + (rows - 1 - row) * step[1], *CURVE)
+        axes.set_title(" ")
+        if column:
+            axes.tick_params(labelleft=False)
+        else:
+            axes.set_ylabel(elevation_label(nodes))
+        return axes
+
+    for number, pattern in enumerate(patterns):
+        axes = panel_at(number)
+        draw_curve(axes, elevation, pattern.truth, flags=None, colour=MUTED, lw=0.7)
+        draw_curve(axes, elevation, pattern.returned, flags=None, colour=TEAL)
+        frame_column(axes, elevation, surface)
+        axes.set(xlim=(-1.6, 1.6), xticks=[-1, 0, 1])
+        axes.set_title(f"{pattern.name}\n{pattern.size:g} m", size=7)
+    if bodies:
+        axes = panel_at(len(patterns))
+        for place, body in enumerate(bodies):
+            back = body.share >= BACK
+            axes.fill_betweenx(elevation, place + 0.1, place + 0.9, where=back, color=TEAL, lw=0)
+        frame_column(axes, elevation, surface)
+        axes.set(xlim=(0, len(bodies)), xlabel="size (m)")
+        axes.set_xticks([place + 0.5 for place in range(len(bodies))], [f"{body.size:g}" for body in bodies])
+        axes.set_title("bodies come\nback here", size=7)
+    figure.legend(
+        handles=[
+            Line2D([], [], color=MUTED, lw=0.7, label="in"),
+            Line2D([], [], color=TEAL, lw=1.6, label="back, over the pattern's amplitude"),
+        ],
+        loc="lower center",
+        bbox_to_anchor=(0.5, (FOOT + 0.02) / figure.get_figheight()),
+        ncols=2,
+    )
+    return figure

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
+import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.lines import Line2D
 
@@ -19,9 +20,15 @@ _SIGNS: dict[str, dict[str, Any]] = {
 
 
 def draw_positions(axes: Axes, positions: Mapping[str, Array]) -> None:
-    """Draw positions by what stands there, (distance, elevation) in m, shape (n, 2); sources on top."""
+    """Draw positions by what stands there, (distance, elevation) in m; sources on top.
+
+    Of a column, elevations alone, they stand on the left edge.
+    """
     for name, places in sorted(positions.items(), key=lambda item: item[0] == "source"):
-        axes.plot(*places.T, **_sign(name), clip_on=False, zorder=4)
+        section = places.shape[1] > 1
+        across = places[:, 0] if section else np.zeros(len(places))
+        where = axes.transData if section else axes.get_yaxis_transform()
+        axes.plot(across, places[:, -1], **_sign(name), transform=where, clip_on=False, zorder=4)
 
 
 def position_key(positions: Mapping[str, Array]) -> list[Line2D]:

@@ -30,10 +30,15 @@ def residuals_figure(profile: str, result: Result) -> Figure:
     ----------
     profile : str
     result : Result
-        Its first two groupings span the matrix; with fewer, residuals are drawn in the table's order.
+        The first two groupings span the matrix, of those that are neither one group nor one for each
+        datum; with fewer, residuals are drawn in the table's order.
     """
     residual = (result.observed - result.predicted) / result.errors
-    groupings = list(result.groupings.items())[:2]
+    groupings = [
+        (name, numbers)
+        for name, numbers in result.groupings.items()
+        if 1 < int(numbers.max()) + 1 < residual.size
+    ][:2]
     below = 2.1 if groupings else 0.0
     bottom = FOOT + 0.5
     spread = f"mean {residual.mean():.2f}, spread {residual.std():.2f}".replace("-", "−")

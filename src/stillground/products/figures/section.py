@@ -8,10 +8,11 @@ from matplotlib.cm import ScalarMappable
 from matplotlib.figure import Figure
 
 from stillground.products.figures.aspect import elevation_label, proportions
-from stillground.products.figures.field import FIELD_COLOURS, colour_scale, draw_field, hatch_key, shown
+from stillground.products.figures.field import FIELD_COLOURS, colour_scale, draw_field, hatch_key
 from stillground.products.figures.positions import draw_positions, position_key
 from stillground.products.figures.sheet import FOOT, HEADING, panel, sheet, styled, unit_text
 from stillground.products.raster import Surface, ground
+from stillground.products.reading import shown
 from stillground.products.reliability import reliability
 from stillground.protocols import Array, Result
 

@@ -6,7 +6,7 @@ from matplotlib.colors import Normalize
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 
-from stillground.products.figures.field import hatch_key, shown_change, shown_name
+from stillground.products.figures.field import hatch_key, shown_name
 from stillground.products.figures.maps import (
     ERROR_COLOURS,
     GAP,
@@ -28,6 +28,7 @@ from stillground.products.figures.sheet import (
     styled,
 )
 from stillground.products.raster import Surface, ground
+from stillground.products.reading import shown_change
 from stillground.products.reliability import reliability
 from stillground.protocols import Result, Variation
 
@@ -45,7 +46,7 @@ def sensitivity_figure(profile: str, result: Result, *, tolerance: float, surfac
     ----------
     profile : str
     result : Result
-        On axes (distance, elevation), with ``sensitivity``.
+        On axes (distance, elevation) or (elevation,), with ``sensitivity``.
     tolerance : float
         As for `picture_dataset`.
     surface : pair of arrays (distance, elevation), m, or None

@@ -11,11 +11,13 @@ from matplotlib.colors import LinearSegmentedColormap
 from matplotlib.figure import Figure
 
 from stillground.products.figures.aspect import elevation_label, proportions
-from stillground.products.figures.field import colour_scale, draw_field, shown, shown_name
+from stillground.products.figures.curves import draw_curve, frame_column
+from stillground.products.figures.field import colour_scale, draw_field, shown_name
 from stillground.products.figures.positions import draw_positions
 from stillground.products.figures.sheet import FOOT, HEADING, INK, TEAL, panel, sheet, styled, unit_text
 from stillground.products.raster import Surface, ground
-from stillground.protocols import Array, Field, GroundProperty
+from stillground.products.reading import shown
+from stillground.protocols import Array, Field, GroundProperty, Integers
 
 # Not the colours of the ground's properties: coverage says how well, not what.
 COVERAGE_COLOURS = LinearSegmentedColormap.from_list("coverage", ["#fffefb", "#bcd3cf", TEAL])
@@ -41,30 +43,71 @@ def survey_figure(
     Parameters
     ----------
     profile : str
-    paths : pair of array, shape (n_data, 2) each, or None
-        Distance and elevation of both ends of every datum's way, m.
-    positions : mapping of str to array, shape (n, 2)
+    paths : pair of array, shape (n_data, n_axes) each, or None
+        Both ends of every datum's way, m; in a column they are not drawn.
+    positions : mapping of str to array, shape (n, n_axes)
     apparent : array, shape (n_data,)
         The property that would explain each datum alone, in the units of ``seen``.
     against : mapping of str to array, shape (n_data,)
         What it is drawn against, by names with units.
     seen : GroundProperty
-    nodes : tuple of two arrays
-        Distance and elevation of the coverage's nodes, m, ascending.
+    nodes : tuple of array
+        Distance and elevation of the coverage's nodes, or elevation alone, m, ascending.
     coverage : Field
     surface : pair of arrays (distance, elevation), m, or None
     """
     n_data = apparent.size
     drawn = np.unique(np.linspace(0, n_data - 1, MOST_RAYS).astype(int))
-    said = "" if drawn.size == n_data or paths is None else f", {drawn.size} of their rays drawn"
+    said = (
+        ""
+        if drawn.size == n_data or paths is None or len(nodes) == 1
+        else f", {drawn.size} of their rays drawn"
+    )
+    covered = coverage.long_name + ("" if coverage.units == "1" else f" ({unit_text(coverage.units)})")
     bottom = FOOT + 0.5
     figure = sheet(
         7.4,
         bottom + PICTURE[1] + HEADING + 0.2,
         f"{profile}: survey",
-        f"{n_data} data{said}, over {coverage.long_name} ({unit_text(coverage.units)})",
+        f"{n_data} data{said}, {'beside' if len(nodes) == 1 else 'over'} {covered}",
     )
 
+    if len(nodes) == 1:
+        axes = panel(figure, 0.65, bottom, *PICTURE)
+        axes.fill_betweenx(nodes[0], 0, coverage.values, color=COVERAGE_COLOURS(0.5), lw=0)
+        draw_curve(axes, nodes[0], coverage.values, flags=None, colour=TEAL)
+        frame_column(axes, nodes[0], surface)
+        axes.set_xlim(0, None)
+        axes.set_xlabel(covered)
+        draw_positions(axes, positions)
+        axes.set_ylabel(elevation_label(nodes))
+    else:
+        _section(figure, bottom, paths, positions, drawn, nodes, coverage, surface)
+
+    apparent = shown(seen, apparent)[0]
+    name, units = shown_name(seen)
+    label = f"apparent {name} ({units})"
+    rows = max(len(against), 1)
+    height = (PICTURE[1] + 0.75) / rows - 0.75
+    for row, (beside, values) in enumerate(against.items()):
+        axes = panel(figure, 5.05, bottom + (rows - 1 - row) * (height + 0.75), 2.15, height)
+        axes.plot(values, apparent, "o", ms=2.4, color=TEAL, alpha=0.4, mew=0)
+        axes.axhline(np.median(apparent), color=INK, lw=0.8, ls=(0, (5, 3)), label="median")
+        axes.set(xlabel=beside, ylabel=label)
+        axes.legend(loc="best", borderpad=0.1)
+    return figure
+
+
+def _section(
+    figure: Figure,
+    bottom: float,
+    paths: tuple[Array, Array] | None,
+    positions: Mapping[str, Array],
+    drawn: Integers,
+    nodes: tuple[Array, ...],
+    coverage: Field,
+    surface: Surface | None,
+) -> None:
     across, up = proportions(nodes)
     inches = min(PICTURE[0] / across, PICTURE[1] / up)
     width, height = across * inches, up * inches
@@ -83,16 +126,3 @@ def survey_figure(
         ScalarMappable(scale, COVERAGE_COLOURS), cax=panel(figure, 0.65 + width + 0.1, place[1], 0.12, height)
     )
     bar.outline.set_linewidth(0.5)
-
-    apparent = shown(seen, apparent)[0]
-    name, units = shown_name(seen)
-    label = f"apparent {name} ({units})"
-    rows = max(len(against), 1)
-    height = (PICTURE[1] + 0.75) / rows - 0.75
-    for row, (beside, values) in enumerate(against.items()):
-        axes = panel(figure, 5.05, bottom + (rows - 1 - row) * (height + 0.75), 2.15, height)
-        axes.plot(values, apparent, "o", ms=2.4, color=TEAL, alpha=0.4, mew=0)
-        axes.axhline(np.median(apparent), color=INK, lw=0.8, ls=(0, (5, 3)), label="median")
-        axes.set(xlabel=beside, ylabel=label)
-        axes.legend(loc="upper right", borderpad=0.1)
-    return figure
