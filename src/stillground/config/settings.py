@@ -261,10 +261,24 @@ class OutputSettings(Table):
 
 
 class Point(Table):
-    """A point of the section."""
+    """A point of the ground; a column has no distance."""
 
-    distance: Coordinate
+    distance: Coordinate | None = None
     elevation: Coordinate
+
+    @model_validator(mode="after")
+    def _has_every_axis(self, info: ValidationInfo) -> Self:
+        column = "distance" not in (info.context or {})["kind"].axes
+        if column and self.distance is not None:
+            raise ValueError("leave distance out: the ground of this kind of survey is a column")
+        if not column and self.distance is None:
+            raise ValueError("distance is missing")
+        return self
+
+    @property
+    def place(self) -> tuple[float, ...]:
+        """Coordinates along the axes of the ground, m."""
+        return (self.elevation,) if self.distance is None else (self.distance, self.elevation)
 
 
 class BlobSettings(Table):
@@ -290,6 +304,12 @@ class LayerSettings(Table):
     bottom: Coordinate | None = None
     dip: Number = Field(0.0, description="rise over run along the profile; top and bottom hold at distance 0")
     value: PropertyValue
+
+    @model_validator(mode="after")
+    def _dips_along_something(self, info: ValidationInfo) -> Self:
+        if self.dip and "distance" not in (info.context or {})["kind"].axes:
+            raise ValueError("leave dip out: the ground of this kind of survey is a column of level layers")
+        return self
 
 
 class BoxSettings(Table):

@@ -25,13 +25,9 @@ def described_ground(settings: SimulateSettings, axes: tuple[str, ...]) -> Groun
         top = np.inf if layer.top is None else layer.top
         bodies.append(Layer(layer.value - base, bottom, top, layer.dip))
     for box in settings.box:
-        lower, upper = ((p.distance, p.elevation) for p in (box.lower, box.upper))
-        bodies.append(Box(box.value - base, lower, upper))
+        bodies.append(Box(box.value - base, box.lower.place, box.upper.place))
     for shape, given in ((Blob, settings.blob), (Disc, settings.disc)):
-        bodies += [
-            shape(body.value - base, (body.centre.distance, body.centre.elevation), body.radii.along(axes))
-            for body in given
-        ]
+        bodies += [shape(body.value - base, body.centre.place, body.radii.along(axes)) for body in given]
     return Ground(base, tuple(bodies))
 
 

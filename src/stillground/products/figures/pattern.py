@@ -192,7 +192,7 @@ def _column(
         if column:
             axes.tick_params(labelleft=False)
         else:
-            axes.set_ylabel(elevation_label(nodes))
+            axes.set_ylabel("elevation (m)")
         return axes
 
     for number, pattern in enumerate(patterns):
