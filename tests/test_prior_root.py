@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
@@ -13,8 +14,9 @@ from pylops.utils import dottest
 from scipy.special import kv
 
 from stillground.errors import GridError
-from stillground.grid import Grid, ladder
+from stillground.grid import Grid, carry, ladder
 from stillground.operators.prior_root import PriorRoot
+from stillground.quadrature import RULES
 
 SHAPES = [
     Grid((0.0,), (0.5,), (2,)),
@@ -22,6 +24,9 @@ SHAPES = [
     Grid((0.0, -4.0), (0.5, 0.3), (2, 7)),
     Grid((0.0, -4.0), (1.0, 0.25), (5, 9)),
     Grid((0.0, 0.0, -4.0), (1.0, 0.5, 0.25), (3, 4, 5)),
+    Grid((0.0,), (0.5,), (9,), RULES["simpson"]),
+    Grid((0.0, -4.0), (1.0, 0.25), (6, 9), RULES["gauss-3"]),
+    Grid((0.0, -4.0), (1.0, 0.25), (5, 9), weighted=False),
 ]
 
 
@@ -37,7 +42,9 @@ def whittle(r: np.ndarray) -> np.ndarray:
     return np.where(r > 0, r * kv(1, np.where(r > 0, r, 1.0)), 1.0)
 
 
-@pytest.mark.parametrize("grid", SHAPES, ids=lambda grid: "x".join(map(str, grid.shape)))
+@pytest.mark.parametrize(
+    "grid", SHAPES, ids=lambda grid: f"{grid.rule.name}-{'x'.join(map(str, grid.shape))}"
+)
 @pytest.mark.parametrize("smoothness", [0.0, 0.7, 2.0])
 def test_the_adjoint_is_the_transpose(grid: Grid, smoothness: float) -> None:
     root = PriorRoot(grid, np.linspace(0.6, 1.7, len(grid.shape)), smoothness, 1.3)
@@ -154,3 +161,57 @@ def test_lengths_that_are_no_lengths_are_refused(lengths: tuple[float, ...]) -> 
 def test_a_smoothness_that_is_no_number_from_zero_up_is_refused(smoothness: float) -> None:
     with pytest.raises(GridError, match="smoothness"):
         PriorRoot(SHAPES[3], (1.0, 1.0), smoothness)
+
+
+@pytest.mark.parametrize(("name", "order"), [("simpson", 3), ("gauss-2", 2), ("gauss-3", 2)])
+def test_the_covariance_at_fixed_points_does_not_know_the_rule(name: str, order: int) -> None:
+    """Outside source: (1 + r/l) exp(-r/l) for s = 2 on a line (Whittle 1954; Matern 3/2, from memory)."""
+    places = Grid((0.0,), (1.0,), (17,))
+    far = np.abs(places.axes[0] - 8) < 4
+    r = np.abs(places.axes[0] - 8) / 0.75
+    gaps = []
+    for intervals in (128, 256):
+        rule = RULES[name]
+        grid = Grid((0.0,), (16 / intervals,), (rule.n_nodes(intervals),), rule)
+        root = carry(PriorRoot(grid, (0.75,), 2.0).todense(), grid, places)
+        even = Grid((0.0,), (16 / intervals,), (intervals + 1,))
+        trapezoid = carry(PriorRoot(even, (0.75,), 2.0).todense(), even, places)
+        gaps.append(np.abs(root @ root.T - trapezoid @ trapezoid.T).max())
+        # Waves that panels confuse hold (h/l)^3 of the variance; between Gauss nodes, values are linear.
+        bound = (grid.spacing[0] / 0.75) ** order
+        assert_allclose((root @ root.T)[8][far], ((1 + r) * np.exp(-r))[far], atol=bound)
+        # At the edges too.
+        assert gaps[-1] < bound
+    assert gaps[0] / gaps[1] == pytest.approx(2**order, rel=0.15)
+
+
+def test_waves_made_orthogonal_are_the_cosine_transform_where_they_were() -> None:
+    # scipy.fft.dctn of type 1, orthogonal with the trapezoid's weights, stands behind the plain one.
+    grid = Grid((0.0,), (0.5,), (33,), replace(RULES["trapezoid"], name="trapezoid, spelt out"))
+    plain = PriorRoot(Grid((0.0,), (0.5,), (33,)), (2.0,), 1.0)
+    assert_allclose(PriorRoot(grid, (2.0,), 1.0).todense(), plain.todense(), atol=1e-13)
+
+
+@pytest.mark.parametrize("name", RULES)
+@pytest.mark.parametrize("intervals", [2, 6, 64])
+def test_the_white_root_of_every_rule_is_the_quadrature_alone(name: str, intervals: int) -> None:
+    rule = RULES[name]
+    grid = Grid((0.0,), (0.5,), (rule.n_nodes(intervals),), rule)
+    dense = PriorRoot(grid, (1.0,), 0.0).todense()
+    covariance = dense @ dense.T * grid.weights()
+    assert_allclose(covariance, covariance[0, 0] * np.eye(grid.n_nodes), atol=1e-12 * covariance[0, 0])
+
+
+def test_without_weights_the_root_takes_the_field_for_a_vector() -> None:
+    grid = Grid((0.0,), (0.5,), (9,), RULES["simpson"], weighted=False)
+    root = PriorRoot(grid, (1.0,), 2.0, 3.0)
+    assert_allclose(root.todense(), 3.0 * np.eye(9), atol=0)
+
+
+@pytest.mark.parametrize(
+    "grid", SHAPES, ids=lambda grid: f"{grid.rule.name}-{'x'.join(map(str, grid.shape))}"
+)
+def test_the_inverse_undoes_the_root(grid: Grid) -> None:
+    root = PriorRoot(grid, np.linspace(0.6, 1.7, len(grid.shape)), 1.0)
+    field = np.random.default_rng(2).normal(size=(grid.n_nodes, 2))
+    assert_allclose(root.matmat(root.inverse(field)), field, atol=1e-11)

@@ -1,14 +1,15 @@
 """Nodal rectilinear grids: extent, quadrature weights, refinement and transfer between rungs.
 
 A field on a grid is the function that is linear along each axis between its nodal values
-(bilinear in two dimensions), so a finer rung holds a coarser rung's function exactly.
+(bilinear in two dimensions), so a finer rung holds a coarser rung's function exactly where it holds
+its nodes: with all rules of quadrature but Gauss'.
 """
 
 from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import reduce
 
 import numpy as np
@@ -18,22 +19,29 @@ from scipy.interpolate import RegularGridInterpolator
 from scipy.ndimage import gaussian_filter
 
 from stillground.errors import GridError
+from stillground.quadrature import TRAPEZOID, Quadrature
 
 Array = NDArray[np.float64]
 
 
 @dataclass(frozen=True)
 class Grid:
-    """Evenly spaced nodes along 1, 2 or 3 axes, elevation last and ascending.
+    """Nodes on even intervals along 1, 2 or 3 axes, elevation last and ascending.
 
     Parameters
     ----------
     origin : tuple of float, length n_dimensions
-        Coordinates of the first node, m.
+        Coordinates where the axes begin: of the first node, but with rules whose nodes lie inside the
+        intervals; m.
     spacing : tuple of float
-        Distance between nodes along each axis, m, positive.
+        Length of an interval along each axis, m, positive.
     shape : tuple of int
         Nodes along each axis, at least 2.
+    rule : Quadrature
+        Where nodes stand in the intervals, and their weights.
+    weighted : bool
+        Whether the prior knows the weights. Without them it takes nodal values for a mere vector, and the
+        answer comes to depend on the rule: only to show what that does.
 
     Examples
     --------
@@ -49,6 +57,8 @@ class Grid:
     origin: tuple[float, ...]
     spacing: tuple[float, ...]
     shape: tuple[int, ...]
+    rule: Quadrature = TRAPEZOID
+    weighted: bool = True
 
     def __post_init__(self) -> None:
         if not 1 <= len(self.shape) <= 3 or not len(self.origin) == len(self.spacing) == len(self.shape):
@@ -60,6 +70,8 @@ class Grid:
             raise GridError(f"a grid needs at least 2 nodes along each axis; got {self.shape}")
         if not all(h > 0 and math.isfinite(h) for h in self.spacing):
             raise GridError(f"spacings must be positive; got {self.spacing}")
+        for n in self.shape:
+            self.rule.n_intervals(n)
 
     @property
     def n_nodes(self) -> int:
@@ -69,30 +81,32 @@ class Grid:
     def axes(self) -> tuple[Array, ...]:
         """Node coordinates along each axis, m."""
         return tuple(
-            np.asarray(o + h * np.arange(n), dtype=np.float64)
+            np.asarray(o + h * self.rule.nodes(n), dtype=np.float64)
             for o, h, n in zip(self.origin, self.spacing, self.shape, strict=True)
         )
 
     @property
     def lengths(self) -> tuple[float, ...]:
         """Extent along each axis, m."""
-        return tuple(h * (n - 1) for h, n in zip(self.spacing, self.shape, strict=True))
+        return tuple(h * n for h, n in zip(self.spacing, self.intervals, strict=True))
+
+    @property
+    def intervals(self) -> tuple[int, ...]:
+        """Intervals along each axis."""
+        return tuple(self.rule.n_intervals(n) for n in self.shape)
 
     def weights(self) -> Array:
-        """Trapezoid quadrature weights of the nodes, flattened, shape (n_nodes,), m^n_dimensions.
+        """Quadrature weights of the nodes, flattened, shape (n_nodes,), m^n_dimensions.
 
-        They are also the integrals of the nodal basis functions.
+        The trapezoid's are also the integrals of the nodal basis functions.
         """
-        along = []
-        for h, n in zip(self.spacing, self.shape, strict=True):
-            w = np.full(n, h)
-            w[[0, -1]] *= 0.5
-            along.append(w)
+        along = [h * self.rule.weights(n) for h, n in zip(self.spacing, self.shape, strict=True)]
         return np.asarray(reduce(np.multiply.outer, along)).reshape(-1)
 
     def refined(self) -> Grid:
-        """The grid of half the spacing on the same extent; it holds all nodes of this one."""
-        return Grid(self.origin, tuple(h / 2 for h in self.spacing), tuple(2 * n - 1 for n in self.shape))
+        """The grid of half the spacing on the same extent; with even nodes it holds all nodes of this one."""
+        shape = tuple(self.rule.n_nodes(2 * n) for n in self.intervals)
+        return replace(self, spacing=tuple(h / 2 for h in self.spacing), shape=shape)
 
     def norm(self, values: Array) -> float:
         """L2 norm of a nodal field by the grid's quadrature."""
@@ -105,19 +119,56 @@ class Grid:
     def local_mean(self, values: Array, lengths: Sequence[float]) -> Array:
         """Gaussian mean of a nodal field over half of ``lengths`` (m, one for each axis).
 
-        The mirror at the edges is that of the quadrature: the integral over the extent is kept.
+        The mirror at the edges is that of the trapezoid: its integral over the extent is kept.
         """
+        if not self.rule.even:
+            values = values.reshape(self.shape)
+            for axis, length in enumerate(lengths):
+                values = np.moveaxis(
+                    np.tensordot(self._means(axis, 0.5 * length), values, (1, axis)), 0, axis
+                )
+            return values
         sigma = [0.5 * length / h for length, h in zip(lengths, self.spacing, strict=True)]
         return np.asarray(gaussian_filter(values.reshape(self.shape), sigma, mode="mirror"))
 
+    def _means(self, axis: int, sigma: float) -> Array:
+        """Matrix of Gaussian means over uneven nodes, mirrored at the ends; rows have sum 1."""
+        x, low, high = self.axes[axis], self.origin[axis], self.origin[axis] + self.lengths[axis]
+        images = (x, 2 * low - x, 2 * high - x)
+        bells = sum(np.exp(-0.5 * ((x[:, None] - image) / sigma) ** 2) for image in images)
+        bells = bells * self.rule.weights(x.size)
+        return np.asarray(bells / bells.sum(axis=1, keepdims=True))
+
     def interpolate(self, values: Array, points: Array) -> Array:
-        """Values of a nodal field at ``points``, shape (n_points, n_dimensions), within the extent."""
+        """Values of a nodal field at ``points``, shape (n_points, n_dimensions), within the nodes."""
         lookup = RegularGridInterpolator(self.axes, values.reshape(self.shape))
         return np.asarray(lookup(points))
 
 
+def carry(values: Array, here: Grid, there: Grid) -> Array:
+    """A field's values at the nodes of another grid of the same extent.
+
+    Exact at nodes that both have, else linear between two nodes and on beyond the outermost ones.
+
+    Parameters
+    ----------
+    values : array, shape ``here.shape`` or with more axes behind them
+    here, there : Grid
+
+    Returns
+    -------
+    array, shape ``there.shape`` and the axes behind
+    """
+    for axis, (nodes, places) in enumerate(zip(here.axes, there.axes, strict=True)):
+        before = np.clip(np.searchsorted(nodes, places, side="right") - 1, 0, nodes.size - 2)
+        share = (places - nodes[before]) / (nodes[before + 1] - nodes[before])
+        along = np.moveaxis(values, axis, -1)
+        values = np.moveaxis(along[..., before] * (1 - share) + along[..., before + 1] * share, -1, axis)
+    return values
+
+
 def prolong(values: Array, coarse: Grid, fine: Grid) -> Array:
-    """The same function on a finer rung: exact, since nodes are nested and functions linear between.
+    """The same function on a finer rung: exact where nodes are nested, since functions are linear between.
 
     Parameters
     ----------
@@ -134,9 +185,9 @@ def prolong(values: Array, coarse: Grid, fine: Grid) -> Array:
     GridError
         When the grids are not rungs of one ladder.
     """
-    rung = coarse
+    rung, given = coarse, values
     while rung.n_nodes < fine.n_nodes:
-        for axis in range(values.ndim):
+        for axis in range(values.ndim if coarse.rule.even else 0):
             before = np.moveaxis(values, axis, 0)
             after = np.empty((2 * before.shape[0] - 1, *before.shape[1:]))
             after[::2] = before
@@ -145,7 +196,7 @@ def prolong(values: Array, coarse: Grid, fine: Grid) -> Array:
         rung = rung.refined()
     if rung != fine:
         raise GridError(f"{coarse} and {fine} are not rungs of one ladder")
-    return values
+    return values if coarse.rule.even else carry(given, coarse, fine)
 
 
 def ladder(
@@ -200,3 +251,35 @@ def ladder(
     while len(rungs) < levels:
         rungs.append(rungs[-1].refined())
     return tuple(rungs)
+
+
+def ladder_up_to(finest: Grid, levels: int) -> tuple[Grid, ...]:
+    """Rungs from coarse to fine that end with a given grid.
+
+    Raises
+    ------
+    GridError
+        When its intervals cannot be joined to pairs so often; it says how often they can.
+
+    Examples
+    --------
+    >>> [g.shape for g in ladder_up_to(Grid((0.0,), (1.0,), (13,)), 3)]
+    [(4,), (7,), (13,)]
+    """
+    rungs = [finest]
+    while len(rungs) < levels:
+        try:
+            shape = tuple(finest.rule.n_nodes(_half(n)) for n in rungs[0].intervals)
+        except GridError as error:
+            counts = " by ".join(str(n) for n in finest.intervals)
+            raise GridError(
+                f"{counts} intervals with {finest.rule.name} weights make {len(rungs)} rungs and not {levels}"
+            ) from error
+        rungs.insert(0, replace(rungs[0], spacing=tuple(2 * h for h in rungs[0].spacing), shape=shape))
+    return tuple(rungs)
+
+
+def _half(intervals: int) -> int:
+    if intervals % 2 or intervals < 4:
+        raise GridError(f"{intervals} intervals cannot be joined to pairs")
+    return intervals // 2

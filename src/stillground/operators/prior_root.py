@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import math
+from collections import defaultdict
 from collections.abc import Sequence
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,6 +16,7 @@ from scipy.special import gamma
 from stillground.errors import GridError
 from stillground.grid import Grid
 from stillground.kernels.blocks import n_threads
+from stillground.quadrature import TRAPEZOID, Quadrature
 
 Array = NDArray[np.float64]
 
@@ -57,6 +60,13 @@ class PriorRoot(LinearOperator):
     The weights make the coefficients those of functions and not of vectors: the covariance at fixed
     points does not depend on the grid.
 
+    With other weights than the trapezoid's the cosines at the nodes are not orthogonal in
+    ``w^{1/2}``. They are made so, long waves first (Gram and Schmidt), and D is what they become: a long
+    wave stays what it is, since a rule that is repeated in P panels takes it only for waves of at least P
+    half periods. Storage and products then go with the square of the nodes along an axis.
+
+    On a grid that is not ``weighted`` L is the deviation alone: independent values at the nodes.
+
     References
     ----------
     Whittle (1954), On stationary processes in the plane, Biometrika 41. Lindgren, Rue & Lindström
@@ -82,28 +92,72 @@ class PriorRoot(LinearOperator):
         self._factor = (deviation * math.sqrt(variance) * symbol ** (-smoothness / 2))[..., None]
         self._root = (grid.weights() ** -0.5).reshape(*grid.shape, 1)
         self._axes = tuple(range(len(grid.shape)))
+        self._waves: tuple[Array, ...] | None = None
+        if not grid.weighted:
+            self._factor = np.full_like(self._factor, deviation)
+            self._root = np.ones_like(self._root)
+            self._waves = ()
+        elif grid.rule != TRAPEZOID:
+            self._waves = tuple(_waves(grid.rule, n) for n in grid.shape)
         super().__init__(dtype=np.dtype(np.float64), dims=(grid.n_nodes,), dimsd=(grid.n_nodes,))
 
-    def _transform(self, field: Array) -> Array:
+    def _to_nodes(self, coefficients: Array) -> Array:
+        if self._waves is None:
+            return self._cosines(coefficients)
+        return self._along(coefficients, self._waves)
+
+    def _to_coefficients(self, field: Array) -> Array:
+        if self._waves is None:
+            return self._cosines(field)
+        return self._along(field, tuple(waves.T for waves in self._waves))
+
+    def _cosines(self, field: Array) -> Array:
         workers = n_threads() if field.size > _WORTH_THREADS else 1
         transformed = dctn(field, type=1, axes=self._axes, norm="ortho", overwrite_x=True, workers=workers)
         return np.asarray(transformed)
 
+    @staticmethod
+    def _along(field: Array, matrices: tuple[Array, ...]) -> Array:
+        for axis, matrix in enumerate(matrices):
+            field = np.moveaxis(np.tensordot(matrix, field, (1, axis)), 0, axis)
+        return field
+
     def _matmat(self, X: Array) -> Array:
         field = self._factor * X.reshape(*self._root.shape[:-1], -1)
-        return np.asarray((self._root * self._transform(field)).reshape(X.shape))
+        return np.asarray((self._root * self._to_nodes(field)).reshape(X.shape))
 
     def _rmatmat(self, X: Array) -> Array:
         field = self._root * X.reshape(*self._root.shape[:-1], -1)
-        return np.asarray((self._factor * self._transform(field)).reshape(X.shape))
+        return np.asarray((self._factor * self._to_coefficients(field)).reshape(X.shape))
 
     def inverse(self, ground: Array) -> Array:
         """Coefficients (n_nodes, n_columns) that give nodal fields (n_nodes, n_columns): exact."""
         field = ground.reshape(*self._root.shape[:-1], -1) / self._root
-        return np.asarray((self._transform(field) / self._factor).reshape(ground.shape))
+        return np.asarray((self._to_coefficients(field) / self._factor).reshape(ground.shape))
 
     def _matvec(self, x: Array) -> Array:
         return self._matmat(x.reshape(-1, 1)).reshape(-1)
 
     def _rmatvec(self, x: Array) -> Array:
         return self._rmatmat(x.reshape(-1, 1)).reshape(-1)
+
+
+@lru_cache(maxsize=8)
+def _waves(rule: Quadrature, n: int) -> Array:
+    """Orthogonal matrix (n, n): cosines at a rule's nodes times the roots of its weights, long waves first.
+
+    In P panels of nodes that lie symmetrically, the rule tells waves k and k' apart, as orthogonal ones,
+    unless k + k' or k - k' is a multiple of 2 P: there is nothing to take out of a wave but these few.
+    """
+    intervals = rule.n_intervals(n)
+    period = 2 * intervals // rule.intervals
+    waves = np.cos(np.pi * np.outer(np.arange(n), rule.nodes(n) / intervals)) * np.sqrt(rule.weights(n))
+    confused: defaultdict[int, list[Array]] = defaultdict(list)
+    for k, wave in enumerate(waves):
+        longer = confused[min(k % period, -k % period)]
+        for other in longer:
+            wave -= (other @ wave) * other
+        wave /= np.linalg.norm(wave)
+        longer.append(wave)
+    waves.flags.writeable = False
+    return waves.T

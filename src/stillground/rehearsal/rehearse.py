@@ -7,7 +7,7 @@ from collections.abc import Callable, Generator, Mapping
 import numpy as np
 
 from stillground.errors import ConfigError
-from stillground.grid import Grid
+from stillground.grid import Grid, carry
 from stillground.progress import staged
 from stillground.protocols import Array, Measurement, Pick, Progress, Rehearsal
 from stillground.reconstruct import Method, Problem, judge, prepare
@@ -103,7 +103,7 @@ def rehearse(
     total_error = resolved = np.empty(0)
     average_errors: dict[str, float] = {}
     for number, (name, grounds) in enumerate(families.items(), start=1):
-        truths = _on_coarse(grounds, fine_grid, grid)
+        truths = carry(grounds.reshape(*fine_grid.shape, -1), fine_grid, grid).reshape(grid.n_nodes, -1)
         noisy = data[name] + noise * random.standard_normal((n_data, twins))
         errors = _Errors(inner_product, truths)
         work = iterate(method.solver, problem.operator, noisy, method.iterations, watch=errors.note)
@@ -129,15 +129,6 @@ def rehearse(
     if not cost:
         raise ConfigError(f"stopping.rules: none applies to all twins: {'; '.join(left_out.values())}")
     return Rehearsal(ratios, cost, groups, left_out, total_error, resolved, average_errors)
-
-
-def _on_coarse(grounds: Array, fine: Grid, coarse: Grid) -> Array:
-    """Values at the coarse nodes, which are among the fine ones, shape (n_nodes, n)."""
-    step = (fine.shape[0] - 1) // (coarse.shape[0] - 1)
-    field = grounds.reshape(*fine.shape, -1)
-    return np.ascontiguousarray(field[(slice(None, None, step),) * len(fine.shape)]).reshape(
-        coarse.n_nodes, -1
-    )
 
 
 def _stop(run: Run, pick: Pick) -> float:
