@@ -579,6 +579,8 @@ class Scene(ABC):
         Sentences worth knowing beforehand; and what looks wrong and may not be.
     inputs : tuple of Path
         Files that were read beside the survey.
+    grid : Grid or None
+        The finest rung, where the survey comes with one; None where the settings make it.
     """
 
     lower: tuple[float, ...]
@@ -593,6 +595,7 @@ class Scene(ABC):
     facts: tuple[str, ...] = ()
     doubts: tuple[str, ...] = ()
     inputs: tuple[Path, ...] = ()
+    grid: Grid | None = None
 
     @abstractmethod
     def assemble(self, grid: Grid) -> Measurement:

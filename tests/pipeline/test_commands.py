@@ -180,7 +180,16 @@ def test_every_command_teaches_by_example(stillground: Command) -> None:
 
 def test_plugins_and_schema_print(stillground: Command) -> None:
     listed = stillground("plugins").stdout
-    for name in ("straight-ray", "induction", "downhole", "lsqr", "cgls", "discrepancy", "gcv", "stillground"):
+    for name in (
+        "straight-ray",
+        "induction",
+        "downhole",
+        "lsqr",
+        "cgls",
+        "discrepancy",
+        "gcv",
+        "stillground",
+    ):
         assert name in listed
     choices = json.loads(stillground("schema").stdout)["oneOf"]
     assert {"straight-ray", "induction", "downhole"} <= {choice["title"] for choice in choices}

@@ -22,7 +22,8 @@ def config_class(kind: Kind) -> type[Config]:
 
 @cache
 def _with_own(settings: Any, plan: Any) -> type[Config]:
-    physics = (settings, Field(default_factory=settings, description="settings of the kind of survey"))
+    said = "settings of the kind of survey"
+    physics: Any = (settings, Field(default_factory=dict, validate_default=True, description=said))
     simulate = create_model("SimulateSettings", __base__=(SimulateSettings, plan))
     ground: Any = (simulate | None, Field(None, description=Config.model_fields["simulate"].description))
     made: type[Config] = create_model("Config", __base__=Config, physics=physics, simulate=ground)

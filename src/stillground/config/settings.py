@@ -151,7 +151,9 @@ PairOrOne = Annotated[Pair, BeforeValidator(_both_ways, json_schema_input_type=s
 
 
 class GroundSettings(Table):
-    spacing: PairOrOne = Field(description="distance of nodes on the finest rung")
+    spacing: PairOrOne | None = Field(
+        None, description="distance of nodes on the finest rung; required but where the survey has a grid"
+    )
     correlation: PairOrOne = Field(description="lengths over which the ground is alike")
     smoothness: Number = Field(2.0, ge=0, le=8, description="exponent s of the prior; 0 is white")
     margin: Length | None = Field(

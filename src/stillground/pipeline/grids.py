@@ -8,9 +8,12 @@ import numpy as np
 
 from stillground.config import Config
 from stillground.errors import ConfigError, GridError
-from stillground.grid import Grid, ladder
+from stillground.grid import Grid, ladder, ladder_up_to
 from stillground.pipeline.capacity import refuse_too_large
 from stillground.pipeline.profiles import Profile
+
+# How far a stated spacing may differ from a survey's own, of itself.
+_SAME = 1e-3
 
 
 def correlation(config: Config) -> tuple[float, ...]:
@@ -21,15 +24,23 @@ def correlation(config: Config) -> tuple[float, ...]:
 def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
     """The rungs for a profile, coarse to fine: its positions and the margin, down to the depth.
 
+    A survey that comes with a grid has it for the finest rung.
+
     Raises
     ------
     ConfigError
-        When a spacing is larger than the survey, the depth leaves positions outside, or the extent
-        is too small for the coarsest rung.
+        When a spacing is missing or larger than the survey, the depth leaves positions outside, the extent
+        is too small for the coarsest rung, or settings contradict the survey's own grid.
     CapacityError
         When the finest rung needs more memory than the machine has free.
     """
     scene, ground = profile.scene, config.ground
+    if scene.grid is not None:
+        grids = _up_to(scene.grid, profile.name, config)
+        refuse_too_large(profile.name, grids, profile.survey.sizes["datum"], config.solver.iterations)
+        return grids
+    if ground.spacing is None:
+        raise ConfigError('ground.spacing is missing; give the distance of nodes, like "0.5 m"')
     axes = config.kind.axes
     spacing = ground.spacing.along(axes)
     margin = [length / 2 if ground.margin is None else ground.margin for length in correlation(config)]
@@ -64,6 +75,48 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
         raise ConfigError(f"profile {profile.name}: {error}, such as {most} m") from error
     refuse_too_large(profile.name, grids, profile.survey.sizes["datum"], config)
     return grids
+
+
+def _up_to(finest: Grid, profile: str, config: Config) -> tuple[Grid, ...]:
+    """The rungs up to a survey's own grid, which settings of the ground must not contradict."""
+    ground, levels = config.ground, config.refinement.levels
+    for name in ("margin", "depth"):
+        if getattr(ground, name) is not None:
+            raise ConfigError(f"ground.{name}: the grid of {profile} is the survey's own; leave it out")
+    if ground.spacing is not None:
+        for axis, asked, h in zip(
+            config.kind.axes, ground.spacing.along(config.kind.axes), finest.spacing, strict=True
+        ):
+            if abs(asked - h) > _SAME * h:
+                raise ConfigError(
+                    f"ground.spacing: {asked:g} m along {axis}, but the nodes of {profile} are {h:g} m "
+                    f"apart; leave it out"
+                )
+    try:
+        return ladder_up_to(finest, levels)
+    except GridError as error:
+        most = _most_levels(finest)
+        raise ConfigError(
+            f"refinement.levels = {levels}: {error}, since every coarser rung takes every second node of "
+            f"{profile}; take {most} at most, or a table with more nodes, as "
+            f"{' by '.join(str(_next_count(n, finest, levels)) for n in finest.intervals)}"
+        ) from error
+
+
+def _most_levels(finest: Grid) -> int:
+    levels = 1
+    while True:
+        try:
+            ladder_up_to(finest, levels + 1)
+        except GridError:
+            return levels
+        levels += 1
+
+
+def _next_count(intervals: int, finest: Grid, levels: int) -> int:
+    """The next number of evenly spaced nodes whose intervals pair as often as ``levels`` ask."""
+    step = finest.rule.intervals << (levels - 1)
+    return max(math.ceil(intervals / step), 2) * step + 1
 
 
 def _round_down(value: float) -> str:

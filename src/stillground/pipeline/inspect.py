@@ -54,7 +54,7 @@ def _plan(profile: Profile, config: Config) -> Plan:
     return Plan(
         profile,
         grids,
-        advise(profile.name, grids, config),
+        advise(profile, grids, config),
         memory(grids, n_data, config.solver.iterations, rows=rows_on_grid(config, n_data))
         + psutil.Process().memory_info().rss,
         _seconds(profile, grids, config),

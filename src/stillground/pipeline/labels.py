@@ -101,7 +101,7 @@ def label(
     profile: Profile, grids: Sequence[Grid], result: Result, config: Config, origin: Provenance
 ) -> ProfileResult:
     """Puts labels, units and coordinates back on an answer."""
-    advice = advise(profile.name, grids, config)
+    advice = advise(profile, grids, config)
     origin = replace(origin, cautions=". ".join([*profile.scene.doubts, *advice]))
     kind = config.kind
     crs = None if config.survey.crs is None else pyproj.CRS.from_user_input(config.survey.crs)

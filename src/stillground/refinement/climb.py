@@ -12,7 +12,7 @@ from stillground.grid import Grid, prolong
 from stillground.progress import staged
 from stillground.protocols import Array, Ladder, Measurement, Progress, Rung
 from stillground.reconstruct import Method, Reconstruction, reconstruct
-from stillground.refinement.expected import expected_order, rough_limit
+from stillground.refinement.expected import WITHOUT_WEIGHTS, expected_order, rough_limit
 from stillground.refinement.grid_index import grid_index
 from stillground.refinement.jitter import jitter
 from stillground.refinement.verdict import CLEAR, compare, judge
@@ -123,6 +123,8 @@ def climb(
             interrupted = True
     expected = None if regularity is None else expected_order(method.smoothness, regularity)
     rough = None if regularity is None else rough_limit(method.smoothness, regularity)
+    if not fine.weighted:
+        expected, rough = 0.0, WITHOUT_WEIGHTS
     verdict = judge(change, drift, tolerance, expected=expected, rough=rough, jitter=shaken or 0.0)
     sizes = [
         rung.grid.norm(m - rung.grid.mean(m)) / float(np.sqrt(np.prod(rung.grid.lengths)))

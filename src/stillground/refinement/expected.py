@@ -5,6 +5,12 @@ from __future__ import annotations
 BASIS = 2.0
 """Order of the nodal functions: linear between nodes, exact for straight ground only."""
 
+WITHOUT_WEIGHTS = (
+    "the prior does not know the weights of the quadrature, so the answer depends on the rule and on the "
+    "grid, whatever the changes do"
+)
+"""Why answers have no limit of their own on grids that are not ``weighted``."""
+
 
 def expected_order(smoothness: float, regularity: float) -> float:
     """Order of the L2 change of the answer, at equal iteration, when the spacing is halved.

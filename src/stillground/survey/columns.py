@@ -22,7 +22,7 @@ class Column:
     rule : str
         What every cell must be, beside finite.
     written : tuple of (str, int)
-        Unit and decimals in tables that stillground writes.
+        Unit and decimals in tables that stillground writes; significant digits where there is no unit.
     """
 
     name: str
@@ -65,6 +65,8 @@ COLUMNS: Final = {
             "positive",
             _CONDUCTIVITY_ERROR,
         ),
+        Column("value", "", "measured value", "any", ("", 9)),
+        Column("value_error", "", "standard deviation of the measured value", "positive", ("", 9)),
         Column("line", "1", "line of the survey", "text"),
         Column("use", "1", "whether the row is used", "0 or 1"),
     )

@@ -22,7 +22,7 @@ from stillground.survey.table import RawColumn, open_table, split_header
 from stillground.survey.units import to_si
 
 _NOTHING: Final[Mapping[str, str]] = MappingProxyType({})
-_OWN = ("datum", "row")
+_OWN = ("datum", "row", "entry")
 
 
 def read(
@@ -51,7 +51,8 @@ def read(
     -------
     xarray.Dataset
         On the dimension ``datum``, SI inside, with the coordinate ``row``: the line of the file as an
-        editor numbers it, from 1 (in NetCDF the index from 1). Columns that the vocabulary does not
+        editor numbers it, from 1 (in NetCDF the index from 1), and ``entry``: its place among the data of
+        the file, from 0, of as many as the attribute ``of`` says. Columns that the vocabulary does not
         know stand as they are, with the unit of their heading.
 
     Raises
@@ -83,7 +84,7 @@ def read(
             known = column(name)
             # A column that nobody knows is text as soon as one cell is.
             stranger = expected is None and name not in COLUMNS
-            text = known.rule == "text" or (stranger and bool(_numbers(found[0].cells)[1]))
+            text = known.rule == "text" or (stranger and bool(numbers_of(found[0].cells)[1]))
             unit, fault = _unit(found[0], known, units.get(name))
             variables[name] = _variable(found[0], known, unit, raw.rows, text)
             if fault:
@@ -95,7 +96,14 @@ def read(
 
     ds = xr.Dataset(
         variables,
-        coords={"row": ("datum", raw.rows, {"long_name": "row of the table", "units": "1"})},
+        coords={
+            "row": ("datum", raw.rows, {"long_name": "row of the table", "units": "1"}),
+            "entry": (
+                "datum",
+                np.arange(raw.rows.size),
+                {"long_name": "place among the data of the table, from 0", "units": "1", "of": raw.rows.size},
+            ),
+        },
         attrs={"source": str(path), "ignored_columns": ignored},
     )
     if expected is not None:
@@ -176,7 +184,7 @@ def _variable(
         attributes["original_name"] = raw.header
     if text:
         return "datum", _texts(raw.cells), attributes
-    values, texts = _numbers(raw.cells)
+    values, texts = numbers_of(raw.cells)
     if known.dimensional and unit:
         attributes["original_units"] = unit
         values = to_si(values, unit, known.units)
@@ -185,7 +193,7 @@ def _variable(
     return "datum", values, attributes
 
 
-def _numbers(cells: NDArray[Any]) -> tuple[Array, dict[int, str]]:
+def numbers_of(cells: NDArray[Any]) -> tuple[Array, dict[int, str]]:
     """Numbers, NaN for empty cells and for text, and the text by its index."""
     if cells.dtype.kind in "biuf":
         return cells.astype(np.float64), {}

@@ -54,8 +54,8 @@ def split_header(text: str) -> tuple[str, str | None]:
     return match[1].strip(), (match[2] or "").strip() or None
 
 
-def open_table(path: str | Path) -> RawTable:
-    """Read a CSV or NetCDF file; its first bytes tell which.
+def open_table(path: str | Path, *, numbers: bool = False) -> RawTable:
+    """Read a CSV or NetCDF file; its first bytes tell which. With ``numbers`` the headings may be numbers.
 
     Raises
     ------
@@ -63,18 +63,29 @@ def open_table(path: str | Path) -> RawTable:
         When there is no such file, or it holds no table; broken rows are all named at once.
     """
     source = str(path)
-    try:
-        content = Path(path).read_bytes()
-    except FileNotFoundError as error:
-        raise SurveyError(source, ["there is no such file"]) from error
-    except OSError as error:
-        raise SurveyError(source, [f"cannot be read: {error.strerror}"]) from error
-    if content.startswith(_NETCDF):
+    if is_netcdf(path):
         return _netcdf(source)
-    return _csv(source, content)
+    return _csv(source, Path(path).read_bytes(), numbers)
 
 
-def _csv(source: str, content: bytes) -> RawTable:
+def is_netcdf(path: str | Path) -> bool:
+    """Whether a file's first bytes are those of NetCDF.
+
+    Raises
+    ------
+    SurveyError
+        When there is no such file, or it cannot be read.
+    """
+    try:
+        with Path(path).open("rb") as file:
+            return file.read(4) in _NETCDF
+    except FileNotFoundError as error:
+        raise SurveyError(str(path), ["there is no such file"]) from error
+    except OSError as error:
+        raise SurveyError(str(path), [f"cannot be read: {error.strerror}"]) from error
+
+
+def _csv(source: str, content: bytes, numbers: bool) -> RawTable:
     lines = _lines(source, content)
     first = next(lines, None)
     if first is None:
@@ -92,7 +103,7 @@ def _csv(source: str, content: bytes) -> RawTable:
     # Spreadsheets pad rows with separators, the header too.
     while headers and headers[-1] == ("", None):
         headers.pop()
-    if all(name == "" or _is_number(name) for name, _ in headers):
+    if not numbers and all(name == "" or _is_number(name) for name, _ in headers):
         raise SurveyError(source, [f"row {first[0]} should name the columns, but holds '{first[1].strip()}'"])
 
     if len(headers) == 1 and " " in headers[0][0]:

@@ -82,7 +82,7 @@ def quantity(text: object, si: str | tuple[str, ...]) -> float:
     Parameters
     ----------
     text : str
-        Such as ``"0.25 m"``. Anything else, a bare number above all, is refused.
+        Such as ``"0.25 m"``. Anything else, a bare number above all, is refused, unless the unit is 1.
     si : str or tuple of str
         The unit wanted, UDUNITS text. Of several, the first is what comes back; a quantity in one
         of the others is turned over (a velocity where a slowness is wanted).
@@ -103,12 +103,14 @@ def quantity(text: object, si: str | tuple[str, ...]) -> float:
     ValueError: 0.25 has no unit; give it with one, like '0.25 m'
     """
     accepted = (si,) if isinstance(si, str) else si
-    units = " or ".join(_written(each) for each in accepted)
+    units = " or ".join(_written(each) or "1" for each in accepted)
     match = _QUANTITY.fullmatch(str(text).strip())
     if match is None or not math.isfinite(float(match[1])):
         example = f"0.25 {_written(accepted[-1])}"
         raise ValueError(f"'{text}' is no number with a unit; write it like '{example}'")
     number, unit = float(match[1]), match[2].strip()
+    if not unit and units == "1":
+        return number
     if not unit:
         example = f"{match[1]} {_written(accepted[-1])}"
         raise ValueError(f"{text} has no unit; give it with one, like '{example}'")

@@ -22,7 +22,8 @@ def write_table(path: str | Path, ds: xr.Dataset, comments: Iterable[str] = ()) 
     path : path of the table
     ds : xarray.Dataset
         On the dimension ``datum``, SI; the columns that the vocabulary knows are written in its order,
-        lengths in m with 3 decimals, times in ms with 4, conductivities in mS/m with 4, errors with 6.
+        lengths in m with 3 decimals, times in ms with 4, conductivities in mS/m with 4, errors with 6,
+        values without a unit of their own with 9 significant digits.
     comments : iterable of str
         Lines to stand above the table.
 
@@ -46,9 +47,11 @@ def write_table(path: str | Path, ds: xr.Dataset, comments: Iterable[str] = ()) 
 def _cells(variable: xr.DataArray, column: Column) -> list[str]:
     if column.rule == "text":
         return [str(cell) for cell in variable.values]
+    unit, decimals = column.written
+    if not column.units:
+        return [f"{cell:.{decimals}g}" for cell in variable.values]
     if not column.dimensional:
         return [f"{cell:.0f}" for cell in variable.values]
-    unit, decimals = column.written
     values = variable.values / to_si(1.0, unit, column.units)
     # Adding zero takes the sign off a rounded -0.
     return [f"{cell:.{decimals}f}" for cell in values.round(decimals) + 0.0]
