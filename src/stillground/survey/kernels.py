@@ -153,7 +153,7 @@ def _coordinate(ds: xr.Dataset, axis: str, faults: list[str]) -> Array:
 
 
 def _not_finite(values: Array, rows: Integers) -> list[str]:
-    bad = ~np.isfinite(values).reshape(len(values), -1).all(axis=1)
+    bad = ~np.isfinite(values).all(axis=tuple(range(1, values.ndim)))
     return (
         [f"kernels must be finite: {list_rows((row, '') for row in rows[bad].tolist())}"] if bad.any() else []
     )
