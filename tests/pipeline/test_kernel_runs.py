@@ -2,16 +2,21 @@
 
 from __future__ import annotations
 
+import json
 from functools import cache
 from pathlib import Path
 
 import numpy as np
 import pytest
+import xarray as xr
+from tests.conftest import ROOT, Command
 
 from kernel_tables import CONFIG, integration, write_survey
 from published_problems import PROBLEMS
+from stillground.config import load
 from stillground.pipeline.labels import ProfileResult
 from stillground.pipeline.run import run_config
+from stillground.pipeline.simulate import simulate
 from stillground.quadrature import RULES
 
 EVEN, UNEVEN = ("trapezoid", "gauss-2"), ("simpson", "gauss-3")
@@ -127,3 +132,25 @@ def test_a_published_problem_comes_back_through_the_whole_chain(rule: str, tmp_p
     assert result.verdict == "settled", result.arrays.ladder.verdict.reason
     found = np.interp(nodes, result.arrays.axes[0], result.arrays.model)
     assert np.linalg.norm(found - solution) < 0.05 * np.linalg.norm(solution)
+
+
+@pytest.mark.parametrize(
+    ("weights", "code", "verdict"), [("standard", 0, "settled"), ("naive", 3, "drifting")]
+)
+def test_the_demo_settles_unless_the_weights_are_hidden(
+    stillground: Command, tmp_path: Path, weights: str, code: int, verdict: str
+) -> None:
+    settings = ["physics.quadrature=simpson", f"physics.weights={weights}", 'output.products=["section"]']
+    overrides = [word for setting in settings for word in ("--set", setting)]
+    config = ROOT / "configs" / "osmere-weir-kernel.toml"
+    done = stillground("run", config, "--out", tmp_path, "--strict", "--quiet", *overrides)
+    assert done.returncode == code, done.stderr
+    assert json.loads((tmp_path / "summary.json").read_text())["verdict"] == verdict
+    column = xr.open_dataset(tmp_path / "moisture_column.nc")
+    assert column["water_content"].sizes == {"elevation": 129}
+
+
+def test_the_demo_readings_are_those_of_the_described_ground(tmp_path: Path) -> None:
+    config, _ = load(ROOT / "configs" / "osmere-weir-kernel.toml", [f'simulate.output="{tmp_path}/made.csv"'])
+    written, _ = simulate(config)
+    assert written.read_bytes() == (ROOT / "datasets" / "osmere-weir" / "moisture.csv").read_bytes()

@@ -309,5 +309,5 @@ def _doubts(survey: xr.Dataset, size: Array, seen: NDArray[np.bool_]) -> tuple[s
             f"{blind.size} data have a kernel of zeros and see nothing (row {listed}): is that right?"
         )
     if not seen.any():
-        said.append("no kernel sees a constant ground: ground.background cannot be fitted, give a value")
+        said.append("no kernel sees a constant ground: ground.background is taken as 0, give a value")
     return tuple(said)
