@@ -37,7 +37,7 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
     scene, ground = profile.scene, config.ground
     if scene.grid is not None:
         grids = _up_to(scene.grid, profile.name, config)
-        refuse_too_large(profile.name, grids, profile.survey.sizes["datum"], config.solver.iterations)
+        refuse_too_large(profile.name, grids, profile.survey.sizes["datum"], config)
         return grids
     if ground.spacing is None:
         raise ConfigError('ground.spacing is missing; give the distance of nodes, like "0.5 m"')
