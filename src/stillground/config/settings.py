@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from functools import cached_property
-from typing import Annotated, Any, Literal, Self
+from typing import Annotated, Any, Literal, Self, get_args
 
 import pyproj
 from pydantic import (
@@ -28,7 +28,7 @@ from stillground import plugins
 from stillground.errors import PluginError
 from stillground.protocols import GroundProperty, Kind, RuleOptions
 from stillground.survey import quantity
-from stillground.survey.quantities import Coordinate, InputPath, Length
+from stillground.survey.quantities import Coordinate, Depth, InputPath, Length
 
 
 def _datum(text: Any, info: ValidationInfo) -> float:
@@ -100,6 +100,8 @@ Background = Annotated[
 SolverName = Annotated[str, AfterValidator(_solver_name)]
 RuleName = Annotated[str, AfterValidator(_rule_name)]
 
+
+Product = Literal["section", "map", "survey", "curtain", "points", "history", "figures"]
 
 Number = Annotated[float, Strict()]
 Count = Annotated[int, Strict()]
@@ -255,11 +257,31 @@ class SensitivitySettings(Table):
     vary: bool = Field(False, description="repeat with other lengths, smoothness and backgrounds")
 
 
+class MapSettings(Table):
+    """How ``map.nc`` cuts all profiles of the run."""
+
+    spacing: Length | None = Field(
+        None,
+        description="default: an eighth of the horizontal correlation, more where that is too many nodes",
+    )
+    depths: list[Depth] | None = Field(
+        None, min_length=1, description="below the ground; default: every vertical correlation length"
+    )
+    elevations: list[Coordinate] | None = Field(None, min_length=1, description="instead of depths")
+    reach: Length | None = Field(
+        None, description="how far from a line it shows anything; default: the horizontal correlation length"
+    )
+
+    @model_validator(mode="after")
+    def _depths_or_elevations(self) -> Self:
+        if self.depths is not None and self.elevations is not None:
+            raise ValueError("give depths or elevations, not both")
+        return self
+
+
 class OutputSettings(Table):
     folder: str | None = Field(None, description="default: results/<config name> where you are")
-    products: list[Literal["section", "history", "figures"]] = Field(
-        ["section", "history", "figures"], description="beside summary, ladder and fit"
-    )
+    products: list[Product] = Field(list(get_args(Product)), description="beside summary, ladder and fit")
 
 
 class Point(Table):
@@ -378,6 +400,7 @@ class Config(Table):
     refinement: RefinementSettings = RefinementSettings()
     rehearsal: RehearsalSettings = RehearsalSettings()
     sensitivity: SensitivitySettings = SensitivitySettings()
+    map: MapSettings = MapSettings()
     output: OutputSettings = OutputSettings()
     physics: SerializeAsAny[BaseModel] = Field(Table(), description="settings of the kind of survey")
     simulate: SimulateSettings | None = Field(None, description="a described ground to make a survey over")

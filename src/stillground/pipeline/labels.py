@@ -19,13 +19,14 @@ from stillground.config import Config
 from stillground.grid import Grid
 from stillground.pipeline.advice import advise
 from stillground.pipeline.profiles import Profile
+from stillground.products.cf import plan_unit
 from stillground.products.fit import fit_table
 from stillground.products.history import history_dataset
 from stillground.products.ladder import ladder_dataset
 from stillground.products.picture import picture_dataset
 from stillground.products.provenance import Provenance, timestamp
 from stillground.products.summary import profile_summary
-from stillground.protocols import Result
+from stillground.protocols import Array, Result
 from stillground.survey import row_numbers, to_si
 
 _PACKAGES = ("stillground", "numpy", "scipy", "pylops", "xarray", "numba", "netCDF4")
@@ -104,9 +105,8 @@ def label(
     advice = advise(profile, grids, config)
     origin = replace(origin, cautions=". ".join([*profile.scene.doubts, *advice]))
     kind = config.kind
-    crs = None if config.survey.crs is None else pyproj.CRS.from_user_input(config.survey.crs)
-    metres = 1.0 if crs is None else crs.axis_info[0].unit_conversion_factor
-    easting, northing = profile.scene.trace(result.axes[0] if len(result.axes) > 1 else np.zeros(1))
+    crs = survey_crs(config)
+    easting, northing = plan_trace(profile, result.axes, crs)
     surface, tolerance = profile.scene.surface, config.refinement.tolerance
     unit, factor = _table_unit(profile, kind.datum, kind.datum_units)
     return ProfileResult(
@@ -114,8 +114,8 @@ def label(
         picture=picture_dataset(
             profile.name,
             result,
-            easting=np.asarray(easting) / metres,
-            northing=np.asarray(northing) / metres,
+            easting=easting,
+            northing=northing,
             crs=crs,
             surface=surface,
             tolerance=tolerance,
@@ -131,6 +131,18 @@ def label(
         arrays=result,
         advice=advice,
     )
+
+
+def survey_crs(config: Config) -> pyproj.CRS | None:
+    """The CRS of the survey, None for a local frame."""
+    return None if config.survey.crs is None else pyproj.CRS.from_user_input(config.survey.crs)
+
+
+def plan_trace(profile: Profile, axes: tuple[Array, ...], crs: pyproj.CRS | None) -> tuple[Array, Array]:
+    """East and north of the columns of a grid, in the CRS's unit; a grid of elevations has one column."""
+    _, metres = plan_unit(crs)
+    easting, northing = profile.scene.trace(axes[0] if len(axes) > 1 else np.zeros(1))
+    return np.asarray(easting) / metres, np.asarray(northing) / metres
 
 
 def _table_unit(profile: Profile, datum: str, si: str) -> tuple[str, float]:

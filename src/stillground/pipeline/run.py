@@ -6,7 +6,7 @@ import hashlib
 import json
 import os
 import time
-from collections.abc import Generator, Sequence
+from collections.abc import Generator, Mapping, Sequence
 from dataclasses import dataclass
 from importlib.metadata import version
 from pathlib import Path
@@ -18,13 +18,17 @@ from stillground.config import Config, from_mapping, load
 from stillground.errors import ConfigError
 from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
-from stillground.pipeline.labels import ProfileResult, label, provenance
+from stillground.pipeline.labels import ProfileResult, label, provenance, survey_crs
 from stillground.pipeline.profiles import place, read_profiles
+from stillground.pipeline.site import line, plan_slices, recalled, write_site
+from stillground.products.curtain import curtain_dataset, write_curtain
 from stillground.products.figures import write_figures
 from stillground.products.fit import write_fit
 from stillground.products.history import write_history
 from stillground.products.ladder import write_ladder
+from stillground.products.line import Line
 from stillground.products.picture import product, write_picture
+from stillground.products.points import points_table, write_points
 from stillground.products.provenance import Provenance
 from stillground.products.summary import SUMMARY, run_summary, write_summary
 from stillground.progress import finish
@@ -88,35 +92,46 @@ def run(
     yield Progress("reading the survey", 0, 1)
     profiles = read_profiles(config)
     plans = {profile.name: plan_grids(profile, config) for profile in profiles}
+    slicing = plan_slices([(profile, plans[profile.name][-1]) for profile in profiles], config)
     origin = provenance(profiles, config, text, command)
     require_writable(folder)
     yield Progress("reading the survey", 1, 1)
 
     mark = _fingerprint(origin)
-    entries = _kept(folder, mark) if resume else {}
+    needed = {"fit", "section"} if {"map", "survey"} & set(config.output.products) else {"fit"}
+    entries = _kept(folder, mark, needed) if resume else {}
+    lines: dict[str, Line] = {}
+    files: dict[str, str] = {}
     summary: dict[str, Any] = {}
     interrupted = False
     try:
         for profile in profiles:
             if profile.name in entries:
+                if "section" in needed:
+                    lines[profile.name] = recalled(folder, entries[profile.name]["files"], profile)
                 continue
             grids = plans[profile.name]
             arrays = yield from answer(profile, grids, config)
             result = label(profile, grids, arrays, config, origin)
             # Until the new one is there, no summary must speak for files that are being replaced.
             (folder / SUMMARY).unlink(missing_ok=True)
-            files = yield from _write(folder, result, config)
-            entries[profile.name] = result.summary(files) | {"fingerprint": mark}
+            written = yield from _write(folder, result, config)
+            entries[profile.name] = result.summary(written) | {"fingerprint": mark}
+            lines[profile.name] = line(result)
             yield Done(result, folder)
             interrupted = arrays.interrupted
             if interrupted:
                 break
+        if lines:
+            yield Progress("writing the map", 0, 1)
+            files = _names(folder, write_site(folder, list(lines.values()), slicing, config, origin))
+            yield Progress("writing the map", 1, 1)
     finally:
         if entries:
             seconds = None if "SOURCE_DATE_EPOCH" in os.environ else time.perf_counter() - begin
             order = [profile.name for profile in profiles if profile.name in entries]
             summary = run_summary(
-                config.title, version("stillground"), seconds, [entries[name] for name in order]
+                config.title, version("stillground"), seconds, [entries[name] for name in order], files
             )
             write_summary(folder, summary)
     return Outcome(folder, summary, interrupted)
@@ -203,6 +218,12 @@ def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Pro
         written[product(len(result.arrays.axes))] = picture
     if "history" in wanted:
         written["history"] = write_history(folder, result.name, result.history)
+    if len(result.arrays.axes) > 1:
+        crs = survey_crs(config)
+        if "curtain" in wanted:
+            written["curtain"] = write_curtain(folder, result.name, curtain_dataset(result.picture, crs))
+        if "points" in wanted:
+            written["points"] = write_points(folder, result.name, points_table(result.picture, crs))
     yield Progress("writing products", 1, 2)
     if "figures" in wanted:
         scene = result.profile.scene
@@ -221,7 +242,11 @@ def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Pro
             ),
         )
     yield Progress("writing products", 2, 2)
-    return {name: path.relative_to(folder).as_posix() for name, path in written.items()}
+    return _names(folder, written)
+
+
+def _names(folder: Path, written: Mapping[str, Path]) -> dict[str, str]:
+    return {product: path.relative_to(folder).as_posix() for product, path in written.items()}
 
 
 def _fingerprint(origin: Provenance) -> str:
@@ -229,8 +254,8 @@ def _fingerprint(origin: Provenance) -> str:
     return hashlib.sha256("\n".join(parts).encode()).hexdigest()
 
 
-def _kept(folder: Path, mark: str) -> dict[str, dict[str, Any]]:
-    """Entries of an earlier summary that were made from the same things and whose files are there."""
+def _kept(folder: Path, mark: str, needed: set[str]) -> dict[str, dict[str, Any]]:
+    """Entries of an earlier summary made from the same things whose files, ``needed`` ones too, are there."""
     path = folder / SUMMARY
     if not path.is_file():
         return {}
@@ -240,6 +265,7 @@ def _kept(folder: Path, mark: str) -> dict[str, dict[str, Any]]:
             entry["name"]: entry
             for entry in entries
             if entry.get("fingerprint") == mark
+            and needed <= entry["files"].keys()
             and all((folder / name).is_file() for name in entry["files"].values())
         }
     except (ValueError, KeyError, TypeError, AttributeError) as error:

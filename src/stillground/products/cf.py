@@ -20,6 +20,13 @@ COORDINATES: Mapping[str, Mapping[str, str]] = {
         "positive": "up",
         "axis": "Z",
     },
+    "depth": {
+        "standard_name": "depth",
+        "long_name": "depth below the ground surface",
+        "units": "m",
+        "positive": "down",
+        "axis": "Z",
+    },
     # No axis: a client would take distance for easting.
     "distance": {"long_name": "distance along the profile", "units": "m"},
     "iteration": {"long_name": "iteration", "units": "1"},
@@ -101,14 +108,24 @@ def section_crs_attributes(crs: CRS | None, distance: Array, elevation: Array) -
     distance, elevation : array, shapes (nx,), (nz,), evenly spaced
         Node coordinates, m, elevation descending; the GeoTransform gives outer edges.
     """
-    dx, dz = _step(distance), -_step(elevation)
-    corner = (distance[0] - dx / 2, dx, 0.0, elevation[0] + dz / 2, 0.0, -dz)
     return {
         "crs_wkt": ENGINEERING_WKT,
         **crs_attributes(crs),
         "spatial_ref": ENGINEERING_WKT,
-        "GeoTransform": " ".join(f"{number:.15g}" for number in corner),
+        "GeoTransform": _geotransform(distance, elevation),
     }
+
+
+def map_crs_attributes(crs: CRS | None, x: Array, y: Array) -> dict[str, Any]:
+    """Attributes of the variable ``crs`` beside a map: as `crs_attributes`, and the map's outer edges.
+
+    Parameters
+    ----------
+    crs : CRS or None
+    x, y : array, shapes (nx,), (ny,), evenly spaced
+        Centres of its cells, y descending.
+    """
+    return {**crs_attributes(crs), "GeoTransform": _geotransform(x, y)}
 
 
 def section_grid_mapping(crs: CRS | None) -> str:
@@ -130,19 +147,34 @@ def plan_grid_mapping(crs: CRS | None) -> str:
 def plan_attributes(name: str, crs: CRS | None) -> dict[str, str]:
     """Attributes of ``easting`` or ``northing``; in a local frame they carry no standard name."""
     if crs is None:
-        return {**PLAN[name], "units": "m"}
+        return {**PLAN[name], "units": plan_unit(crs)[0]}
+    return {**PLAN[name], "standard_name": PLAN_STANDARD_NAMES[name], "units": plan_unit(crs)[0]}
+
+
+def plan_unit(crs: CRS | None) -> tuple[str, float]:
+    """The unit of plan coordinates, UDUNITS text, and one of it in m; metres in a local frame."""
+    if crs is None:
+        return "m", 1.0
     axis = crs.axis_info[0]
-    units = UDUNITS_LENGTHS.get(axis.unit_name, f"{axis.unit_conversion_factor:.15g} m")
-    return {**PLAN[name], "standard_name": PLAN_STANDARD_NAMES[name], "units": units}
+    metres = float(axis.unit_conversion_factor)
+    return UDUNITS_LENGTHS.get(axis.unit_name, f"{metres:.15g} m"), metres
 
 
-def bounds(easting: Array, northing: Array, elevation: Array, crs: CRS | None) -> dict[str, Any]:
-    """ACDD's geospatial bounds: heights always, longitude and latitude where there is a CRS."""
+def bounds(
+    easting: Array,
+    northing: Array,
+    vertical: Array,
+    crs: CRS | None,
+    *,
+    units: str = "m",
+    positive: str = "up",
+) -> dict[str, Any]:
+    """ACDD's geospatial bounds: heights or depths always, longitude and latitude where there is a CRS."""
     extent: dict[str, Any] = {
-        "geospatial_vertical_min": float(elevation.min()),
-        "geospatial_vertical_max": float(elevation.max()),
-        "geospatial_vertical_units": "m",
-        "geospatial_vertical_positive": "up",
+        "geospatial_vertical_min": float(vertical.min()),
+        "geospatial_vertical_max": float(vertical.max()),
+        "geospatial_vertical_units": units,
+        "geospatial_vertical_positive": positive,
     }
     if crs is not None:
         to_degrees = Transformer.from_crs(crs, "EPSG:4326", always_xy=True)
@@ -153,6 +185,12 @@ def bounds(easting: Array, northing: Array, elevation: Array, crs: CRS | None) -
                 extent[f"geospatial_{name}_max"] = float(np.max(along))
                 extent[f"geospatial_{name}_units"] = unit
     return extent
+
+
+def _geotransform(across: Array, down: Array) -> str:
+    dx, dy = _step(across), _step(down)
+    corner = (across[0] - dx / 2, dx, 0.0, down[0] - dy / 2, 0.0, dy)
+    return " ".join(f"{number:.15g}" for number in corner)
 
 
 def _step(axis: Array) -> float:

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from stillground.products.cf import COORDINATES
 from stillground.products.netcdf import write_netcdf
-from stillground.products.provenance import Provenance
+from stillground.products.provenance import Provenance, argument
 from stillground.products.raster import Surface, coordinates, ground, map_variable
 from stillground.protocols import Array, Choice, Field, Result
 
@@ -96,7 +96,7 @@ def history_dataset(
         f"Iteration of profile {name} on the finest rung, and where each stopping rule would stop; "
         f"{result.chosen.rule} is the one chosen."
     )
-    return xr.Dataset(variables, axes, provenance.attributes(summary) | {"chosen_rule": result.chosen.rule})
+    return xr.Dataset(variables, axes, provenance.attributes(summary) | argument(result))
 
 
 def write_history(folder: Path, name: str, dataset: xr.Dataset) -> Path:

@@ -8,7 +8,7 @@ import numpy as np
 import xarray as xr
 
 from stillground.products.netcdf import write_netcdf
-from stillground.products.provenance import Provenance
+from stillground.products.provenance import Provenance, argument
 from stillground.products.raster import Surface, coordinates, ground, map_variable
 from stillground.protocols import Field, Result, Rung
 
@@ -95,7 +95,7 @@ def ladder_dataset(
         f"Answers of profile {name} on {len(rungs)} grids, coarse to fine, at equal iteration. "
         f"Dependence on the grid: {verdict.word}."
     )
-    return xr.Dataset(variables, axes, provenance.attributes(summary))
+    return xr.Dataset(variables, axes, provenance.attributes(summary) | argument(result))
 
 
 def write_ladder(folder: Path, name: str, dataset: xr.Dataset) -> Path:

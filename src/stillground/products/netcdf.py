@@ -10,13 +10,16 @@ import xarray as xr
 
 from stillground.whole import whole
 
+# Values from which on a row gains by compression.
+_LONG = 1000
+
 
 def write_netcdf(dataset: xr.Dataset, path: Path) -> None:
     """Write a flat NetCDF-4 file.
 
-    Variables of two or more dimensions are compressed, in chunks of one map each. Floating data
-    has ``_FillValue`` NaN; coordinates, counts and text have none. A variable's own encoding may
-    give ``dtype`` and ``_FillValue``.
+    Numbers over two or more dimensions are compressed, in chunks of one map each, and so are long rows.
+    Floating data has ``_FillValue`` NaN; coordinates, counts and text have none. A variable's own
+    encoding may give ``dtype`` and ``_FillValue``.
 
     Raises
     ------
@@ -35,12 +38,10 @@ def write_netcdf(dataset: xr.Dataset, path: Path) -> None:
 
 
 def _encoding(variable: xr.Variable) -> dict[str, Any]:
-    encoding: dict[str, Any] = {"_FillValue": None}
+    encoding: dict[str, Any] = {"_FillValue": np.nan if variable.dtype.kind == "f" else None}
     encoding |= {key: variable.encoding[key] for key in ("dtype", "_FillValue") if key in variable.encoding}
-    if variable.dtype.kind == "f":
-        encoding["_FillValue"] = np.nan
-    if variable.ndim >= 2:
-        leading = variable.ndim - 2
+    if variable.ndim >= 2 or (variable.size >= _LONG and variable.dtype.kind in "fiu"):
+        leading = max(variable.ndim - 2, 0)
         encoding |= {
             "zlib": True,
             "complevel": 4,

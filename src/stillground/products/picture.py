@@ -12,7 +12,7 @@ from pyproj import CRS
 
 from stillground.products import cf
 from stillground.products.netcdf import write_netcdf
-from stillground.products.provenance import Provenance
+from stillground.products.provenance import Provenance, argument
 from stillground.products.quality import qualities
 from stillground.products.raster import (
     Surface,
@@ -124,7 +124,9 @@ def picture_dataset(
     return xr.Dataset(
         variables,
         axes | plan,
-        provenance.attributes(summary) | cf.bounds(easting, northing, result.axes[-1], crs),
+        provenance.attributes(summary)
+        | argument(result)
+        | cf.bounds(easting, northing, result.axes[-1], crs),
     )
 
 

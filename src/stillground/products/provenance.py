@@ -6,8 +6,10 @@ import os
 from collections.abc import Mapping
 from dataclasses import dataclass
 from datetime import UTC, datetime
+from typing import Any
 
 from stillground.errors import ConfigError
+from stillground.protocols import Result
 
 CAUTION = (
     "A reconstruction is no clearance to dig, drill or load: confirm it by direct investigation. "
@@ -62,6 +64,22 @@ class Provenance:
             "package_versions": ", ".join(f"{name} {number}" for name, number in self.versions.items()),
             "input_sha256": "\n".join(f"{digest}  {name}" for name, digest in self.inputs.items()),
         }
+
+
+def argument(result: Result) -> dict[str, Any]:
+    """Global attributes that argue an answer: which rule stopped it where, and what the grid does to it.
+
+    ``order`` is left out where it cannot be told.
+    """
+    chosen, verdict = result.chosen, result.ladder.verdict
+    said: dict[str, Any] = {
+        "chosen_rule": chosen.rule,
+        "chosen_iteration": chosen.iteration,
+        "chosen_chi_square": chosen.chi_square,
+        "verdict": verdict.word,
+        "verdict_reason": verdict.reason,
+    }
+    return said if verdict.order is None else said | {"order": verdict.order}
 
 
 def timestamp() -> datetime:

@@ -132,7 +132,11 @@ def _extra(found: Found) -> dict[str, Any]:
 
 
 def run_summary(
-    title: str, version: str, seconds: float | None, profiles: Sequence[Mapping[str, Any]]
+    title: str,
+    version: str,
+    seconds: float | None,
+    profiles: Sequence[Mapping[str, Any]],
+    files: Mapping[str, str] | None = None,
 ) -> dict[str, Any]:
     """The whole run; its verdict is the worst profile's.
 
@@ -143,6 +147,8 @@ def run_summary(
         What the run took; None where the file must come out the same each time.
     profiles : sequence of mapping
         From `profile_summary`, at least one.
+    files : mapping, optional
+        Product to file name, of those that hold the whole run.
     """
     words = {profile["refinement"]["verdict"] for profile in profiles}
     return {
@@ -151,6 +157,7 @@ def run_summary(
         "version": version,
         "verdict": min(words, key=WORST_FIRST.index),
         "seconds": seconds,
+        "files": dict(files or {}),
         "profiles": list(profiles),
     }
 

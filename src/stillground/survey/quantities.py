@@ -20,6 +20,12 @@ def _positive(value: float) -> float:
     return value
 
 
+def _not_negative(value: float) -> float:
+    if value < 0:
+        raise ValueError(f"must not be negative; got {value:g} m")
+    return value
+
+
 def _beside_configuration(path: Path, info: ValidationInfo) -> Path:
     folder = (info.context or {}).get("folder", Path())
     return Path(folder) / path
@@ -37,6 +43,14 @@ Length = Annotated[
     WithJsonSchema({"type": "string", "examples": ["0.25 m"]}),
 ]
 """A positive length with its unit; metres inside."""
+
+Depth = Annotated[
+    float,
+    BeforeValidator(_length),
+    AfterValidator(_not_negative),
+    WithJsonSchema({"type": "string", "examples": ["2 m"]}),
+]
+"""A length with its unit, zero or more; metres inside."""
 
 InputPath = Annotated[
     Path, AfterValidator(_beside_configuration), WithJsonSchema({"type": "string", "format": "path"})

@@ -1,0 +1,144 @@
+"""What all profiles of a run have in common: the map through them, and the layers of the survey."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import replace
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+import xarray as xr
+
+from stillground import plugins
+from stillground.config import Config
+from stillground.errors import ConfigError
+from stillground.grid import Grid
+from stillground.pipeline.labels import ProfileResult, plan_trace, survey_crs
+from stillground.pipeline.profiles import Profile
+from stillground.products.line import Line
+from stillground.products.map import Slicing, map_dataset, map_nodes, nice, write_map
+from stillground.products.provenance import CAUTION, Provenance
+from stillground.products.survey import survey_dataset, write_survey
+
+# Values of one variable of a map: some 80 MB.
+_MOST_VALUES = 20_000_000
+_MOST_SLICES = 20
+# Nodes of a map across the correlation length.
+_ACROSS = 8
+
+
+def line(result: ProfileResult) -> Line:
+    """A finished profile as the map and the survey's layers need it."""
+    return _line(result.profile, result.picture, result.history, result.fit)
+
+
+def recalled(folder: Path, files: dict[str, str], profile: Profile) -> Line:
+    """The same of a profile that an earlier run finished, from its files."""
+
+    def opened(product: str) -> xr.Dataset:
+        # As they were written: flags shall stay flags.
+        return xr.load_dataset(folder / files[product], engine="netcdf4", mask_and_scale=False)
+
+    history = opened("history") if "history" in files else xr.Dataset()
+    return _line(profile, opened("section"), history, pd.read_csv(folder / files["fit"]))
+
+
+def write_site(
+    folder: Path, lines: Sequence[Line], slicing: Slicing, config: Config, provenance: Provenance
+) -> dict[str, Path]:
+    """Writes what the configuration wants of ``map`` and ``survey``; paths by product."""
+    wanted, crs = config.output.products, survey_crs(config)
+    said = [str(line.section.attrs["comment"]).removeprefix(CAUTION).strip() for line in lines]
+    provenance = replace(provenance, cautions=" ".join(dict.fromkeys(filter(None, said))))
+    written = {}
+    if "map" in wanted:
+        written["map"], *_ = write_map(folder, map_dataset(lines, slicing, crs=crs, provenance=provenance))
+    if "survey" in wanted:
+        units = plugins.kind(config.survey.kind).datum_units
+        layers = survey_dataset(lines, static_units=units, crs=crs, provenance=provenance)
+        written["survey"] = write_survey(folder, layers)
+    return written
+
+
+def plan_slices(profiles: Sequence[tuple[Profile, Grid]], config: Config) -> Slicing:
+    """How the configuration cuts a map through profiles on their finest grids.
+
+    Raises
+    ------
+    ConfigError
+        When the map would have too many nodes.
+    """
+    settings, lengths, crs = config.map, config.ground.correlation, survey_crs(config)
+    horizontal = lengths.vertical if lengths.horizontal is None else lengths.horizontal
+    levels = settings.elevations or settings.depths or _depths(profiles, lengths.vertical)
+    slicing = Slicing(
+        spacing=settings.spacing or nice(horizontal / _ACROSS),
+        levels=tuple(sorted(set(levels), reverse=settings.elevations is not None)),
+        reach=settings.reach or horizontal,
+        elevations=settings.elevations is not None,
+    )
+    places = np.vstack([np.column_stack(plan_trace(profile, grid.axes, crs)) for profile, grid in profiles])
+
+    def values(spacing: float) -> int:
+        ends = map_nodes(places, replace(slicing, spacing=spacing), crs)
+        return len(slicing.levels) * math.prod(last - first + 1 for first, last in ends)
+
+    fitting = slicing.spacing
+    while values(fitting) > _MOST_VALUES:
+        fitting = nice(1.01 * fitting)
+    if settings.spacing and fitting > settings.spacing:
+        raise ConfigError(
+            f"map.spacing: at {settings.spacing:g} m the map of all profiles takes "
+            f"{values(settings.spacing):,} values for each variable, {_MOST_VALUES:,} are the most; "
+            f"take {fitting:g} m, or fewer slices"
+        )
+    return replace(slicing, spacing=fitting)
+
+
+def _depths(profiles: Sequence[tuple[Profile, Grid]], vertical: float) -> list[float]:
+    """Every correlation length down to the lowest node, or farther apart where that is many slices."""
+    deepest = max(_ground_top(profile) - grid.axes[-1][0] for profile, grid in profiles)
+    step = nice(max(vertical, deepest / _MOST_SLICES))
+    return (step * np.arange(1, int(deepest / step) + 1)).tolist() or [deepest / 2]
+
+
+def _ground_top(profile: Profile) -> float:
+    surface = profile.scene.surface
+    return profile.scene.upper[-1] if surface is None else float(surface[1].max())
+
+
+def _line(profile: Profile, section: xr.Dataset, history: xr.Dataset, fit: pd.DataFrame) -> Line:
+    scene = profile.scene
+    return Line(
+        name=profile.name,
+        section=section,
+        first=scene.lower[0],
+        last=scene.upper[0],
+        top=scene.upper[-1],
+        stations=_stations(profile, history, fit),
+    )
+
+
+def _stations(profile: Profile, history: xr.Dataset, fit: pd.DataFrame) -> pd.DataFrame:
+    """Every position where it truly stands, numbered as the statics are: in the order of the table."""
+    survey, tables = profile.survey, []
+    for what in profile.scene.positions:
+        end = f"{what}_" if f"{what}_x" in survey else ""
+        places = pd.DataFrame({axis: survey[f"{end}{axis}"].to_numpy() for axis in "xyz"})
+        number = places.round(3).groupby(list("xyz"), sort=False).ngroup()
+        data = fit[["residual_over_error", "weight"]].groupby(number.to_numpy())
+        table = places[~number.duplicated()].reset_index(drop=True)
+        static = history.get(f"{what}_static", xr.DataArray(np.nan)).to_numpy()
+        tables.append(
+            table.assign(
+                what=what,
+                number=np.arange(1, len(table) + 1),
+                data=data.size(),
+                residual=data["residual_over_error"].mean(),
+                weight=data["weight"].mean(),
+                static=np.broadcast_to(static, len(table)),
+            )
+        )
+    return pd.concat(tables, ignore_index=True)
