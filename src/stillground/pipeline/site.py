@@ -17,6 +17,7 @@ from stillground.errors import ConfigError
 from stillground.grid import Grid
 from stillground.pipeline.labels import ProfileResult, plan_trace, survey_crs
 from stillground.pipeline.profiles import Profile
+from stillground.products.cf import plan_unit
 from stillground.products.line import Line
 from stillground.products.map import Slicing, map_dataset, map_nodes, nice, write_map
 from stillground.products.provenance import CAUTION, Provenance
@@ -73,8 +74,10 @@ def plan_slices(profiles: Sequence[tuple[Profile, Grid]], config: Config) -> Sli
     settings, lengths, crs = config.map, config.ground.correlation, survey_crs(config)
     horizontal = lengths.vertical if lengths.horizontal is None else lengths.horizontal
     levels = settings.elevations or settings.depths or _depths(profiles, lengths.vertical)
+    # Round in the unit that people read off the map.
+    _, metres = plan_unit(crs)
     slicing = Slicing(
-        spacing=settings.spacing or nice(horizontal / _ACROSS),
+        spacing=settings.spacing or metres * nice(horizontal / metres / _ACROSS),
         levels=tuple(sorted(set(levels), reverse=settings.elevations is not None)),
         reach=settings.reach or horizontal,
         elevations=settings.elevations is not None,
@@ -87,7 +90,7 @@ def plan_slices(profiles: Sequence[tuple[Profile, Grid]], config: Config) -> Sli
 
     fitting = slicing.spacing
     while values(fitting) > _MOST_VALUES:
-        fitting = nice(1.01 * fitting)
+        fitting = metres * nice(1.01 * fitting / metres)
     if settings.spacing and fitting > settings.spacing:
         raise ConfigError(
             f"map.spacing: at {settings.spacing:g} m the map of all profiles takes "

@@ -128,15 +128,15 @@ def map_crs_attributes(crs: CRS | None, x: Array, y: Array) -> dict[str, Any]:
     return {**crs_attributes(crs), "GeoTransform": _geotransform(x, y)}
 
 
-def section_grid_mapping(crs: CRS | None) -> str:
-    """What ``grid_mapping`` says on a section's maps.
+def grid_mapping(variable: str, coordinates: str, crs: CRS | None) -> str:
+    """What ``grid_mapping`` says on a raster, given its CRS variable and its coordinates.
 
     CF has no ``grid_mapping_name`` for an engineering frame, nor for every projection, so these are told by
     their text alone, which goes beyond the letter of CF. Clients find the GeoTransform through it, and
     checkers do not ask for the name in the form that lists the coordinates.
     """
     named = crs is not None and crs_attributes(crs).get("grid_mapping_name", "unknown") != "unknown"
-    return "section_crs" if named else "section_crs: distance elevation"
+    return variable if named else f"{variable}: {coordinates}"
 
 
 def plan_grid_mapping(crs: CRS | None) -> str:
@@ -149,6 +149,11 @@ def plan_attributes(name: str, crs: CRS | None) -> dict[str, str]:
     if crs is None:
         return {**PLAN[name], "units": plan_unit(crs)[0]}
     return {**PLAN[name], "standard_name": PLAN_STANDARD_NAMES[name], "units": plan_unit(crs)[0]}
+
+
+def map_attributes(name: str, crs: CRS | None) -> dict[str, str]:
+    """Attributes of a map's axis: of a local frame too, or its ``axis`` is taken for a longitude."""
+    return plan_attributes(name, crs) | {"standard_name": PLAN_STANDARD_NAMES[name]}
 
 
 def plan_unit(crs: CRS | None) -> tuple[str, float]:

@@ -25,11 +25,13 @@ from stillground.products.reliability import MEANINGS, NO_DATA
 from stillground.products.trace import feet
 from stillground.protocols import Array
 
-# Kept of the 24 bits of a value: 4e-6 of it, far below any error of it, and half the size of the file.
-_BITS = 18
+# Kept of the 24 bits of a value: answers are good to 0.02 % and errors to 0.8 %, in a third of the room;
+# what is lost is noise beside the errors themselves. The section has all digits.
+_BITS, _ERROR_BITS = 11, 6
 _COMMENT = (
     "Values of the sections at the nearest place of each line, carried sideways within reach of it; where "
-    "several lines are in reach, their mean by the inverse squared distance. Elsewhere nothing was measured."
+    "several lines are in reach, their mean by the inverse squared distance. Elsewhere nothing was measured. "
+    "Rounded to 0.02 %, errors to 0.8 %."
 )
 
 
@@ -129,7 +131,7 @@ def map_dataset(
         flags[:, index] = np.where(closer, at.flags()[:, np.rint(place).astype(int)], flags[:, index])
 
     axis = "elevation" if slicing.elevations else "depth"
-    dims = (axis, "y", "x")
+    dims, mapping = (axis, "y", "x"), cf.grid_mapping("crs", "x y", crs)
     with np.errstate(invalid="ignore"):
         fields = {name: (sums[name] / total).reshape(-1, y.size, x.size) for name in means}
     if len(found) > 1:
@@ -142,7 +144,9 @@ def map_dataset(
             {} if name not in found else {"ancillary_variables": " ".join([*errors(sections), "reliability"])}
         )
         variables[name] = xr.Variable(
-            dims, _trimmed(fields[name]), said | {"comment": comment, "grid_mapping": "crs"} | beside
+            dims,
+            _rounded(fields[name], _BITS if name in found else _ERROR_BITS),
+            said | {"comment": comment, "grid_mapping": mapping} | beside,
         )
     variables["reliability"] = xr.Variable(
         dims,
@@ -154,7 +158,7 @@ def map_dataset(
             "flag_meanings": " ".join(MEANINGS),
             "comment": "By the limits that the sections name.",
             "coverage_content_type": "qualityInformation",
-            "grid_mapping": "crs",
+            "grid_mapping": mapping,
         },
         {"_FillValue": np.int8(NO_DATA)},
     )
@@ -163,8 +167,8 @@ def map_dataset(
     variables["crs"] = xr.Variable((), np.int32(0), cf.map_crs_attributes(crs, x, y))
     axes = {
         axis: xr.Variable(axis, levels, cf.COORDINATES[axis]),
-        "y": xr.Variable("y", y, cf.plan_attributes("northing", crs)),
-        "x": xr.Variable("x", x, cf.plan_attributes("easting", crs)),
+        "y": xr.Variable("y", y, cf.map_attributes("northing", crs)),
+        "x": xr.Variable("x", x, cf.map_attributes("easting", crs)),
     }
     corners = (np.array([x[0], x[-1], x[0], x[-1]]), np.array([y[0], y[0], y[-1], y[-1]]))
     summary = (
@@ -194,7 +198,7 @@ def write_map(folder: Path, dataset: xr.Dataset) -> tuple[Path, ...]:
     paths = [folder / "map.nc"]
     write_netcdf(dataset, paths[0])
     for name in layers:
-        alone = dataset.drop_vars([other for other in layers if other != name])
+        alone = dataset.drop_vars([other for other in layers if other != name]).copy()
         alone[name].attrs.pop("ancillary_variables", None)
         paths.append(folder / f"map_{name}.nc")
         write_netcdf(alone, paths[-1])
@@ -267,12 +271,10 @@ def _between(field: Array, place: Array) -> Array:
     return np.asarray(field[:, left] * (1 - share) + field[:, left + 1] * share)
 
 
-def _trimmed(values: Array) -> NDArray[np.float32]:
-    """As float32 of `_BITS` bits, rounded: the noise of the last bits is what does not compress."""
-    bits = values.astype(np.float32).view(np.uint32)
-    lost = 24 - _BITS
-    trimmed = ((bits + np.uint32(1 << (lost - 1))) >> lost << lost).view(np.float32)
-    return np.where(np.isnan(values), np.float32(np.nan), trimmed)
+def _rounded(values: Array, bits: int) -> NDArray[np.float32]:
+    """As float32 with a mantissa of few bits: the noise of the last ones is what does not compress."""
+    mantissa, exponent = np.frexp(values)
+    return np.ldexp(np.rint(mantissa * 2**bits), exponent - bits).astype(np.float32)
 
 
 def _edges(axis: str, levels: Array) -> dict[str, xr.Variable]:
