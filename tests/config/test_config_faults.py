@@ -44,6 +44,11 @@ def tables(**changes: dict[str, Any]) -> dict[str, Any]:
         ({"survey": {"crs": "EPSG:99999"}}, "'EPSG:99999' is no known coordinate system"),
         ({"survey": {"kind": "strait-ray"}}, "survey.kind: nothing is registered as 'strait-ray'"),
         ({"survey": {"files": []}}, "survey.files: List should have at least 1 item"),
+        ({"map": {"depths": ["-1 m"]}}, "map.depths.0 = '-1 m': must not be negative"),
+        ({"map": {"depths": []}}, "map.depths: List should have at least 1 item"),
+        ({"map": {"depths": ["1 m"], "elevations": ["1 m"]}}, "map: give depths or elevations, not both"),
+        ({"map": {"reach": "0 m"}}, "map.reach = '0 m': must be above zero"),
+        ({"map": {"spacng": "1 m"}}, "map.spacng is no setting; did you mean 'spacing'?"),
         ({"output": {"products": ["sektion"]}}, "output.products.0 = 'sektion': must be 'section'"),
     ],
 )  # fmt: skip

@@ -56,8 +56,10 @@ def test_the_readme_shows_what_it_prints(told: Any, demo: Path) -> None:
 
 def test_all_products_are_there_and_nothing_half_written(folder: Path) -> None:
     products = {p.name for p in folder.iterdir() if p.is_file()}
-    assert products == {"summary.json", *(f"crosshole-ab_{what}" for what in
-                        ("section.nc", "history.nc", "ladder.nc", "fit.csv"))}  # fmt: skip
+    layers = ("slowness", "velocity", "slowness_noise_part", "reliability")
+    assert products == {"summary.json", "map.nc", "survey.nc", *(f"map_{layer}.nc" for layer in layers),
+                        *(f"crosshole-ab_{what}" for what in ("section.nc", "history.nc", "ladder.nc",
+                          "fit.csv", "curtain.nc", "curtain.qml", "points.csv"))}  # fmt: skip
     figures = {p.name for p in (folder / "figures").iterdir()}
     assert figures == {f"crosshole-ab_{what}.{kind}" for kind in ("png", "pdf")
                        for what in ("section", "rules", "ladder", "residuals", "errors")}  # fmt: skip
@@ -72,7 +74,8 @@ def test_the_summary_argues_the_stop_and_the_grid(folder: Path) -> None:
     assert profile["refinement"]["order"] > 1
     discrepancy = next(rule for rule in profile["rules"] if rule["rule"] == "discrepancy")
     assert discrepancy["chi_square"] == pytest.approx(1.0, abs=1e-5), "the fractional iterate hits its target"
-    assert set(profile["files"]) == {"section", "history", "ladder", "fit"}
+    assert set(profile["files"]) == {"section", "history", "ladder", "fit", "curtain", "points"}
+    assert summary["files"] == {"map": "map.nc", "survey": "survey.nc"}
     assert all((folder / name).is_file() for name in profile["files"].values())
 
 

@@ -11,8 +11,8 @@ import pandas as pd
 from pyproj import CRS
 
 from stillground.products.line import Line
+from stillground.products.picture import picture_dataset
 from stillground.products.provenance import Provenance
-from stillground.products.section import section_dataset
 from stillground.protocols import Result
 
 from .made_up_results import BOTTOM, SURFACE, TOP, WIDTH
@@ -66,7 +66,7 @@ def make_line(
     crs, metres = unit(code)
     centre = CENTRES[code]
     easting, northing = (c + along / metres for c, along in zip(centre, plan, strict=True))
-    section = section_dataset(
+    section = picture_dataset(
         name,
         result,
         easting=easting,

@@ -31,7 +31,7 @@ def line(result: Result) -> Line:
 
 @pytest.fixture(scope="module")
 def curtain(line: Line) -> xr.Dataset:
-    return curtain_dataset(line.section, unit(UTM)[0])
+    return curtain_dataset(line.picture, unit(UTM)[0])
 
 
 def rings(curtain: xr.Dataset) -> np.ndarray:
@@ -64,14 +64,14 @@ def test_it_follows_a_bent_trace(curtain: xr.Dataset, line: Line) -> None:
 def test_a_cell_has_the_mean_of_the_section_over_it(curtain: xr.Dataset) -> None:
     corners = rings(curtain)[:, :4] - (EAST, NORTH, 0)
     along = np.where(np.isclose(corners[..., 1], 0), corners[..., 0], 9 + corners[..., 1])
-    # The mean over a rectangle of what is bilinear in it is that of its corners (common knowledge, no source).
+    # The mean over a rectangle of what is bilinear in it is that of its corners (no source).
     expected = slowness(along, corners[..., 2]).mean(axis=1)
     np.testing.assert_allclose(curtain.slowness, expected, rtol=1e-6)
     np.testing.assert_allclose(curtain.velocity * curtain.slowness, 1, rtol=1e-6)
 
 
 def test_cells_without_ground_are_left_out(curtain: xr.Dataset, line: Line) -> None:
-    values = line.section["slowness"].to_numpy()
+    values = line.picture["slowness"].to_numpy()
     full = np.isfinite(np.stack([values[:-1, :-1], values[1:, :-1], values[:-1, 1:], values[1:, 1:]]))
     assert curtain.sizes["cell"] == full.all(axis=0).sum() < full[0].size
     for name in ("slowness", "velocity", "slowness_noise_part", "slowness_total_error"):
@@ -79,7 +79,7 @@ def test_cells_without_ground_are_left_out(curtain: xr.Dataset, line: Line) -> N
 
 
 def test_a_cell_is_as_reliable_as_its_worst_corner(line: Line) -> None:
-    section = line.section.copy(deep=True)
+    section = line.picture.copy(deep=True)
     section["slowness"][:] = 1e-3
     section["reliability"][:] = 0
     section["reliability"][20, 30] = 2
@@ -90,11 +90,11 @@ def test_a_cell_is_as_reliable_as_its_worst_corner(line: Line) -> None:
 
 def test_a_large_section_is_thinned_and_keeps_its_ends(line: Line, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(cells, "MOST", 1000)
-    made = cells.thinned(line.section)
+    made = cells.thinned(line.picture)
     assert made.sizes["elevation"] * made.sizes["distance"] < 1500
     for name in ("elevation", "distance"):
-        assert made[name][[0, -1]].values.tolist() == line.section[name][[0, -1]].values.tolist()
-        assert set(made[name].values) <= set(line.section[name].values)
+        assert made[name][[0, -1]].values.tolist() == line.picture[name][[0, -1]].values.tolist()
+        assert set(made[name].values) <= set(line.picture[name].values)
 
 
 def test_the_curtain_is_laid_out_as_clients_read_it(curtain: xr.Dataset, tmp_path: Path) -> None:
@@ -117,7 +117,7 @@ def test_the_curtain_is_laid_out_as_clients_read_it(curtain: xr.Dataset, tmp_pat
 
 def test_heights_are_in_the_crs_unit_for_drawing_in_space(result: Result) -> None:
     crs, metres = unit("EPSG:2263")
-    made = curtain_dataset(make_line("bent", result, bent(result.axes[0]), "EPSG:2263").section, crs)
+    made = curtain_dataset(make_line("bent", result, bent(result.axes[0]), "EPSG:2263").picture, crs)
     assert made.cell_z.attrs["units"] == made.cell_x.attrs["units"] == "US_survey_foot"
     np.testing.assert_allclose(made.cell_z.min() * metres, 34)
 
@@ -146,11 +146,11 @@ def test_the_style_colours_every_cell_in_plan_and_in_space(curtain: xr.Dataset, 
 
 
 def test_points_are_the_nodes_in_the_ground_with_a_plain_header(line: Line, tmp_path: Path) -> None:
-    path = write_points(tmp_path, "bent", points_table(line.section, unit(UTM)[0]))
+    path = write_points(tmp_path, "bent", points_table(line.picture, unit(UTM)[0]))
     # pandas, a general reader, with nothing told to it.
     table = pd.read_csv(path)
     assert list(table.columns) == ["x [m]", "y [m]", "z [m]", "velocity [m s-1]", "reliability"]
-    assert len(table) == int(line.section["velocity"].notnull().sum())
+    assert len(table) == int(line.picture["velocity"].notnull().sum())
     assert set(table["reliability"]) <= {"reliable", "mesh_dependent", "poorly_covered"}
     x, y = table["x [m]"] - EAST, table["y [m]"] - NORTH
     along = np.where(y > 0, 9 + y, x)
@@ -161,6 +161,6 @@ def test_points_are_the_nodes_in_the_ground_with_a_plain_header(line: Line, tmp_
 
 def test_points_are_in_the_crs_unit(result: Result) -> None:
     crs, metres = unit("EPSG:2263")
-    table = points_table(make_line("bent", result, bent(result.axes[0]), "EPSG:2263").section, crs)
+    table = points_table(make_line("bent", result, bent(result.axes[0]), "EPSG:2263").picture, crs)
     assert list(table.columns[:3]) == [f"{axis} [US_survey_foot]" for axis in "xyz"]
     assert table["z [US_survey_foot]"].min() * metres == pytest.approx(34)

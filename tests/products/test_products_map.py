@@ -50,7 +50,7 @@ def distances(places: np.ndarray, lines: list[Line]) -> np.ndarray:
     points = []
     for line in lines:
         along = np.linspace(line.first, line.last, 4000)
-        points.append(np.column_stack([np.interp(along, line.section["distance"], t) for t in line.trace.T]))
+        points.append(np.column_stack([np.interp(along, line.picture["distance"], t) for t in line.trace.T]))
     return np.asarray(KDTree(np.vstack(points)).query(places)[0])
 
 
@@ -158,9 +158,9 @@ def test_a_bent_line_is_followed(result: Result) -> None:
 
 
 def test_a_column_is_shown_within_reach_of_its_place(alone: Line) -> None:
-    column = replace(alone, section=alone.section.isel(distance=44).drop_vars("surface_altitude"))
+    column = replace(alone, picture=alone.picture.isel(distance=44).drop_vars("surface_altitude"))
     made = build([column]).slowness.sel(depth=8.0)
-    there = column.section["slowness"].sel(elevation=TOP - 8)
+    there = column.picture["slowness"].sel(elevation=TOP - 8)
     east, north = column.trace[0]
     assert float(made.sel(x=east, y=north)) == pytest.approx(float(there), rel=ROUNDED)
     away = np.hypot(made.x - east, made.y - north)

@@ -2,13 +2,21 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
 from datetime import UTC, datetime, timedelta, timezone
+from typing import Any
 
 import pytest
+from pyproj import CRS
 
 from stillground.errors import ConfigError
-from stillground.products.provenance import CAUTION, Provenance, timestamp
+from stillground.products.curtain import curtain_dataset
+from stillground.products.history import history_dataset
+from stillground.products.ladder import ladder_dataset
+from stillground.products.picture import picture_dataset
+from stillground.products.provenance import CAUTION, Provenance, argument, timestamp
+from stillground.protocols import Result
 
 
 def test_time_follows_source_date_epoch(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -47,3 +55,34 @@ def test_time_is_written_in_utc_wherever_it_was_taken(provenance: Provenance) ->
 @pytest.mark.parametrize("topic", ["dig, drill or load", "direct investigation", "licensed practice decide"])
 def test_the_caution_says(topic: str) -> None:
     assert topic in CAUTION
+
+
+def test_every_netcdf_file_of_a_profile_says_what_argues_its_answer(
+    result: Result, surface: Any, crs: CRS, provenance: Provenance
+) -> None:
+    section = picture_dataset(
+        "ab",
+        result,
+        easting=result.axes[0],
+        northing=result.axes[0],
+        crs=crs,
+        surface=surface,
+        tolerance=0.02,
+        provenance=provenance,
+    )
+    common: dict[str, Any] = {"surface": surface, "provenance": provenance}
+    for made in (
+        section,
+        history_dataset("ab", result, **common),
+        ladder_dataset("ab", result, tolerance=0.02, **common),
+        curtain_dataset(section, crs),
+    ):
+        assert made.attrs["chosen_rule"] == "gcv"
+        assert made.attrs["chosen_iteration"] == 9.0
+        assert made.attrs["chosen_chi_square"] == result.chosen.chi_square
+        assert (made.attrs["verdict"], made.attrs["order"]) == ("settled", 2.0)
+        assert set(provenance.attributes("")) <= set(made.attrs)
+
+
+def test_an_order_that_cannot_be_told_is_left_out(make: Callable[..., Result]) -> None:
+    assert "order" not in argument(make(levels=2, word="undecided"))

@@ -56,9 +56,9 @@ def test_lines_carry_the_argument_for_their_answer(layers: xr.Dataset) -> None:
 
 def test_an_order_that_cannot_be_told_is_missing(result: Result, tmp_path: Path) -> None:
     line = make_line("ab", result, straight(result.axes[0], 0.0, 9.0), UTM)
-    section = line.section.assign_attrs()
+    section = line.picture.assign_attrs()
     section.attrs.pop("order")
-    made = survey_dataset([replace(line, section=section)], static_units="s", crs=None, provenance=PROVENANCE)
+    made = survey_dataset([replace(line, picture=section)], static_units="s", crs=None, provenance=PROVENANCE)
     with netCDF4.Dataset(write_survey(tmp_path, made)) as file:
         file.set_auto_mask(False)
         assert file["line_order"][:].tolist() == [-9999]
@@ -111,7 +111,7 @@ def test_a_place_that_is_source_and_receiver_is_one_position_of_a_borehole(resul
 
 def test_a_column_has_no_line_but_a_borehole(result: Result) -> None:
     line = make_line("ab", result, straight(result.axes[0], 0.0, 9.0), UTM)
-    column = replace(line, section=line.section.isel(distance=8), stations=line.stations[:25])
+    column = replace(line, picture=line.picture.isel(distance=8), stations=line.stations[:25])
     made = survey_dataset([column], static_units="s", crs=unit(UTM)[0], provenance=PROVENANCE)
     assert "lines" not in made
     assert made.borehole_positions.values.tolist() == [25]

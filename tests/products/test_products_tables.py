@@ -53,7 +53,7 @@ def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result
     # The contract with outside programs: every key, and no other.
     made = run_summary("Osmere Weir", "0.1.0", 3.2, [summary])
     read = json.loads(write_summary(tmp_path, made).read_text(encoding="utf-8"))
-    assert list(read) == ["schema", "title", "version", "verdict", "seconds", "profiles"]
+    assert list(read) == ["schema", "title", "version", "verdict", "seconds", "profiles", "files"]
     assert (read["schema"], read["verdict"], read["seconds"]) == (1, "settled", 3.2)
     profile = read["profiles"][0]
     assert list(profile) == [

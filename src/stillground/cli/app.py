@@ -75,8 +75,8 @@ def run(
     """Reconstruct the survey of CONFIG and write its products.
 
     Prints, for every profile, where each stopping rule would stop and why, how the answer changed
-    from grid to grid, and the verdict. Writes sections and histories as NetCDF, the fit as CSV,
-    figures, and summary.json.
+    from grid to grid, and the verdict. Writes sections, histories, a map of depth slices, the
+    survey's layers and curtains as NetCDF, the fit and points as CSV, figures, and summary.json.
 
     \b
     Examples:

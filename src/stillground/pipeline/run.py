@@ -92,13 +92,16 @@ def run(
     yield Progress("reading the survey", 0, 1)
     profiles = read_profiles(config)
     plans = {profile.name: plan_grids(profile, config) for profile in profiles}
-    slicing = plan_slices([(profile, plans[profile.name][-1]) for profile in profiles], config)
+    slicing = None
+    if "map" in config.output.products:
+        slicing = plan_slices([(profile, plans[profile.name][-1]) for profile in profiles], config)
     origin = provenance(profiles, config, text, command)
     require_writable(folder)
     yield Progress("reading the survey", 1, 1)
 
     mark = _fingerprint(origin)
-    needed = {"fit", "section"} if {"map", "survey"} & set(config.output.products) else {"fit"}
+    shared = bool({"map", "survey"} & set(config.output.products))
+    needed = {"fit", product(len(config.kind.axes))} if shared else set()
     entries = _kept(folder, mark, needed) if resume else {}
     lines: dict[str, Line] = {}
     files: dict[str, str] = {}
@@ -107,8 +110,9 @@ def run(
     try:
         for profile in profiles:
             if profile.name in entries:
-                if "section" in needed:
-                    lines[profile.name] = recalled(folder, entries[profile.name]["files"], profile)
+                if shared:
+                    files_of = entries[profile.name]["files"]
+                    lines[profile.name] = recalled(folder, files_of, profile, plans[profile.name][0])
                 continue
             grids = plans[profile.name]
             arrays = yield from answer(profile, grids, config)
@@ -122,7 +126,7 @@ def run(
             interrupted = arrays.interrupted
             if interrupted:
                 break
-        if lines:
+        if shared and lines:
             yield Progress("writing the map", 0, 1)
             files = _names(folder, write_site(folder, list(lines.values()), slicing, config, origin))
             yield Progress("writing the map", 1, 1)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from pathlib import Path
 
@@ -11,7 +11,6 @@ import numpy as np
 import pandas as pd
 import xarray as xr
 
-from stillground import plugins
 from stillground.config import Config
 from stillground.errors import ConfigError
 from stillground.grid import Grid
@@ -20,8 +19,10 @@ from stillground.pipeline.profiles import Profile
 from stillground.products.cf import plan_unit
 from stillground.products.line import Line
 from stillground.products.map import Slicing, map_dataset, map_nodes, nice, write_map
+from stillground.products.picture import product
 from stillground.products.provenance import CAUTION, Provenance
 from stillground.products.survey import survey_dataset, write_survey
+from stillground.protocols import Integers
 
 # Values of one variable of a map: some 80 MB.
 _MOST_VALUES = 20_000_000
@@ -32,32 +33,37 @@ _ACROSS = 8
 
 def line(result: ProfileResult) -> Line:
     """A finished profile as the map and the survey's layers need it."""
-    return _line(result.profile, result.picture, result.history, result.fit)
+    groupings = result.arrays.groupings
+    return _line(
+        result.profile, result.picture, _stations(result.profile, groupings, result.history, result.fit)
+    )
 
 
-def recalled(folder: Path, files: dict[str, str], profile: Profile) -> Line:
-    """The same of a profile that an earlier run finished, from its files."""
+def recalled(folder: Path, files: Mapping[str, str], profile: Profile, grid: Grid) -> Line:
+    """The same of a profile that an earlier run finished, from its files; any grid of it will do."""
 
-    def opened(product: str) -> xr.Dataset:
+    def opened(name: str) -> xr.Dataset:
         # As they were written: flags shall stay flags.
-        return xr.load_dataset(folder / files[product], engine="netcdf4", mask_and_scale=False)
+        return xr.load_dataset(folder / files[name], engine="netcdf4", mask_and_scale=False)
 
     history = opened("history") if "history" in files else xr.Dataset()
-    return _line(profile, opened("section"), history, pd.read_csv(folder / files["fit"]))
+    fit = pd.read_csv(folder / files["fit"])
+    stations = _stations(profile, profile.scene.assemble(grid).groupings, history, fit)
+    return _line(profile, opened(product(len(grid.axes))), stations)
 
 
 def write_site(
-    folder: Path, lines: Sequence[Line], slicing: Slicing, config: Config, provenance: Provenance
+    folder: Path, lines: Sequence[Line], slicing: Slicing | None, config: Config, provenance: Provenance
 ) -> dict[str, Path]:
-    """Writes what the configuration wants of ``map`` and ``survey``; paths by product."""
-    wanted, crs = config.output.products, survey_crs(config)
-    said = [str(line.section.attrs["comment"]).removeprefix(CAUTION).strip() for line in lines]
+    """Writes the map, where there is a slicing, and the survey's layers if wanted; paths by product."""
+    crs = survey_crs(config)
+    said = [str(line.picture.attrs["comment"]).removeprefix(CAUTION).strip() for line in lines]
     provenance = replace(provenance, cautions=" ".join(dict.fromkeys(filter(None, said))))
     written = {}
-    if "map" in wanted:
+    if slicing is not None:
         written["map"], *_ = write_map(folder, map_dataset(lines, slicing, crs=crs, provenance=provenance))
-    if "survey" in wanted:
-        units = plugins.kind(config.survey.kind).datum_units
+    if "survey" in config.output.products:
+        units = config.kind.datum_units
         layers = survey_dataset(lines, static_units=units, crs=crs, provenance=provenance)
         written["survey"] = write_survey(folder, layers)
     return written
@@ -112,28 +118,29 @@ def _ground_top(profile: Profile) -> float:
     return profile.scene.upper[-1] if surface is None else float(surface[1].max())
 
 
-def _line(profile: Profile, section: xr.Dataset, history: xr.Dataset, fit: pd.DataFrame) -> Line:
+def _line(profile: Profile, picture: xr.Dataset, stations: pd.DataFrame) -> Line:
     scene = profile.scene
     return Line(
         name=profile.name,
-        section=section,
+        picture=picture,
         first=scene.lower[0],
         last=scene.upper[0],
         top=scene.upper[-1],
-        stations=_stations(profile, history, fit),
+        stations=stations,
     )
 
 
-def _stations(profile: Profile, history: xr.Dataset, fit: pd.DataFrame) -> pd.DataFrame:
-    """Every position where it truly stands, numbered as the statics are: in the order of the table."""
-    survey, tables = profile.survey, []
-    for what in profile.scene.positions:
-        end = f"{what}_" if f"{what}_x" in survey else ""
-        places = pd.DataFrame({axis: survey[f"{end}{axis}"].to_numpy() for axis in "xyz"})
-        number = places.round(3).groupby(list("xyz"), sort=False).ngroup()
-        data = fit[["residual_over_error", "weight"]].groupby(number.to_numpy())
-        table = places[~number.duplicated()].reset_index(drop=True)
+def _stations(
+    profile: Profile, groupings: Mapping[str, Integers], history: xr.Dataset, fit: pd.DataFrame
+) -> pd.DataFrame:
+    """Every position with the misfit of its data, numbered as the groupings and the statics are."""
+    tables = []
+    for what, group in groupings.items():
+        if what not in profile.scene.positions:
+            continue
+        data = fit[["residual_over_error", "weight"]].groupby(np.asarray(group))
         static = history.get(f"{what}_static", xr.DataArray(np.nan)).to_numpy()
+        table = _places(profile, what, group)
         tables.append(
             table.assign(
                 what=what,
@@ -144,4 +151,17 @@ def _stations(profile: Profile, history: xr.Dataset, fit: pd.DataFrame) -> pd.Da
                 static=np.broadcast_to(static, len(table)),
             )
         )
-    return pd.concat(tables, ignore_index=True)
+    columns = ["x", "y", "z", "what", "number", "data", "residual", "weight", "static"]
+    return pd.concat(tables, ignore_index=True) if tables else pd.DataFrame(columns=columns)
+
+
+def _places(profile: Profile, what: str, group: Integers) -> pd.DataFrame:
+    """Where the positions truly stand, by the table; on the trace where it has no x, y, z of theirs."""
+    survey, scene = profile.survey, profile.scene
+    end = f"{what}_" if f"{what}_x" in survey else ""
+    if all(f"{end}{axis}" in survey for axis in "xyz"):
+        _, first = np.unique(group, return_index=True)
+        return pd.DataFrame({axis: survey[f"{end}{axis}"].to_numpy()[first] for axis in "xyz"})
+    places = scene.positions[what]
+    east, north = scene.trace(places[:, 0] if places.shape[1] > 1 else np.zeros(len(places)))
+    return pd.DataFrame({"x": east, "y": north, "z": places[:, -1]})

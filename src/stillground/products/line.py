@@ -1,4 +1,4 @@
-"""One profile as the files of a whole run need it: its section, its extent, what stands along it."""
+"""One profile as the files of a whole run need it: its picture, its extent, what stands along it."""
 
 from __future__ import annotations
 
@@ -19,8 +19,8 @@ class Line:
     Parameters
     ----------
     name : str
-    section : xarray.Dataset
-        As in ``<name>_section.nc``. A column, over elevation alone, stands at one place in plan.
+    picture : xarray.Dataset
+        As in ``<name>_section.nc`` or ``<name>_column.nc``; a column stands at one place in plan.
     first, last : float
         Distances of the outermost positions along it, m.
     top : float
@@ -32,7 +32,7 @@ class Line:
     """
 
     name: str
-    section: xr.Dataset
+    picture: xr.Dataset
     first: float
     last: float
     top: float
@@ -41,7 +41,7 @@ class Line:
     @property
     def trace(self) -> Array:
         """East and north of the section's columns, shape (n_columns, 2), in the CRS's unit."""
-        plan = (np.atleast_1d(self.section[name].to_numpy()) for name in ("easting", "northing"))
+        plan = (np.atleast_1d(self.picture[name].to_numpy()) for name in ("easting", "northing"))
         return np.column_stack(list(plan))
 
 

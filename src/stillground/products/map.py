@@ -104,7 +104,7 @@ def map_dataset(
     Shepard, D. (1968): A two-dimensional interpolation function for irregularly-spaced data. Proc. 23rd
     ACM National Conference, 517-524.
     """
-    sections = [line.section for line in lines]
+    sections = [line.picture for line in lines]
     found, means = answers(sections[0]), (answers(sections[0])[0], *errors(sections))
     metres = cf.plan_unit(crs)[1]
     step, reach = slicing.spacing / metres, slicing.reach / metres
@@ -209,9 +209,9 @@ class _Slices:
     """A section cut at levels: fields over (level, column)."""
 
     def __init__(self, line: Line, slicing: Slicing) -> None:
-        self.section = line.section
-        elevation = line.section["elevation"].to_numpy()
-        known = line.section.get("surface_altitude", xr.DataArray(np.inf))
+        self.picture = line.picture
+        elevation = line.picture["elevation"].to_numpy()
+        known = line.picture.get("surface_altitude", xr.DataArray(np.inf))
         surface = np.broadcast_to(known.to_numpy(), len(line.trace))
         zero = np.where(np.isfinite(surface), surface, line.top)
         levels = np.array(slicing.levels)[:, np.newaxis]
@@ -222,7 +222,7 @@ class _Slices:
 
     def values(self, name: str) -> Array:
         """Linear between rows; NaN outside the ground."""
-        field = self._carried_up(self.section[name].to_numpy().astype(np.float64))
+        field = self._carried_up(self.picture[name].to_numpy().astype(np.float64))
         above = np.minimum(self.row.astype(int), len(field) - 2)
         share = self.row - above
         upper, lower = (np.take_along_axis(field, above + below, axis=0) for below in (0, 1))
@@ -230,7 +230,7 @@ class _Slices:
 
     def flags(self) -> NDArray[np.int8]:
         """Of the nearest rows."""
-        field = self._carried_up(self.section["reliability"].to_numpy())
+        field = self._carried_up(self.picture["reliability"].to_numpy())
         return np.take_along_axis(field, np.rint(self.row).astype(int), axis=0)
 
     def _carried_up(self, field: NDArray[Any]) -> NDArray[Any]:
@@ -255,7 +255,7 @@ def _beside(
     if len(trace) > 1:
         # The section goes on beyond the positions, where nothing was measured: what is shown there shall
         # still be within reach of them.
-        distance = line.section["distance"].to_numpy()
+        distance = line.picture["distance"].to_numpy()
         along = np.interp(place, np.arange(distance.size), distance)
         aside = np.hypot(aside, np.maximum(np.maximum(line.first - along, along - line.last), 0) / metres)
     flat = rows[index // columns.size] * x.size + columns[index % columns.size]
@@ -274,7 +274,7 @@ def _between(field: Array, place: Array) -> Array:
 def _rounded(values: Array, bits: int) -> NDArray[np.float32]:
     """As float32 with a mantissa of few bits: the noise of the last ones is what does not compress."""
     mantissa, exponent = np.frexp(values)
-    return np.ldexp(np.rint(mantissa * 2**bits), exponent - bits).astype(np.float32)
+    return np.asarray(np.ldexp(np.rint(mantissa * 2**bits), exponent - bits), dtype=np.float32)
 
 
 def _edges(axis: str, levels: Array) -> dict[str, xr.Variable]:
@@ -293,7 +293,7 @@ def _edges(axis: str, levels: Array) -> dict[str, xr.Variable]:
 
 def _argument(lines: Sequence[Line]) -> dict[str, str]:
     """What argues the answers behind a map, a sentence each."""
-    return {"profiles": "\n".join(f"{line.name}: {_argued(line.section)}" for line in lines)}
+    return {"profiles": "\n".join(f"{line.name}: {_argued(line.picture)}" for line in lines)}
 
 
 def _argued(section: xr.Dataset) -> str:

@@ -70,7 +70,9 @@ def picture_dataset(
     section = len(result.axes) == 2
     inside = ground(result.axes, surface)
     dims = dimensions(len(result.axes))
-    mapping = cf.grid_mapping("section_crs", "distance elevation", crs) if section else cf.plan_grid_mapping(crs)
+    mapping = (
+        cf.grid_mapping("section_crs", "distance elevation", crs) if section else cf.plan_grid_mapping(crs)
+    )
     located = {"coordinates": "easting northing"} | ({"grid_mapping": mapping} if mapping else {})
 
     answers = as_read(Field(seen.name, result.model, seen.units, seen.long_name), seen)

@@ -157,8 +157,8 @@ def run_summary(
         "version": version,
         "verdict": min(words, key=WORST_FIRST.index),
         "seconds": seconds,
-        "files": dict(files or {}),
         "profiles": list(profiles),
+        "files": dict(files or {}),
     }
 
 

@@ -73,7 +73,7 @@ def _lines(lines: Sequence[Line], crs: CRS | None) -> dict[str, xr.Variable]:
     if not lines:
         return {}
     traces = [_surveyed(line) for line in lines]
-    said = [line.section.attrs for line in lines]
+    said = [line.picture.attrs for line in lines]
     fields: Fields = {
         "line_profile": _text([line.name for line in lines], "profile"),
         "line_verdict": _text([one["verdict"] for one in said], "whether the answer depends on the grid"),
@@ -92,7 +92,7 @@ def _lines(lines: Sequence[Line], crs: CRS | None) -> dict[str, xr.Variable]:
 
 def _surveyed(line: Line) -> Array:
     """The trace between the outermost positions."""
-    distance = line.section["distance"].to_numpy()
+    distance = line.picture["distance"].to_numpy()
     inner = distance[(distance > line.first + 1e-6) & (distance < line.last - 1e-6)]
     at = np.r_[line.first, inner, line.last]
     return np.column_stack([np.interp(at, distance, along) for along in line.trace.T])
