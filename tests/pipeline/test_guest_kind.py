@@ -92,12 +92,17 @@ iterations = 20
 [refinement]
 levels = 3
 [output]
-products = ["section", "history"]
+products = ["section", "history", "map", "survey", "curtain", "points"]
 """
 
 
 def density(z: np.ndarray) -> np.ndarray:
     return 1900 - 20 * z + 60 * np.sin(z / 1.5)
+
+
+def profile_top(folder: Path) -> float:
+    """The highest position, from where depth counts."""
+    return float(np.loadtxt(folder / "cores.csv", delimiter=",", skiprows=1)[:, 1].max())
 
 
 @pytest.fixture
@@ -134,6 +139,18 @@ def test_an_installed_kind_of_one_axis_goes_through_a_run(stillground: Command, 
     found = np.sqrt(np.mean((inner - density(inner["elevation"].values)) ** 2))
     # Means over a metre within 20 kg m-3: the answer is nearer to the truth than any of them.
     assert found < 20
+    # At one place in plan: a disc on the map, a borehole, and no curtain.
+    assert set(profile["files"]) == {"column", "history", "ladder", "fit"}
+    with xr.open_dataset(guest / "out" / "map.nc") as made:
+        at = made["density"].sel(x=100.0, y=200.0, depth=6.0)
+        beside = float(column["density"].interp(elevation=profile_top(guest) - 6.0))
+        assert float(at) == pytest.approx(beside, rel=1e-3)
+        away = np.hypot(made.x - 100, made.y - 200)
+        assert float(away.where(made["density"].notnull().any("depth")).max()) < 2.0
+    with xr.open_dataset(guest / "out" / "survey.nc") as layers:
+        assert layers.sizes["station"] == 30
+        assert layers["borehole_positions"].values.tolist() == [30]
+        assert "lines" not in layers
 
 
 def test_something_that_is_no_kind_is_refused_with_what_it_must_be(stillground: Command, guest: Path) -> None:

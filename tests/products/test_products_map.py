@@ -76,6 +76,16 @@ def test_without_a_surface_depth_counts_from_the_highest_position(result: Result
     assert float(found) == pytest.approx(expected, rel=ROUNDED + 1e-5)
 
 
+def test_the_ground_is_shown_right_up_to_its_surface(alone: Line) -> None:
+    # The surface lies between rows of nodes nearly everywhere: the uppermost row in the ground stands in.
+    made = build([alone], replace(SLICING, levels=(0.0,))).slowness.isel(depth=0).sel(y=NORTH)
+    along = made.x - EAST + 9
+    shown = made[(along >= 0) & (along <= 18)]
+    assert shown.notnull().all()
+    expected = slowness(np.arange(0, 18.5, 0.5), np.interp(np.arange(0, 18.5, 0.5), *SURFACE))
+    np.testing.assert_allclose(shown, expected, rtol=0.01)
+
+
 def test_slices_may_be_cut_at_elevations(alone: Line) -> None:
     made = build([alone], replace(SLICING, levels=(62.75, 50.0), elevations=True))
     assert made.slowness.dims == ("elevation", "y", "x")
