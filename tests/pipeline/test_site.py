@@ -82,6 +82,12 @@ def test_a_resumed_run_gives_the_map_and_layers_of_a_whole_one(
         assert (parts / path.name).read_bytes() == path.read_bytes(), path.name
 
 
+def test_a_profile_whose_section_is_not_there_is_made_again_for_the_map(small: Path) -> None:
+    work(small, "out", "output.products=['map']")
+    out = work(small, "out", "output.products=['map']", resume=True)
+    assert json.loads((out / "summary.json").read_text())["files"] == {"map": "map.nc"}
+
+
 def test_stations_carry_the_misfit_and_static_of_their_own_data(small: Path) -> None:
     out = work(small, "out", PRODUCTS, "errors.statics={source = 1.0}")
     fit, table = pd.read_csv(out / "small_fit.csv"), pd.read_csv(small / "small.csv", comment="#")

@@ -89,9 +89,9 @@ def test_a_cell_is_as_reliable_as_its_worst_corner(line: Line) -> None:
 
 
 def test_a_large_section_is_thinned_and_keeps_its_ends(line: Line, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(cells, "MOST", 1000)
+    monkeypatch.setattr(cells, "MOST", 500)
     made = cells.thinned(line.picture)
-    assert made.sizes["elevation"] * made.sizes["distance"] < 1500
+    assert made.sizes["elevation"] * made.sizes["distance"] < 600
     for name in ("elevation", "distance"):
         assert made[name][[0, -1]].values.tolist() == line.picture[name][[0, -1]].values.tolist()
         assert set(made[name].values) <= set(line.picture[name].values)
