@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from scipy.ndimage import gaussian_filter
 
@@ -52,6 +54,12 @@ def positions() -> tuple[np.ndarray, np.ndarray]:
         np.column_stack([np.zeros(25), heights]),
         np.column_stack([np.full(25, WIDTH), heights]),
     )
+
+
+def fit_places() -> dict[str, Any]:
+    """What `fit_table` asks of a kind beside the result."""
+    sources, receivers = positions()
+    return {"axes": ("distance", "elevation"), "positions": {"source": sources, "receiver": receivers}}
 
 
 def make_rehearsal(x: np.ndarray) -> Rehearsal:

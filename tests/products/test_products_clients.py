@@ -19,7 +19,7 @@ from stillground.products.history import history_dataset, write_history
 from stillground.products.pattern import pattern_dataset, write_pattern
 from stillground.products.picture import picture_dataset, write_picture
 from stillground.products.provenance import Provenance
-from stillground.protocols import Result
+from stillground.protocols import Result, RuleOptions
 
 from .made_up_results import axes_of, make_patterns
 
@@ -45,7 +45,9 @@ def section(
 
 @pytest.fixture
 def history(result: Result, surface: Any, provenance: Provenance, tmp_path: Path) -> Path:
-    made = history_dataset("crosshole-ab", result, surface=surface, provenance=provenance)
+    made = history_dataset(
+        "crosshole-ab", result, options=RuleOptions(), surface=surface, provenance=provenance
+    )
     return write_history(tmp_path, "crosshole-ab", made)
 
 

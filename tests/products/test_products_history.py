@@ -8,12 +8,13 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+import pytest
 import xarray as xr
 
 from stillground.products.history import history_dataset, write_history
 from stillground.products.ladder import ladder_dataset, write_ladder
 from stillground.products.provenance import Provenance
-from stillground.protocols import Field, Result
+from stillground.protocols import Field, Result, RuleOptions
 
 from .made_up_results import slowness
 
@@ -24,7 +25,9 @@ def reread(path: Path) -> xr.Dataset:
 
 
 def written(result: Result, provenance: Provenance, folder: Path, surface: Any = None) -> xr.Dataset:
-    made = history_dataset("crosshole-ab", result, surface=surface, provenance=provenance)
+    made = history_dataset(
+        "crosshole-ab", result, options=RuleOptions(), surface=surface, provenance=provenance
+    )
     return reread(write_history(folder, "crosshole-ab", made))
 
 
@@ -54,6 +57,16 @@ def test_whiteness_has_a_curve_for_each_grouping(
         np.testing.assert_allclose(curve, result.history.whiteness[grouping], rtol=1e-6)
         assert grouping in curve.attrs["long_name"]
         assert "1.36" in curve.attrs["long_name"]
+
+
+def test_gcv_and_the_target_are_as_the_rules_took_them(result: Result, provenance: Provenance) -> None:
+    options = RuleOptions(tau=1.2, gcv_factor=1.4, noise=2.0)
+    made = history_dataset("ab", result, options=options, surface=None, provenance=provenance)
+    # Golub, Heath and Wahba (1979), with the price of a degree of freedom.
+    history = result.history
+    expected = history.chi_square / (1 - 1.4 * history.degrees_of_freedom / history.n_data) ** 2
+    np.testing.assert_allclose(made["gcv"], expected, rtol=1e-6)
+    assert float(made["target_chi_square"]) == pytest.approx((1.2 * 2.0) ** 2)
 
 
 def test_a_curve_that_the_method_lacks_is_left_out(
@@ -124,7 +137,7 @@ def test_a_column_has_elevation_only(result: Result, provenance: Provenance) -> 
         snapshots=(),
         coverage=Field("path_density", result.coverage.values[3], "m-1", "ray length per area"),
     )
-    made = history_dataset("column", column, surface=None, provenance=provenance)
+    made = history_dataset("column", column, options=RuleOptions(), surface=None, provenance=provenance)
     assert made.slowness_at_pick.dims == ("rule", "elevation")
     assert "slowness_at_iteration" not in made
     np.testing.assert_allclose(

@@ -21,10 +21,10 @@ from stillground.products.points import points_table, write_points
 from stillground.products.provenance import Provenance, timestamp
 from stillground.products.summary import profile_summary, run_summary, write_summary
 from stillground.products.survey import survey_dataset, write_survey
-from stillground.protocols import Result
+from stillground.protocols import Result, RuleOptions
 
 from .crossing_lines import crossing_lines
-from .made_up_results import axes_of, make_patterns
+from .made_up_results import axes_of, fit_places, make_patterns
 
 
 def test_files_written_twice_are_the_same(
@@ -46,7 +46,7 @@ def test_files_written_twice_are_the_same(
             "ab", result, easting=result.axes[0], northing=result.axes[0], crs=crs, tolerance=0.02, **common
         )
         lines = crossing_lines(result, "EPSG:32631")
-        fit = fit_table(result, rows=np.arange(625), datum="time", unit="s", si_factor=1)
+        fit = fit_table(result, rows=np.arange(625), datum="time", unit="s", si_factor=1, **fit_places())
         paths = (
             write_picture(folder, "ab", section),
             write_curtain(folder, "ab", curtain_dataset(section, crs)),
@@ -54,7 +54,7 @@ def test_files_written_twice_are_the_same(
             write_points(folder, "ab", points_table(section, crs)),
             *write_map(folder, map_dataset(lines, slicing, crs=crs, provenance=origin)),
             write_survey(folder, survey_dataset(lines, static_units="s", crs=crs, provenance=origin)),
-            write_history(folder, "ab", history_dataset("ab", result, **common)),
+            write_history(folder, "ab", history_dataset("ab", result, options=RuleOptions(), **common)),
             write_ladder(folder, "ab", ladder_dataset("ab", result, tolerance=0.02, **common)),
             write_pattern(folder, "ab", pattern_dataset("ab", make_patterns(axes), axes, **common)),
             write_fit(folder, "ab", fit),

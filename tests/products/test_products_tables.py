@@ -18,6 +18,8 @@ from stillground.products.fit import fit_table, write_fit
 from stillground.products.summary import profile_summary, run_summary, write_summary
 from stillground.protocols import Result
 
+from .made_up_results import fit_places, positions
+
 
 @pytest.fixture
 def summary(result: Result) -> dict[str, Any]:
@@ -25,11 +27,13 @@ def summary(result: Result) -> dict[str, Any]:
 
 
 def test_the_fit_is_in_the_tables_unit(result: Result, tmp_path: Path) -> None:
-    made = fit_table(result, rows=np.arange(2, 627), datum="time", unit="ms", si_factor=1e-3)
+    made = fit_table(result, rows=np.arange(2, 627), datum="time", unit="ms", si_factor=1e-3, **fit_places())
     path = write_fit(tmp_path, "crosshole-ab", made)
     assert path.name == "crosshole-ab_fit.csv"
     assert path.read_bytes().startswith(
-        b"row,observed_time [ms],predicted_time [ms],residual_over_error,weight\n2,"
+        b"row,observed_time [ms],predicted_time [ms],residual_over_error,weight,"
+        b"source,source_distance [m],source_elevation [m],"
+        b"receiver,receiver_distance [m],receiver_elevation [m]\n2,"
     )
     read = pd.read_csv(path)
     np.testing.assert_allclose(read["observed_time [ms]"], 1e3 * result.observed, rtol=1e-8)
@@ -42,9 +46,22 @@ def test_the_fit_is_in_the_tables_unit(result: Result, tmp_path: Path) -> None:
     assert read["row"].tolist() == list(range(2, 627))
 
 
+def test_the_fit_names_groups_and_their_places(result: Result) -> None:
+    made = fit_table(result, rows=np.arange(625), datum="time", unit="s", si_factor=1, **fit_places())
+    sources, receivers = positions()
+    assert (made["source"].min(), made["source"].max()) == (1, 25)
+    for name, places in (("source", sources), ("receiver", receivers)):
+        stands = made[[f"{name}_distance [m]", f"{name}_elevation [m]"]].to_numpy()
+        np.testing.assert_array_equal(stands, places[result.groupings[name]])
+    bare = fit_table(
+        result, rows=np.arange(625), datum="time", unit="s", si_factor=1, axes=("elevation",), positions={}
+    )
+    assert list(bare.columns[-2:]) == ["source", "receiver"]
+
+
 def test_a_fit_that_cannot_be_written_is_named(result: Result, tmp_path: Path) -> None:
     (tmp_path / "results").write_text("")
-    made = fit_table(result, rows=np.arange(625), datum="time", unit="s", si_factor=1)
+    made = fit_table(result, rows=np.arange(625), datum="time", unit="s", si_factor=1, **fit_places())
     with pytest.raises(OutputError, match=r"crosshole-ab_fit\.csv"):
         write_fit(tmp_path / "results", "crosshole-ab", made)
 

@@ -26,7 +26,7 @@ from stillground.products.ladder import ladder_dataset
 from stillground.products.picture import picture_dataset
 from stillground.products.provenance import Provenance, timestamp
 from stillground.products.summary import profile_summary
-from stillground.protocols import Array, Result
+from stillground.protocols import Array, Result, RuleOptions
 from stillground.survey import row_numbers, to_si
 
 _PACKAGES = ("stillground", "numpy", "scipy", "pylops", "xarray", "numba", "netCDF4")
@@ -122,10 +122,22 @@ def label(
             provenance=origin,
             differences=profile.scene.differences,
         ),
-        history=history_dataset(profile.name, result, surface=surface, provenance=origin),
+        history=history_dataset(
+            profile.name,
+            result,
+            options=judged_by(config, result.noise),
+            surface=surface,
+            provenance=origin,
+        ),
         ladder=ladder_dataset(profile.name, result, surface=surface, tolerance=tolerance, provenance=origin),
         fit=fit_table(
-            result, rows=row_numbers(profile.survey), datum=kind.datum, unit=unit, si_factor=factor
+            result,
+            rows=row_numbers(profile.survey),
+            datum=kind.datum,
+            unit=unit,
+            si_factor=factor,
+            axes=kind.axes,
+            positions=profile.scene.positions,
         ),
         profile=profile,
         arrays=result,
@@ -143,6 +155,15 @@ def plan_trace(profile: Profile, axes: tuple[Array, ...], crs: pyproj.CRS | None
     _, metres = plan_unit(crs)
     easting, northing = profile.scene.trace(axes[0] if len(axes) > 1 else np.zeros(1))
     return np.asarray(easting) / metres, np.asarray(northing) / metres
+
+
+def judged_by(config: Config, noise: float) -> RuleOptions:
+    """The numbers that the rules took; ``noise`` is the size found of the errors over what is stated."""
+    return RuleOptions(
+        tau=config.stopping.tau,
+        gcv_factor=config.stopping.gcv_factor,
+        noise=1.0 if config.errors.trust else noise,
+    )
 
 
 def _table_unit(profile: Profile, datum: str, si: str) -> tuple[str, float]:

@@ -18,7 +18,7 @@ from stillground.config import Config, from_mapping, load
 from stillground.errors import ConfigError
 from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
-from stillground.pipeline.labels import ProfileResult, label, provenance, survey_crs
+from stillground.pipeline.labels import ProfileResult, judged_by, label, provenance, survey_crs
 from stillground.pipeline.profiles import place, read_profiles
 from stillground.pipeline.site import line, plan_slices, recalled, write_site
 from stillground.products.curtain import curtain_dataset, write_curtain
@@ -32,7 +32,7 @@ from stillground.products.points import points_table, write_points
 from stillground.products.provenance import Provenance
 from stillground.products.summary import SUMMARY, run_summary, write_summary
 from stillground.progress import finish
-from stillground.protocols import Progress, RuleOptions
+from stillground.protocols import Progress
 from stillground.whole import require_writable
 
 
@@ -239,11 +239,7 @@ def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Pro
             differences=scene.differences,
             surface=scene.surface,
             tolerance=config.refinement.tolerance,
-            options=RuleOptions(
-                tau=config.stopping.tau,
-                gcv_factor=config.stopping.gcv_factor,
-                noise=1.0 if config.errors.trust else result.arrays.noise,
-            ),
+            options=judged_by(config, result.arrays.noise),
         )
     yield Progress("writing products", 2, 2)
     return _names(folder, written)

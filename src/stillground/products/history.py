@@ -12,7 +12,7 @@ from stillground.products.cf import COORDINATES
 from stillground.products.netcdf import write_netcdf
 from stillground.products.provenance import Provenance, argument
 from stillground.products.raster import Surface, coordinates, ground, map_variable
-from stillground.protocols import Array, Choice, Field, Result
+from stillground.protocols import Array, Choice, Field, Result, RuleOptions
 
 CURVES = {
     "residual_norm": "norm of the whitened residual",
@@ -28,7 +28,12 @@ CURVES = {
 
 
 def history_dataset(
-    name: str, result: Result, *, surface: Surface | None, provenance: Provenance
+    name: str,
+    result: Result,
+    *,
+    options: RuleOptions,
+    surface: Surface | None,
+    provenance: Provenance,
 ) -> xr.Dataset:
     """The iteration on the finest rung as a dataset.
 
@@ -37,6 +42,8 @@ def history_dataset(
     name : str
         Of the profile.
     result : Result
+    options : RuleOptions
+        As the rules took them.
     surface : pair of arrays (distance, elevation), m, or None
         Pictures are NaN above it.
     provenance : Provenance
@@ -44,12 +51,13 @@ def history_dataset(
     Returns
     -------
     xarray.Dataset
-        Over ``iteration`` the curves that the method has, ``whiteness_<grouping>`` among them. Over
-        ``rule`` ``picked_iteration`` (NaN where the rule found none), ``firm``, ``reason``, and of the
+        Over ``iteration`` the curves that the method has, ``gcv`` and ``whiteness_<grouping>`` among them.
+        Over ``rule`` ``picked_iteration`` (NaN where the rule found none), ``firm``, ``reason``, and of the
         iteration where the rule's picture is taken ``shown_iteration``, ``shown_chi_square``,
         ``shown_roughness`` and ``shown_distance``. The property as
         ``<property>_at_pick(rule, elevation, distance)`` and
-        ``<property>_at_iteration(kept_iteration, elevation, distance)``. The scalar ``noise``. Unknowns
+        ``<property>_at_iteration(kept_iteration, elevation, distance)``. The scalars ``noise`` and
+        ``target_chi_square``, what the misfit is asked to fall to. Unknowns
         beside the ground by their names: a lone one is a scalar, several lie on ``<name>_number``, which
         counts the groups of the survey in their order.
     """
@@ -67,6 +75,9 @@ def history_dataset(
         for curve, long_name in CURVES.items()
         if (values := getattr(history, curve)) is not None
     }
+    if (gcv := history.gcv(options.gcv_factor)) is not None:
+        long_name = f"generalised cross-validation, degrees of freedom counted {options.gcv_factor:g} times"
+        variables["gcv"] = _numbers("iteration", np.where(np.isfinite(gcv), gcv, np.nan), long_name)
     for grouping, distances in history.whiteness.items():
         long_name = (
             f"distance from white noise, within each {grouping}; white stays under 1.36 in 95 % of cases"
@@ -75,6 +86,8 @@ def history_dataset(
     variables |= _picks(choices)
     size = np.array(result.noise)
     variables["noise"] = _numbers((), size, "estimated size of the errors over what is stated")
+    target = np.array((options.tau * options.noise) ** 2)
+    variables["target_chi_square"] = _numbers((), target, "target of the mean squared whitened residual")
     for label, found in result.extras.items():
         variables[label] = _extra(label, found.values, found.units)
     seen = result.property
