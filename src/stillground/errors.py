@@ -53,3 +53,7 @@ class CapacityError(StillgroundError, MemoryError):
 
 class OutputError(StillgroundError, OSError):
     """A place that cannot be written, or a file that would be overwritten."""
+
+
+class ResultError(StillgroundError, ValueError):
+    """A result folder that cannot be used: a file is missing, damaged or of another version."""

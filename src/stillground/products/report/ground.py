@@ -1,0 +1,190 @@
+"""What the page shows of the ground: the property as people read it, its frame, what argues for it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+import xarray as xr
+from matplotlib import colormaps
+from numpy.typing import NDArray
+
+from stillground.products.figures.sheet import unit_text
+from stillground.products.reliability import NO_DATA, RELIABLE
+from stillground.products.report.folder import Profile
+from stillground.protocols import Array
+
+FIELD, CHANGE = "cividis", "PuOr"
+_EXAGGERATIONS, _FLATTEST = (1, 2, 5, 10, 20, 50, 100), 5.0
+
+
+@dataclass(frozen=True)
+class Frame:
+    """Where the nodes are; a column has one node across.
+
+    Parameters
+    ----------
+    distance : array, shape (nx,), m, or None for a column
+    elevation : array, shape (nz,), m, descending
+    surface : array, shape (nx,), or None
+        Elevation of the ground surface, m.
+    """
+
+    distance: Array | None
+    elevation: Array
+    surface: Array | None
+
+    @property
+    def shape(self) -> tuple[int, int]:
+        return self.elevation.size, 1 if self.distance is None else self.distance.size
+
+    @property
+    def exaggeration(self) -> int:
+        """How many times heights are drawn larger than distances: 1 but for long flat sections."""
+        if self.distance is None:
+            return 1
+        flat = float(np.ptp(self.distance) / np.ptp(self.elevation))
+        return next((n for n in _EXAGGERATIONS if flat / n <= _FLATTEST), _EXAGGERATIONS[-1])
+
+
+@dataclass(frozen=True)
+class Companion:
+    """What argues for or against the answer place by place, as people read it: shape (nz, nx)."""
+
+    name: str
+    long_name: str
+    units: str
+    comment: str
+    values: Array
+
+
+@dataclass(frozen=True)
+class Ground:
+    """One profile's ground; fields have shape (nz, nx), elevation descending, carried up above the surface.
+
+    Parameters
+    ----------
+    frame : Frame
+    name, long_name, units : str
+        Of the property as people read it.
+    inverse : bool
+        It is one over what the files hold.
+    model : array
+    flags : array of int8
+        As in `stillground.products.reliability`, carried up as well.
+    inside : array of bool
+        Which nodes lie in the ground.
+    companions : tuple of Companion
+        Coverage first.
+    """
+
+    frame: Frame
+    name: str
+    long_name: str
+    units: str
+    inverse: bool
+    model: Array
+    flags: NDArray[np.int8]
+    inside: NDArray[np.bool_]
+    companions: tuple[Companion, ...]
+
+    @property
+    def scale(self) -> tuple[float, float]:
+        """Ends of the colours: the middle 99 % of the reliable ground, as in the figures."""
+        reliable = self.model[self.inside & (self.flags == RELIABLE)]
+        low, high = np.percentile(reliable if reliable.size else self.model, [0.5, 99.5])
+        return float(low), float(low + (max(high - low, 1e-6 * abs(high)) or 1.0))
+
+    def shown(self, stored: Array) -> Array:
+        """Pictures of the property from a file, as people read them.
+
+        Shape (..., nz, nx), on any grid; (..., nz) of a column.
+        """
+        values = np.asarray(stored)
+        if self.frame.distance is None:
+            values = values[..., np.newaxis]
+        values = carried_up(values)
+        return 1 / values if self.inverse else values
+
+
+def ground_of(profile: Profile) -> Ground:
+    """What the files of a profile say of its ground."""
+    section = profile.section
+    answer = section[profile.seen]
+    column = "distance" not in profile.dims
+    frame = Frame(
+        None if column else section["distance"].values,
+        section["elevation"].values,
+        section["surface_altitude"].values if "surface_altitude" in section and not column else None,
+    )
+    flags = section["reliability"].values.reshape(frame.shape)
+    stored = answer.values.reshape(frame.shape).astype(np.float64)
+    inside = np.isfinite(stored)
+    stored = carried_up(stored)
+    others = [
+        section[name]
+        for name in section.data_vars
+        if name != profile.seen
+        and section[name].dims == answer.dims
+        and section[name].attrs.get("coverage_content_type") == "modelResult"
+    ]
+    told = others[0] if others else answer
+    return Ground(
+        frame=frame,
+        name=str(told.name).replace("_", " "),
+        long_name=_said(told, "long_name"),
+        units=unit_text(_said(told, "units")),
+        inverse=bool(others),
+        model=1 / stored if others else stored,
+        flags=_flags_carried_up(flags),
+        inside=inside,
+        companions=tuple(_companions(section, answer, told, stored)),
+    )
+
+
+def _companions(
+    section: xr.Dataset, answer: xr.DataArray, told: xr.DataArray, stored: Array
+) -> Iterator[Companion]:
+    for name in _said(answer, "ancillary_variables").split():
+        if name not in section or name == "reliability":
+            continue
+        variable = section[name]
+        values = variable.values.reshape(stored.shape).astype(np.float64)
+        if not np.isfinite(values).any():
+            continue
+        values = carried_up(values)
+        units, long_name = _said(variable, "units"), _said(variable, "long_name")
+        if told is not answer and units == _said(answer, "units"):
+            # Small changes of one over the property, told as those of what people read.
+            values, units = values / stored**2, _said(told, "units")
+            long_name = long_name.replace(_said(answer, "long_name"), _said(told, "long_name"))
+        yield Companion(name, long_name, unit_text(units), _said(variable, "comment"), values)
+
+
+def _said(variable: xr.DataArray, attribute: str) -> str:
+    return str(variable.attrs.get(attribute, ""))
+
+
+def carried_up(values: Array) -> Array:
+    """Values of the uppermost ground carried on above it, shape (..., nz, nx).
+
+    Pictures are then whole up to the surface, where they are cut, and not in stairs.
+    """
+    missing = ~np.isfinite(values)
+    if not missing.any():
+        return values
+    first = np.argmin(missing, axis=-2, keepdims=True)
+    top = np.take_along_axis(values, first, axis=-2)
+    return np.where(missing, top, values)
+
+
+def _flags_carried_up(flags: NDArray[np.int8]) -> NDArray[np.int8]:
+    outside = flags == NO_DATA
+    top = np.take_along_axis(flags, np.argmin(outside, axis=0, keepdims=True), axis=0)
+    return np.where(outside, top, flags).astype(np.int8)
+
+
+def colours(name: str) -> NDArray[np.uint8]:
+    """A colour table, shape (256, 3)."""
+    return np.round(255 * colormaps[name](np.linspace(0, 1, 256))[:, :3]).astype(np.uint8)

@@ -1,0 +1,356 @@
+"""``report.html``: one page for a run, made from its product files alone, that needs no network."""
+
+from __future__ import annotations
+
+import base64
+import hashlib
+from collections.abc import Mapping
+from dataclasses import dataclass
+from functools import cache
+from importlib.resources import files
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from jinja2 import Environment, PackageLoader, StrictUndefined
+from markupsafe import Markup
+
+from stillground.products.figures.sheet import VERDICTS
+from stillground.products.provenance import CAUTION
+from stillground.products.reliability import MEANINGS, MESH_DEPENDENT, POORLY_COVERED, RELIABLE
+from stillground.products.report.curves import curve_charts, curve_table
+from stillground.products.report.drawing import badge_symbol, minus
+from stillground.products.report.encoding import Packed, pack
+from stillground.products.report.folder import Entry, Profile, Results, RuleEntry, read_results
+from stillground.products.report.ground import CHANGE, FIELD, Companion, Ground, colours, ground_of
+from stillground.products.report.history import Pictures, pictures
+from stillground.products.report.misfits import extra_charts, fit_charts, legible, outliers, places
+from stillground.products.report.picture import Sight, colour_bar, large, small
+from stillground.products.report.rungs import change_chart, rung_pictures
+from stillground.protocols import Array
+from stillground.whole import whole
+
+REPORT = "report.html"
+MOST_BYTES = 8_000_000
+# Of a page for the rest: a profile's charts and pictures, and the page itself.
+_CHARTS, _PAGE = 700_000, 60_000
+_ROOM = (250.0, 210.0)
+_FAMILIES = {"prior": "from the prior", "layers": "level layers", "described": "the described ground"}
+
+
+def write_report(folder: Path, out: Path | None = None) -> Path:
+    """Makes ``report.html`` from the products in ``folder``.
+
+    Parameters
+    ----------
+    folder : Path
+        With ``summary.json`` and the files that it names.
+    out : Path, optional
+        Folder to write into; default: ``folder``.
+
+    Raises
+    ------
+    ResultError
+        When a product is missing or damaged.
+    OutputError
+        When the place cannot be written.
+    """
+    return write_page(out or folder, report_page(read_results(folder)))
+
+
+def write_page(folder: Path, page: str) -> Path:
+    """Write a page as ``report.html`` into ``folder``; `OutputError` when the place cannot be written."""
+    path = folder / REPORT
+    with whole(path) as temporary:
+        temporary.write_text(page, encoding="utf-8", newline="\n")
+    return path
+
+
+def report_page(results: Results) -> str:
+    """The page of a run as text."""
+    rules = dict.fromkeys(rule.rule for profile in results.profiles for rule in profile.entry.rules)
+    symbols = {rule: f"badge-{number}" for number, rule in enumerate(rules)}
+    room = (MOST_BYTES - _PAGE) // len(results.profiles) - _CHARTS
+    return rendered(
+        "report.html",
+        summary=results.summary,
+        caution=CAUTION,
+        symbols=joined_symbols(symbols),
+        profiles=[_profile(profile, symbols, room, i) for i, profile in enumerate(results.profiles)],
+    )
+
+
+def rendered(template: str, **said: Any) -> str:
+    """A page from a template, with style and script inside and a policy that allows these alone."""
+    style, script = _asset("report.css"), _asset("report.js")
+    return _environment().get_template(template).render(
+        style=Markup(style),
+        script=Markup(script),
+        policy=f"default-src 'none'; script-src '{_digest(script)}'; style-src '{_digest(style)}'; "
+        f"img-src data:; base-uri 'none'; form-action 'none'",
+        tables={name: packed_colours(name) for name in (FIELD, CHANGE)},
+        **said,
+    )  # fmt: skip
+
+
+def joined_symbols(symbols: Mapping[str, str]) -> Markup:
+    """Badges of the rules as SVG symbols, to be used by their ids."""
+    return Markup("").join(badge_symbol(rule, name) for rule, name in symbols.items())
+
+
+def packed_colours(name: str) -> str:
+    """A colour table as base64 of 256 times red, green and blue."""
+    return base64.b64encode(colours(name).tobytes()).decode("ascii")
+
+
+@dataclass(frozen=True)
+class RuleRow:
+    """A rule as the page lists it."""
+
+    entry: RuleEntry
+    symbol: str
+    chosen: bool
+
+
+def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: int) -> dict[str, Any]:
+    entry, ground = profile.entry, ground_of(profile)
+    stand = places(profile)
+    frames = pictures(profile, ground, max(room, 1))
+    label = f"{ground.name} ({ground.units})"
+    stop = _number(entry.chosen.iteration)
+    said = (
+        f"{ground.long_name} at the pick of {entry.chosen.rule}, iteration {stop}: from "
+        f"{ground.model.min():.4g} to {ground.model.max():.4g} {ground.units}; "
+        f"hatched where it is not reliable"
+    )
+    noise = next((c for c in ground.companions if c.name.endswith("_noise_part")), None)
+    sight = Sight(ground.model, ground.scale, label, said)
+    listed, light = outliers(profile)
+    drawn = {rule: name for rule, name in symbols.items() if rule in {r.rule for r in entry.rules}}
+    live = _live(profile, ground, frames, stand, drawn)
+    return {
+        "id": f"profile-{number}",
+        "entry": entry,
+        "shape": VERDICTS[entry.refinement.verdict][1],
+        "numbers": numbers(entry),
+        "shares": _shares(ground),
+        "rules": [RuleRow(rule, drawn[rule.rule], rule.rule == entry.chosen.rule) for rule in entry.rules],
+        "ground": ground,
+        "column": ground.frame.distance is None,
+        "tall": ground.frame.shape[0] * ground.frame.exaggeration > 0.8 * ground.frame.shape[1],
+        "static": large(ground, sight, stand, None if noise is None else noise.values),
+        "picks": _picks(profile, ground, label, drawn),
+        "bar": colour_bar(Sight(ground.model, ground.scale, label, said)),
+        "curves": curve_charts(profile, drawn),
+        "table": curve_table(profile),
+        "change": change_chart(profile),
+        "rungs": rung_pictures(profile, ground),
+        "fit": fit_charts(profile),
+        "extras": _extras(entry),
+        "extra_charts": extra_charts(profile),
+        "outliers": listed,
+        "light": light,
+        "groupings": profile.groupings,
+        "quality": [_quality(ground, companion) for companion in ground.companions],
+        "families": _FAMILIES,
+        "cautions": _cautions(profile),
+        "provenance": _provenance(profile),
+        "note": frames.note,
+        "places": list(stand),
+        "live": live,
+        "stacks": _stacks(ground, frames),
+    }
+
+
+def _live(
+    profile: Profile, ground: Ground, frames: Pictures, stand: Mapping[str, Array], symbols: Mapping[str, str]
+) -> dict[str, Any]:
+    """What the script must know of a profile."""
+    entry, frame = profile.entry, ground.frame
+    change, spread = _change_scales(profile, ground)
+    return {
+        "name": entry.name,
+        "frame": frame_data(ground),
+        "property": {"name": ground.name, "units": ground.units},
+        "scale": [_short(end) for end in ground.scale],
+        "change": _short(change),
+        "spread": _short(spread),
+        "iterations": [_short(k) for k in frames.iterations],
+        "frames": [[one["stack"], one["index"]] for one in frames.frames],
+        "rules": [
+            {
+                "name": rule.rule,
+                "symbol": symbols[rule.rule],
+                "frame": frames.picks[rule.rule],
+                "stops": rule.iteration is not None,
+                "firm": rule.firm,
+            }
+            for rule in entry.rules
+            if rule.rule in frames.picks
+        ],
+        "chosen": entry.chosen.rule,
+        "stacks": {name: packed.about for name, packed in _stacks(ground, frames).items()},
+        "companions": [[one.name, one.long_name, one.units] for one in ground.companions],
+        "meanings": [meaning.replace("_", " ") for meaning in MEANINGS],
+        "places": [[name, np.round(where, 3).tolist()] for name, where in stand.items()],
+    } | ({} if frame.distance is not None else {"column": True})
+
+
+def frame_data(ground: Ground) -> dict[str, Any]:
+    """Where the nodes are, for the script."""
+    frame = ground.frame
+    return {
+        "distance": None if frame.distance is None else [float(frame.distance[0]), float(frame.distance[-1])],
+        "elevation": [float(frame.elevation[0]), float(frame.elevation[-1])],
+        "surface": None if frame.surface is None else np.round(frame.surface, 3).tolist(),
+        "exaggeration": frame.exaggeration,
+        "nz": frame.shape[0],
+        "nx": frame.shape[1],
+    }
+
+
+def _stacks(ground: Ground, frames: Pictures) -> dict[str, Packed]:
+    quality = np.stack([ground.flags.astype(float), *(one.values for one in ground.companions)])
+    stacks = {"picks": frames.picked, "quality": pack(quality, 1)}
+    return stacks if frames.between is None else stacks | {"between": frames.between}
+
+
+def _change_scales(profile: Profile, ground: Ground) -> tuple[float, float]:
+    """Ends of the colours for differences from a pick and for the spread between picks."""
+    models = ground.shown(profile.history[f"{profile.seen}_at_pick"].values)
+    firm = profile.history["firm"].values == 1
+    used = models[firm] if np.sum(firm) > 1 else models
+    reliable = ground.inside & (ground.flags == RELIABLE)
+    reliable = reliable if reliable.any() else ground.inside
+    spread = np.percentile((used.max(axis=0) - used.min(axis=0))[reliable], 99.5)
+    change = np.percentile(np.abs(models - ground.model)[:, reliable], 99)
+    least = 0.02 * (ground.scale[1] - ground.scale[0])
+    return max(float(change), least), max(float(spread), least)
+
+
+def numbers(entry: Entry) -> list[tuple[str, str, str]]:
+    """The four numbers of the verdict: label, value, unit."""
+    refinement = entry.refinement
+    last = refinement.change[-1] if refinement.change else None
+    return [
+        ("last change of the grid", _percent(last), "%" if last is not None else ""),
+        ("order of the changes", "–" if refinement.order is None else minus(f"{refinement.order:.1f}"), ""),
+        ("still to come", _percent(refinement.remaining), "%" if refinement.remaining is not None else ""),
+        ("misfit at the stop", f"{entry.chosen.chi_square:#.3g}", ""),
+    ]
+
+
+def _shares(ground: Ground) -> str:
+    """How much of the ground is not to be relied on, in words."""
+    flags = ground.flags[ground.inside]
+    told = [
+        f"{100 * np.mean(flags == flag):.0f} % {words}"
+        for flag, words in (
+            (POORLY_COVERED, "poorly covered"),
+            (MESH_DEPENDENT, "depends on the grid by itself"),
+        )
+        if (flags == flag).any()
+    ]
+    return "Of the ground " + " and ".join(told) + ": hatched below." if told else ""
+
+
+def _picks(
+    profile: Profile, ground: Ground, label: str, symbols: Mapping[str, str]
+) -> list[tuple[str, Markup, str]]:
+    """The picture at every pick, for print: symbol, picture, caption."""
+    history = profile.history
+    models = ground.shown(history[f"{profile.seen}_at_pick"].values)
+    rules = {rule.rule: rule for rule in profile.entry.rules}
+    found = []
+    for name, model, at in zip(
+        history["rule"].values, models, history["shown_iteration"].values, strict=True
+    ):
+        rule = rules[str(name)]
+        stands = "firm" if rule.firm else "weak"
+        where = (
+            f"iteration {_number(float(at))}, {stands}" if rule.iteration is not None else "no stop: the last"
+        )
+        said = f"{ground.long_name} at the pick of {rule.rule}, {where}"
+        picture = small(ground, Sight(model, ground.scale, label, said), _ROOM)
+        found.append((symbols[rule.rule], picture, f"{rule.rule}: {where}"))
+    return found
+
+
+def _quality(ground: Ground, companion: Companion) -> tuple[Markup, Markup, str, str]:
+    """A companion's picture, colour bar, caption and comment."""
+    values = companion.values[ground.inside]
+    low, high = np.percentile(values, [0, 99])
+    label = f"{companion.units or '1'}"
+    title = companion.long_name[:1].upper() + companion.long_name[1:]
+    sight = Sight(companion.values, (min(float(low), 0.0), max(float(high), 1e-12)), label, title)
+    return small(ground, sight, _ROOM), colour_bar(sight, 220), title, companion.comment
+
+
+def _extras(entry: Entry) -> list[tuple[str, str]]:
+    told = []
+    for name, extra in entry.extras.items():
+        numbers = extra.values if extra.values is not None else [extra.rms or 0.0, extra.largest or 0.0]
+        values, units = legible(np.array(numbers), extra.units)
+        words = [f"{minus(f'{value:.3g}')} {units}".strip() for value in values]
+        told.append(
+            (name.replace("_", " "), words[0] if extra.values else f"rms {words[0]}, largest {words[1]}")
+        )
+    return told
+
+
+def _cautions(profile: Profile) -> list[str]:
+    """What the file says beside the caution that stands on every page."""
+    said = str(profile.section.attrs.get("comment", "")).removeprefix(CAUTION).strip()
+    return [said] if said else []
+
+
+def _provenance(profile: Profile) -> dict[str, Any]:
+    attributes = profile.section.attrs
+    when, _, command = str(attributes.get("history", "")).partition(" ")
+    inputs = [line.split("  ", 1) for line in str(attributes.get("input_sha256", "")).splitlines()]
+    return {
+        "made": when,
+        "command": command,
+        "inputs": [(name, digest) for digest, name in (pair for pair in inputs if len(pair) == 2)],
+        "versions": str(attributes.get("package_versions", "")),
+        "configuration": str(attributes.get("configuration", "")),
+    }
+
+
+def _percent(share: float | None) -> str:
+    if share is None:
+        return "–"
+    percent = 100 * share
+    return minus(f"{percent:.2g}" if abs(percent) < 99.5 else f"{percent:.0f}")
+
+
+def _number(value: float | None, digits: int = 3) -> str:
+    return "–" if value is None else minus(f"{value:.{digits}g}")
+
+
+def _short(value: float) -> float:
+    """Nine digits: the page need not tell more."""
+    return float(f"{float(value):.9g}")
+
+
+@cache
+def _asset(name: str) -> str:
+    return (files(__package__) / "templates" / name).read_text(encoding="utf-8")
+
+
+def _digest(text: str) -> str:
+    """Source expression of the content policy for exactly this text."""
+    return "sha256-" + base64.b64encode(hashlib.sha256(text.encode("utf-8")).digest()).decode("ascii")
+
+
+@cache
+def _environment() -> Environment:
+    environment = Environment(
+        loader=PackageLoader(__package__, "templates"),
+        autoescape=True,
+        undefined=StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+    )
+    environment.filters |= {"number": _number, "percent": _percent}
+    return environment

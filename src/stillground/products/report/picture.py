@@ -1,0 +1,230 @@
+"""Pictures of the ground that need no script: for print, and where the live section cannot run."""
+
+from __future__ import annotations
+
+import base64
+import io
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from markupsafe import Markup
+from matplotlib.colors import to_rgb
+from numpy.typing import NDArray
+from PIL import Image
+
+from stillground.products.figures.field import FADE
+from stillground.products.figures.sheet import PAPER
+from stillground.products.reliability import MESH_DEPENDENT, POORLY_COVERED, RELIABLE
+from stillground.products.report.drawing import Chart, limits, minus
+from stillground.products.report.ground import FIELD, Frame, Ground, colours
+from stillground.protocols import Array
+
+HATCH = "#7c858c"
+_LEVELS = 100
+_BAR = 64
+_LARGEST = (820.0, 430.0)
+_COLUMN = (430.0, 430.0)
+
+
+@dataclass(frozen=True)
+class Sight:
+    """What a picture shows and how.
+
+    Parameters
+    ----------
+    values : array, shape (nz, nx), of any grid of the same extent
+    scale : (low, high)
+    label : str
+        Of the colour bar, with units.
+    said : str
+        The picture in words.
+    colours : str
+        Name of the colour table.
+    """
+
+    values: Array
+    scale: tuple[float, float]
+    label: str
+    said: str
+    colours: str = FIELD
+
+
+def large(ground: Ground, sight: Sight, places: Mapping[str, Array], band: Array | None = None) -> Markup:
+    """A picture with axes, colour bar, surface and positions; a column with its error band."""
+    frame = ground.frame
+    if frame.distance is None:
+        return _column(ground, sight, _COLUMN, band, places)
+    width, height = _fitted(frame, _LARGEST)
+    chart = _chart(frame, (width + 130, height + 62), (52, 78, 20, 42))
+    _image(chart, ground, sight, pixels=900)
+    exaggerated = f" (heights × {frame.exaggeration})" if frame.exaggeration > 1 else ""
+    chart.frame("distance (m)", f"elevation (m){exaggerated}", grid=False, ticks=(8, 7))
+    draw_places(chart, places)
+    _bar(chart, sight)
+    return chart.svg(sight.said, width=chart.size[0])
+
+
+def small(ground: Ground, sight: Sight, room: tuple[float, float]) -> Markup:
+    """A picture without axes that fits into ``room``, (width, height) in pixels."""
+    frame = ground.frame
+    if frame.distance is None:
+        return _column(ground, sight, room, None, {})
+    width, height = _fitted(frame, room)
+    chart = _chart(frame, (width + 2, height + 2), (1, 1, 1, 1))
+    _image(chart, ground, sight, pixels=360)
+    return chart.svg(sight.said, width=chart.size[0])
+
+
+def colour_bar(sight: Sight, width: float = 300) -> Markup:
+    """A lying colour bar for a row of small pictures."""
+    table = colours(sight.colours)
+    chart = Chart((width, 46), sight.scale, (0, 1), margins=(12, 12, 2, 32))
+    step = (chart.right - chart.left) / _BAR
+    for i in range(_BAR):
+        shade = table[round(255 * (i + 0.5) / _BAR)]
+        chart.add("rect", x=chart.left + i * step, y=2, width=step + 0.5, height=10, fill=_hex(shade))
+    chart.bar_ticks(sight.label)
+    return chart.svg(f"colour bar: {sight.label}", width=width)
+
+
+def draw_places(chart: Chart, places: Mapping[str, Array]) -> None:
+    """Signs where the groups of the data stand: the first grouping stars, the others open triangles."""
+    for i, (_, where) in enumerate(places.items()):
+        path = "".join(
+            f"M{x:.1f} {y:.1f}" + ("m0 -5l1.5 3.4h3.7l-2.9 2.4 1 3.7-3.3-2.2-3.3 2.2 1-3.7-2.9-2.4h3.7z"
+                                   if i == 0 else "l-3.2 -6h6.400z")
+            for x, y in zip(chart.across(where[:, 0]), chart.up(where[:, 1]), strict=True)
+        )  # fmt: skip
+        chart.add("path", class_="place-first" if i == 0 else "place-other", d=path)
+
+
+def _fitted(frame: Frame, room: tuple[float, float]) -> tuple[float, float]:
+    assert frame.distance is not None
+    across = float(np.ptp(frame.distance))
+    up = float(np.ptp(frame.elevation)) * frame.exaggeration
+    scale = min(room[0] / across, room[1] / up)
+    return across * scale, up * scale
+
+
+def _chart(frame: Frame, size: tuple[float, float], margins: tuple[float, float, float, float]) -> Chart:
+    assert frame.distance is not None
+    x = (float(frame.distance[0]), float(frame.distance[-1]))
+    return Chart(size, x, (float(frame.elevation[-1]), float(frame.elevation[0])), margins=margins)
+
+
+def _image(chart: Chart, ground: Ground, sight: Sight, pixels: int) -> None:
+    frame = ground.frame
+    width, height = chart.right - chart.left, chart.bottom - chart.top
+    density = pixels / max(width, height)
+    shape = (max(2, round(height * density)), max(2, round(width * density)))
+    chart.add(
+        "image",
+        href=_png(ground, sight, shape),
+        x=chart.left,
+        y=chart.top,
+        width=width,
+        height=height,
+        preserveAspectRatio="none",
+    )
+    if frame.surface is not None:
+        chart.line(frame.distance if frame.distance is not None else (), frame.surface, "surface")
+
+
+def _png(ground: Ground, sight: Sight, shape: tuple[int, int]) -> str:
+    """The function at the pixels, opaque: unreliable ground blended with paper and hatched, as data: URI."""
+    frame = ground.frame
+    low, high = sight.scale
+    level = np.clip((_resampled(sight.values, shape) - low) / (high - low), 0, 1)
+    code = np.rint(level * (_LEVELS - 1)).astype(np.uint8)
+    rows, columns = np.indices(shape, sparse=True)
+    for flag, hatched in (
+        (POORLY_COVERED, (rows + columns) % 9 == 0),
+        (MESH_DEPENDENT, (rows % 7 == 0) & (columns % 7 == 0)),
+    ):
+        here = _resampled((ground.flags == flag).astype(float), shape) >= 0.5
+        code[here] += _LEVELS
+        code[here & hatched] = 2 * _LEVELS
+    if frame.surface is not None:
+        surface = _resampled(np.vstack([frame.surface, frame.surface]), (2, shape[1]))[0]
+        ends = frame.elevation[0], frame.elevation[-1]
+        height = ends[0] - (np.arange(shape[0]) + 0.5) / shape[0] * (ends[0] - ends[1])
+        code[height[:, None] > surface] = 2 * _LEVELS + 1
+    table = colours(sight.colours)[np.rint(np.linspace(0, 255, _LEVELS)).astype(int)].astype(float)
+    paper = 255 * np.array(to_rgb(PAPER))
+    veiled = (1 - FADE) * table + FADE * paper
+    extra = 255 * np.array([to_rgb(HATCH), to_rgb("#fffefb")])
+    image = Image.frombytes("P", shape[::-1], np.ascontiguousarray(code).tobytes())
+    image.putpalette(np.rint(np.vstack([table, veiled, extra])).astype(np.uint8).tobytes())
+    held = io.BytesIO()
+    image.save(held, "PNG", compress_level=6)
+    return "data:image/png;base64," + base64.b64encode(held.getvalue()).decode("ascii")
+
+
+def _resampled(field: Array, shape: tuple[int, int]) -> Array:
+    """The bilinear function at the centres of pixels that fill the extent of the nodes."""
+    for n in shape:
+        at = (np.arange(n) + 0.5) / n * (field.shape[0] - 1)
+        before = np.minimum(at.astype(int), field.shape[0] - 2)
+        weight = (at - before)[:, np.newaxis]
+        field = (field[before] * (1 - weight) + field[before + 1] * weight).T
+    return field
+
+
+def _bar(chart: Chart, sight: Sight) -> None:
+    table = colours(sight.colours)
+    left, step = chart.right + 14, (chart.bottom - chart.top) / _BAR
+    for i in range(_BAR):
+        y = chart.bottom - (i + 1) * step
+        shade = table[round(255 * (i + 0.5) / _BAR)]
+        chart.add("rect", x=left, y=y, width=12, height=step + 0.5, fill=_hex(shade))
+    scale = Chart(chart.size, (0, 1), sight.scale, margins=(0, 0, chart.margins[2], chart.margins[3]))
+    for value, text in scale.y_ticks(6):
+        chart.add("text", text, x=left + 17, y=float(scale.up(value)) + 4)
+    chart.add("text", sight.label, class_="label", x=chart.size[0] - 2, y=12, text_anchor="end")
+
+
+def _column(
+    ground: Ground,
+    sight: Sight,
+    size: tuple[float, float],
+    band: Array | None,
+    places: Mapping[str, Array],
+) -> Markup:
+    """Value against elevation; hatched where it is not reliable."""
+    elevation, values = ground.frame.elevation, sight.values[:, 0]
+    at = np.linspace(elevation[0], elevation[-1], values.size)
+    drawn = values if band is None else np.concatenate([values - band[:, 0], values + band[:, 0]])
+    ends = limits(np.append(drawn, sight.scale))
+    chart = Chart(size, ends, (float(elevation[-1]), float(elevation[0])), margins=(52, 14, 8, 38))
+    chart.frame(sight.label, "elevation (m)", ticks=(5, 7))
+    half = abs(float(elevation[0] - elevation[-1])) / max(elevation.size - 1, 1) / 2
+    for flag, height in zip(ground.flags[:, 0], elevation, strict=True):
+        if flag != RELIABLE:
+            top = max(float(chart.up(height + half)), chart.top)
+            bottom = min(float(chart.up(height - half)), chart.bottom)
+            chart.add("rect", class_="veil", x=chart.left, y=top, width=chart.right - chart.left,
+                      height=bottom - top)  # fmt: skip
+    if band is not None:
+        x = np.concatenate([values - band[:, 0], (values + band[:, 0])[::-1]])
+        chart.line(x, np.concatenate([at, at[::-1]]), "band")
+    chart.line(values, at)
+    for where in places.values():
+        for height in where[:, -1]:
+            chart.add("path", class_="axis", d=f"M{chart.left:.1f} {float(chart.up(height)):.1f}h-6")
+    return chart.svg(sight.said, width=size[0])
+
+
+def _hex(shade: NDArray[np.uint8]) -> str:
+    return "#" + bytes(shade).hex()
+
+
+def scale_text(value: float, units: str) -> str:
+    """A number with its unit, four digits.
+
+    Examples
+    --------
+    >>> scale_text(-1612.34, "m s⁻¹")
+    '−1612 m s⁻¹'
+    """
+    return f"{minus(f'{value:.4g}')} {units}".strip()
