@@ -205,6 +205,34 @@ def simulate(
 
 
 @app.command()
+def report(
+    folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="Results of a run.")],
+    other: Annotated[
+        Path | None, typer.Argument(metavar="[OTHER]", help="Results of another run, to compare.")
+    ] = None,
+    out: Out = None,
+) -> None:
+    """Make report.html of the results in FOLDER, from its files alone.
+
+    Nothing is run again: the folder may have come by mail. The page needs no network, and prints. With
+    OTHER, two results of one line stand side by side with their difference: profiles of equal name,
+    over the ground that both have; such a page goes to results/comparison unless --out says where.
+
+    \b
+    Examples:
+      stillground report results/osmere-weir-crosshole
+      stillground report results/first results/second --out comparison
+    """
+    from stillground.cli import console
+    from stillground.products.report import write_comparison, write_report
+
+    if other is None:
+        console.say(str(write_report(folder, out)))
+    else:
+        console.say(str(write_comparison(folder, other, out or Path("results") / "comparison")))
+
+
+@app.command()
 def plugins() -> None:
     """List kinds of measurement, solvers and stopping rules, with where each comes from."""
     from stillground.cli import tables

@@ -101,7 +101,7 @@ SolverName = Annotated[str, AfterValidator(_solver_name)]
 RuleName = Annotated[str, AfterValidator(_rule_name)]
 
 
-Product = Literal["section", "map", "survey", "curtain", "points", "history", "figures"]
+Product = Literal["section", "map", "survey", "curtain", "points", "history", "figures", "report"]
 
 Number = Annotated[float, Strict()]
 Count = Annotated[int, Strict()]
@@ -282,6 +282,16 @@ class MapSettings(Table):
 class OutputSettings(Table):
     folder: str | None = Field(None, description="default: results/<config name> where you are")
     products: list[Product] = Field(list(get_args(Product)), description="beside summary, ladder and fit")
+
+    @model_validator(mode="after")
+    def _report_has_its_files(self) -> Self:
+        missing = [name for name in ("section", "history") if name not in self.products]
+        if "report" in self.products and missing:
+            raise ValueError(
+                f"products: 'report' is made from the files of {' and '.join(missing)}; add them, or "
+                f"leave 'report' out"
+            )
+        return self
 
 
 class Point(Table):

@@ -30,6 +30,7 @@ from stillground.products.line import Line
 from stillground.products.picture import product, write_picture
 from stillground.products.points import points_table, write_points
 from stillground.products.provenance import Provenance
+from stillground.products.report import REPORT, write_report
 from stillground.products.summary import SUMMARY, run_summary, write_summary
 from stillground.progress import finish
 from stillground.protocols import Progress
@@ -117,8 +118,9 @@ def run(
             grids = plans[profile.name]
             arrays = yield from answer(profile, grids, config)
             result = label(profile, grids, arrays, config, origin)
-            # Until the new one is there, no summary must speak for files that are being replaced.
-            (folder / SUMMARY).unlink(missing_ok=True)
+            # Until the new ones are there, nothing must speak for files that are being replaced.
+            for name in (SUMMARY, REPORT):
+                (folder / name).unlink(missing_ok=True)
             written = yield from _write(folder, result, config)
             entries[profile.name] = result.summary(written) | {"fingerprint": mark}
             lines[profile.name] = line(result)
@@ -138,6 +140,10 @@ def run(
                 config.title, version("stillground"), seconds, [entries[name] for name in order], files
             )
             write_summary(folder, summary)
+    if "report" in config.output.products:
+        yield Progress("writing the report", 0, 1)
+        write_report(folder)
+        yield Progress("writing the report", 1, 1)
     return Outcome(folder, summary, interrupted)
 
 

@@ -16,6 +16,7 @@ from stillground.protocols import Array
 SIZE = (430.0, 168.0)
 _RAIL, _BADGE = 24.0, 16.0
 _ROWS = 40
+_LEAST, _MOST = 1e-2, 1e2
 
 
 @dataclass(frozen=True)
@@ -32,14 +33,16 @@ def curve_charts(profile: Profile, symbols: dict[str, str]) -> list[Markup]:
     iteration = history["iteration"].values.astype(float)
     misfit, roughness = (history[name].values.astype(float) for name in ("chi_square", "solution_norm"))
     target = float(history["target_chi_square"]) if "target_chi_square" in history else np.nan
-    drawn = misfit[roughness > 0] if (roughness > 0).any() else misfit
-    chart = _chart(limits(np.append(drawn, target), "log"), limits(roughness, "log"), ("log", "log"))
+    # Where the fit comes down to rounding, or all freedom is used up, nothing is to be seen any more.
+    misfit = np.where((roughness > 0) & (misfit > _LEAST * profile.entry.chosen.chi_square), misfit, np.nan)
+    chart = _chart(limits(np.append(misfit, target), "log"), limits(roughness, "log"), ("log", "log"))
     chart.frame("misfit (mean squared residual)", "roughness")
     _limit(chart, target, upright=True)
-    charts = [_finish(chart, profile, symbols, misfit, roughness, _said("Roughness against misfit", misfit))]
+    charts = [_finish(chart, profile, symbols, misfit, roughness, "Roughness against misfit")]
     along = (0.0, float(max(iteration[-1], 1)))
     if "gcv" in history:
         gcv = history["gcv"].values.astype(float)
+        gcv = np.where(gcv < _MOST * np.nanmin(gcv), gcv, np.nan) if np.isfinite(gcv).any() else gcv
         chart = _chart(along, limits(gcv, "log"), ("log1p", "log"))
         chart.frame("iteration", "GCV")
         least = int(np.nanargmin(gcv)) if np.isfinite(gcv).any() else 0
@@ -81,12 +84,6 @@ def curve_table(profile: Profile) -> CurveTable:
     return CurveTable(
         tuple(found.values()),
         tuple(tuple(f"{float(history[name].values[row]):.4g}" for name in found) for row in rows),
-    )
-
-
-def _said(what: str, misfit: Array) -> str:
-    return (
-        f"{what}; the misfit falls from {misfit[0]:.3g} to {misfit[-1]:.3g} in {misfit.size - 1} iterations"
     )
 
 

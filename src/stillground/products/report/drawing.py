@@ -214,8 +214,9 @@ def _ticks(ends: tuple[float, float], scale: str, wanted: int) -> list[tuple[flo
         candidates = [float(tick) for tick in _ITERATIONS]
     elif scale == "log":
         decades = range(math.floor(math.log10(low)), math.ceil(math.log10(high)) + 1)
-        steps = (1, 2, 5) if math.log10(high / low) < 0.5 * wanted else (1,)
-        round_ = [m * 10.0**e for e in decades for m in steps]
+        size = math.log10(high / low)
+        steps = (1, 2, 5) if size < 0.5 * wanted else (1,)
+        round_ = [m * 10.0**e for e in decades[:: max(1, math.ceil(size / (1.5 * wanted)))] for m in steps]
         if sum(low <= tick <= high for tick in round_) > 1:
             candidates = round_
     slack = 1e-9 * (high - low)

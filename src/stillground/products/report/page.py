@@ -246,7 +246,7 @@ def _shares(ground: Ground) -> str:
     told = [
         f"{100 * np.mean(flags == flag):.0f} % {words}"
         for flag, words in (
-            (POORLY_COVERED, "poorly covered"),
+            (POORLY_COVERED, "is poorly covered"),
             (MESH_DEPENDENT, "depends on the grid by itself"),
         )
         if (flags == flag).any()
