@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Mapping
 from dataclasses import replace
 from datetime import UTC, datetime
@@ -9,11 +10,14 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+import pandas as pd
+import xarray as xr
 from pyproj import CRS
 
 from stillground.products.fit import fit_table, write_fit
 from stillground.products.history import history_dataset, write_history
 from stillground.products.ladder import ladder_dataset, write_ladder
+from stillground.products.netcdf import write_netcdf
 from stillground.products.provenance import Provenance
 from stillground.products.section import section_dataset, write_section
 from stillground.products.summary import profile_summary, run_summary, write_summary
@@ -32,9 +36,10 @@ def write_folder(
     surface: Any = None,
     command: str = "stillground run osmere-weir.toml",
     shift: float = 0.0,
+    north: bool = False,
     config_text: str = 'title = "Osmere Weir"\n',
 ) -> Path:
-    """The products of a run over some profiles; ``shift`` moves the trace eastwards, m."""
+    """The products of a run over some profiles; ``shift`` moves the trace east, m; ``north`` turns it."""
     origin = Provenance(
         title=title,
         config_text=config_text,
@@ -51,8 +56,8 @@ def write_folder(
         section = section_dataset(
             name,
             result,
-            easting=431250 + shift + along,
-            northing=np.full(along.size, 5312480.0),
+            easting=431250 + shift + (0 if north else along) + np.zeros(along.size),
+            northing=5312480.0 + (along if north else 0) + np.zeros(along.size),
             crs=CRS("EPSG:32631"),
             tolerance=0.02,
             **common,
@@ -89,13 +94,6 @@ def write_column(folder: Path, result: Result, at: int) -> Path:
     Written from a section's products, because the layout is the contract: the same variables over
     ``elevation``, the file under the key ``column``.
     """
-    import json
-
-    import pandas as pd
-    import xarray as xr
-
-    from stillground.products.netcdf import write_netcdf
-
     write_folder(folder, {"sounding": result})
     summary = json.loads((folder / "summary.json").read_text())
     files = summary["profiles"][0]["files"]

@@ -208,7 +208,7 @@ def simulate(
 def report(
     folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="Results of a run.")],
     other: Annotated[
-        Path | None, typer.Argument(metavar="[OTHER]", help="Results of another run, to compare.")
+        Path | None, typer.Argument(metavar="OTHER", help="Results of another run, to compare.")
     ] = None,
     out: Out = None,
 ) -> None:

@@ -16,7 +16,7 @@ from stillground.products.report.folder import Profile
 from stillground.protocols import Array
 
 FIELD, CHANGE = "cividis", "PuOr"
-_EXAGGERATIONS, _FLATTEST = (1, 2, 5, 10, 20, 50, 100), 5.0
+_EXAGGERATIONS, _FLATTEST, _TALL = (1, 2, 5, 10, 20, 50, 100), 5.0, 1.25
 
 
 @dataclass(frozen=True)
@@ -42,10 +42,16 @@ class Frame:
     @property
     def exaggeration(self) -> int:
         """How many times heights are drawn larger than distances: 1 but for long flat sections."""
-        if self.distance is None:
-            return 1
-        flat = float(np.ptp(self.distance) / np.ptp(self.elevation))
-        return next((n for n in _EXAGGERATIONS if flat / n <= _FLATTEST), _EXAGGERATIONS[-1])
+        return next((n for n in _EXAGGERATIONS if self._flatness / n <= _FLATTEST), _EXAGGERATIONS[-1])
+
+    @property
+    def tall(self) -> bool:
+        """Whether controls find room beside the picture; if not they stand below."""
+        return self._flatness < _TALL
+
+    @property
+    def _flatness(self) -> float:
+        return 0.0 if self.distance is None else float(np.ptp(self.distance) / np.ptp(self.elevation))
 
 
 @dataclass(frozen=True)

@@ -137,7 +137,7 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
         "rules": [RuleRow(rule, drawn[rule.rule], rule.rule == entry.chosen.rule) for rule in entry.rules],
         "ground": ground,
         "column": ground.frame.distance is None,
-        "tall": ground.frame.shape[0] * ground.frame.exaggeration > 0.8 * ground.frame.shape[1],
+        "tall": ground.frame.tall,
         "static": large(ground, sight, stand, None if noise is None else noise.values),
         "picks": _picks(profile, ground, label, drawn),
         "bar": colour_bar(Sight(ground.model, ground.scale, label, said)),

@@ -58,8 +58,8 @@ def large(ground: Ground, sight: Sight, places: Mapping[str, Array], band: Array
     width, height = _fitted(frame, _LARGEST)
     chart = _chart(frame, (width + 130, height + 62), (52, 78, 20, 42))
     _image(chart, ground, sight, pixels=900)
-    exaggerated = f" (heights × {frame.exaggeration})" if frame.exaggeration > 1 else ""
-    chart.frame("distance (m)", f"elevation (m){exaggerated}", grid=False, ticks=(8, 7))
+    exaggerated = f", heights × {frame.exaggeration}" if frame.exaggeration > 1 else ""
+    chart.frame(f"distance (m){exaggerated}", "elevation (m)", grid=False, ticks=(8, 7))
     draw_places(chart, places)
     _bar(chart, sight)
     return chart.svg(sight.said, width=chart.size[0])

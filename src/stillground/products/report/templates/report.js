@@ -206,9 +206,9 @@ class Section {
     }
     add('text', {class: 'label', x: width - 2, y: 11, 'text-anchor': 'end'}, sight.label);
     add('rect', {class: 'box', x: PAD.left, y: PAD.top, width: this.wide, height: this.high});
-    add('text', {class: 'label', x: (PAD.left + right) / 2, y: height - 5, 'text-anchor': 'middle'}, 'distance (m)');
-    const times = ground.exaggeration > 1 ? ` (heights \u00d7 ${ground.exaggeration})` : '';
-    add('text', {class: 'label', transform: `translate(12 ${(PAD.top + bottom) / 2}) rotate(-90)`, 'text-anchor': 'middle'}, 'elevation (m)' + times);
+    const times = ground.exaggeration > 1 ? `, heights \u00d7 ${ground.exaggeration}` : '';
+    add('text', {class: 'label', x: (PAD.left + right) / 2, y: height - 5, 'text-anchor': 'middle'}, 'distance (m)' + times);
+    add('text', {class: 'label', transform: `translate(12 ${(PAD.top + bottom) / 2}) rotate(-90)`, 'text-anchor': 'middle'}, 'elevation (m)');
     if (ground.surface) {
       const n = ground.surface.length - 1, d = ground.distance;
       const line = ground.surface.map((z, i) => `${this.x(d[0] + i / n * (d[1] - d[0])).toFixed(1)} ${Math.max(this.y(z), PAD.top).toFixed(1)}`);
