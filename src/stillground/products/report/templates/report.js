@@ -253,6 +253,7 @@ class Column extends Section {
     const box = this.host.getBoundingClientRect(), down = (event.clientY - box.top - PAD.top) / this.high;
     return down < 0 || down > 1 ? null : [Math.round(down * (this.ground.nz - 1)), 0];
   }
+  nodeXY([row]) { return [PAD.left + this.wide / 2, PAD.top + row / (this.ground.nz - 1) * this.high]; }
   overlay() {
     const {host, ground, sight} = this, width = host.clientWidth, height = host.clientHeight;
     const bottom = height - PAD.bottom, right = PAD.left + this.wide, n = ground.nz - 1, parts = [];
