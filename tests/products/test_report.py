@@ -139,7 +139,23 @@ def test_past_the_budget_pictures_between_picks_give_way_first(folder: Path) -> 
     assert (half.between.about["nz"], half.between.about["nx"]) == (61, 45)
     least = pictures(profile, ground, 1)
     assert "every 64th" in least.note
-    assert least.picked.text == half.picked.text == whole.picked.text
+    assert "values at picks are rounded" in least.note
+    assert (whole.picked.about["bytes"], least.picked.about["bytes"]) == (2, 1)
+    assert half.picked.text == whole.picked.text
+
+
+def test_a_grid_finer_than_a_screen_is_thinned_and_the_page_says_so(
+    folder: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr("stillground.products.report.ground._MOST_NODES", 5000)
+    (profile,) = read_results(folder).profiles
+    ground = ground_of(profile)
+    assert ground.frame.shape == ground.model.shape == ground.flags.shape == (61, 45)
+    x, z = np.meshgrid(ground.frame.distance, ground.frame.elevation)
+    # Every second node of an odd number: bilinear is exact there.
+    np.testing.assert_allclose(ground.model[ground.inside], (1 / slowness(x, z))[ground.inside], rtol=1e-6)
+    assert pictures(profile, ground, 10**7).picked.about["nx"] == 45
+    assert "thinned" in Text(write_report(folder, folder / "thin").read_text(encoding="utf-8")).text
 
 
 def test_the_same_files_give_the_same_page(folder: Path, page: str, tmp_path: Path) -> None:

@@ -73,20 +73,22 @@ def _planes(codes: NDArray[np.unsignedinteger[Any]]) -> bytes:
 
 
 def coarser(stack: Array) -> Array:
-    """The fields on half as many nodes both ways, with the same extent, bilinear.
+    """Fields of shape (..., nz, nx), or of shape (n,), on half as many nodes each way over the same extent.
 
     Examples
     --------
-    >>> coarser(np.array([[[0.0, 1.0, 2.0, 3.0]] * 2]))
-    array([[[0., 3.]]])
+    >>> coarser(np.array([0.0, 1.0, 2.0, 3.0, 4.0]))
+    array([0., 2., 4.])
     """
-    for axis in (1, 2):
+    for axis in range(max(stack.ndim - 2, 0), stack.ndim):
         n = stack.shape[axis]
-        if n < 2:
+        if n < 3:
             continue
         at = np.linspace(0, n - 1, -(-n // 2))
         before = np.minimum(at.astype(int), n - 2)
-        weight = np.expand_dims(at - before, tuple(i for i in range(3) if i != axis)).astype(stack.dtype)
+        weight = np.expand_dims(at - before, tuple(i for i in range(stack.ndim) if i != axis)).astype(
+            stack.dtype
+        )
         low, high = stack.take(before, axis), stack.take(before + 1, axis)
         stack = low + weight * (high - low)
     return stack

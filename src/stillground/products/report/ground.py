@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import xarray as xr
@@ -12,10 +12,12 @@ from numpy.typing import NDArray
 
 from stillground.products.figures.sheet import unit_text
 from stillground.products.reliability import NO_DATA, RELIABLE
+from stillground.products.report.encoding import coarser
 from stillground.products.report.folder import Profile
 from stillground.protocols import Array
 
 FIELD, CHANGE = "cividis", "PuOr"
+_MOST_NODES = 300_000
 _EXAGGERATIONS, _FLATTEST, _TALL = (1, 2, 5, 10, 20, 50, 100), 5.0, 1.25
 
 
@@ -83,6 +85,8 @@ class Ground:
         Which nodes lie in the ground.
     companions : tuple of Companion
         Coverage first.
+    halvings : int
+        How often the page has halved the files' numbers of nodes: more than a screen shows cost bytes alone.
     """
 
     frame: Frame
@@ -94,6 +98,7 @@ class Ground:
     flags: NDArray[np.int8]
     inside: NDArray[np.bool_]
     companions: tuple[Companion, ...]
+    halvings: int = 0
 
     @property
     def scale(self) -> tuple[float, float]:
@@ -111,6 +116,8 @@ class Ground:
         if self.frame.distance is None:
             values = values[..., np.newaxis]
         values = carried_up(values)
+        for _ in range(self.halvings):
+            values = coarser(values)
         return 1 / values if self.inverse else values
 
 
@@ -136,7 +143,7 @@ def ground_of(profile: Profile) -> Ground:
         and section[name].attrs.get("coverage_content_type") == "modelResult"
     ]
     told = others[0] if others else answer
-    return Ground(
+    ground = Ground(
         frame=frame,
         name=str(told.name).replace("_", " "),
         long_name=_said(told, "long_name"),
@@ -146,6 +153,30 @@ def ground_of(profile: Profile) -> Ground:
         flags=_flags_carried_up(flags),
         inside=inside,
         companions=tuple(_companions(section, answer, told, stored)),
+    )
+    while ground.model.size > _MOST_NODES:
+        ground = _halved(ground)
+    return ground
+
+
+def _halved(ground: Ground) -> Ground:
+    """The ground on half as many nodes both ways."""
+    frame = ground.frame
+    down, across = (np.rint(coarser(np.arange(n, dtype=float))).astype(int) for n in frame.shape)
+    picked = np.ix_(down, across)
+    distance, elevation = (
+        None if axis is None else np.linspace(axis[0], axis[-1], -(-axis.size // 2))
+        for axis in (frame.distance, frame.elevation)
+    )
+    assert elevation is not None
+    return replace(
+        ground,
+        frame=Frame(distance, elevation, None if frame.surface is None else coarser(frame.surface)),
+        model=coarser(ground.model),
+        flags=ground.flags[picked],
+        inside=ground.inside[picked],
+        companions=tuple(replace(one, values=coarser(one.values)) for one in ground.companions),
+        halvings=ground.halvings + 1,
     )
 
 

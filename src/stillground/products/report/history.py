@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cache
 from typing import Any
 
 import numpy as np
@@ -13,8 +14,8 @@ from stillground.products.report.ground import Ground
 from stillground.protocols import Array
 
 _SAME = 1e-6
-# Full resolution of all; then half of it between picks; then fewer of them.
-_PLANS = ((False, 1), (True, 1), (True, 2), (True, 4), (True, 8), (True, 16), (True, 64))
+# All as they are; then half the resolution between picks; then fewer of them; then picks as colours alone.
+_PLANS = ((False, 1, 2), (True, 1, 2), (True, 2, 2), (True, 4, 2), (True, 8, 2), (True, 64, 2), (True, 64, 1))
 
 
 @dataclass(frozen=True)
@@ -53,7 +54,6 @@ def pictures(profile: Profile, ground: Ground, room: int) -> Pictures:
     at = history["shown_iteration"].values.astype(float)
     picked_at, first, which = np.unique(np.round(at / _SAME) * _SAME, return_index=True, return_inverse=True)
     models = ground.shown(history[f"{profile.seen}_at_pick"].values[first])
-    packed = pack(models, 2)
 
     kept = f"{profile.seen}_at_iteration"
     others, stored = np.empty(0), np.empty((0, *models.shape[1:]))
@@ -61,17 +61,20 @@ def pictures(profile: Profile, ground: Ground, room: int) -> Pictures:
         others = history["kept_iteration"].values.astype(float)
         new = np.array([np.abs(picked_at - k).min() > 1e-3 for k in others], dtype=bool)
         others, stored = others[new], ground.shown(history[kept].values[new])
-    between, note = None, ""
-    if others.size:
-        for halved, stride in _PLANS:
-            chosen = stored[::stride]
+    exact = cache(lambda n_bytes: pack(models, n_bytes))
+    between = None
+    for halved, stride, n_bytes in _PLANS:
+        packed, chosen = exact(n_bytes), stored[::stride]
+        if others.size:
             between = pack(coarser(chosen) if halved else chosen, 1)
-            if len(packed.text) + len(between.text) <= room:
-                break
-        others = others[::stride]
-        if halved:
-            note = "To keep this page small, pictures between picks are at half resolution"
-            note += f" and only every {stride}th is here." if stride > 1 else "."
+        if len(packed.text) + (len(between.text) if between else 0) <= room:
+            break
+    others = others[::stride]
+    said = []
+    if halved and between:
+        said.append("pictures between picks are at half resolution")
+        said += [f"only every {stride}th of them is here"] if stride > 1 else []
+    said += ["values at picks are rounded as well"] if n_bytes == 1 else []
 
     iterations = np.concatenate([picked_at, others])
     order = np.argsort(iterations, kind="stable")
@@ -83,5 +86,5 @@ def pictures(profile: Profile, ground: Ground, room: int) -> Pictures:
         picks={rule: int(place[pick]) for rule, pick in zip(rules, which.reshape(-1), strict=True)},
         between=between,
         picked=packed,
-        note=note,
+        note=f"To keep this page small, {', and '.join(said)}." if said else "",
     )

@@ -214,6 +214,7 @@ def _worst(profile: Profile, residual: Array) -> Shown | None:
     chart.frame(label, f"{datum} ({unit})")
     chart.line(x, told)
     chart.dots(x, seen, "observed", 3)
+    chart.dots(x, seen, "hollow", 1.8)
     mean = float(residual[rows].mean())
     said = (
         f"Worst {name}, number {number}: mean residual {minus(f'{mean:+.2f}')} standard errors "
@@ -234,10 +235,10 @@ def _offset(profile: Profile) -> Shown | None:
     x, seen, told = _thinned(offset, observed, predicted)
     chart = Chart(SIZE, limits(x), limits(np.concatenate([seen, told])), margins=(52, 10, 8, 36))
     chart.frame(f"from {placed[0]} to {placed[1]} (m)", f"{datum} ({unit})")
-    chart.dots(x, told, "predicted", 1.6)
-    chart.dots(x, seen, "observed thin", 2.4)
+    chart.dots(x, seen, "observed", 2.2)
+    chart.dots(x, told, "predicted", 1.1)
     some = "" if x.size == offset.size else f"; {x.size} of {offset.size} data drawn"
-    said = f"{datum.capitalize()} against distance: rings observed, dots predicted{some}"
+    said = f"{datum.capitalize()} against distance: large dots observed, small predicted{some}"
     return Shown(chart.svg(said), said)
 
 

@@ -24,6 +24,7 @@ from stillground.products.report.encoding import Packed, pack
 from stillground.products.report.folder import Entry, Profile, Results, RuleEntry, read_results
 from stillground.products.report.ground import CHANGE, FIELD, Companion, Ground, colours, ground_of
 from stillground.products.report.history import Pictures, pictures
+from stillground.products.report.misfits import Shown as FigureShown
 from stillground.products.report.misfits import extra_charts, fit_charts, legible, outliers, places
 from stillground.products.report.picture import Sight, colour_bar, large, small
 from stillground.products.report.rungs import change_chart, rung_pictures
@@ -32,9 +33,10 @@ from stillground.whole import whole
 
 REPORT = "report.html"
 MOST_BYTES = 8_000_000
-# Of a page for the rest: a profile's charts and pictures, and the page itself.
-_CHARTS, _PAGE = 700_000, 60_000
+# What the page itself takes, and the text of a profile beside charts and pictures.
+_PAGE, _TEXT = 60_000, 40_000
 _ROOM = (250.0, 210.0)
+_COARSE = "The grid has more nodes than a screen shows: here it is thinned, and the files have all of it."
 _FAMILIES = {"prior": "from the prior", "layers": "level layers", "described": "the described ground"}
 
 
@@ -70,7 +72,7 @@ def report_page(results: Results) -> str:
     """The page of a run as text."""
     rules = dict.fromkeys(rule.rule for profile in results.profiles for rule in profile.entry.rules)
     symbols = {rule: f"badge-{number}" for number, rule in enumerate(rules)}
-    room = (MOST_BYTES - _PAGE) // len(results.profiles) - _CHARTS
+    room = (MOST_BYTES - _PAGE) // len(results.profiles)
     return rendered(
         "report.html",
         summary=results.summary,
@@ -115,7 +117,6 @@ class RuleRow:
 def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: int) -> dict[str, Any]:
     entry, ground = profile.entry, ground_of(profile)
     stand = places(profile)
-    frames = pictures(profile, ground, max(room, 1))
     label = f"{ground.name} ({ground.units})"
     stop = _number(entry.chosen.iteration)
     said = (
@@ -127,8 +128,7 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
     sight = Sight(ground.model, ground.scale, label, said)
     listed, light = outliers(profile)
     drawn = {rule: name for rule, name in symbols.items() if rule in {r.rule for r in entry.rules}}
-    live = _live(profile, ground, frames, stand, drawn)
-    return {
+    told: dict[str, Any] = {
         "id": f"profile-{number}",
         "entry": entry,
         "shape": VERDICTS[entry.refinement.verdict][1],
@@ -155,15 +155,36 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
         "families": _FAMILIES,
         "cautions": _cautions(profile),
         "provenance": _provenance(profile),
-        "note": frames.note,
         "places": list(stand),
-        "live": live,
-        "stacks": _stacks(ground, frames),
+    }
+    quality = pack(np.stack([ground.flags.astype(float), *(one.values for one in ground.companions)]), 1)
+    frames = pictures(profile, ground, room - _TEXT - len(quality.text) - _size(list(told.values())))
+    stacks = {"picks": frames.picked, "quality": quality}
+    if frames.between is not None:
+        stacks["between"] = frames.between
+    return told | {
+        "note": " ".join(said for said in (frames.note, _COARSE if ground.halvings else "") if said),
+        "live": _live(profile, ground, frames, stacks, stand, drawn),
+        "stacks": stacks,
     }
 
 
+def _size(told: Any) -> int:
+    """Length of all charts and pictures in what a template is told."""
+    if isinstance(told, Markup):
+        return len(told)
+    if isinstance(told, FigureShown):
+        return len(told.picture)
+    return sum(_size(one) for one in told) if isinstance(told, list | tuple) else 0
+
+
 def _live(
-    profile: Profile, ground: Ground, frames: Pictures, stand: Mapping[str, Array], symbols: Mapping[str, str]
+    profile: Profile,
+    ground: Ground,
+    frames: Pictures,
+    stacks: Mapping[str, Packed],
+    stand: Mapping[str, Array],
+    symbols: Mapping[str, str],
 ) -> dict[str, Any]:
     """What the script must know of a profile."""
     entry, frame = profile.entry, ground.frame
@@ -189,7 +210,7 @@ def _live(
             if rule.rule in frames.picks
         ],
         "chosen": entry.chosen.rule,
-        "stacks": {name: packed.about for name, packed in _stacks(ground, frames).items()},
+        "stacks": {name: packed.about for name, packed in stacks.items()},
         "companions": [[one.name, one.long_name, one.units] for one in ground.companions],
         "meanings": [meaning.replace("_", " ") for meaning in MEANINGS],
         "places": [[name, np.round(where, 3).tolist()] for name, where in stand.items()],
@@ -207,12 +228,6 @@ def frame_data(ground: Ground) -> dict[str, Any]:
         "nz": frame.shape[0],
         "nx": frame.shape[1],
     }
-
-
-def _stacks(ground: Ground, frames: Pictures) -> dict[str, Packed]:
-    quality = np.stack([ground.flags.astype(float), *(one.values for one in ground.companions)])
-    stacks = {"picks": frames.picked, "quality": pack(quality, 1)}
-    return stacks if frames.between is None else stacks | {"between": frames.between}
 
 
 def _change_scales(profile: Profile, ground: Ground) -> tuple[float, float]:

@@ -72,7 +72,7 @@ def small(ground: Ground, sight: Sight, room: tuple[float, float]) -> Markup:
         return _column(ground, sight, room, None, {})
     width, height = _fitted(frame, room)
     chart = _chart(frame, (width + 2, height + 2), (1, 1, 1, 1))
-    _image(chart, ground, sight, pixels=360)
+    _image(chart, ground, sight, pixels=300)
     return chart.svg(sight.said, width=chart.size[0])
 
 

@@ -656,6 +656,7 @@ async function main() {
     console.error(error);
   };
   if (choose) choose.addEventListener('change', () => open(document.getElementById(choose.value)).catch(fall));
+  performance.mark('ready');
   page.dataset.ready = 'yes';
 }
 
