@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import shutil
 import signal
 import subprocess
 import sys
@@ -85,6 +86,38 @@ def test_usage_errors_are_exit_2(stillground: Command) -> None:
         done = stillground(*arguments)
         assert done.returncode == 2
         assert "Traceback" not in done.stderr
+
+
+def test_report_makes_the_page_again_from_files_alone(stillground: Command, small: Path) -> None:
+    done = stillground("run", "small.toml", "--set", "refinement.levels=2", cwd=small)
+    assert done.returncode == 0, done.stderr
+    folder = small / "results" / "small"
+    page = (folder / "report.html").read_bytes()
+    by_mail = small / "by-mail"
+    shutil.copytree(folder, by_mail, ignore=shutil.ignore_patterns("report.html", "figures"))
+    for name in ("small.toml", "small.csv"):
+        (small / name).unlink()
+    again = stillground("report", by_mail)
+    assert again.returncode == 0, again.stderr
+    assert again.stdout.strip() == str(by_mail / "report.html")
+    assert (by_mail / "report.html").read_bytes() == page
+
+    both = stillground("report", folder, by_mail, "--out", small / "both")
+    assert both.returncode == 0, both.stderr
+    assert "B less A" in (small / "both" / "report.html").read_text(encoding="utf-8")
+
+    (by_mail / "small_ladder.nc").unlink()
+    damaged = stillground("report", by_mail)
+    assert damaged.returncode == 2
+    assert "small_ladder.nc: there is no such file" in damaged.stderr
+    assert "Traceback" not in damaged.stderr
+
+
+def test_a_report_without_what_it_is_made_from_is_refused(stillground: Command, small: Path) -> None:
+    done = stillground("run", "small.toml", "--set", "output.products=['report', 'section']", cwd=small)
+    assert done.returncode == 2
+    assert "'report' is made from the files of history" in done.stderr
+    assert not (small / "results").exists()
 
 
 def test_strict_tells_a_verdict_that_is_not_settled(stillground: Command, small: Path) -> None:

@@ -13,13 +13,13 @@ import numpy as np
 import pandas as pd
 import xarray as xr
 from pyproj import CRS
+from stillground.products.section import section_dataset, write_section
 
 from stillground.products.fit import fit_table, write_fit
 from stillground.products.history import history_dataset, write_history
 from stillground.products.ladder import ladder_dataset, write_ladder
 from stillground.products.netcdf import write_netcdf
 from stillground.products.provenance import Provenance
-from stillground.products.section import section_dataset, write_section
 from stillground.products.summary import profile_summary, run_summary, write_summary
 from stillground.protocols import Array, Result, RuleOptions, Rung
 
