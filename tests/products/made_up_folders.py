@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 from collections.abc import Mapping
 from dataclasses import replace
 from datetime import UTC, datetime
@@ -10,21 +9,24 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-import pandas as pd
-import xarray as xr
 from pyproj import CRS
 from stillground.products.section import section_dataset, write_section
 
 from stillground.products.fit import fit_table, write_fit
 from stillground.products.history import history_dataset, write_history
 from stillground.products.ladder import ladder_dataset, write_ladder
-from stillground.products.netcdf import write_netcdf
+from stillground.products.picture import picture_dataset, product, write_picture
 from stillground.products.provenance import Provenance
 from stillground.products.summary import profile_summary, run_summary, write_summary
-from stillground.protocols import Array, Result, RuleOptions, Rung
+from stillground.protocols import Array, Differences, Result, RuleOptions, Rung
 
 from .made_up_results import fit_places
 
+# The surface of a column, and what practice would read off its data.
+GROUND = (np.zeros(1), np.array([62.0]))
+USUAL = Differences(
+    "mean between stations", np.array([40.0, 50.0]), np.array([50.0, 60.0]), 1 / np.array([2100.0, 1800.0])
+)
 TITLE = "Osmere Weir, left abutment (invented)"
 
 
@@ -37,6 +39,7 @@ def write_folder(
     command: str = "stillground run osmere-weir.toml",
     shift: float = 0.0,
     north: bool = False,
+    differences: Differences | None = None,
     config_text: str = 'title = "Osmere Weir"\n',
 ) -> Path:
     """The products of a run over some profiles; ``shift`` moves the trace east, m; ``north`` turns it."""
@@ -52,23 +55,24 @@ def write_folder(
     entries = []
     for name, result in results.items():
         common: dict[str, Any] = {"surface": surface, "provenance": origin}
-        along = result.axes[0]
-        section = section_dataset(
+        column = len(result.axes) == 1
+        along = np.zeros(1) if column else result.axes[0]
+        picture = picture_dataset(
             name,
             result,
             easting=431250 + shift + (0 if north else along) + np.zeros(along.size),
             northing=5312480.0 + (along if north else 0) + np.zeros(along.size),
             crs=CRS("EPSG:32631"),
             tolerance=0.02,
+            differences=differences,
             **common,
         )
-        fit = fit_table(
-            result, rows=np.arange(2, 627), datum="time", unit="ms", si_factor=1e-3, **fit_places()
-        )
+        places = {"axes": ("elevation",), "positions": {}} if column else fit_places()
+        fit = fit_table(result, rows=np.arange(2, 627), datum="time", unit="ms", si_factor=1e-3, **places)
         files = {
             "ladder": write_ladder(folder, name, ladder_dataset(name, result, tolerance=0.02, **common)),
             "fit": write_fit(folder, name, fit),
-            "section": write_section(folder, name, section),
+            product(len(result.axes)): write_picture(folder, name, picture),
             "history": write_history(
                 folder, name, history_dataset(name, result, options=RuleOptions(), **common)
             ),
@@ -88,30 +92,33 @@ def stretched(result: Result, times: float) -> Result:
     return replace(result, axes=longer(result.axes), ladder=replace(result.ladder, rungs=rungs))
 
 
-def write_column(folder: Path, result: Result, at: int) -> Path:
-    """A folder of a column: one line of nodes of a section's files, on elevation alone, with no groupings.
-
-    Written from a section's products, because the layout is the contract: the same variables over
-    ``elevation``, the file under the key ``column``.
-    """
-    write_folder(folder, {"sounding": result})
-    summary = json.loads((folder / "summary.json").read_text())
-    files = summary["profiles"][0]["files"]
-    n_rungs = len(result.ladder.rungs)
-    for key in ("section", "history", "ladder"):
-        with xr.open_dataset(folder / files[key], mask_and_scale=False) as file:
-            held = file.load()
-        where = {"distance": at} | {f"distance_{i}": 1 for i in range(n_rungs)}
-        held = held.isel({dim: i for dim, i in where.items() if dim in held.dims}).reset_coords(drop=True)
-        for variable in held.variables.values():
-            fill = variable.attrs.pop("_FillValue", None)
-            variable.encoding = {} if fill is None or variable.dtype.kind == "f" else {"_FillValue": fill}
-        (folder / files[key]).unlink()
-        if key == "section":
-            files["column"] = files.pop("section").replace("section", "column")
-            held = held.drop_vars(["trace_geometry", "trace_node_count", "trace_name"], errors="ignore")
-        write_netcdf(held, folder / files["column" if key == "section" else key])
-    fit = pd.read_csv(folder / files["fit"])
-    fit[list(fit.columns[:5])].to_csv(folder / files["fit"], index=False)
-    (folder / "summary.json").write_text(json.dumps(summary))
-    return folder
+def column_of(result: Result, at: int) -> Result:
+    """One line of nodes of a section as a column, its data without groupings."""
+    assert result.rehearsal is not None
+    assert result.sensitivity is not None
+    rehearsal = replace(
+        result.rehearsal,
+        total_error=result.rehearsal.total_error[at],
+        resolved=result.rehearsal.resolved[at],
+    )
+    sensitivity = replace(
+        result.sensitivity,
+        spread=result.sensitivity.spread[at],
+        investigation=result.sensitivity.investigation[at],
+    )
+    rungs = tuple(Rung(r.spacing[1:], r.axes[1:], r.model[3], r.iteration) for r in result.ladder.rungs)
+    return replace(
+        result,
+        axes=result.axes[1:],
+        model=result.model[at],
+        background=result.background[at],
+        mesh_change=result.mesh_change[at],
+        noise_part=result.noise_part[at],
+        coverage=replace(result.coverage, values=result.coverage.values[at]),
+        groupings={},
+        choices=tuple(replace(choice, model=choice.model[at]) for choice in result.choices),
+        snapshots=tuple((k, model[at]) for k, model in result.snapshots),
+        ladder=replace(result.ladder, rungs=rungs),
+        rehearsal=rehearsal,
+        sensitivity=sensitivity,
+    )

@@ -33,7 +33,7 @@ from stillground.products.report.ground import ground_of
 from stillground.products.report.history import pictures
 from stillground.protocols import Result
 
-from .made_up_folders import stretched, write_column, write_folder
+from .made_up_folders import GROUND, USUAL, column_of, stretched, write_folder
 from .made_up_results import SURFACE, slowness
 
 # Every string of it came from a file: it must be told as it is, and do nothing.
@@ -189,6 +189,8 @@ def test_the_page_tells_all_that_the_summary_does(folder: Path, page: str, resul
         "from the prior",
         "lengths doubled",
         "spread 0.9",
+        "expected 2",
+        "of the rms anomaly",
     ):
         assert said in text, said
     for rule, badge in BADGES.items():
@@ -287,14 +289,18 @@ def test_static_pictures_veil_what_is_not_reliable(folder: Path, page: str) -> N
 
 
 def test_a_column_has_a_curve_with_its_error_band(result: Result, tmp_path: Path) -> None:
-    page = write_report(write_column(tmp_path, result, 40)).read_text(encoding="utf-8")
+    page = write_report(
+        write_folder(tmp_path, {"sounding": column_of(result, 40)}, surface=GROUND, differences=USUAL)
+    ).read_text(encoding="utf-8")
     text = Text(page).text
     assert "Column" in text
     static = page.split('<figure class="static">')[1].split("</figure>")[0]
     assert 'class="band"' in static
     assert "elevation (m)" in static
     assert "distance (m)" not in static
-    assert "in the table&#39;s order" in page or "row of the table" in page
+    assert static.count('class="usual"') == 2
+    assert "mean between stations: velocity" in text
+    assert "row of the table" in text
 
 
 def test_groupings_come_by_name_and_may_be_missing(folder: Path, tmp_path: Path) -> None:

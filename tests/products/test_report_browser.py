@@ -24,7 +24,7 @@ from stillground.products.figures.badges import BADGES
 from stillground.products.report import write_comparison, write_report
 from stillground.protocols import Result
 
-from .made_up_folders import write_column, write_folder
+from .made_up_folders import GROUND, USUAL, column_of, write_folder
 from .made_up_results import SURFACE, make_result, slowness
 
 CHROMIUM, DRIVER = shutil.which("chromium"), shutil.which("chromedriver")
@@ -472,12 +472,19 @@ def test_one_of_several_profiles_is_chosen_and_names_do_nothing(browser: Browser
 
 
 def test_a_column_follows_slider_and_probe(browser: Browser, result: Result, tmp_path: Path) -> None:
-    browser.open(write_report(write_column(tmp_path, result, 40)))
+    browser.open(
+        write_report(
+            write_folder(tmp_path, {"sounding": column_of(result, 40)}, surface=GROUND, differences=USUAL)
+        )
+    )
     x, z = -2 + 0.25 * 40, np.linspace(64, 34, 121)
     browser.point_at((60, 0))
     state = browser.state()
     assert state["probe"] == [60, 0]
     assert state["value"] == pytest.approx(expected(9.0, (np.array(x), z[60])), abs=0.02)
+    assert browser.run("return document.querySelectorAll('.map .usual').length") == 2
+    browser.point_at((2, 0))
+    assert "above the surface" in browser.run("return arguments[0].textContent", browser.part("readout"))
     curve = "return document.querySelector('.map .curve').getAttribute('d')"
     before = browser.run(curve)
     assert browser.run("return document.querySelectorAll('.map .band').length") == 1

@@ -47,8 +47,10 @@ class Refinement(BaseModel):
     verdict: Word
     reason: str
     order: float | None
-    expected_order: float | None = None
+    expected: float | None = None
     index: float | None = None
+    index_reason: str | None = None
+    notes: list[str] = []
     change: list[float]
     remaining: float | None
     pick_drift: float | None

@@ -68,6 +68,16 @@ class Companion:
 
 
 @dataclass(frozen=True)
+class Usual:
+    """What practice reads off a column's data without an inversion: values between elevations, m."""
+
+    long_name: str
+    lower: Array
+    upper: Array
+    values: Array
+
+
+@dataclass(frozen=True)
 class Ground:
     """One profile's ground; fields have shape (nz, nx), elevation descending, carried up above the surface.
 
@@ -85,6 +95,7 @@ class Ground:
         Which nodes lie in the ground.
     companions : tuple of Companion
         Coverage first.
+    usual : Usual or None
     halvings : int
         How often the page has halved the files' numbers of nodes: more than a screen shows cost bytes alone.
     """
@@ -98,7 +109,13 @@ class Ground:
     flags: NDArray[np.int8]
     inside: NDArray[np.bool_]
     companions: tuple[Companion, ...]
+    usual: Usual | None = None
     halvings: int = 0
+
+    @property
+    def label(self) -> str:
+        """Of an axis or a colour bar."""
+        return f"{self.name} ({self.units})"
 
     @property
     def scale(self) -> tuple[float, float]:
@@ -129,7 +146,7 @@ def ground_of(profile: Profile) -> Ground:
     frame = Frame(
         None if column else section["distance"].values,
         section["elevation"].values,
-        section["surface_altitude"].values if "surface_altitude" in section and not column else None,
+        np.atleast_1d(section["surface_altitude"].values) if "surface_altitude" in section else None,
     )
     flags = section["reliability"].values.reshape(frame.shape)
     stored = answer.values.reshape(frame.shape).astype(np.float64)
@@ -153,6 +170,7 @@ def ground_of(profile: Profile) -> Ground:
         flags=_flags_carried_up(flags),
         inside=inside,
         companions=tuple(_companions(section, answer, told, stored)),
+        usual=_usual(section, str(told.name)),
     )
     while ground.model.size > _MOST_NODES:
         ground = _halved(ground)
@@ -197,6 +215,14 @@ def _companions(
             values, units = values / stored**2, _said(told, "units")
             long_name = long_name.replace(_said(answer, "long_name"), _said(told, "long_name"))
         yield Companion(name, long_name, unit_text(units), _said(variable, "comment"), values)
+
+
+def _usual(section: xr.Dataset, name: str) -> Usual | None:
+    values = section.get(f"{name}_of_interval")
+    if values is None:
+        return None
+    lower, upper = (section[f"interval_{end}"].values for end in ("lower", "upper"))
+    return Usual(_said(values, "long_name"), lower, upper, values.values)
 
 
 def _said(variable: xr.DataArray, attribute: str) -> str:

@@ -117,7 +117,7 @@ class RuleRow:
 def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: int) -> dict[str, Any]:
     entry, ground = profile.entry, ground_of(profile)
     stand = places(profile)
-    label = f"{ground.name} ({ground.units})"
+    label = ground.label
     stop = _number(entry.chosen.iteration)
     said = (
         f"{ground.long_name} at the pick of {entry.chosen.rule}, iteration {stop}: from "
@@ -214,7 +214,13 @@ def _live(
         "companions": [[one.name, one.long_name, one.units] for one in ground.companions],
         "meanings": [meaning.replace("_", " ") for meaning in MEANINGS],
         "places": [[name, np.round(where, 3).tolist()] for name, where in stand.items()],
-    } | ({} if frame.distance is not None else {"column": True})
+    } | ({} if frame.distance is not None else {"column": True, "usual": _usual(ground)})
+
+
+def _usual(ground: Ground) -> list[list[float]]:
+    """Intervals of the usual estimate: lower and upper end, value."""
+    usual = ground.usual
+    return [] if usual is None else np.column_stack([usual.lower, usual.upper, usual.values]).tolist()
 
 
 def frame_data(ground: Ground) -> dict[str, Any]:

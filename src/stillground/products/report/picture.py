@@ -194,6 +194,9 @@ def _column(
     """Value against elevation; hatched where it is not reliable."""
     elevation, values = ground.frame.elevation, sight.values[:, 0]
     at = np.linspace(elevation[0], elevation[-1], values.size)
+    if ground.frame.surface is not None:
+        below = at <= ground.frame.surface[0] + 1e-9
+        at, values, band = at[below], values[below], None if band is None else band[below]
     drawn = values if band is None else np.concatenate([values - band[:, 0], values + band[:, 0]])
     ends = limits(np.append(drawn, sight.scale))
     chart = Chart(size, ends, (float(elevation[-1]), float(elevation[0])), margins=(52, 14, 8, 38))
@@ -209,6 +212,10 @@ def _column(
         x = np.concatenate([values - band[:, 0], (values + band[:, 0])[::-1]])
         chart.line(x, np.concatenate([at, at[::-1]]), "band")
     chart.line(values, at)
+    if ground.usual is not None and sight.label == ground.label:
+        ways = zip(ground.usual.values, ground.usual.lower, ground.usual.upper, strict=True)
+        for value, lower, upper in ways:
+            chart.line([value, value], [lower, upper], "usual")
     for where in places.values():
         for height in where[:, -1]:
             chart.add("path", class_="axis", d=f"M{chart.left:.1f} {float(chart.up(height)):.1f}h-6")

@@ -34,11 +34,9 @@ def change_chart(profile: Profile) -> Markup | None:
     if refinement.order is not None and drawn[-1]:
         chart.line(*_within(chart, ends, change[-1] * (ends / finer[-1]) ** refinement.order), "fitted")
         said += f"; order {refinement.order:.2f}"
-    if refinement.expected_order and drawn[-1]:
-        chart.line(
-            *_within(chart, ends, change[-1] * (ends / finer[-1]) ** refinement.expected_order), "expected"
-        )
-        said += f", expected {refinement.expected_order:g}"
+    if refinement.expected and drawn[-1]:
+        chart.line(*_within(chart, ends, change[-1] * (ends / finer[-1]) ** refinement.expected), "expected")
+        said += f", expected {refinement.expected:g}"
     chart.dots(finer[drawn], change[drawn], "dot", 5)
     return chart.svg(f"Change between rungs against spacing: {said}", width=SIZE[0])
 
@@ -53,7 +51,7 @@ def rung_pictures(profile: Profile, ground: Ground) -> list[tuple[Markup, str]]:
         stored = profile.ladder[name].values
         values = ground.shown(stored)
         said = f"{ground.long_name} at a spacing of {level.spacing:g} m"
-        sight = Sight(values, ground.scale, f"{ground.name} ({ground.units})", said)
+        sight = Sight(values, ground.scale, ground.label, said)
         own = "no stop of its own" if level.iteration is None else f"own stop {level.iteration:.3g}"
         caption = f"{level.spacing:g} m · {level.nodes:,} nodes · {own}"
         pictures.append((small(ground, sight, _ROOM), caption))

@@ -275,13 +275,15 @@ class Column extends Section {
       add('path', {class: 'grid', d: `M${PAD.left} ${this.y(v)}H${right}`});
       add('text', {x: PAD.left - 7, y: this.y(v) + 4, 'text-anchor': 'end'}, minus(String(v)));
     }
-    const line = values => Array.from(values, (v, i) => `${x(v).toFixed(1)} ${y(i).toFixed(1)}`);
+    const under = Array.from({length: n + 1}, (_, i) => i).filter(i => !ground.surface || place([i, 0], ground)[1] <= ground.surface[0] + 1e-6);
+    const line = values => under.map(i => `${x(values[i]).toFixed(1)} ${y(i).toFixed(1)}`);
     if (sight.band) {
       const out = line(sight.band.map((b, i) => sight.chosen[i] + b)), back = line(sight.band.map((b, i) => sight.chosen[i] - b));
       add('path', {class: 'band', d: 'M' + out.concat(back.reverse()).join('L') + 'z'});
     }
     if (sight.chosen) add('path', {class: 'fitted', d: 'M' + line(sight.chosen).join('L')});
     add('path', {class: 'curve', d: 'M' + line(sight.field.values).join('L')});
+    for (const [from, to, value] of sight.usual || []) add('path', {class: 'usual', d: `M${x(value)} ${this.y(from)}V${this.y(to)}`});
     add('path', {class: 'axis', d: `M${PAD.left} ${PAD.top}V${bottom}H${right}`});
     add('text', {class: 'label', x: (PAD.left + right) / 2, y: height - 5, 'text-anchor': 'middle'}, sight.label);
     add('text', {class: 'label', transform: `translate(12 ${(PAD.top + bottom) / 2}) rotate(-90)`, 'text-anchor': 'middle'}, 'elevation (m)');
@@ -402,6 +404,7 @@ class Live {
       const noise = this.about.companions.findIndex(one => one[0].endsWith('_noise_part'));
       if (this.about.column) {
         sight.chosen = this.frame(this.chosen.frame).values;
+        sight.usual = this.about.usual;
         if (noise >= 0) sight.band = this.stacks.quality.field(noise + 1).values;
       }
       return sight;
