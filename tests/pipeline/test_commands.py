@@ -102,10 +102,6 @@ def test_report_makes_the_page_again_from_files_alone(stillground: Command, smal
     assert again.stdout.strip() == str(by_mail / "report.html")
     assert (by_mail / "report.html").read_bytes() == page
 
-    both = stillground("report", folder, by_mail, "--out", small / "both")
-    assert both.returncode == 0, both.stderr
-    assert "B less A" in (small / "both" / "report.html").read_text(encoding="utf-8")
-
     (by_mail / "small_ladder.nc").unlink()
     damaged = stillground("report", by_mail)
     assert damaged.returncode == 2

@@ -21,7 +21,9 @@ import pytest
 from matplotlib import colormaps
 from matplotlib.colors import to_rgb
 from PIL import Image
+from typer.testing import CliRunner
 
+from stillground.cli.app import app
 from stillground.errors import ResultError
 from stillground.products.figures.badges import BADGES
 from stillground.products.provenance import CAUTION
@@ -299,6 +301,7 @@ def test_a_column_has_a_curve_with_its_error_band(result: Result, tmp_path: Path
     assert "elevation (m)" in static
     assert "distance (m)" not in static
     assert static.count('class="usual"') == 2
+    assert "Band: total error of velocity" in text
     assert "mean between stations: velocity" in text
     assert "row of the table" in text
 
@@ -367,6 +370,18 @@ def test_two_results_are_compared_on_their_common_ground(make: Callable[..., Res
     text = Text(write_comparison(one, other, tmp_path / "out").read_text(encoding="utf-8")).text
     assert "B less A" in text
     assert "one" in text.split("against")[0]
+
+
+def test_the_command_compares_two_folders(
+    make: Callable[..., Result], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    result = make(argued=False, spacing=1.0)
+    folders = [str(write_folder(tmp_path / name, {"ab": result})) for name in ("one", "other")]
+    done = CliRunner().invoke(app, ["report", *folders])
+    assert done.exit_code == 0, done.output
+    assert done.output.strip() == str(Path("results") / "comparison" / "report.html")
+    assert "B less A" in (tmp_path / "results" / "comparison" / "report.html").read_text(encoding="utf-8")
 
 
 @pytest.mark.parametrize(

@@ -18,6 +18,7 @@ from stillground.protocols import Array
 
 FIELD, CHANGE = "cividis", "PuOr"
 _MOST_NODES = 300_000
+_ERRORS = ("_total_error", "_noise_part")
 _EXAGGERATIONS, _FLATTEST, _TALL = (1, 2, 5, 10, 20, 50, 100), 5.0, 1.25
 
 
@@ -56,7 +57,7 @@ class Frame:
         return 0.0 if self.distance is None else float(np.ptp(self.distance) / np.ptp(self.elevation))
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Companion:
     """What argues for or against the answer place by place, as people read it: shape (nz, nx)."""
 
@@ -111,6 +112,12 @@ class Ground:
     companions: tuple[Companion, ...]
     usual: Usual | None = None
     halvings: int = 0
+
+    @property
+    def band(self) -> Companion | None:
+        """The error that a column is drawn with: the total one after a rehearsal, else the noise part."""
+        named = {ending: c for c in self.companions for ending in _ERRORS if c.name.endswith(ending)}
+        return next((named[ending] for ending in _ERRORS if ending in named), None)
 
     @property
     def label(self) -> str:

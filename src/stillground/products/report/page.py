@@ -124,7 +124,7 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
         f"{ground.model.min():.4g} to {ground.model.max():.4g} {ground.units}; "
         f"hatched where it is not reliable"
     )
-    noise = next((c for c in ground.companions if c.name.endswith("_noise_part")), None)
+    band = ground.band
     sight = Sight(ground.model, ground.scale, label, said)
     listed, light = outliers(profile)
     drawn = {rule: name for rule, name in symbols.items() if rule in {r.rule for r in entry.rules}}
@@ -138,7 +138,7 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
         "ground": ground,
         "column": ground.frame.distance is None,
         "tall": ground.frame.tall,
-        "static": large(ground, sight, stand, None if noise is None else noise.values),
+        "static": large(ground, sight, stand, None if band is None else band.values),
         "picks": _picks(profile, ground, label, drawn),
         "bar": colour_bar(Sight(ground.model, ground.scale, label, said)),
         "curves": curve_charts(profile, drawn),
@@ -214,7 +214,14 @@ def _live(
         "companions": [[one.name, one.long_name, one.units] for one in ground.companions],
         "meanings": [meaning.replace("_", " ") for meaning in MEANINGS],
         "places": [[name, np.round(where, 3).tolist()] for name, where in stand.items()],
-    } | ({} if frame.distance is not None else {"column": True, "usual": _usual(ground)})
+    } | (
+        {} if frame.distance is not None else {"column": True, "usual": _usual(ground), "band": _band(ground)}
+    )
+
+
+def _band(ground: Ground) -> int | None:
+    """Which of the companions is the error band, if one is."""
+    return None if ground.band is None else ground.companions.index(ground.band)
 
 
 def _usual(ground: Ground) -> list[list[float]]:
@@ -301,7 +308,7 @@ def _quality(ground: Ground, companion: Companion) -> tuple[Markup, Markup, str,
     """A companion's picture, colour bar, caption and comment."""
     values = companion.values[ground.inside]
     low, high = np.percentile(values, [0, 99])
-    label = f"{companion.units or '1'}"
+    label = companion.units if companion.units not in ("", "1") else "no unit"
     title = companion.long_name[:1].upper() + companion.long_name[1:]
     sight = Sight(companion.values, (min(float(low), 0.0), max(float(high), 1e-12)), label, title)
     return small(ground, sight, _ROOM), colour_bar(sight, 220), title, companion.comment

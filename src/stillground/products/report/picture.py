@@ -203,7 +203,7 @@ def _column(
     chart.frame(sight.label, "elevation (m)", ticks=(5, 7))
     half = abs(float(elevation[0] - elevation[-1])) / max(elevation.size - 1, 1) / 2
     for flag, height in zip(ground.flags[:, 0], elevation, strict=True):
-        if flag != RELIABLE:
+        if flag != RELIABLE and (ground.frame.surface is None or height <= ground.frame.surface[0]):
             top = max(float(chart.up(height + half)), chart.top)
             bottom = min(float(chart.up(height - half)), chart.bottom)
             chart.add("rect", class_="veil", x=chart.left, y=top, width=chart.right - chart.left,

@@ -261,9 +261,10 @@ class Column extends Section {
     this.over.setAttribute('viewBox', `0 0 ${width} ${height}`);
     const [low, high] = sight.range;
     const x = v => PAD.left + (v - low) / (high - low) * this.wide, y = i => PAD.top + i / n * this.high;
+    const under = Array.from({length: n + 1}, (_, i) => i).filter(i => !ground.surface || place([i, 0], ground)[1] <= ground.surface[0] + 1e-6);
     const half = this.high / n / 2;
     (sight.flags || []).forEach((flag, i) => {
-      if (!flag) return;
+      if (!flag || !under.includes(i)) return;
       const from = Math.max(y(i) - half, PAD.top);
       add('rect', {class: 'veil', x: PAD.left, y: from, width: this.wide, height: Math.min(y(i) + half, bottom) - from});
     });
@@ -275,7 +276,6 @@ class Column extends Section {
       add('path', {class: 'grid', d: `M${PAD.left} ${this.y(v)}H${right}`});
       add('text', {x: PAD.left - 7, y: this.y(v) + 4, 'text-anchor': 'end'}, minus(String(v)));
     }
-    const under = Array.from({length: n + 1}, (_, i) => i).filter(i => !ground.surface || place([i, 0], ground)[1] <= ground.surface[0] + 1e-6);
     const line = values => under.map(i => `${x(values[i]).toFixed(1)} ${y(i).toFixed(1)}`);
     if (sight.band) {
       const out = line(sight.band.map((b, i) => sight.chosen[i] + b)), back = line(sight.band.map((b, i) => sight.chosen[i] - b));
@@ -401,11 +401,10 @@ class Live {
     if (this.mode === 'value') {
       const room = 0.25 * (scale[1] - scale[0]);
       const sight = {...common, field: this.frame(this.now), scale, range: [scale[0] - room, scale[1] + room], table: tables.cividis, label: `${property.name} (${unit})`};
-      const noise = this.about.companions.findIndex(one => one[0].endsWith('_noise_part'));
       if (this.about.column) {
         sight.chosen = this.frame(this.chosen.frame).values;
         sight.usual = this.about.usual;
-        if (noise >= 0) sight.band = this.stacks.quality.field(noise + 1).values;
+        if (this.about.band !== null) sight.band = this.stacks.quality.field(this.about.band + 1).values;
       }
       return sight;
     }
