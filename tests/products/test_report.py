@@ -142,6 +142,9 @@ def test_past_the_budget_pictures_between_picks_give_way_first(folder: Path) -> 
     least = pictures(profile, ground, 1)
     assert "every 64th" in least.note
     assert "values at picks are rounded" in least.note
+    for frames in (whole, half, least):
+        n_between = sum(frame["stack"] == "between" for frame in frames.frames)
+        assert n_between == frames.between.about["count"] == (1 if frames is least else 6)
     assert (whole.picked.about["bytes"], least.picked.about["bytes"]) == (2, 1)
     assert half.picked.text == whole.picked.text
 

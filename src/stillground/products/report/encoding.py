@@ -52,7 +52,7 @@ def pack(stack: Array, n_bytes: int) -> Packed:
         step = (high - low) / (last - 1) or 1.0
         code[...] = np.where(known, np.clip(np.rint((field - low) / step), 0, last - 1) + 1, 0)
         ends.append((low, high))
-    codes[..., 1:] -= codes[..., :-1].copy()
+    codes[..., 1:] -= codes[..., :-1]
     return Packed(
         base64.b64encode(zlib.compress(_planes(codes), 6)).decode("ascii"),
         {

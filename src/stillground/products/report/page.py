@@ -90,7 +90,7 @@ def rendered(template: str, **said: Any) -> str:
         script=Markup(script),
         policy=f"default-src 'none'; script-src '{_digest(script)}'; style-src '{_digest(style)}'; "
         f"img-src data:; base-uri 'none'; form-action 'none'",
-        tables={name: packed_colours(name) for name in (FIELD, CHANGE)},
+        tables={"field": packed_colours(FIELD), "change": packed_colours(CHANGE)},
         **said,
     )  # fmt: skip
 

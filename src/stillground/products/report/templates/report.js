@@ -396,11 +396,11 @@ class Live {
     const common = {flags: this.marked, veiled: this.part('veiled').checked};
     if (this.mode === 'spread') {
       const values = this.spreadField();
-      return {...common, field: {values, nz: frame.nz, nx: frame.nx}, scale: [0, spread], range: [0, spread * 1.1], table: tables.cividis, label: `spread (${unit})`};
+      return {...common, field: {values, nz: frame.nz, nx: frame.nx}, scale: [0, spread], range: [0, spread * 1.1], table: tables.field, label: `spread (${unit})`};
     }
     if (this.mode === 'value') {
       const room = 0.25 * (scale[1] - scale[0]);
-      const sight = {...common, field: this.frame(this.now), scale, range: [scale[0] - room, scale[1] + room], table: tables.cividis, label: `${property.name} (${unit})`};
+      const sight = {...common, field: this.frame(this.now), scale, range: [scale[0] - room, scale[1] + room], table: tables.field, label: `${property.name} (${unit})`};
       if (this.about.column) {
         sight.chosen = this.frame(this.chosen.frame).values;
         sight.usual = this.about.usual;
@@ -410,7 +410,7 @@ class Live {
     }
     const base = this.onFullGrid(this.rules[+this.mode].frame), now = this.onFullGrid(this.now);
     const values = now.map((v, n) => v - base[n]);
-    return {...common, field: {values, nz: frame.nz, nx: frame.nx}, scale: [-change, change], range: [-change, change], table: tables.PuOr, label: `difference (${unit})`, signed: true};
+    return {...common, field: {values, nz: frame.nz, nx: frame.nx}, scale: [-change, change], range: [-change, change], table: tables.change, label: `difference (${unit})`, signed: true};
   }
   here() { return this.rules.filter(rule => rule.frame === this.now); }
   show(k) {
@@ -600,7 +600,7 @@ class Pair {
     this.maps = hosts.map(host => new Kind(host, frame, []));
     const room = 0.25 * (scale[1] - scale[0]), unit = about.property.units;
     this.sights = [0, 1, 2].map(i => ({
-      field: stacks.pair.field(i), veiled: true, table: i < 2 ? tables.cividis : tables.PuOr, signed: i === 2,
+      field: stacks.pair.field(i), veiled: true, table: i < 2 ? tables.field : tables.change, signed: i === 2,
       scale: i < 2 ? scale : [-change, change], range: i < 2 ? [scale[0] - room, scale[1] + room] : [-change, change],
       label: `${i < 2 ? about.property.name : 'difference'} (${unit})`,
     }));
