@@ -79,6 +79,7 @@ class VariationEntry(BaseModel):
 class ExtraEntry(BaseModel):
     units: str
     values: list[float] | None = None
+    deviation: float | None = None
     rms: float | None = None
     largest: float | None = None
 

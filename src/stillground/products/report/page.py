@@ -317,12 +317,14 @@ def _quality(ground: Ground, companion: Companion) -> tuple[Markup, Markup, str,
 def _extras(entry: Entry) -> list[tuple[str, str]]:
     told = []
     for name, extra in entry.extras.items():
-        numbers = extra.values if extra.values is not None else [extra.rms or 0.0, extra.largest or 0.0]
-        values, units = legible(np.array(numbers), extra.units)
-        words = [f"{minus(f'{value:.3g}')} {units}".strip() for value in values]
-        told.append(
-            (name.replace("_", " "), words[0] if extra.values else f"rms {words[0]}, largest {words[1]}")
-        )
+        lone = extra.values is not None and len(extra.values) == 1
+        pair = (extra.values[0], extra.deviation) if lone and extra.values else (extra.rms, extra.largest)
+        values, units = legible(np.array([value or 0.0 for value in pair]), extra.units)
+        first, second = (f"{minus(f'{value:.3g}')} {units}".strip() for value in values)
+        said = f"rms {first}, largest {second}"
+        if lone:
+            said = first if extra.deviation is None else f"{first}, give or take {second}"
+        told.append((name.replace("_", " "), said))
     return told
 
 
