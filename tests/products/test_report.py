@@ -196,6 +196,7 @@ def test_the_page_tells_all_that_the_summary_does(folder: Path, page: str, resul
         "spread 0.9",
         "expected 2",
         "of the rms anomaly",
+        "300 µs, give or take 200 µs",
     ):
         assert said in text, said
     for rule, badge in BADGES.items():
