@@ -57,9 +57,10 @@ def test_the_readme_shows_what_it_prints(told: Any, demo: Path) -> None:
 def test_all_products_are_there_and_nothing_half_written(folder: Path) -> None:
     products = {p.name for p in folder.iterdir() if p.is_file()}
     layers = ("slowness", "velocity", "slowness_noise_part", "reliability")
-    assert products == {"summary.json", "report.html", "map.nc", "survey.nc", *(f"map_{layer}.nc" for layer in layers),
-                        *(f"crosshole-ab_{what}" for what in ("section.nc", "history.nc", "ladder.nc",
-                          "fit.csv", "curtain.nc", "curtain.qml", "points.csv"))}  # fmt: skip
+    own = ("section.nc", "history.nc", "ladder.nc", "fit.csv", "curtain.nc", "curtain.qml", "points.csv")
+    maps = {f"map_{layer}.nc" for layer in layers}
+    whole = {"summary.json", "report.html", "map.nc", "survey.nc"}
+    assert products == whole | maps | {f"crosshole-ab_{what}" for what in own}
     figures = {p.name for p in (folder / "figures").iterdir()}
     assert figures == {f"crosshole-ab_{what}.{kind}" for kind in ("png", "pdf")
                        for what in ("section", "rules", "ladder", "residuals", "errors")}  # fmt: skip
