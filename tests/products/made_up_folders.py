@@ -10,7 +10,6 @@ from typing import Any
 
 import numpy as np
 from pyproj import CRS
-from stillground.products.section import section_dataset, write_section
 
 from stillground.products.fit import fit_table, write_fit
 from stillground.products.history import history_dataset, write_history
