@@ -322,16 +322,17 @@ def test_a_calibration_offset_of_one_configuration_is_told_and_taken_up() -> Non
     assert any("errors.statics = { configuration" in remark for remark in plain.arrays.remarks)
     statics = TABLES | {"errors": TABLES["errors"] | {"statics": {"configuration": 1.0}}}
     mended = stillground.reconstruct_survey(survey, kind="induction", **statics)
-    values, units = mended.arrays.extras["configuration_static"]
-    assert units == "S m-1"
+    found = mended.arrays.extras["configuration_static"]
+    values = found.values
+    assert found.units == "S m-1"
     assert values[1] == pytest.approx(0.0015, rel=0.2)
     assert np.abs(np.delete(values, 1)).max() < 0.0006
     axes = mended.arrays.axes
     truth = GAP.values(np.stack(np.meshgrid(*axes, indexing="ij"), axis=-1).reshape(-1, 2))
     shallow = (axes[1] > -8.0) & (axes[1] < -0.4)
     with_, without = (
-        np.sqrt(np.mean((found.arrays.model - truth.reshape(found.arrays.model.shape))[:, shallow] ** 2))
-        for found in (mended, plain)
+        np.sqrt(np.mean((each.arrays.model - truth.reshape(each.arrays.model.shape))[:, shallow] ** 2))
+        for each in (mended, plain)
     )
     assert with_ < 0.85 * without
 
