@@ -224,6 +224,13 @@ def test_python_gets_a_labelled_result_in_one_call(survey: xr.Dataset) -> None:
     assert result.verdict == "settled"
     assert "settled" in repr(result)
     assert result.picture["velocity"].attrs["units"] == "m s-1"
+    shown = result._repr_html_()
+    for part in ("settled", "gcv (chosen)", "data:image/png;base64,", "no clearance to dig"):
+        assert part in shown
+    assert "<script" not in shown
+    assert result.plot("ladder").texts
+    with pytest.raises(ConfigError, match=r"no figure 'lader'; there are section, errors, rules"):
+        result.plot("lader")
     fast = result.picture["slowness"].sel(distance=3, elevation=-4, method="nearest")
     slow = result.picture["slowness"].sel(distance=6, elevation=-8, method="nearest")
     assert float(fast) > 1 / 1800 > float(slow)

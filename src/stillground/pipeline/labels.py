@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import sys
-from collections.abc import Iterable, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from importlib.metadata import version
 from pathlib import Path
@@ -14,15 +14,19 @@ import numpy as np
 import pandas as pd
 import pyproj
 import xarray as xr
+from matplotlib.figure import Figure
 
 from stillground.config import Config
+from stillground.errors import ConfigError
 from stillground.grid import Grid
 from stillground.pipeline.advice import advise
 from stillground.pipeline.profiles import Profile
 from stillground.products.cf import plan_unit
+from stillground.products.figures import figures
 from stillground.products.fit import fit_table
 from stillground.products.history import history_dataset
 from stillground.products.ladder import ladder_dataset
+from stillground.products.notebook import display
 from stillground.products.picture import picture_dataset
 from stillground.products.provenance import Provenance, timestamp
 from stillground.products.summary import profile_summary
@@ -50,6 +54,8 @@ class ProfileResult:
         The same answer without labels.
     advice : tuple of str
         What settings will not do what their user hopes.
+    figures : mapping of str to callable
+        What draws each figure, as in the files ``figures/<name>_<figure>.png``.
     """
 
     name: str
@@ -60,6 +66,23 @@ class ProfileResult:
     profile: Profile
     arrays: Result
     advice: tuple[str, ...]
+    figures: Mapping[str, Callable[[], Figure]]
+
+    def plot(self, figure: str | None = None) -> Figure:
+        """Draws a figure: the answer, or one of `figures` by its name.
+
+        Raises
+        ------
+        ConfigError
+            When there is no figure of that name.
+        """
+        name = figure or next(iter(self.figures))
+        if name not in self.figures:
+            raise ConfigError(f"there is no figure '{name}'; there are {', '.join(self.figures)}")
+        return self.figures[name]()
+
+    def _repr_html_(self) -> str:
+        return display(self.name, self.arrays, self.plot())
 
     @property
     def verdict(self) -> str:
@@ -109,6 +132,7 @@ def label(
     easting, northing = plan_trace(profile, result.axes, crs)
     surface, tolerance = profile.scene.surface, config.refinement.tolerance
     unit, factor = _table_unit(profile, kind.datum, kind.datum_units)
+    options = _judged_by(config, result.noise)
     return ProfileResult(
         name=profile.name,
         picture=picture_dataset(
@@ -125,7 +149,7 @@ def label(
         history=history_dataset(
             profile.name,
             result,
-            options=judged_by(config, result.noise),
+            options=options,
             surface=surface,
             provenance=origin,
         ),
@@ -142,6 +166,15 @@ def label(
         profile=profile,
         arrays=result,
         advice=advice,
+        figures=figures(
+            profile.name,
+            result,
+            tolerance=tolerance,
+            options=options,
+            surface=surface,
+            positions=profile.scene.positions,
+            differences=profile.scene.differences,
+        ),
     )
 
 
@@ -157,7 +190,7 @@ def plan_trace(profile: Profile, axes: tuple[Array, ...], crs: pyproj.CRS | None
     return np.asarray(easting) / metres, np.asarray(northing) / metres
 
 
-def judged_by(config: Config, noise: float) -> RuleOptions:
+def _judged_by(config: Config, noise: float) -> RuleOptions:
     """The numbers that the rules took; ``noise`` is the size found of the errors over what is stated."""
     return RuleOptions(
         tau=config.stopping.tau,

@@ -18,7 +18,7 @@ from stillground.config import Config, from_mapping, load
 from stillground.errors import ConfigError
 from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
-from stillground.pipeline.labels import ProfileResult, judged_by, label, provenance, survey_crs
+from stillground.pipeline.labels import ProfileResult, label, provenance, survey_crs
 from stillground.pipeline.profiles import place, read_profiles
 from stillground.pipeline.site import line, plan_slices, recalled, write_site
 from stillground.products.curtain import curtain_dataset, write_curtain
@@ -236,17 +236,7 @@ def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Pro
             written["points"] = write_points(folder, result.name, points_table(result.picture, crs))
     yield Progress("writing products", 1, 2)
     if "figures" in wanted:
-        scene = result.profile.scene
-        write_figures(
-            folder / "figures",
-            result.name,
-            result.arrays,
-            positions=scene.positions,
-            differences=scene.differences,
-            surface=scene.surface,
-            tolerance=config.refinement.tolerance,
-            options=judged_by(config, result.arrays.noise),
-        )
+        write_figures(folder / "figures", result.name, result.figures)
     yield Progress("writing products", 2, 2)
     return _names(folder, written)
 

@@ -2,8 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
+from functools import partial
 from pathlib import Path
+from typing import Any
+
+from matplotlib.figure import Figure
 
 from stillground.products.figures.column import column_figure
 from stillground.products.figures.errors import errors_figure
@@ -20,8 +24,7 @@ from stillground.products.raster import Surface
 from stillground.protocols import Array, Differences, Pattern, Rehearsal, Result, RuleOptions
 
 
-def write_figures(
-    folder: Path,
+def figures(
     profile: str,
     result: Result,
     *,
@@ -30,16 +33,14 @@ def write_figures(
     surface: Surface | None,
     positions: Mapping[str, Array],
     differences: Differences | None = None,
-) -> tuple[Path, ...]:
-    """Write the figures of a result as PNG and PDF.
+) -> dict[str, Callable[[], Figure]]:
+    """What draws the figures of a result, by their names; nothing is drawn before it is called.
 
-    ``<profile>_section`` (of a column ``_column``), ``_errors``, ``_rules``, ``_ladder`` and ``_residuals``
-    always, ``_rehearsal`` and ``_sensitivity`` where the result has them.
+    ``section`` (of a column ``column``), ``errors``, ``rules``, ``ladder`` and ``residuals`` always,
+    ``rehearsal`` and ``sensitivity`` where the result has them.
 
     Parameters
     ----------
-    folder : Path
-        Is created.
     profile : str
     result : Result
         On axes (distance, elevation) or (elevation,).
@@ -52,36 +53,38 @@ def write_figures(
         Places by what stands there, m.
     differences : Differences, optional
         In a column, the usual estimate to draw behind the answer.
+    """
+    on_ground: dict[str, Any] = {"tolerance": tolerance, "surface": surface}
+    placed = on_ground | {"positions": positions}
+    picture = (
+        partial(column_figure, profile, result, differences=differences, **placed)
+        if len(result.axes) == 1
+        else partial(section_figure, profile, result, **placed)
+    )
+    drawn: dict[str, Callable[[], Figure]] = {
+        product(len(result.axes)): picture,
+        "errors": partial(errors_figure, profile, result, **on_ground),
+        "rules": partial(rules_figure, profile, result, options=options),
+        "ladder": partial(ladder_figure, profile, result, **on_ground),
+        "residuals": partial(residuals_figure, profile, result),
+    }
+    if result.rehearsal is not None:
+        drawn["rehearsal"] = partial(rehearsal_figure, profile, result.rehearsal, result.chosen.rule)
+    if result.sensitivity is not None:
+        drawn["sensitivity"] = partial(sensitivity_figure, profile, result, **on_ground)
+    return drawn
+
+
+def write_figures(folder: Path, profile: str, drawn: Mapping[str, Callable[[], Figure]]) -> tuple[Path, ...]:
+    """Draw figures and write them as PNG and PDF ``<profile>_<name>`` into ``folder``, which is created.
 
     Raises
     ------
     OutputError
         When the place cannot be written.
     """
-    if len(result.axes) == 1:
-        picture = column_figure(
-            profile,
-            result,
-            tolerance=tolerance,
-            surface=surface,
-            positions=positions,
-            differences=differences,
-        )
-    else:
-        picture = section_figure(profile, result, tolerance=tolerance, surface=surface, positions=positions)
-    figures = {
-        product(len(result.axes)): picture,
-        "errors": errors_figure(profile, result, tolerance=tolerance, surface=surface),
-        "rules": rules_figure(profile, result, options=options),
-        "ladder": ladder_figure(profile, result, tolerance=tolerance, surface=surface),
-        "residuals": residuals_figure(profile, result),
-    }
-    if result.rehearsal is not None:
-        figures["rehearsal"] = rehearsal_figure(profile, result.rehearsal, result.chosen.rule)
-    if result.sensitivity is not None:
-        figures["sensitivity"] = sensitivity_figure(profile, result, tolerance=tolerance, surface=surface)
     return tuple(
-        path for name, figure in figures.items() for path in write_figure(folder, f"{profile}_{name}", figure)
+        path for name, draw in drawn.items() for path in write_figure(folder, f"{profile}_{name}", draw())
     )
 
 

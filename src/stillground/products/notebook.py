@@ -1,0 +1,61 @@
+"""What a notebook shows of a result: verdict, rules and a small picture, in our look."""
+
+from __future__ import annotations
+
+from base64 import b64encode
+from html import escape
+from io import BytesIO
+
+from matplotlib.figure import Figure
+
+from stillground.products.figures.badges import badge_of
+from stillground.products.figures.sheet import INK, MUTED, PAPER, VERDICTS, our_look
+from stillground.products.provenance import CAUTION
+from stillground.protocols import Choice, Result
+
+_CELL = "padding:1px 10px 1px 0;text-align:left;border:0;background:none"
+
+
+def display(name: str, result: Result, picture: Figure) -> str:
+    """HTML without scripts or links that stands by itself in a cell's output.
+
+    Parameters
+    ----------
+    name : str
+        Of the profile.
+    result : Result
+    picture : Figure
+        Of the answer.
+    """
+    small = BytesIO()
+    with our_look():
+        picture.savefig(small, format="png", dpi=80, metadata={"Software": None})
+    verdict = result.ladder.verdict
+    _, sign, colour = VERDICTS[verdict.word]
+    said = f"{escape(name)}: {verdict.word}"
+    head = "".join(f'<th style="{_CELL}">{text}</th>' for text in ("rule", "iteration", "misfit", ""))
+    rows = "".join(_row(choice, choice is result.chosen) for choice in result.choices)
+    image = b64encode(small.getvalue()).decode()
+    return (
+        f'<div style="font:13px sans-serif;color:{INK};background:{PAPER};padding:8px;max-width:60em">'
+        f'<p style="margin:0 0 6px"><b style="color:{colour}">{sign} {said}</b>. '
+        f"{escape(verdict.reason)}.</p>"
+        f'<div style="display:flex;flex-wrap:wrap;gap:12px"><table style="border-collapse:collapse">'
+        f"<tr>{head}</tr>{rows}</table>"
+        f'<img src="data:image/png;base64,{image}" alt="{said}" style="max-width:26em;height:auto"></div>'
+        f'<p style="margin:6px 0 0;color:{MUTED};font-size:11px">{escape(CAUTION)}</p></div>'
+    )
+
+
+def _row(choice: Choice, chosen: bool) -> str:
+    badge = badge_of(choice.rule)
+    iteration = "none" if choice.pick.iteration is None else f"{choice.pick.iteration:.3g}"
+    cells = (
+        f'<b style="color:{badge.colour}">{escape(badge.letter)}</b> {escape(choice.rule)}'
+        + (" (chosen)" if chosen else ""),
+        iteration,
+        f"{choice.chi_square:.3g}",
+        "firm" if choice.pick.firm else "weak",
+    )
+    tip = escape(choice.pick.reason, quote=True)
+    return f'<tr title="{tip}">' + "".join(f'<td style="{_CELL}">{cell}</td>' for cell in cells) + "</tr>"
