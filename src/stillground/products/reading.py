@@ -18,6 +18,7 @@ def shown_change(seen: GroundProperty, model: Array, change: Array) -> Array:
 
     Examples
     --------
+    >>> import numpy as np
     >>> slowness = GroundProperty("slowness", "s m-1", "slowness", ("velocity", "m s-1", "velocity"))
     >>> shown_change(slowness, np.array([1 / 2000]), np.array([5e-6]))
     array([20.])
