@@ -217,7 +217,7 @@ value = "2"
     (result,) = run_config(
         path, out=path.parent / "out", overrides=['survey.files=["made.csv"]', "errors.floor=0.01"]
     )
-    assert result.fit.shape == (7, 5)
+    assert len(result.fit) == 7
 
 
 def test_rehearsals_run_on_nodes_that_are_not_nested(path: Path) -> None:

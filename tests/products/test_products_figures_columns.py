@@ -13,7 +13,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from stillground.products.averages import read_averages
-from stillground.products.figures import write_figures
+from stillground.products.figures import figures, write_figures
 from stillground.products.figures.column import BAND, STEPS, column_figure
 from stillground.products.figures.errors import errors_figure
 from stillground.products.figures.ladder import ladder_figure
@@ -206,9 +206,8 @@ def test_no_words_leave_the_sheet_or_cover_each_other(column: Result, tmp_path: 
     assert not any(a.overlaps(b) for i, a in enumerate(boxes) for b in boxes[:i])
     assert all(box.x0 >= 0 and box.x1 <= figure.bbox.width for box in boxes)
     options = RuleOptions()
-    written = write_figures(
-        tmp_path, "hole", column, tolerance=0.02, options=options, surface=SURFACE, positions=POSITIONS
-    )
+    named = figures("hole", column, tolerance=0.02, options=options, surface=SURFACE, positions=POSITIONS)
+    written = write_figures(tmp_path, "hole", named)
     assert "hole_column.png" in {path.name for path in written}
 
 

@@ -16,7 +16,7 @@ from stillground.products.history import history_dataset
 from stillground.products.ladder import ladder_dataset
 from stillground.products.picture import picture_dataset
 from stillground.products.provenance import CAUTION, Provenance, argument, timestamp
-from stillground.protocols import Result
+from stillground.protocols import Result, RuleOptions
 
 
 def test_time_follows_source_date_epoch(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -73,7 +73,7 @@ def test_every_netcdf_file_of_a_profile_says_what_argues_its_answer(
     common: dict[str, Any] = {"surface": surface, "provenance": provenance}
     for made in (
         section,
-        history_dataset("ab", result, **common),
+        history_dataset("ab", result, options=RuleOptions(), **common),
         ladder_dataset("ab", result, tolerance=0.02, **common),
         curtain_dataset(section, crs),
     ):
