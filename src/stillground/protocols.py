@@ -538,6 +538,25 @@ class Progress:
 
 
 @dataclass(frozen=True)
+class Known:
+    """Known ground to set beside an answer, as layers or a borehole's log.
+
+    Parameters
+    ----------
+    points : array, shape (n_points, 3)
+        East, north and elevation, m.
+    values : array, shape (n_points,)
+        The ground property; NaN where a point only marks a place, as the top of a layer.
+    names : tuple of str
+        What each point belongs to; may be empty.
+    """
+
+    points: Array
+    values: Array
+    names: tuple[str, ...]
+
+
+@dataclass(frozen=True)
 class Differences:
     """What practice reads off the data without an inversion: the property between two elevations, m.
 

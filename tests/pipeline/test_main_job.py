@@ -57,7 +57,16 @@ def test_the_readme_shows_what_it_prints(told: Any, demo: Path) -> None:
 def test_all_products_are_there_and_nothing_half_written(folder: Path) -> None:
     products = {p.name for p in folder.iterdir() if p.is_file()}
     layers = ("slowness", "velocity", "slowness_noise_part", "reliability")
-    own = ("section.nc", "history.nc", "ladder.nc", "fit.csv", "curtain.nc", "curtain.qml", "points.csv")
+    own = (
+        "section.nc",
+        "history.nc",
+        "ladder.nc",
+        "fit.csv",
+        "curtain.nc",
+        "curtain.qml",
+        "points.csv",
+        "overlay.csv",
+    )
     maps = {f"map_{layer}.nc" for layer in layers}
     whole = {"summary.json", "report.html", "map.nc", "survey.nc"}
     assert products == whole | maps | {f"crosshole-ab_{what}" for what in own}

@@ -15,6 +15,7 @@ from stillground.pipeline.inspect import Plan
 from stillground.pipeline.rehearse import Patterns, Rehearsed
 from stillground.pipeline.run import Done, Outcome
 from stillground.products.averages import read_averages
+from stillground.products.overlay import overlay_sentence
 from stillground.products.provenance import CAUTION
 from stillground.products.reliability import MESH_DEPENDENT, NO_DATA
 from stillground.protocols import Choice, Ladder, Rehearsal, Result, Sensitivity
@@ -69,6 +70,9 @@ def profile(done: Done) -> None:
     for mean in averages:
         say(mean.sentence)
     if averages:
+        say()
+    if done.result.overlay is not None:
+        say(overlay_sentence(done.result.overlay.summary()))
         say()
     _ladder(result.ladder)
     for sentence in result.remarks:

@@ -369,6 +369,12 @@ class SimulateSettings(Table):
     box: list[BoxSettings] = []
 
 
+class OverlaySettings(Table):
+    """Known ground to set beside the answer: layers, a borehole's log."""
+
+    file: InputPath = Field(description="table x y z, with value and name where it has them")
+
+
 class Config(Table):
     """All settings of a run, in SI."""
 
@@ -413,4 +419,5 @@ class Config(Table):
     map: MapSettings = MapSettings()
     output: OutputSettings = OutputSettings()
     physics: SerializeAsAny[BaseModel] = Field(Table(), description="settings of the kind of survey")
+    overlay: list[OverlaySettings] = Field([], description="known ground to set beside the answer")
     simulate: SimulateSettings | None = Field(None, description="a described ground to make a survey over")

@@ -27,10 +27,11 @@ from stillground.products.fit import fit_table
 from stillground.products.history import history_dataset
 from stillground.products.ladder import ladder_dataset
 from stillground.products.notebook import display
+from stillground.products.overlay import Overlay, overlay
 from stillground.products.picture import picture_dataset
 from stillground.products.provenance import Provenance, timestamp
 from stillground.products.summary import profile_summary
-from stillground.protocols import Array, Result, RuleOptions
+from stillground.protocols import Array, Known, Result, RuleOptions
 from stillground.survey import row_numbers, to_si
 
 _PACKAGES = ("stillground", "numpy", "scipy", "pylops", "xarray", "numba", "netCDF4")
@@ -56,6 +57,8 @@ class ProfileResult:
         What settings will not do what their user hopes.
     figures : mapping of str to callable
         What draws each figure, as in the files ``figures/<name>_<figure>.png``.
+    overlay : Overlay or None
+        Known ground near the profile, as in ``<name>_overlay.csv``.
     """
 
     name: str
@@ -67,6 +70,7 @@ class ProfileResult:
     arrays: Result
     advice: tuple[str, ...]
     figures: Mapping[str, Callable[[], Figure]]
+    overlay: Overlay | None
 
     def plot(self, figure: str | None = None) -> Figure:
         """Draws a figure: the answer, or one of `figures` by its name.
@@ -91,7 +95,8 @@ class ProfileResult:
 
     def summary(self, files: dict[str, str] | None = None) -> dict[str, Any]:
         """The profile's entry of ``summary.json``."""
-        return profile_summary(self.name, self.arrays, files or {})
+        beside = None if self.overlay is None else self.overlay.summary()
+        return profile_summary(self.name, self.arrays, files or {}) | {"overlay": beside}
 
     def __repr__(self) -> str:
         chosen, verdict = self.arrays.chosen, self.arrays.ladder.verdict
@@ -104,7 +109,7 @@ class ProfileResult:
 def provenance(profiles: Sequence[Profile], config: Config, text: str, command: str) -> Provenance:
     """What made the files of a run: the configuration, digests of all inputs, versions, time."""
     beside = [path for profile in profiles for path in profile.scene.inputs]
-    inputs = dict.fromkeys([*config.survey.files, *beside])
+    inputs = dict.fromkeys([*config.survey.files, *(one.file for one in config.overlay), *beside])
     return Provenance(
         title=config.title,
         config_text=text,
@@ -122,9 +127,14 @@ def digests(paths: Iterable[Path]) -> dict[str, str]:
 
 
 def label(
-    profile: Profile, grids: Sequence[Grid], result: Result, config: Config, origin: Provenance
+    profile: Profile,
+    grids: Sequence[Grid],
+    result: Result,
+    config: Config,
+    origin: Provenance,
+    known: Sequence[Known],
 ) -> ProfileResult:
-    """Puts labels, units and coordinates back on an answer."""
+    """Puts labels, units and coordinates back on an answer, and known ground beside it."""
     advice = advise(profile, grids, config)
     origin = replace(origin, cautions=". ".join([*profile.scene.doubts, *advice]))
     kind = config.kind
@@ -133,19 +143,24 @@ def label(
     surface, tolerance = profile.scene.surface, config.refinement.tolerance
     unit, factor = _table_unit(profile, kind.datum, kind.datum_units)
     options = _judged_by(config, result.noise)
+    picture = picture_dataset(
+        profile.name,
+        result,
+        easting=easting,
+        northing=northing,
+        crs=crs,
+        surface=surface,
+        tolerance=tolerance,
+        provenance=origin,
+        differences=profile.scene.differences,
+    )
+    beside = None
+    if known:
+        _, metres = plan_unit(crs)
+        beside = overlay(known, picture, kind.ground_property, metres, reach(config))
     return ProfileResult(
         name=profile.name,
-        picture=picture_dataset(
-            profile.name,
-            result,
-            easting=easting,
-            northing=northing,
-            crs=crs,
-            surface=surface,
-            tolerance=tolerance,
-            provenance=origin,
-            differences=profile.scene.differences,
-        ),
+        picture=picture,
         history=history_dataset(
             profile.name,
             result,
@@ -174,8 +189,17 @@ def label(
             surface=surface,
             positions=profile.scene.positions,
             differences=profile.scene.differences,
+            known=beside,
         ),
+        overlay=beside,
     )
+
+
+def reach(config: Config) -> float:
+    """How far from a line a map shows anything and known ground is taken, m."""
+    lengths = config.ground.correlation
+    horizontal = lengths.vertical if lengths.horizontal is None else lengths.horizontal
+    return config.map.reach or horizontal
 
 
 def survey_crs(config: Config) -> pyproj.CRS | None:

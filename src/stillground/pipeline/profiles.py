@@ -8,8 +8,8 @@ import xarray as xr
 
 from stillground.config import Config
 from stillground.errors import ConfigError, SurveyError
-from stillground.protocols import Scene
-from stillground.survey import SurveyReport, check, profiles, read
+from stillground.protocols import Known, Scene
+from stillground.survey import SurveyReport, check, profiles, read, read_known
 
 
 @dataclass(frozen=True)
@@ -55,6 +55,11 @@ def read_profiles(config: Config) -> tuple[Profile, ...]:
     if refused:
         raise SurveyError(f"{len(refused)} tables", [str(error) for error in refused])
     return tuple(found.values())
+
+
+def read_overlays(config: Config) -> tuple[Known, ...]:
+    """Reads the known ground that is to be set beside the answer; `SurveyError` for a faulty table."""
+    return tuple(read_known(one.file, config.kind.ground_property) for one in config.overlay)
 
 
 def checked(table: xr.Dataset, config: Config) -> tuple[xr.Dataset, SurveyReport]:

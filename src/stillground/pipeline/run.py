@@ -19,7 +19,7 @@ from stillground.errors import ConfigError
 from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.labels import ProfileResult, label, provenance, survey_crs
-from stillground.pipeline.profiles import place, read_profiles
+from stillground.pipeline.profiles import place, read_overlays, read_profiles
 from stillground.pipeline.site import line, plan_slices, recalled, write_site
 from stillground.products.curtain import curtain_dataset, write_curtain
 from stillground.products.figures import write_figures
@@ -27,6 +27,7 @@ from stillground.products.fit import write_fit
 from stillground.products.history import write_history
 from stillground.products.ladder import write_ladder
 from stillground.products.line import Line
+from stillground.products.overlay import write_overlay
 from stillground.products.picture import product, write_picture
 from stillground.products.points import points_table, write_points
 from stillground.products.provenance import Provenance
@@ -91,7 +92,7 @@ def run(
     """
     begin = time.perf_counter()
     yield Progress("reading the survey", 0, 1)
-    profiles = read_profiles(config)
+    profiles, known = read_profiles(config), read_overlays(config)
     plans = {profile.name: plan_grids(profile, config) for profile in profiles}
     slicing = None
     if "map" in config.output.products:
@@ -117,7 +118,7 @@ def run(
                 continue
             grids = plans[profile.name]
             arrays = yield from answer(profile, grids, config)
-            result = label(profile, grids, arrays, config, origin)
+            result = label(profile, grids, arrays, config, origin, known)
             # Until the new ones are there, nothing must speak for files that are being replaced.
             for name in (SUMMARY, REPORT):
                 (folder / name).unlink(missing_ok=True)
@@ -212,7 +213,8 @@ def reconstruct_survey(
     text = json.dumps(data, default=str)
     origin = provenance(found, config, text, "stillground.reconstruct_survey")
     grids = plan_grids(found[0], config)
-    return label(found[0], grids, finish(answer(found[0], grids, config)), config, origin)
+    answered = finish(answer(found[0], grids, config))
+    return label(found[0], grids, answered, config, origin, read_overlays(config))
 
 
 def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Progress, None, dict[str, str]]:
@@ -234,6 +236,8 @@ def _write(folder: Path, result: ProfileResult, config: Config) -> Generator[Pro
             written["curtain"] = write_curtain(folder, result.name, curtain_dataset(result.picture, crs))
         if "points" in wanted:
             written["points"] = write_points(folder, result.name, points_table(result.picture, crs))
+    if result.overlay is not None:
+        written["overlay"] = write_overlay(folder, result.name, result.overlay)
     yield Progress("writing products", 1, 2)
     if "figures" in wanted:
         write_figures(folder / "figures", result.name, result.figures)

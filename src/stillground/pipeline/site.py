@@ -14,7 +14,7 @@ import xarray as xr
 from stillground.config import Config
 from stillground.errors import ConfigError
 from stillground.grid import Grid
-from stillground.pipeline.labels import ProfileResult, plan_trace, survey_crs
+from stillground.pipeline.labels import ProfileResult, plan_trace, reach, survey_crs
 from stillground.pipeline.profiles import Profile
 from stillground.products.cf import plan_unit
 from stillground.products.line import Line
@@ -91,7 +91,7 @@ def plan_slices(profiles: Sequence[tuple[Profile, Grid]], config: Config) -> Sli
     slicing = Slicing(
         spacing=settings.spacing or metres * nice(horizontal / metres / _ACROSS),
         levels=tuple(sorted(set(levels), reverse=settings.elevations is not None)),
-        reach=settings.reach or horizontal,
+        reach=reach(config),
         elevations=settings.elevations is not None,
     )
     places = np.vstack([np.column_stack(plan_trace(profile, grid.axes, crs)) for profile, grid in profiles])

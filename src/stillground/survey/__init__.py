@@ -7,6 +7,7 @@ The way of a table: ``read`` (the file's own faults raise), ``check`` (all other
 from stillground.survey.check import SurveyReport, check
 from stillground.survey.columns import COLUMNS, Column, column
 from stillground.survey.faults import row_numbers
+from stillground.survey.known import read_known
 from stillground.survey.plane import (
     Section,
     fit_section,
@@ -34,6 +35,7 @@ __all__ = [
     "profiles",
     "quantity",
     "read",
+    "read_known",
     "read_surface",
     "require_plausible",
     "row_numbers",

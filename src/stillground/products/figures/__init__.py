@@ -19,6 +19,7 @@ from stillground.products.figures.rules import rules_figure
 from stillground.products.figures.section import section_figure
 from stillground.products.figures.sensitivity import sensitivity_figure
 from stillground.products.figures.sheet import write_figure
+from stillground.products.overlay import Overlay
 from stillground.products.picture import product
 from stillground.products.raster import Surface
 from stillground.protocols import Array, Differences, Pattern, Rehearsal, Result, RuleOptions
@@ -33,6 +34,7 @@ def figures(
     surface: Surface | None,
     positions: Mapping[str, Array],
     differences: Differences | None = None,
+    known: Overlay | None = None,
 ) -> dict[str, Callable[[], Figure]]:
     """What draws the figures of a result, by their names; nothing is drawn before it is called.
 
@@ -53,9 +55,11 @@ def figures(
         Places by what stands there, m.
     differences : Differences, optional
         In a column, the usual estimate to draw behind the answer.
+    known : Overlay, optional
+        Known ground to draw over it.
     """
     on_ground: dict[str, Any] = {"tolerance": tolerance, "surface": surface}
-    placed = on_ground | {"positions": positions}
+    placed = on_ground | {"positions": positions, "known": known}
     picture = (
         partial(column_figure, profile, result, differences=differences, **placed)
         if len(result.axes) == 1

@@ -13,8 +13,10 @@ from matplotlib.patches import Patch
 from stillground.products.averages import read_averages
 from stillground.products.figures.curves import draw_band, draw_curve, frame_column, hatch_column
 from stillground.products.figures.field import hatch_key
+from stillground.products.figures.known import draw_known_beside
 from stillground.products.figures.positions import draw_positions, position_key
 from stillground.products.figures.sheet import FOOT, HEADING, TEAL, panel, sheet, styled, unit_text
+from stillground.products.overlay import Overlay
 from stillground.products.raster import Surface, ground
 from stillground.products.reading import shown, shown_change
 from stillground.products.reliability import RELIABLE, reliability
@@ -35,6 +37,7 @@ def column_figure(
     surface: Surface | None,
     positions: Mapping[str, Array],
     differences: Differences | None,
+    known: Overlay | None = None,
 ) -> Figure:
     """The answer with its error band, before the usual estimate; unreliable ground faded and hatched.
 
@@ -50,6 +53,8 @@ def column_figure(
     positions : mapping of str to array, shape (n, 1)
         Elevations by what stands there, m.
     differences : Differences or None
+    known : Overlay, optional
+        Values as squares, other points as dashes.
     """
     (elevation,) = result.axes
     inside = ground(result.axes, surface)
@@ -106,7 +111,10 @@ def column_figure(
         ncols=2,
         columnspacing=1.6,
     )
-    hatch_key(figure, flags, position_key(positions))
+    signs = position_key(positions)
+    if known is not None:
+        signs += draw_known_beside(axes, known)
+    hatch_key(figure, flags, signs)
     return figure
 
 

@@ -139,7 +139,8 @@ def hatch_key(figure: Figure, flags: NDArray[np.int8], others: Sequence[Artist] 
             handles=key,
             loc="lower center",
             bbox_to_anchor=(0.5, (FOOT + 0.05) / figure.get_figheight()),
-            ncols=len(key),
+            # One row holds four; more would leave the sheet.
+            ncols=len(key) if len(key) <= 4 else -(-len(key) // 2),
             handletextpad=0.5,
             columnspacing=1.6,
         )

@@ -9,8 +9,10 @@ from matplotlib.figure import Figure
 
 from stillground.products.figures.aspect import elevation_label, proportions
 from stillground.products.figures.field import FIELD_COLOURS, colour_scale, draw_field, hatch_key
+from stillground.products.figures.known import draw_known
 from stillground.products.figures.positions import draw_positions, position_key
 from stillground.products.figures.sheet import FOOT, HEADING, panel, sheet, styled, unit_text
+from stillground.products.overlay import Overlay
 from stillground.products.raster import Surface, ground
 from stillground.products.reading import shown
 from stillground.products.reliability import reliability
@@ -28,6 +30,7 @@ def section_figure(
     tolerance: float,
     surface: Surface | None,
     positions: Mapping[str, Array],
+    known: Overlay | None = None,
 ) -> Figure:
     """The answer with positions, surface and colour bar; unreliable ground faded and hatched.
 
@@ -41,6 +44,8 @@ def section_figure(
     surface : pair of arrays (distance, elevation), m, or None
     positions : mapping of str to array, shape (n, 2)
         Distance and elevation by what stands there, m.
+    known : Overlay, optional
+        Points with a value are filled by the colours of the section, others are crosses.
     """
     flags = reliability(result, tolerance, ground(result.axes, surface))
     values, long_name, units = shown(result.property, result.model)
@@ -76,5 +81,8 @@ def section_figure(
     bar.set_label(f"{long_name} ({unit_text(units)})")
     bar.outline.set_linewidth(0.5)
 
-    hatch_key(figure, flags, position_key(positions))
+    signs = position_key(positions)
+    if known is not None:
+        signs += draw_known(axes, known, scale)
+    hatch_key(figure, flags, signs)
     return figure

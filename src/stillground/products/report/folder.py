@@ -84,6 +84,25 @@ class ExtraEntry(BaseModel):
     largest: float | None = None
 
 
+class AverageEntry(BaseModel):
+    name: str
+    property: str
+    units: str
+    value: float
+    noise_part: float | None
+    total_error: float | None
+
+
+class OverlayEntry(BaseModel):
+    points: int
+    compared: int
+    out_of_reach: int
+    units: str
+    error: str
+    rms_difference: float | None
+    within_two_errors: float | None
+
+
 class Entry(BaseModel):
     """One profile of ``summary.json``, as far as the page tells it."""
 
@@ -96,6 +115,8 @@ class Entry(BaseModel):
     noise: float | None = None
     remarks: list[str] = []
     extras: dict[str, ExtraEntry] = {}
+    averages: list[AverageEntry] = []
+    overlay: OverlayEntry | None = None
     rehearsal: RehearsalEntry | None = None
     sensitivity: list[VariationEntry] | None = None
     files: dict[str, str]

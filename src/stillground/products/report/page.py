@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import base64
 import hashlib
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cache
@@ -15,7 +16,9 @@ import numpy as np
 from jinja2 import Environment, PackageLoader, StrictUndefined
 from markupsafe import Markup
 
+from stillground.products.averages import ReadAverage
 from stillground.products.figures.sheet import VERDICTS
+from stillground.products.overlay import overlay_sentence
 from stillground.products.provenance import CAUTION
 from stillground.products.reliability import MEANINGS, MESH_DEPENDENT, POORLY_COVERED, RELIABLE
 from stillground.products.report.curves import curve_charts, curve_table
@@ -146,6 +149,7 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
         "change": change_chart(profile),
         "rungs": rung_pictures(profile, ground),
         "fit": fit_charts(profile),
+        "beside": _beside(entry),
         "extras": _extras(entry),
         "extra_charts": extra_charts(profile),
         "outliers": listed,
@@ -312,6 +316,18 @@ def _quality(ground: Ground, companion: Companion) -> tuple[Markup, Markup, str,
     title = companion.long_name[:1].upper() + companion.long_name[1:]
     sight = Sight(companion.values, (min(float(low), 0.0), max(float(high), 1e-12)), label, title)
     return small(ground, sight, _ROOM), colour_bar(sight, 220), title, companion.comment
+
+
+def _beside(entry: Entry) -> list[str]:
+    """What is told beside the picture: averages that practice asks for, and known ground."""
+    told = []
+    for mean in entry.averages:
+        noise_part = math.nan if mean.noise_part is None else mean.noise_part
+        read = ReadAverage(mean.name, mean.property, mean.units, mean.value, noise_part, mean.total_error)
+        told.append(read.sentence)
+    if entry.overlay is not None:
+        told.append(overlay_sentence(entry.overlay.model_dump()))
+    return [said[:1].upper() + said[1:] for said in told]
 
 
 def _extras(entry: Entry) -> list[tuple[str, str]]:
