@@ -115,6 +115,9 @@ def test_a_column_has_no_line_but_a_borehole(result: Result) -> None:
     made = survey_dataset([column], static_units="s", crs=unit(UTM)[0], provenance=PROVENANCE)
     assert "lines" not in made
     assert made.borehole_positions.values.tolist() == [25]
+    # CF-1.8, 5.6: a grid mapping asks for exactly one variable of each of these names.
+    for name in ("projection_x_coordinate", "projection_y_coordinate"):
+        assert [v.attrs.get("standard_name") for v in made.variables.values()].count(name) == 1
 
 
 def test_coordinates_and_heights_are_in_the_crs_unit(result: Result) -> None:

@@ -51,7 +51,10 @@ def survey_dataset(
     stations = pd.concat([line.stations.assign(profile=line.name) for line in lines], ignore_index=True)
     places = stations[["x", "y", "z"]].to_numpy() / metres
     variables = _lines([line for line in lines if len(line.trace) > 1], crs)
-    variables |= layer("station", "point", tuple(places.T), _station_fields(stations, static_units), crs=crs)
+    fields = _station_fields(stations, static_units)
+    # With a CRS one layer of the file must have the standard names, and no other may.
+    alone = not variables
+    variables |= layer("station", "point", tuple(places.T), fields, crs=crs, named=alone)
     variables |= _boreholes(stations, places, metres, crs)
     variables["crs"] = xr.Variable((), np.int32(0), cf.crs_attributes(crs))
     summary = (
