@@ -84,7 +84,7 @@ def test_the_summary_argues_the_stop_and_the_grid(folder: Path) -> None:
     assert profile["refinement"]["order"] > 1
     discrepancy = next(rule for rule in profile["rules"] if rule["rule"] == "discrepancy")
     assert discrepancy["chi_square"] == pytest.approx(1.0, abs=1e-5), "the fractional iterate hits its target"
-    assert set(profile["files"]) == {"section", "history", "ladder", "fit", "curtain", "points"}
+    assert set(profile["files"]) == {"section", "history", "ladder", "fit", "curtain", "points", "overlay"}
     assert summary["files"] == {"map": "map.nc", "survey": "survey.nc"}
     assert all((folder / name).is_file() for name in profile["files"].values())
 
