@@ -36,7 +36,7 @@ def curtain_dataset(section: xr.Dataset, crs: CRS | None) -> xr.Dataset:
     Parameters
     ----------
     section : xarray.Dataset
-        From `section_dataset`.
+        From `picture_dataset`.
     crs : CRS or None
         Its CRS.
 

@@ -21,6 +21,7 @@ from stillground.products import cf
 from stillground.products.line import Line, answers, errors
 from stillground.products.netcdf import write_netcdf
 from stillground.products.provenance import Provenance
+from stillground.products.raster import carried_up
 from stillground.products.reliability import MEANINGS, NO_DATA
 from stillground.products.trace import feet
 from stillground.protocols import Array
@@ -222,7 +223,7 @@ class _Slices:
 
     def values(self, name: str) -> Array:
         """Linear between rows; NaN outside the ground."""
-        field = self._carried_up(self.picture[name].to_numpy().astype(np.float64))
+        field = carried_up(self._raster(name).astype(np.float64))
         above = np.minimum(self.row.astype(int), len(field) - 2)
         share = self.row - above
         upper, lower = (np.take_along_axis(field, above + below, axis=0) for below in (0, 1))
@@ -230,16 +231,12 @@ class _Slices:
 
     def flags(self) -> NDArray[np.int8]:
         """Of the nearest rows."""
-        field = self._carried_up(self.picture["reliability"].to_numpy())
+        field = carried_up(self._raster("reliability"))
         return np.take_along_axis(field, np.rint(self.row).astype(int), axis=0)
 
-    def _carried_up(self, field: NDArray[Any]) -> NDArray[Any]:
-        """The uppermost value of the ground carried on above it, where the surface lies between rows."""
-        field = field.reshape(len(field), -1)
-        empty = field == NO_DATA if field.dtype.kind == "i" else np.isnan(field)
-        first = np.argmin(empty, axis=0)
-        rows = np.maximum(np.arange(len(field))[:, np.newaxis], first)
-        return np.take_along_axis(field, rows, axis=0)
+    def _raster(self, name: str) -> NDArray[Any]:
+        values = self.picture[name].to_numpy()
+        return values.reshape(len(values), -1)
 
 
 def _beside(

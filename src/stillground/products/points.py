@@ -22,7 +22,7 @@ def points_table(section: xr.Dataset, crs: CRS | None) -> pd.DataFrame:
     Parameters
     ----------
     section : xarray.Dataset
-        From `section_dataset`; a large one is thinned.
+        From `picture_dataset`; a large one is thinned.
     crs : CRS or None
         Its CRS.
 

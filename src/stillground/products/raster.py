@@ -14,6 +14,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillground.products.cf import COORDINATES
+from stillground.products.reliability import NO_DATA
 from stillground.protocols import Array, Field
 
 Surface = tuple[Array, Array]
@@ -46,6 +47,22 @@ def raster(field: NDArray[Kind]) -> NDArray[Kind]:
            ['near-low', 'far-low']], dtype='<U9')
     """
     return field.T[::-1]
+
+
+def carried_up(rasters: NDArray[Kind]) -> NDArray[Kind]:
+    """Values or flags of the uppermost ground carried on above it, shape (..., n_elevation, n_distance).
+
+    Pictures are then whole up to the surface, where they are cut, and not in stairs.
+
+    Examples
+    --------
+    >>> carried_up(np.array([[np.nan, 1.0], [2.0, 3.0]]))
+    array([[2., 1.],
+           [2., 3.]])
+    """
+    missing = rasters == NO_DATA if rasters.dtype.kind == "i" else np.isnan(rasters)
+    uppermost = np.argmin(missing, axis=-2, keepdims=True)
+    return np.where(missing, np.take_along_axis(rasters, uppermost, axis=-2), rasters)
 
 
 def ground(axes: tuple[Array, ...], surface: Surface | None) -> NDArray[np.bool_]:

@@ -20,8 +20,8 @@ from numpy.typing import NDArray
 
 from stillground.products.figures.aspect import exaggeration, proportions
 from stillground.products.figures.sheet import FOOT, INK, PAPER, unit_text
-from stillground.products.raster import Surface, altitude
-from stillground.products.reliability import MESH_DEPENDENT, NO_DATA, POORLY_COVERED, RELIABLE
+from stillground.products.raster import Surface, altitude, carried_up, raster
+from stillground.products.reliability import MESH_DEPENDENT, POORLY_COVERED, RELIABLE
 from stillground.protocols import Array, GroundProperty
 
 FIELD_COLOURS = colormaps["cividis"]
@@ -81,10 +81,11 @@ def draw_field(
     per_metre = pixels / max(across, up)
     shape = (max(2, round(across * per_metre)), max(2, round(up * per_metre)))
 
-    colour = colours(scale(_resampled(values, shape)))[..., :3]
+    colour = colours(scale(resampled(values, shape)))[..., :3]
     if flags is not None:
-        flags = _carried_up(flags)
-        veil = FADE * _resampled(np.isin(flags, list(HATCHES)).astype(float), shape)[..., np.newaxis]
+        # Up to above the surface, lest the veil thins out towards it.
+        flags = carried_up(raster(flags))[::-1].T
+        veil = FADE * resampled(np.isin(flags, list(HATCHES)).astype(float), shape)[..., np.newaxis]
         colour = colour * (1 - veil) + np.array(to_rgb(PAPER)) * veil
     image = axes.imshow(
         np.round(255 * colour).astype(np.uint8).swapaxes(0, 1),
@@ -146,13 +147,7 @@ def hatch_key(figure: Figure, flags: NDArray[np.int8], others: Sequence[Artist] 
         )
 
 
-def _carried_up(flags: NDArray[np.int8]) -> NDArray[np.int8]:
-    """Flags of the uppermost ground carried on above it, lest the veil thins out towards the surface."""
-    top = np.maximum((flags != NO_DATA).sum(axis=1) - 1, 0)
-    return np.where(flags == NO_DATA, np.take_along_axis(flags, top[:, np.newaxis], axis=1), flags)
-
-
-def _resampled(field: Array, shape: tuple[int, int]) -> Array:
+def resampled(field: Array, shape: tuple[int, int]) -> Array:
     """The bilinear function at the centres of pixels that fill the extent of the nodes."""
     for n in shape:
         at = (np.arange(n) + 0.5) / n * (field.shape[0] - 1)

@@ -1,17 +1,20 @@
-"""Fields as text that a browser unpacks by itself: quantised, left differences, zlib, base64.
+"""Fields and pictures as text that a browser unpacks by itself.
 
-Code 0 is no data. Eight bits are enough for colours; sixteen tell the values themselves.
+Fields are quantised, then left differences, zlib and base64. Code 0 is no data. Eight bits are enough
+for colours; sixteen tell the values themselves.
 """
 
 from __future__ import annotations
 
 import base64
+import io
 import zlib
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
+from PIL import Image
 
 from stillground.protocols import Array
 
@@ -70,6 +73,15 @@ def _planes(codes: NDArray[np.unsignedinteger[Any]]) -> bytes:
     if codes.dtype == np.uint8:
         return codes.tobytes()
     return (codes >> 8).astype(np.uint8).tobytes() + (codes & 255).astype(np.uint8).tobytes()
+
+
+def png(codes: NDArray[np.uint8], palette: ArrayLike) -> str:
+    """A picture as data: URI: pixels of shape (height, width) that index rows of red, green, blue to 255."""
+    image = Image.frombytes("P", codes.shape[::-1], np.ascontiguousarray(codes).tobytes())
+    image.putpalette(np.asarray(palette).astype(np.uint8).tobytes())
+    held = io.BytesIO()
+    image.save(held, "PNG", compress_level=6)
+    return "data:image/png;base64," + base64.b64encode(held.getvalue()).decode("ascii")
 
 
 def coarser(stack: Array) -> Array:

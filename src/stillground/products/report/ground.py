@@ -10,8 +10,10 @@ import xarray as xr
 from matplotlib import colormaps
 from numpy.typing import NDArray
 
+from stillground.products.figures.aspect import exaggeration
 from stillground.products.figures.sheet import unit_text
-from stillground.products.reliability import NO_DATA, RELIABLE
+from stillground.products.raster import carried_up
+from stillground.products.reliability import RELIABLE
 from stillground.products.report.encoding import coarser
 from stillground.products.report.folder import Profile
 from stillground.protocols import Array
@@ -19,7 +21,8 @@ from stillground.protocols import Array
 FIELD, CHANGE = "cividis", "PuOr"
 _MOST_NODES = 300_000
 _ERRORS = ("_total_error", "_noise_part")
-_EXAGGERATIONS, _FLATTEST, _TALL = (1, 2, 5, 10, 20, 50, 100), 5.0, 1.25
+# A picture may be this wider than tall; the page has more width than a printed figure.
+_FLATTEST, _TALL = 5.0, 1.25
 
 
 @dataclass(frozen=True)
@@ -45,7 +48,7 @@ class Frame:
     @property
     def exaggeration(self) -> int:
         """How many times heights are drawn larger than distances: 1 but for long flat sections."""
-        return next((n for n in _EXAGGERATIONS if self._flatness / n <= _FLATTEST), _EXAGGERATIONS[-1])
+        return 1 if self.distance is None else exaggeration((self.distance, self.elevation), _FLATTEST)
 
     @property
     def tall(self) -> bool:
@@ -174,7 +177,7 @@ def ground_of(profile: Profile) -> Ground:
         units=unit_text(_said(told, "units")),
         inverse=bool(others),
         model=1 / stored if others else stored,
-        flags=_flags_carried_up(flags),
+        flags=carried_up(flags),
         inside=inside,
         companions=tuple(_companions(section, answer, told, stored)),
         usual=_usual(section, str(told.name)),
@@ -234,25 +237,6 @@ def _usual(section: xr.Dataset, name: str) -> Usual | None:
 
 def _said(variable: xr.DataArray, attribute: str) -> str:
     return str(variable.attrs.get(attribute, ""))
-
-
-def carried_up(values: Array) -> Array:
-    """Values of the uppermost ground carried on above it, shape (..., nz, nx).
-
-    Pictures are then whole up to the surface, where they are cut, and not in stairs.
-    """
-    missing = ~np.isfinite(values)
-    if not missing.any():
-        return values
-    first = np.argmin(missing, axis=-2, keepdims=True)
-    top = np.take_along_axis(values, first, axis=-2)
-    return np.where(missing, top, values)
-
-
-def _flags_carried_up(flags: NDArray[np.int8]) -> NDArray[np.int8]:
-    outside = flags == NO_DATA
-    top = np.take_along_axis(flags, np.argmin(outside, axis=0, keepdims=True), axis=0)
-    return np.where(outside, top, flags).astype(np.int8)
 
 
 def colours(name: str) -> NDArray[np.uint8]:

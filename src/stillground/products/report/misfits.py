@@ -2,18 +2,16 @@
 
 from __future__ import annotations
 
-import base64
-import io
 import re
 from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
 from markupsafe import Markup
-from PIL import Image
 
 from stillground.products.figures.sheet import unit_text
 from stillground.products.report.drawing import Chart, limits, minus
+from stillground.products.report.encoding import png
 from stillground.products.report.folder import Profile
 from stillground.products.report.ground import CHANGE, colours
 from stillground.protocols import Array
@@ -128,14 +126,10 @@ def _matrix(fit: pd.DataFrame, residual: Array, groupings: tuple[str, ...]) -> S
         1 + np.rint((np.clip(np.nan_to_num(mean), -LIMIT, LIMIT) + LIMIT) / (2 * LIMIT) * 254),
     )
     table = np.vstack([[255, 254, 251], colours(CHANGE)[1:]]).astype(np.uint8)
-    image = Image.frombytes("P", shape[::-1], code.astype(np.uint8).tobytes())
-    image.putpalette(table.tobytes())
-    held = io.BytesIO()
-    image.save(held, "PNG", compress_level=6)
     chart = Chart(SIZE, (0.5, shape[1] + 0.5), (shape[0] + 0.5, 0.5), margins=(46, 54, 8, 36))
     chart.add(
         "image",
-        href="data:image/png;base64," + base64.b64encode(held.getvalue()).decode("ascii"),
+        href=png(code.astype(np.uint8), table),
         x=chart.left, y=chart.top, width=chart.right - chart.left, height=chart.bottom - chart.top,
         preserveAspectRatio="none", class_="cells",
     )  # fmt: skip

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import base64
-import io
 from collections.abc import Mapping
 from dataclasses import dataclass
 
@@ -11,12 +9,12 @@ import numpy as np
 from markupsafe import Markup
 from matplotlib.colors import to_rgb
 from numpy.typing import NDArray
-from PIL import Image
 
-from stillground.products.figures.field import FADE
+from stillground.products.figures.field import FADE, resampled
 from stillground.products.figures.sheet import PAPER
 from stillground.products.reliability import MESH_DEPENDENT, POORLY_COVERED, RELIABLE
 from stillground.products.report.drawing import Chart, limits, minus
+from stillground.products.report.encoding import png
 from stillground.products.report.ground import FIELD, Frame, Ground, colours
 from stillground.protocols import Array
 
@@ -135,18 +133,18 @@ def _png(ground: Ground, sight: Sight, shape: tuple[int, int]) -> str:
     """The function at the pixels, opaque: unreliable ground blended with paper and hatched, as data: URI."""
     frame = ground.frame
     low, high = sight.scale
-    level = np.clip((_resampled(sight.values, shape) - low) / (high - low), 0, 1)
+    level = np.clip((resampled(sight.values, shape) - low) / (high - low), 0, 1)
     code = np.rint(level * (_LEVELS - 1)).astype(np.uint8)
     rows, columns = np.indices(shape, sparse=True)
     for flag, hatched in (
         (POORLY_COVERED, (rows + columns) % 9 == 0),
         (MESH_DEPENDENT, (rows % 7 == 0) & (columns % 7 == 0)),
     ):
-        here = _resampled((ground.flags == flag).astype(float), shape) >= 0.5
+        here = resampled((ground.flags == flag).astype(float), shape) >= 0.5
         code[here] += _LEVELS
         code[here & hatched] = 2 * _LEVELS
     if frame.surface is not None:
-        surface = _resampled(np.vstack([frame.surface, frame.surface]), (2, shape[1]))[0]
+        surface = resampled(np.vstack([frame.surface, frame.surface]), (2, shape[1]))[0]
         ends = frame.elevation[0], frame.elevation[-1]
         height = ends[0] - (np.arange(shape[0]) + 0.5) / shape[0] * (ends[0] - ends[1])
         code[height[:, None] > surface] = 2 * _LEVELS + 1
@@ -154,21 +152,7 @@ def _png(ground: Ground, sight: Sight, shape: tuple[int, int]) -> str:
     paper = 255 * np.array(to_rgb(PAPER))
     veiled = (1 - FADE) * table + FADE * paper
     extra = 255 * np.array([to_rgb(HATCH), to_rgb("#fffefb")])
-    image = Image.frombytes("P", shape[::-1], np.ascontiguousarray(code).tobytes())
-    image.putpalette(np.rint(np.vstack([table, veiled, extra])).astype(np.uint8).tobytes())
-    held = io.BytesIO()
-    image.save(held, "PNG", compress_level=6)
-    return "data:image/png;base64," + base64.b64encode(held.getvalue()).decode("ascii")
-
-
-def _resampled(field: Array, shape: tuple[int, int]) -> Array:
-    """The bilinear function at the centres of pixels that fill the extent of the nodes."""
-    for n in shape:
-        at = (np.arange(n) + 0.5) / n * (field.shape[0] - 1)
-        before = np.minimum(at.astype(int), field.shape[0] - 2)
-        weight = (at - before)[:, np.newaxis]
-        field = (field[before] * (1 - weight) + field[before + 1] * weight).T
-    return field
+    return png(code, np.rint(np.vstack([table, veiled, extra])))
 
 
 def _bar(chart: Chart, sight: Sight) -> None:
