@@ -17,6 +17,7 @@ from stillground.pipeline.run import Done, Outcome
 from stillground.products.averages import read_averages
 from stillground.products.overlay import overlay_sentence
 from stillground.products.provenance import CAUTION
+from stillground.products.reading import shown
 from stillground.products.reliability import MESH_DEPENDENT, NO_DATA
 from stillground.protocols import Choice, Ladder, Rehearsal, Result, Sensitivity
 from stillground.survey import SurveyReport, to_si
@@ -59,7 +60,7 @@ def profile(done: Done) -> None:
     if result.sensitivity is not None:
         _sensitivity(result.sensitivity)
     for name, found in result.extras.items():
-        values, units = found.values, "" if found.units == "1" else f" {found.units}"
+        values, units = found.values, _with_space(found.units)
         if values.size > 1:
             say(f"{name}: rms {np.sqrt(np.mean(values**2)):.3g}, largest {np.abs(values).max():.3g}{units}")
         elif found.deviation is None:
@@ -89,10 +90,12 @@ def profile(done: Done) -> None:
 
 
 def _background(result: Result) -> str:
-    value, units = float(result.background.flat[0]), result.property.units
-    if result.property.reciprocal is not None:
-        value, units = 1 / value, result.property.reciprocal[1]
-    return f"{value:.4g} {units}"
+    values, _, units = shown(result.property, result.background)
+    return f"{values.flat[0]:.4g}{_with_space(units)}"
+
+
+def _with_space(units: str) -> str:
+    return "" if units == "1" else f" {units}"
 
 
 def _rules(choices: tuple[Choice, ...], chosen: Choice) -> None:
@@ -193,7 +196,7 @@ def pattern(found: Patterns) -> None:
         table.add_row(
             each.name,
             f"{each.size:g} m",
-            f"{100 * float(np.median(each.share)):.0f} %",
+            f"{100 * float(np.median(each.share)):z.0f} %",
             f"{100 * float(np.mean(each.share >= 0.5)):.0f} %",
         )
     _show(table)
@@ -245,11 +248,9 @@ def plan(planned: Plan, figure: Path) -> None:
     survey, report = planned.profile.survey, planned.profile.report
     say()
     say(f"{planned.profile.name}: {survey.sizes['datum']} data of {report.rows} rows in {report.source}")
-    counts = ", ".join(
-        f"{len(places)} {what}{'s' * (len(places) > 1)}"
-        for what, places in planned.profile.scene.positions.items()
-    )
-    say(f"{counts}; errors {report.errors}")
+    positions = planned.profile.scene.positions.items()
+    counts = ", ".join(f"{len(places)} {what}{'s' * (len(places) > 1)}" for what, places in positions)
+    say("; ".join(filter(None, [counts, f"errors {report.errors}"])))
     for fact in planned.profile.scene.facts:
         say(fact)
     say()

@@ -16,7 +16,7 @@ from stillground.operators.interval_integrals import IntervalIntegrals
 from stillground.physics import first_arrivals
 from stillground.protocols import Array, Differences, Integers, Kind, Measurement, Scene
 from stillground.protocols import Field as GroundField
-from stillground.survey import row_numbers
+from stillground.survey import numbered, row_numbers, source_of
 from stillground.survey.quantities import Length
 
 # A path is level, and sees no layer from top to bottom, where its ends are less than this apart, m.
@@ -137,7 +137,7 @@ class Downhole(Kind):
         if (vertical < _LEVEL).any():
             rows = ", ".join(str(row) for row in row_numbers(survey)[vertical < _LEVEL][:5])
             raise SurveyError(
-                str(survey.attrs.get("source", "survey")),
+                source_of(survey),
                 [
                     f"source and receiver stand on one level in row {rows}: such a time tells nothing of a "
                     f"column; set use to 0"
@@ -149,7 +149,7 @@ class Downhole(Kind):
         data, errors = first_arrivals.times(survey)
         groupings, positions = {}, {}
         for end, places in zip(first_arrivals.ENDS, in_space, strict=True):
-            groupings[end], where = first_arrivals.numbered(places)
+            groupings[end], where = numbered(places)
             positions[end] = places[where, 2:]
         in_hole = np.where((first < last)[:, None], *in_space)
         angle = np.degrees(np.arccos(np.clip(vertical / lengths, -1, 1)))

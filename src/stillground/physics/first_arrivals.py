@@ -8,7 +8,7 @@ import numpy as np
 import xarray as xr
 from pydantic import BaseModel, ConfigDict, Field, model_validator
 
-from stillground.protocols import Array, GroundProperty, Integers
+from stillground.protocols import Array, GroundProperty
 from stillground.survey.places import Places
 
 SLOWNESS = GroundProperty(
@@ -59,15 +59,6 @@ def ends(survey: xr.Dataset) -> tuple[Array, Array]:
     """Sources and receivers in space, x y z, shape (n_data, 3) each."""
     source, receiver = (np.column_stack([survey[f"{end}_{axis}"].values for axis in "xyz"]) for end in ENDS)
     return source, receiver
-
-
-def numbered(places: Array) -> tuple[Integers, Integers]:
-    """Numbers equal places (to the millimetre) in the order of the table; where each stands first."""
-    _, where, group = np.unique(places.round(3), axis=0, return_index=True, return_inverse=True)
-    order = np.argsort(where)
-    rank = np.empty_like(order)
-    rank[order] = np.arange(order.size)
-    return rank[group.reshape(-1)], where[order]
 
 
 def times(survey: xr.Dataset) -> tuple[Array, Array]:

@@ -34,6 +34,7 @@ from stillground.survey import (
     quantity,
     require_plausible,
     row_numbers,
+    source_of,
     through_stations,
     to_si,
 )
@@ -249,9 +250,7 @@ class Induction(Kind):
             laid = f"{line.length:.4g} m long from station to station"
         else:
             first = (float(survey["x"][0]), float(survey["y"][0]))
-            line = fit_section(
-                plan_positions(survey), first, source=str(survey.attrs.get("source", "survey"))
-            )
+            line = fit_section(plan_positions(survey), first, source=source_of(survey))
             require_plausible(survey, line)
             aside, row = out_of_plane(survey, line, settings.out_of_plane)
             along = line.along(survey["x"].values, survey["y"].values)
@@ -307,7 +306,7 @@ def _vertical(survey: xr.Dataset) -> np.ndarray[Any, np.dtype[np.bool_]]:
         more = f" and {found.size - 1} more" if found.size > 1 else ""
         faults.append(f"column orientation holds '{word}' in row {found[0]}{more}; {advice}")
     if faults:
-        raise SurveyError(str(survey.attrs.get("source", "survey")), faults)
+        raise SurveyError(source_of(survey), faults)
     return np.asarray(words == ORIENTATIONS[0])
 
 

@@ -20,7 +20,7 @@ from stillground.operators.kernel_integrals import KernelIntegrals
 from stillground.protocols import Array, GroundProperty, Kind, Measurement, Scene
 from stillground.protocols import Field as GroundField
 from stillground.quadrature import RULES
-from stillground.survey import row_numbers, to_si
+from stillground.survey import row_numbers, source_of, to_si
 from stillground.survey.kernels import LAYOUTS, kernel_layout, read_kernels
 from stillground.survey.quantities import InputPath
 
@@ -261,7 +261,7 @@ class Kernel(Kind):
                 same = False
             if not same:
                 raise SurveyError(
-                    str(survey.attrs.get("source", "survey")),
+                    source_of(survey),
                     [
                         f"column {name} is in '{unit}', but the kernels make data in '{self.datum_units}': "
                         f"physics.data_units must name the unit of the table"

@@ -20,11 +20,13 @@ from stillground.protocols import Field as GroundField
 from stillground.survey import (
     Section,
     fit_section,
+    numbered,
     out_of_plane,
     plan_positions,
     read_surface,
     require_plausible,
     row_numbers,
+    source_of,
 )
 from stillground.survey.quantities import InputPath, Length
 
@@ -145,7 +147,7 @@ class StraightRay(Kind):
             When positions lie too far off the section, all in one place in plan, or a source and a
             receiver on the same point of it.
         """
-        name = str(survey.attrs.get("source", "survey"))
+        name = source_of(survey)
         first = (float(survey["source_x"][0]), float(survey["source_y"][0]))
         section = fit_section(plan_positions(survey), first, source=name)
         require_plausible(survey, section)
@@ -163,7 +165,7 @@ class StraightRay(Kind):
         data, errors = first_arrivals.times(survey)
         groupings, positions = {}, {}
         for end, places, flat in zip(first_arrivals.ENDS, in_space, (starts, ends), strict=True):
-            groupings[end], where = first_arrivals.numbered(places)
+            groupings[end], where = numbered(places)
             positions[end] = flat[where]
         everywhere = np.vstack([starts, ends])
         surface = None

@@ -15,8 +15,9 @@ from stillground.pipeline.profiles import Profile, read_profiles
 from stillground.products.figures import write_pattern_figure, write_rehearsal_figure
 from stillground.products.pattern import pattern_dataset, write_pattern
 from stillground.products.summary import write_rehearsal
-from stillground.protocols import Pattern, Progress, Rehearsal
-from stillground.reconstruct import reconstruct
+from stillground.progress import staged
+from stillground.protocols import Measurement, Pattern, Progress, Rehearsal
+from stillground.reconstruct import Method, Reconstruction, reconstruct
 from stillground.rehearsal import through_patterns
 from stillground.whole import require_writable
 
@@ -69,12 +70,18 @@ def rehearse_all(
             assemble, noise = assembly(profile, config), 1.0
             if not config.errors.trust:
                 coarse, _ = two_rungs(grids)
-                noise = (yield from reconstruct(assemble(coarse), coarse, plan_method(config))).noise
+                noise = (yield from _own_answer(assemble(coarse), coarse, plan_method(config))).noise
             found = yield from rehearse_profile(profile, config, grids, assemble, noise)
             choose = config.stopping.choose
             file = write_rehearsal(folder, profile.name, found, choose)
             figure = write_rehearsal_figure(folder / "figures", profile.name, found, choose)
             yield Rehearsed(profile.name, found, choose, file, figure)
+
+
+def _own_answer(
+    measurement: Measurement, grid: Grid, method: Method
+) -> Generator[Progress, None, Reconstruction]:
+    return (yield from staged(reconstruct(measurement, grid, method), "reconstructing the survey itself"))
 
 
 def _patterns(
@@ -83,7 +90,7 @@ def _patterns(
     coarse, fine = two_rungs(grids)
     assemble, method = assembly(profile, config), plan_method(config)
     sizes = config.rehearsal.patterns or [factor * method.correlation[-1] for factor in _SIZES]
-    answer = yield from reconstruct(assemble(coarse), coarse, method)
+    answer = yield from _own_answer(assemble(coarse), coarse, method)
     stop = answer.stop(method.choose)
     patterns = yield from through_patterns(
         (coarse, assemble(coarse)), (fine, assemble(fine)), method, stop, sizes, seed=config.rehearsal.seed

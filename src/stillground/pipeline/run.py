@@ -35,6 +35,7 @@ from stillground.products.report import REPORT, write_report
 from stillground.products.summary import SUMMARY, run_summary, write_summary
 from stillground.progress import finish
 from stillground.protocols import Progress
+from stillground.survey import source_of
 from stillground.whole import require_writable
 
 
@@ -129,9 +130,11 @@ def run(
             interrupted = arrays.interrupted
             if interrupted:
                 break
-        if shared and lines:
+        # Given kernels stand nowhere: a run of these alone has no map.
+        standing = [each for each in lines.values() if len(each.stations)]
+        if shared and standing:
             yield Progress("writing the map", 0, 1)
-            files = _names(folder, write_site(folder, list(lines.values()), slicing, config, origin))
+            files = _names(folder, write_site(folder, standing, slicing, config, origin))
             yield Progress("writing the map", 1, 1)
     finally:
         if entries:
@@ -202,7 +205,7 @@ def reconstruct_survey(
     StillgroundError
         For a survey or settings that cannot be used.
     """
-    source = str(survey.attrs.get("source", "survey"))
+    source = source_of(survey)
     given = dict(tables.pop("survey", {})) | {"kind": kind, "files": [source]}
     data = {"title": title, "survey": given, **tables}
     config = from_mapping(data)

@@ -55,13 +55,7 @@ def recalled(folder: Path, files: Mapping[str, str], profile: Profile, grid: Gri
 def write_site(
     folder: Path, lines: Sequence[Line], slicing: Slicing | None, config: Config, provenance: Provenance
 ) -> dict[str, Path]:
-    """Writes the map, where there is a slicing, and the survey's layers if wanted; paths by product.
-
-    Neither where no profile stands anywhere, as when all that is given are kernels.
-    """
-    lines = [line for line in lines if len(line.stations)]
-    if not lines:
-        return {}
+    """Writes the map, where there is a slicing, and the survey's layers if wanted; paths by product."""
     crs = survey_crs(config)
     said = [str(line.picture.attrs["comment"]).removeprefix(CAUTION).strip() for line in lines]
     provenance = replace(provenance, cautions=" ".join(dict.fromkeys(filter(None, said))))

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from stillground.products.reading import shown, shown_change
+from stillground.products.reading import read_as, shown, shown_change
 from stillground.protocols import Result
 
 
@@ -53,6 +53,6 @@ def read_averages(result: Result) -> tuple[ReadAverage, ...]:
         )
         assert noise_part is not None
         read = float(shown(seen, value)[0])
-        name, units = (seen.name, seen.units) if seen.reciprocal is None else seen.reciprocal[:2]
+        name, units = read_as(seen)
         found.append(ReadAverage(over, name.replace("_", " "), units, read, noise_part, total_error))
     return tuple(found)

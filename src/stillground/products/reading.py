@@ -5,6 +5,11 @@ from __future__ import annotations
 from stillground.protocols import Array, GroundProperty
 
 
+def read_as(seen: GroundProperty) -> tuple[str, str]:
+    """Name and units of what people read, as ``velocity`` and ``m s-1`` for slowness."""
+    return (seen.name, seen.units) if seen.reciprocal is None else seen.reciprocal[:2]
+
+
 def shown(seen: GroundProperty, values: Array) -> tuple[Array, str, str]:
     """Values as people read them, with long name and units: the reciprocal where there is one."""
     if seen.reciprocal is None:

@@ -6,8 +6,9 @@ The way of a table: ``read`` (the file's own faults raise), ``check`` (all other
 
 from stillground.survey.check import SurveyReport, check
 from stillground.survey.columns import COLUMNS, Column, column
-from stillground.survey.faults import row_numbers
+from stillground.survey.faults import row_numbers, source_of
 from stillground.survey.known import read_known
+from stillground.survey.numbering import numbered
 from stillground.survey.plane import (
     Section,
     fit_section,
@@ -30,6 +31,7 @@ __all__ = [
     "check",
     "column",
     "fit_section",
+    "numbered",
     "out_of_plane",
     "plan_positions",
     "profiles",
@@ -39,6 +41,7 @@ __all__ = [
     "read_surface",
     "require_plausible",
     "row_numbers",
+    "source_of",
     "through_stations",
     "to_si",
     "write_table",

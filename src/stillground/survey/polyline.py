@@ -11,6 +11,7 @@ from numpy.typing import ArrayLike
 from stillground.errors import SurveyError
 from stillground.protocols import Array, Integers
 from stillground.survey.faults import row_numbers, source_of
+from stillground.survey.numbering import numbered
 
 
 @dataclass(frozen=True)
@@ -65,11 +66,8 @@ def through_stations(ds: xr.Dataset) -> tuple[Polyline, Integers]:
         When the stations stand in one place, or the line turns back at one.
     """
     places = np.column_stack([ds["x"].values, ds["y"].values])
-    _, first, point = np.unique(places.round(3), axis=0, return_index=True, return_inverse=True)
-    order = np.argsort(first)
-    rank = np.empty_like(order)
-    rank[order] = np.arange(order.size)
-    points = places[first[order]]
+    point, first = numbered(places)
+    points = places[first]
     if len(points) < 2:
         x, y = points[0]
         raise SurveyError(
@@ -79,7 +77,7 @@ def through_stations(ds: xr.Dataset) -> tuple[Polyline, Integers]:
     legs = np.diff(points, axis=0)
     back = np.flatnonzero(np.sum(legs[1:] * legs[:-1], axis=1) < 0)
     if back.size:
-        row = int(row_numbers(ds)[first[order]][back[0] + 1])
+        row = int(row_numbers(ds)[first[back[0] + 1]])
         raise SurveyError(
             source_of(ds),
             [
@@ -87,4 +85,4 @@ def through_stations(ds: xr.Dataset) -> tuple[Polyline, Integers]:
                 f"line runs, or split it there (column line)"
             ],
         )
-    return Polyline(points), rank[point.reshape(-1)]
+    return Polyline(points), point
