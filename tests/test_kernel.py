@@ -349,6 +349,11 @@ def test_a_stated_spacing_that_agrees_is_welcome(path: Path) -> None:
     assert placed(path, "ground.spacing=15.625 mm")[1][-1].shape == (65,)
 
 
+def test_a_place_on_the_earth_for_data_without_one_is_refused(path: Path) -> None:
+    with pytest.raises(ConfigError, match=r"survey.crs = 'EPSG:32631': data of kind 'kernel' have no place"):
+        placed(path, "survey.crs=EPSG:32631")
+
+
 def test_the_kernel_is_asked_for_by_its_key(path: Path) -> None:
     path.write_text(path.read_text().replace('kernel = "kernel.csv"', ""))
     with pytest.raises(ConfigError, match=r"physics.kernel is missing"):

@@ -154,3 +154,13 @@ def test_the_demo_readings_are_those_of_the_described_ground(tmp_path: Path) -> 
     config, _ = load(ROOT / "configs" / "osmere-weir-kernel.toml", [f'simulate.output="{tmp_path}/made.csv"'])
     written, _ = simulate(config)
     assert written.read_bytes() == (ROOT / "datasets" / "osmere-weir" / "moisture.csv").read_bytes()
+
+
+def test_what_kernels_do_not_have_is_not_told(stillground: Command, tmp_path: Path) -> None:
+    config = ROOT / "configs" / "osmere-weir-kernel.toml"
+    seen = stillground("inspect", config, "--out", tmp_path)
+    assert "\nerrors made from floor\n" in seen.stdout, "there are no positions to count"
+    ran = stillground("run", config, "--out", tmp_path, "--set", 'output.products=["map"]')
+    assert "writing the map" not in ran.stderr
+    assert not (tmp_path / "map.nc").exists()
+    assert "background 0.2727\n" in ran.stdout, "a share has no unit"

@@ -30,7 +30,7 @@ def read_profiles(config: Config) -> tuple[Profile, ...]:
     SurveyError
         With all faults of all tables.
     ConfigError
-        When two files give profiles of one name.
+        When two files give profiles of one name, or a CRS is stated for data without a place in plan.
     """
     kind = config.kind
     found: dict[str, Profile] = {}
@@ -78,7 +78,14 @@ def place(table: xr.Dataset, stem: str, config: Config) -> tuple[Profile, ...]:
     """Checks a table and sets each of its lines into the ground; errors as `read_profiles`."""
     kind = config.kind
     usable, report = checked(table, config)
-    return tuple(
+    found = tuple(
         Profile(name, line, report, kind.place(line, config.physics))
         for name, line in profiles(usable, stem).items()
     )
+    for profile in found:
+        if config.survey.crs is not None and not profile.scene.positions:
+            raise ConfigError(
+                f"survey.crs = '{config.survey.crs}': data of kind '{kind.name}' have no place in plan, and "
+                f"{profile.name} would be shown in a wrong one; leave it out"
+            )
+    return found

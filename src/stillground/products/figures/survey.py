@@ -85,6 +85,7 @@ def survey_figure(
         _section(figure, bottom, paths, positions, drawn, nodes, coverage, surface)
 
     apparent = shown(seen, apparent)[0]
+    known = apparent[np.isfinite(apparent)]
     name, units = shown_name(seen)
     label = f"apparent {name} ({units})"
     rows = max(len(against), 1)
@@ -92,9 +93,10 @@ def survey_figure(
     for row, (beside, values) in enumerate(against.items()):
         axes = panel(figure, 5.05, bottom + (rows - 1 - row) * (height + 0.75), 2.15, height)
         axes.plot(values, apparent, "o", ms=2.4, color=TEAL, alpha=0.4, mew=0)
-        axes.axhline(np.median(apparent), color=INK, lw=0.8, ls=(0, (5, 3)), label="median")
         axes.set(xlabel=beside, ylabel=label)
-        axes.legend(loc="best", borderpad=0.1)
+        if known.size:
+            axes.axhline(np.median(known), color=INK, lw=0.8, ls=(0, (5, 3)), label="median")
+            axes.legend(loc="best", borderpad=0.1)
     return figure
 
 
