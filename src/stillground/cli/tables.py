@@ -11,6 +11,7 @@ from rich.table import Table
 
 from stillground import plugins as registry
 from stillground.cli.console import out, say
+from stillground.percent import percent
 from stillground.pipeline.inspect import Plan
 from stillground.pipeline.rehearse import Patterns, Rehearsed
 from stillground.pipeline.run import Done, Outcome
@@ -86,7 +87,7 @@ def profile(done: Done) -> None:
     known = flags != NO_DATA
     dependent = np.sum(flags == MESH_DEPENDENT) / max(np.sum(known), 1)
     if dependent:
-        say(f"{100 * dependent:.2g} % of the ground still depends on the grid by itself; see the hatching.")
+        say(f"{percent(dependent)} of the ground still depends on the grid by itself; see the hatching.")
 
 
 def _background(result: Result) -> str:
@@ -129,14 +130,14 @@ def _ladder(ladder: Ladder) -> None:
         order += f" (expected {verdict.expected:.2g})" if verdict.expected else " (no limit expected)"
     facts = [
         order,
-        "still to come " + ("-" if verdict.remaining is None else f"{100 * verdict.remaining:.2g} %"),
-        "drift of the stop " + ("-" if ladder.pick_drift is None else f"{100 * ladder.pick_drift:.2g} %"),
+        "still to come " + ("-" if verdict.remaining is None else percent(verdict.remaining)),
+        "drift of the stop " + ("-" if ladder.pick_drift is None else percent(ladder.pick_drift)),
     ]
     say(", ".join(facts))
     say(
         f"cross-check: no grid convergence index of the rms anomaly ({index.reason})"
         if index.index is None
-        else f"cross-check: grid convergence index of the rms anomaly {100 * index.index:.2g} %, "
+        else f"cross-check: grid convergence index of the rms anomaly {percent(index.index)}, "
         f"its order {_number(index.order)}"
     )
     for sentence in ladder.notes:

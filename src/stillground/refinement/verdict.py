@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
+from stillground.percent import percent
 from stillground.protocols import GridIndex, Verdict
 from stillground.refinement.expected import BASIS
 from stillground.refinement.grid_index import SAFETY
@@ -77,7 +78,7 @@ def judge(
         reason = f"{rungs} rung{'s' * (rungs > 1)} cannot tell: at least 3 are needed (refinement.levels)"
         return Verdict("undecided", reason, None, None, expected)
     before, last = change[-2:]
-    percent = _percent(last)
+    moved = percent(last)
     blur = CLEAR * jitter
     jittery = last <= blur and jitter > 0
     dip = before <= blur < last if jitter > 0 else False
@@ -96,12 +97,12 @@ def judge(
 
     shrinking = 1.0 if expected is not None and 0 < expected < 1 else _SHRINKING
     if last > tolerance and before < shrinking * last and not (jittery or dip):
-        why = f"halving the spacing still changes the picture by {percent}"
+        why = f"halving the spacing still changes the picture by {moved}"
         if endless and rough is not None:
             why += f": {rough}"
         else:
             why += (
-                f", and the changes do not shrink (the one before was {_percent(before)}): the answer "
+                f", and the changes do not shrink (the one before was {percent(before)}): the answer "
                 f"depends on the grid; take a smoother prior (ground.smoothness) or a rule that stops earlier"
             )
         return Verdict("drifting", why, order, remaining, expected)
@@ -110,29 +111,29 @@ def judge(
         faults.append(rough)
     elif dip and remaining is None:
         faults.append(
-            f"the last change but one of {_percent(before)} is too small beside the others to tell how fast "
+            f"the last change but one of {percent(before)} is too small beside the others to tell how fast "
             f"they shrink: one rung more will tell (refinement.levels)"
         )
     elif remaining is None:
-        faults.append(f"the last change of {percent} is not smaller than the one before")
+        faults.append(f"the last change of {moved} is not smaller than the one before")
     elif remaining > tolerance and jittery:
         faults.append(
-            f"rounding in the iteration alone moves the picture by {_percent(jitter)}, so that the last "
-            f"change of {percent} tells nothing: take solver.method lsqr or a rule that stops earlier"
+            f"rounding in the iteration alone moves the picture by {percent(jitter)}, so that the last "
+            f"change of {moved} tells nothing: take solver.method lsqr or a rule that stops earlier"
         )
     elif remaining > tolerance:
-        faults.append(f"further refinement would still change the picture by about {_percent(remaining)}")
+        faults.append(f"further refinement would still change the picture by about {percent(remaining)}")
     if not at_floor and not endless and order is not None and 0 < order < 1:
         faults.append(f"the changes shrink slowly (order {order:.2f})" + (f": {rough}" if rough else ""))
     if pick_drift is None:
         faults.append("the chosen rule found no pick on one of the two finest rungs")
     elif pick_drift > tolerance:
-        faults.append(f"the stop itself moves the picture by {_percent(pick_drift)} from rung to rung")
+        faults.append(f"the stop itself moves the picture by {percent(pick_drift)} from rung to rung")
     if faults:
         return Verdict("undecided", "; ".join(faults), order, remaining, expected)
     if jittery:
         how = (
-            f"at the floor: rounding in the iteration alone makes {_percent(jitter)}, so that no order can "
+            f"at the floor: rounding in the iteration alone makes {percent(jitter)}, so that no order can "
             f"be told"
         )
     elif at_floor:
@@ -141,7 +142,7 @@ def judge(
         how = f"and the changes shrink at order {order:.1f}"
     return Verdict(
         "settled",
-        f"halving the spacing once more changed the picture by {percent}, {how}",
+        f"halving the spacing once more changed the picture by {moved}, {how}",
         order,
         remaining,
         expected,
@@ -165,14 +166,14 @@ def compare(verdict: Verdict, index: GridIndex, tolerance: float) -> tuple[str, 
             f"the picture follows errors of the data, an iteration that rounding disturbs"
         )
     if index.index is not None and index.order is not None:
-        found = f"the grid convergence index of the rms anomaly is {_percent(index.index)}"
+        found = f"the grid convergence index of the rms anomaly is {percent(index.index)}"
         if remaining is not None and index.index > SAFETY**2 * remaining:
             notes.append(
                 f"the cross-check disagrees: {found}, while the whole picture should still change by "
-                f"{_percent(remaining)} only; look at the changes themselves before you trust either"
+                f"{percent(remaining)} only; look at the changes themselves before you trust either"
             )
         elif verdict.word == "settled" and index.index > tolerance:
-            notes.append(f"the cross-check disagrees: {found}, above the tolerance of {_percent(tolerance)}")
+            notes.append(f"the cross-check disagrees: {found}, above the tolerance of {percent(tolerance)}")
         elif index.order > BASIS + _SHORT:
             notes.append(
                 f"the cross-check tells little: {found}, but its order of {index.order:.1f} is beyond the "
@@ -190,7 +191,3 @@ def _order(before: float, last: float) -> float | None:
     if not all(0 < step < math.inf for step in (before, last)):
         return None
     return math.log2(before / last)
-
-
-def _percent(share: float) -> str:
-    return f"{100 * share:.2g} %"

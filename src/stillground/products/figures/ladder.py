@@ -6,6 +6,7 @@ import numpy as np
 from matplotlib.figure import Figure
 from matplotlib.ticker import LogLocator, NullLocator
 
+from stillground.percent import percent
 from stillground.products.figures.aspect import exaggeration
 from stillground.products.figures.curves import draw_curve, frame_column
 from stillground.products.figures.field import colour_scale, draw_field
@@ -56,7 +57,7 @@ def ladder_figure(profile: str, result: Result, *, tolerance: float, surface: Su
     )
     _changes(figure, result.ladder, tolerance, (0.72, bottom, 2.55, body))
     index = result.ladder.index.index
-    checked = "none" if index is None else f"{100 * index:.2g} % of the rms anomaly"
+    checked = "none" if index is None else f"{percent(index)} of the rms anomaly"
     across, up = figure.get_size_inches()
     figure.text(
         (0.72 + 2.55 / 2) / across,

@@ -11,6 +11,7 @@ import numpy as np
 from scipy.interpolate import RegularGridInterpolator
 
 from stillground.errors import ResultError
+from stillground.percent import percent
 from stillground.products.provenance import CAUTION
 from stillground.products.reliability import RELIABLE
 from stillground.products.report.encoding import pack
@@ -183,7 +184,7 @@ def _pair(first: Profile, second: Profile, number: int) -> dict[str, Any]:
         "ground": ground,
         "static": [large(ground, sight, {}) for sight in sights],
         "said": f"Over the ground that is reliable in both, the pictures differ by {moved:.3g} {unit} (rms)"
-        + (f", {100 * moved / anomaly:.2g} % of the variation of A." if anomaly > 0 else "."),
+        + (f", {percent(moved / anomaly)} of the variation of A." if anomaly > 0 else "."),
         "configuration": _changed(first, second),
         "live": {
             "name": first.entry.name,

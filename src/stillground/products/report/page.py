@@ -16,6 +16,7 @@ import numpy as np
 from jinja2 import Environment, PackageLoader, StrictUndefined
 from markupsafe import Markup
 
+from stillground.percent import percent
 from stillground.products.averages import ReadAverage
 from stillground.products.figures.sheet import VERDICTS
 from stillground.products.overlay import overlay_sentence
@@ -366,8 +367,7 @@ def _provenance(profile: Profile) -> dict[str, Any]:
 def _percent(share: float | None) -> str:
     if share is None:
         return "–"
-    percent = 100 * share
-    return minus(f"{percent:.2g}" if abs(percent) < 99.5 else f"{percent:.0f}")
+    return minus(percent(share).removesuffix(" %"))
 
 
 def _number(value: float | None, digits: int = 3) -> str:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 from markupsafe import Markup
 
+from stillground.percent import percent
 from stillground.products.report.drawing import Chart, limits
 from stillground.products.report.folder import Profile
 from stillground.products.report.ground import Ground
@@ -30,7 +31,7 @@ def change_chart(profile: Profile) -> Markup | None:
     chart.add("path", class_="limit", d=f"M{chart.left:.1f} {height:.1f}H{chart.right:.1f}")
     chart.add("text", f"tolerance {tolerance:g}", x=chart.right - 4, y=height - 5, text_anchor="end")
     ends = np.array(chart.x)
-    said = "; ".join(f"{h:g} m: {100 * c:.2g} %" for h, c in zip(finer, change, strict=True))
+    said = "; ".join(f"{h:g} m: {percent(c)}" for h, c in zip(finer, change, strict=True))
     if refinement.order is not None and drawn[-1]:
         chart.line(*_within(chart, ends, change[-1] * (ends / finer[-1]) ** refinement.order), "fitted")
         said += f"; order {refinement.order:.2f}"
