@@ -21,7 +21,7 @@ from stillground.grid import Grid
 from stillground.ground import Disc, Ground
 from stillground.operators.prior_root import PriorRoot
 from stillground.progress import finish
-from stillground.protocols import Array, Measurement, RuleOptions
+from stillground.protocols import Array, History, Measurement, Pick, RuleOptions
 from stillground.reconstruct import (
     Reconstruction,
     find_outliers,
@@ -32,6 +32,7 @@ from stillground.reconstruct import (
 )
 from stillground.reconstruct.extras import ground_deviation
 from stillground.reconstruct.outliers import biweight
+from stillground.reconstruct.suspicion import questioned
 from stillground.standard_form import fit_background
 from stillground.stopping.gcv import gcv
 from twins import BACKGROUND, RULES, Twin, a_method, crosshole_twin, reconstructed, survey
@@ -307,3 +308,24 @@ def test_reweighting_leaves_the_mean_square_of_normal_data_at_one() -> None:
     assert np.mean((residual / weighted.errors) ** 2) == pytest.approx(1.0, abs=0.01)
     untouched = reweighted(measurement, np.ones_like(residual))
     np.testing.assert_array_equal(untouched.errors, 1.0)
+
+
+@pytest.mark.parametrize(
+    ("iteration", "firm", "said"),
+    [(0.0, False, "26 times that of the errors: ground is left out"), (2.0, True, "a corner"),
+     (4.0, False, "0.0025 times that of the errors: it follows the noise")],
+)  # fmt: skip
+def test_a_pick_far_from_any_sensible_misfit_is_not_firm(iteration: float, firm: bool, said: str) -> None:
+    # Mean squared residuals of 104, 16, 4, 1 and 0.01 under errors of twice what is stated: 4 is right.
+    norms = np.sqrt(10 * np.array([104.0, 16.0, 4.0, 1.0, 0.01]))
+    rising = np.arange(5.0)
+    history = History(10, norms, 0 * rising, rising, rising)
+    pick = questioned(Pick(iteration, True, "a corner"), history, 2.0)
+    assert (pick.iteration, pick.firm) == (iteration, firm)
+    assert said in pick.reason
+
+
+def test_picks_that_were_weak_or_none_stay_as_they_are() -> None:
+    history = History(10, np.full(3, 100.0), np.zeros(3), np.zeros(3), np.zeros(3))
+    for pick in (Pick(None, False, "none"), Pick(1.0, False, "weak")):
+        assert questioned(pick, history, 1.0) is pick

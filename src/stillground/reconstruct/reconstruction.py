@@ -12,7 +12,7 @@ from stillground.grid import Grid
 from stillground.operators.prior_root import PriorRoot
 from stillground.protocols import Array, History, Measurement, Pick, Progress, Rule, RuleOptions, Solver
 from stillground.reconstruct.extras import ground_deviation
-from stillground.reconstruct.suspicion import noise_size
+from stillground.reconstruct.suspicion import noise_size, questioned
 from stillground.solve import DataSpace, Run, iterate, n_probes
 from stillground.solve.data_space import MOST_DATA
 from stillground.standard_form import StandardForm, fit_background, standard_form
@@ -146,8 +146,12 @@ def reconstruct(
 
 
 def judge(history: History, method: Method) -> tuple[dict[str, Pick], float]:
-    """Every rule's pick on a history, and the size of the errors that cross-validation estimates."""
+    """Every rule's pick on a history, and the size of the errors that cross-validation estimates.
+
+    A pick whose misfit is far from that size is not firm, whatever its rule saw.
+    """
     pick = gcv(history, method.options).iteration
     noise = noise_size(history, float(history.last) if pick is None else pick)
     options = method.options if method.trust else replace(method.options, noise=noise)
-    return {name: rule(history, options) for name, rule in method.rules.items()}, noise
+    picks = {name: questioned(rule(history, options), history, noise) for name, rule in method.rules.items()}
+    return picks, noise

@@ -4,10 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 
-from stillground.protocols import Array, History, Integers
+from stillground.protocols import Array, History, Integers, Pick
+
+_LEAST, _MOST = 0.1, 3.0
 
 
 def noise_size(history: History, iteration: float) -> float:
@@ -26,6 +29,22 @@ def noise_size(history: History, iteration: float) -> float:
     if history.degrees_of_freedom is not None:
         freedom = float(np.interp(iteration, rows, history.degrees_of_freedom))
     return math.sqrt(square / max(history.n_data - freedom, 1.0))
+
+
+def questioned(pick: Pick, history: History, noise: float) -> Pick:
+    """The pick, no longer firm where the misfit there is far from what errors of the size ``noise`` leave.
+
+    A rule may see a sharp corner or minimum far from any sensible misfit. A tenth of the errors' square is
+    left over only where nine tenths of the data are followed, and three times it where ground is left out.
+    """
+    if not pick.firm or pick.iteration is None or noise == 0:
+        return pick
+    misfit = float(np.interp(pick.iteration, np.arange(history.last + 1), history.chi_square)) / noise**2
+    if _LEAST <= misfit <= _MOST:
+        return pick
+    fault = "it follows the noise" if misfit < _LEAST else "ground is left out"
+    why = f"{pick.reason}; but the misfit there is {misfit:.2g} times that of the errors: {fault}"
+    return replace(pick, firm=False, reason=why)
 
 
 def shared_constants(residual: Array, groupings: Mapping[str, Integers]) -> dict[str, float]:
