@@ -52,7 +52,7 @@ def _axis(
         ahead = kind >= AHEAD
         step = step if ahead else -step
         c = -c if ahead else c
-        if kind == BEHIND_2 or kind == AHEAD_2:
+        if kind in (BEHIND_2, AHEAD_2):
             first, second = n + step, n + 2 * step
             b = c * (2.0 * tau[first] - 0.5 * tau[second])
             return 1.5 * c + x, b, first, 2.0 * c, second, -0.5 * c

@@ -129,7 +129,7 @@ def march(
             place[m] = hole
 
     while size > 0:
-        n = np.int64(heap[0])
+        n = int(heap[0])
         time = keys[0]
         size -= 1
         if size > 0:
@@ -186,25 +186,24 @@ def march(
             c = c if behind else -c
             across = square * (over_b if along else over_a)
             tau_1 = field[n + step, 1]
-            if kind == BEHIND_2 or kind == AHEAD_2:
+            if kind in (BEHIND_2, AHEAD_2):
                 a = 1.5 * c + x
                 b = c * (2.0 * tau_1 - 0.5 * field[n + 2 * step, 1])
             else:
                 a = c + x
                 b = c * tau_1
-            # The flatter of the two slopes: on one side of a kink, as along a refractor, it is none.
-            flattest = np.inf
-            other_b = 0.0
+            # The flatter of the two slopes: on one side of a kink, as along a refractor, it is none. Beside
+            # air it is none either, but for the source's own row.
             slope = NOTHING
-            if field[n + step - aside, 0] < np.inf:
-                other_b = across * (field[n + step - aside, 1] - tau_1)
-                flattest = abs(y * tau_1 - other_b)
+            other_b = across * (field[n + step - aside, 1] - tau_1)
+            candidate = across * (tau_1 - field[n + step + aside, 1])
+            before = field[n + step - aside, 0] < np.inf
+            after = field[n + step + aside, 0] < np.inf
+            if (before and after) or ((before or after) and abs(y) <= (h_b if along else h_a)):
                 slope = SLOPE_BEHIND
-            if field[n + step + aside, 0] < np.inf:
-                candidate = across * (tau_1 - field[n + step + aside, 1])
-                if abs(y * tau_1 - candidate) < flattest:
-                    other_b = candidate
+                if not before or (after and abs(y * tau_1 - candidate) < abs(y * tau_1 - other_b)):
                     slope = SLOPE_AHEAD
+                    other_b = candidate
             if slope != NOTHING:
                 s = slow[n]
                 p = a * a + y * y

@@ -54,10 +54,11 @@ def mean_weights(
             wide, high = corner >> 1, corner & 1
             along = u if wide else 1.0 - u
             across = v if high else 1.0 - v
-            w = along * across + (mixed if wide == high else -mixed)
-            if w != 0.0:
+            w = share * (along * across + (mixed if wide == high else -mixed))
+            # On a grid line the nodes beside it, which may be air or padding, have rounding only.
+            if abs(w) > 1e-12:
                 nodes[count] = n + wide * stride + high
-                weights[count] = share * w
+                weights[count] = w
                 count += 1
         if there >= 1.0:
             return count

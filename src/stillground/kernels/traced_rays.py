@@ -1,9 +1,10 @@
-"""Rays traced from a receiver to the source down the gradient of the travel time.
+"""Rays traced from a receiver to the source down the gradient of the travel time, cell by cell.
 
-Within a cell T is the distance from the source times the bilinear tau. A ray is a chain of straight
-pieces of at most half a cell; by Fermat's principle its time is off by the square of its error
-in place. Where it would leave the ground it slides along the edge of the last cells. Padded arrays as
-in `fast_marching`.
+Within a cell T is the distance from the source times the bilinear tau, and a ray is one straight
+piece. Where the gradients on both sides of a grid line point at the line, as along a refractor or at
+the edge of the ground, the ray slides along it: steepest descent of a function with kinks. By
+Fermat's principle its time is off by the square of its error in place. Padded arrays as in
+`fast_marching`.
 """
 
 from __future__ import annotations
@@ -14,7 +15,7 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
-from stillground.kernels.fast_marching import NEAR, PAD
+from stillground.kernels.fast_marching import NEAR
 from stillground.kernels.segments import mean_weights, room
 
 Array = NDArray[np.float64]
@@ -25,46 +26,79 @@ _ROOM = room(NEAR)
 
 
 @njit(**_JIT)
-def _ground(n: int, stride: int, field: Array) -> bool:
-    """Whether the cell whose lowest corner is ``n`` has a time at all four."""
-    return bool(
-        max(max(field[n, 0], field[n + 1, 0]), max(field[n + stride, 0], field[n + stride + 1, 0])) < np.inf
-    )
-
-
-@njit(**_JIT)
-def _cell(a: float, b: float, rows: int, stride: int, field: Array) -> int:
-    """Lowest corner of a ground cell that holds (a, b), edges included; -1 when there is none."""
-    i = min(max(int(np.floor(a)), PAD), rows - PAD - 2)
-    j = min(max(int(np.floor(b)), PAD), stride - PAD - 2)
-    for back_a in range(2):
-        for back_b in range(2):
-            if (back_a == 0 or a == i) and (back_b == 0 or b == j):
-                n = (i - back_a) * stride + j - back_b
-                if _ground(n, stride, field):
-                    return n
-    return -1
-
-
-@njit(**_JIT)
 def _downhill(
-    a: float, b: float, n: int, stride: int, field: Array, source: Array, spacing: Array
+    n: int, u: float, v: float, stride: int, field: Array, source: Array, spacing: Array
 ) -> tuple[float, float]:
-    """Direction of steepest descent of T in cell ``n``: metres, of unit length; zeros where it is flat."""
+    """Steepest descent at (u, v) of the cell with lowest corner ``n``: minus the gradient of T, times r."""
     i = n // stride
-    u, v = a - i, b - (n - i * stride)
-    x, z = (a - source[0]) * spacing[0], (b - source[1]) * spacing[1]
+    x = (i + u - source[0]) * spacing[0]
+    y = (n - i * stride + v - source[1]) * spacing[1]
     low, high = field[n, 1], field[n + 1, 1]
-    low_next, high_next = field[n + stride, 1], field[n + stride + 1, 1]
-    tau = (1.0 - u) * ((1.0 - v) * low + v * high) + u * ((1.0 - v) * low_next + v * high_next)
-    slope_a = ((1.0 - v) * (low_next - low) + v * (high_next - high)) / spacing[0]
-    slope_b = ((1.0 - u) * (high - low) + u * (high_next - low_next)) / spacing[1]
-    square = x * x + z * z
-    down_a, down_b = -(square * slope_a + tau * x), -(square * slope_b + tau * z)
-    norm = np.sqrt(down_a * down_a + down_b * down_b)
-    if norm == 0.0:
-        return 0.0, 0.0
-    return down_a / norm, down_b / norm
+    next_low, next_high = field[n + stride, 1], field[n + stride + 1, 1]
+    tau = (1.0 - u) * ((1.0 - v) * low + v * high) + u * ((1.0 - v) * next_low + v * next_high)
+    slope_a = ((1.0 - v) * (next_low - low) + v * (next_high - high)) / spacing[0]
+    slope_b = ((1.0 - u) * (high - low) + u * (next_high - next_low)) / spacing[1]
+    square = x * x + y * y
+    return -(square * slope_a + tau * x), -(square * slope_b + tau * y)
+
+
+@njit(**_JIT)
+def _allowed(u: float, down: float) -> float:
+    """``down`` where it leads into the cell from local coordinate ``u``, and else nothing."""
+    return 0.0 if (u <= 0.0 and down < 0.0) or (u >= 1.0 and down > 0.0) else down
+
+
+@njit(**_JIT)
+def _way_out(u: float, down: float) -> float:
+    """Steps of ``down`` from local coordinate ``u`` to the edge of the cell."""
+    if down == 0.0:
+        return np.inf
+    return ((1.0 if down > 0.0 else 0.0) - u) / down
+
+
+@njit(**_JIT)
+def _next(
+    a: float, b: float, stride: int, field: Array, source: Array, spacing: Array
+) -> tuple[float, float]:
+    """Where the ray leaves the next cell, or the same place where no way leads down."""
+    best, cell = 0.0, -1
+    best_a = best_b = 0.0
+    for back_a in range(1 + (a == np.floor(a))):
+        for back_b in range(1 + (b == np.floor(b))):
+            i, j = int(a) - back_a, int(b) - back_b
+            n = i * stride + j
+            # The padding has infinite times.
+            if (
+                max(max(field[n, 0], field[n + 1, 0]), max(field[n + stride, 0], field[n + stride + 1, 0]))
+                == np.inf
+            ):
+                continue
+            down_a, down_b = _downhill(n, a - i, b - j, stride, field, source, spacing)
+            down_a, down_b = _allowed(a - i, down_a), _allowed(b - j, down_b)
+            rate = np.hypot(down_a, down_b)
+            if rate > best:
+                best, cell, best_a, best_b = rate, n, down_a, down_b
+    if cell < 0:
+        return a, b
+    i = cell // stride
+    j = cell - i * stride
+    u, v = a - i, b - j
+    down_a, down_b = best_a / spacing[0], best_b / spacing[1]
+    out = min(_way_out(u, down_a), _way_out(v, down_b))
+    if down_a != 0.0 and down_b != 0.0:
+        # The direction half way through, if it leads through the same cell.
+        middle_a, middle_b = _downhill(
+            cell, u + 0.5 * out * down_a, v + 0.5 * out * down_b, stride, field, source, spacing
+        )
+        middle_a, middle_b = _allowed(u, middle_a) / spacing[0], _allowed(v, middle_b) / spacing[1]
+        if middle_a != 0.0 and middle_b != 0.0:
+            down_a, down_b = middle_a, middle_b
+            out = min(_way_out(u, down_a), _way_out(v, down_b))
+    # Exactly on the line that ends the piece, lest the next one begin in no cell.
+    at_a, at_b = _way_out(u, down_a) == out, _way_out(v, down_b) == out
+    next_a = i + (1.0 if down_a > 0.0 else 0.0) if at_a else a + out * down_a
+    next_b = j + (1.0 if down_b > 0.0 else 0.0) if at_b else b + out * down_b
+    return next_a, next_b
 
 
 @njit(**_JIT)
@@ -102,35 +136,16 @@ def trace(
     rows, stride = slowness.shape
     slow = slowness.reshape(-1)
     nodes, weights = np.empty(_ROOM, np.int64), np.empty(_ROOM)
-    step = 0.5 * min(spacing[0], spacing[1])
     a, b = receiver[0], receiver[1]
     touched = 0
     time = 0.0
-    # A first arrival is never this much longer than twice around the section.
-    for _ in range(int(8 * (rows * spacing[0] + stride * spacing[1]) / step)):
+    # More pieces than this is a ray that goes in circles.
+    for _ in range(8 * (rows + stride)):
         arrived = (a - source[0]) ** 2 + (b - source[1]) ** 2 <= NEAR**2
         if arrived:
             next_a, next_b = source[0], source[1]
         else:
-            n = _cell(a, b, rows, stride, field)
-            if n < 0:
-                return touched, np.inf
-            down_a, down_b = _downhill(a, b, n, stride, field, source, spacing)
-            half_a = a + 0.5 * step * down_a / spacing[0]
-            half_b = b + 0.5 * step * down_b / spacing[1]
-            half_a = min(max(half_a, float(PAD)), float(rows - PAD - 1))
-            half_b = min(max(half_b, float(PAD)), float(stride - PAD - 1))
-            middle = _cell(half_a, half_b, rows, stride, field)
-            if middle >= 0:
-                down_a, down_b = _downhill(half_a, half_b, middle, stride, field, source, spacing)
-            next_a = min(max(a + step * down_a / spacing[0], float(PAD)), float(rows - PAD - 1))
-            next_b = min(max(b + step * down_b / spacing[1], float(PAD)), float(stride - PAD - 1))
-            if _cell(next_a, next_b, rows, stride, field) < 0:
-                # Along the edge: down to the top of the ground, or else only up or down.
-                if _cell(next_a, np.floor(next_b), rows, stride, field) >= 0:
-                    next_b = np.floor(next_b)
-                else:
-                    next_a = np.floor(a) if next_a < a else np.ceil(a)
+            next_a, next_b = _next(a, b, stride, field, source, spacing)
             if next_a == a and next_b == b:
                 return touched, np.inf
         length = np.hypot((next_a - a) * spacing[0], (next_b - b) * spacing[1])

@@ -22,6 +22,9 @@ Integers = NDArray[np.int64]
 # A traced ray whose time is off by more than this part of the first arrival's went astray.
 _ASTRAY = 0.01
 
+# Exact rows fade away from the ray; what is left out of one, relative to its largest entry.
+_NEGLIGIBLE = 1e-9
+
 
 class TravelTimes:
     """First arrivals between points of the ground, for any slowness on the nodes of a grid.
@@ -138,7 +141,7 @@ class TravelTimes:
                 exact = ArrivalDerivative(layout, padded, {source: marcher.kept()}, times, threads=1)
                 for datum in astray:
                     dense = exact.rows(np.array([datum])).rmatvec(np.ones(1))
-                    nodes = np.flatnonzero(dense)
+                    nodes = np.flatnonzero(np.abs(dense) > _NEGLIGIBLE * np.abs(dense).max())
                     nodes_of[datum], lengths_of[datum] = nodes, dense[nodes]
 
         self._each_source(padded, visit)
