@@ -92,7 +92,7 @@ def test_gradient_medium_is_second_order(wide: float, source: tuple[float, float
     starts, ends = fan(source, receivers)
     inside = (deepest(starts, ends) < 98.0) & (np.linalg.norm(ends - starts, axis=1) > 5.0)
     starts, ends = starts[inside], ends[inside]
-    assert inside.sum() > 60
+    assert inside.sum() > 55
     exact = gradient_time(starts, ends)
     errors = []
     for intervals in (25, 50, 100, 200):
@@ -155,51 +155,73 @@ def test_two_layers_have_direct_wave_refractor_intercept_and_crossover() -> None
     assert max(abs(np.divide(late_crossing[1:], late_crossing[:-1]))) < 0.65
 
 
-def test_a_valley_is_gone_around_by_the_shortest_path() -> None:
-    """The shortest path in a polygon turns at its corners only (common practice, no source)."""
-    bottom, slope, v = np.array([40.3, -8.1]), 0.4, 1000.0
-    surface = (
-        np.array([0.0, bottom[0], 80.0]),
-        bottom[1] + slope * np.array([bottom[0], 0.0, 80.0 - bottom[0]]),
-    )
+def shortest(start: np.ndarray, end: np.ndarray, surface: tuple[np.ndarray, np.ndarray]) -> float:
+    """Length of the shortest path below a polygon: the lower convex hull of its corners and the two ends."""
+    start, end = sorted((tuple(start), tuple(end)))
+    x, z = surface
+    between = (x > start[0]) & (x < end[0])
+    hull: list[tuple[float, float]] = []
+    for point in (start, *zip(x[between], z[between], strict=True), end):
+        while len(hull) > 1:
+            (x1, z1), (x2, z2) = hull[-2:]
+            if (x2 - x1) * (point[1] - z1) > (z2 - z1) * (point[0] - x1):
+                break
+            hull.pop()
+        hull.append(point)
+    return float(np.linalg.norm(np.diff(hull, axis=0), axis=1).sum())
+
+
+@pytest.mark.parametrize("shape", ["sharp", "round"])
+def test_a_valley_is_gone_around_by_the_shortest_path(shape: str) -> None:
+    """Shortest paths in a polygon turn at its corners only (common practice, no source)."""
+    x = np.linspace(0.0, 80.0, 161)
+    sharp, rounded = np.abs(x - 40.5) * 0.4 - 8.1, 5.1 * np.cos(np.pi * x / 40.0) - 4.0
+    surface = (x, sharp if shape == "sharp" else rounded)
     across = np.linspace(1.7, 78.9, 25)
-    receivers = np.vstack(
-        [
-            np.column_stack([across, np.interp(across, *surface)]),
-            np.column_stack([across, np.interp(across, *surface) - 7.3]),
-        ]
-    )
-    starts, ends = fan((12.6, float(np.interp(12.6, *surface))), receivers)
-    to_bottom, on = np.linalg.norm(bottom - starts, axis=1), np.linalg.norm(ends - bottom, axis=1)
-    line = starts[:, 1] + (ends - starts)[:, 1] / (ends - starts)[:, 0] * (bottom[0] - starts[:, 0])
-    blocked = (ends[:, 0] > bottom[0]) & (line > bottom[1])
-    exact = np.where(blocked, to_bottom + on, np.linalg.norm(ends - starts, axis=1)) / v
-    assert 10 < blocked.sum() < 40
-    for h, allowed in ((1.0, 4.3e-3), (0.5, 0.8e-3)):
+    along = np.column_stack([across, np.interp(across, *surface)])
+    starts, ends = fan((12.6, float(np.interp(12.6, *surface))), np.vstack([along, along - [0.0, 7.3]]))
+    far = np.linalg.norm(ends - starts, axis=1) > 4.0
+    starts, ends = starts[far], ends[far]
+    exact = np.array([shortest(*way, surface) for way in zip(starts, ends, strict=True)])
+    straight = np.linalg.norm(ends - starts, axis=1)
+    around = exact > 1.001 * straight
+    assert 12 < around.sum() < 40
+    apart = []
+    for h in (1.0, 0.5, 0.25):
         grid = Grid((0.0, -32.0), (h, h), (round(80.0 / h) + 1, round(42.0 / h) + 1))
+        slowness = np.full(grid.n_nodes, 1 / 700.0)
         times = TravelTimes(grid, starts, ends, surface)
-        found = times.predict(np.full(grid.n_nodes, 1.0 / v))
-        assert np.abs(found / exact - 1).max() <= allowed
-        # The air would have been shorter.
-        open_air = TravelTimes(grid, starts, ends).predict(np.full(grid.n_nodes, 1.0 / v))
-        assert (open_air[blocked] < exact[blocked]).all()
-        assert times.linearise(np.full(grid.n_nodes, 1.0 / v)).replaced.mean() < 0.2
+        found = 700.0 * times.predict(slowness)
+        # The ground's edge is known to a cell, and so is the path.
+        assert np.abs(found - exact).max() <= 0.7 * h
+        apart.append(np.abs(found / exact - 1)[around].mean())
+        assert not times.linearise(slowness).replaced.any()
+        # Through the air it would be nearer.
+        in_the_open = TravelTimes(grid, starts, ends).predict(slowness)
+        assert_allclose(700.0 * in_the_open, straight, rtol=1e-9)
+    assert apart[2] <= 2e-3
+    assert apart[2] < 0.7 * apart[0]
 
 
-def test_source_and_receiver_may_change_places() -> None:
+@pytest.mark.parametrize(
+    ("depth", "surface", "faster"), [(2.7, None, 8), (0.0, hills(), 3)], ids=["below", "hills"]
+)
+def test_source_and_receiver_may_change_places(
+    depth: float, surface: tuple[np.ndarray, np.ndarray] | None, faster: float
+) -> None:
     starts, ends = spread(9, 9)
     pairs = np.arange(9) * 9 + np.roll(np.arange(9), 4)
-    starts, ends = starts[pairs], ends[pairs]
+    starts, ends = starts[pairs] - [0.0, depth], ends[pairs] - [0.0, depth]
     apart = []
     for intervals in (16, 32, 64):
         grid = field_grid(intervals)
         there, back = (
-            TravelTimes(grid, *ways, hills()).predict(lumpy(grid))
+            TravelTimes(grid, *ways, surface).predict(lumpy(grid))
             for ways in ((starts, ends), (ends, starts))
         )
         apart.append(np.abs(there / back - 1).max())
-    assert 0.0 < apart[-1] < 2e-3
-    assert apart[2] < apart[0] / 4
+    assert 0.0 < apart[-1] < 1e-3
+    assert apart[2] < apart[0] / faster
 
 
 def test_constant_velocity_gives_straight_rays() -> None:
@@ -286,7 +308,7 @@ def test_traced_rays_are_near_the_exact_derivative_and_nearer_on_finer_grids() -
         exact, rays = times.differentiate(slowness) @ change, times.linearise(slowness)
         assert rays.replaced.mean() < 0.1
         apart.append(np.linalg.norm(rays @ change - exact) / np.linalg.norm(exact))
-    assert apart[0] < 0.05
+    assert apart[0] < 0.1
     assert apart[1] < 0.5 * apart[0]
 
 

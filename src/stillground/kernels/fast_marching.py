@@ -47,6 +47,9 @@ STRAIGHT = BASE * BASE
 # Times at nodes this near the source, in nodes, are integrals along straight lines.
 NEAR = 3.0
 
+# Slopes on the two sides of a node agree when they differ by less than this part of its slowness.
+SMOOTH = 0.1
+
 _ROOM = room(NEAR)
 
 
@@ -192,20 +195,26 @@ def march(
             else:
                 a = c + x
                 b = c * tau_1
-            # The flatter of the two slopes: on one side of a kink, as along a refractor, it is none. Beside
-            # air it is none either, but for the source's own row.
+            # The slope at the neighbour that the front came from, the flatter of those on its two sides.
+            # Where they differ there is a kink or a corner near and none is safe; beside air none is
+            # but in the source's own row.
+            s = slow[n]
             slope = NOTHING
             other_b = across * (field[n + step - aside, 1] - tau_1)
             candidate = across * (tau_1 - field[n + step + aside, 1])
             before = field[n + step - aside, 0] < np.inf
             after = field[n + step + aside, 0] < np.inf
-            if (before and after) or ((before or after) and abs(y) <= (h_b if along else h_a)):
-                slope = SLOPE_BEHIND
-                if not before or (after and abs(y * tau_1 - candidate) < abs(y * tau_1 - other_b)):
-                    slope = SLOPE_AHEAD
-                    other_b = candidate
+            if before and after:
+                if abs(candidate - other_b) <= SMOOTH * s * np.sqrt(square):
+                    slope = SLOPE_BEHIND
+                    if abs(y * tau_1 - candidate) < abs(y * tau_1 - other_b):
+                        slope, other_b = SLOPE_AHEAD, candidate
+            elif abs(y) <= (h_b if along else h_a):
+                if before:
+                    slope = SLOPE_BEHIND
+                elif after:
+                    slope, other_b = SLOPE_AHEAD, candidate
             if slope != NOTHING:
-                s = slow[n]
                 p = a * a + y * y
                 q = a * b + y * other_b
                 inner = q * q - p * (b * b + other_b * other_b - s * s * square)
