@@ -13,7 +13,9 @@ from pylops.utils import dottest
 
 from stillground.errors import GridError
 from stillground.grid import Grid
+from stillground.kernels.fast_marching import FAR
 from stillground.operators.curved_rays import TravelTimes
+from stillground.operators.marching import lay_out
 from stillground.operators.straight_rays import StraightRays
 
 V0, K = 800.0, 12.0
@@ -224,6 +226,16 @@ def test_source_and_receiver_may_change_places(
     assert apart[2] < apart[0] / faster
 
 
+def test_the_end_with_fewer_places_is_marched_from() -> None:
+    grid = field_grid()
+    starts, ends = spread(2, 5)
+    there, back = (
+        TravelTimes(grid, *ways, hills()).linearise(lumpy(grid)) for ways in ((starts, ends), (ends, starts))
+    )
+    assert_array_equal(there.times, back.times)
+    assert_array_equal(there.todense(), back.todense())
+
+
 def test_constant_velocity_gives_straight_rays() -> None:
     grid = Grid((-3.0, -8.0), (0.5, 0.4), (33, 21))
     rng = np.random.default_rng(3)
@@ -364,6 +376,23 @@ def test_a_surface_along_the_highest_nodes_changes_nothing() -> None:
         TravelTimes(grid, starts, ends, flat).predict(slowness),
         TravelTimes(grid, starts, ends).predict(slowness),
     )
+
+
+def test_air_above_the_surface_changes_nothing() -> None:
+    cut, tall = (Grid((0.0, -6.0), (0.5, 0.5), (21, rows)) for rows in (13, 17))
+    starts, ends = fan((1.5, 0.0), np.array([[9.0, 0.0], [8.9, 0.0], [6.0, -3.2]]))
+    slowness = 1.0 / (700.0 - 50.0 * np.minimum(tall.axes[1], 0.0)) * np.ones((21, 1))
+    slowness[:, 13:] = 1e-6
+    level = (np.array([0.0, 10.0]), np.zeros(2))
+    below = TravelTimes(cut, starts, ends).linearise(slowness[:, :13])
+    beside = TravelTimes(tall, starts, ends, level).linearise(slowness)
+    assert_array_equal(beside.times, below.times)
+    dense = beside.todense().reshape(3, *tall.shape)
+    assert_array_equal(dense[..., :13].reshape(3, -1), below.todense())
+    assert not dense[..., 13:].any()
+    # Nor do times hang on what was left in memory for nodes in the air.
+    layout = lay_out(tall, starts, ends, level)
+    assert (layout.closed[layout.nodes] == FAR).all()
 
 
 def test_places_without_ground_are_refused() -> None:
