@@ -47,8 +47,9 @@ STRAIGHT = BASE * BASE
 # Times at nodes this near the source, in nodes, are integrals along straight lines.
 NEAR = 3.0
 
-# Slopes on the two sides of a node agree when they differ by less than this part of its slowness.
-SMOOTH = 0.1
+# Slopes on the two sides of a node agree when they differ by no more than the first part of its slowness,
+# and are slight up to the second.
+AGREE, SLIGHT = 0.1, 0.2
 
 _ROOM = room(NEAR)
 
@@ -197,15 +198,17 @@ def march(
                 b = c * tau_1
             # The slope at the neighbour that the front came from, the flatter of those on its two sides.
             # Where they differ there is a kink or a corner near and none is safe; beside air none is
-            # but in the source's own row.
+            # but in the source's own row. Where T is least along an axis its slope is slight, or that of
+            # the distance.
             s = slow[n]
+            s_r = s * np.sqrt(square)
             slope = NOTHING
             other_b = across * (field[n + step - aside, 1] - tau_1)
             candidate = across * (tau_1 - field[n + step + aside, 1])
             before = field[n + step - aside, 0] < np.inf
             after = field[n + step + aside, 0] < np.inf
             if before and after:
-                if abs(candidate - other_b) <= SMOOTH * s * np.sqrt(square):
+                if abs(candidate - other_b) <= AGREE * s_r:
                     slope = SLOPE_BEHIND
                     if abs(y * tau_1 - candidate) < abs(y * tau_1 - other_b):
                         slope, other_b = SLOPE_AHEAD, candidate
@@ -214,10 +217,10 @@ def march(
                     slope = SLOPE_BEHIND
                 elif after:
                     slope, other_b = SLOPE_AHEAD, candidate
-            if slope != NOTHING:
+            if slope != NOTHING and min(abs(y * tau_1 - other_b), abs(other_b)) <= SLIGHT * s_r:
                 p = a * a + y * y
                 q = a * b + y * other_b
-                inner = q * q - p * (b * b + other_b * other_b - s * s * square)
+                inner = q * q - p * (b * b + other_b * other_b - s_r * s_r)
                 if inner > 0.0:
                     tau = (q + np.sqrt(inner)) / p
                     candidate = tau * np.sqrt(square)
