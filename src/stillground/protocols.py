@@ -103,6 +103,43 @@ class Measurement:
     extras: tuple[Extra, ...] = ()
 
 
+@dataclass(frozen=True, kw_only=True)
+class NonlinearMeasurement(ABC):
+    """A measurement whose data are no linear function of the ground, on one grid.
+
+    Its unknown is a nodal field u, flattened: of a kind that is ``logarithmic`` the logarithm of the ground
+    property, else the property.
+
+    Parameters
+    ----------
+    data, errors : array, shape (n_data,)
+    groupings : mapping
+        As in Measurement.
+    start : array, shape (n_nodes,)
+        The prior mean of u, where the linearising starts.
+    other_starts : mapping of str to array, shape (n_nodes,)
+        Other prior means that one might have taken, by name, to tell how far the answer depends on it.
+    """
+
+    data: Array
+    errors: Array
+    groupings: Mapping[str, Integers]
+    start: Array
+    other_starts: Mapping[str, Array]
+
+    @abstractmethod
+    def predict(self, field: Array) -> Array:
+        """Data over u, shape (n_nodes,) to (n_data,)."""
+
+    @abstractmethod
+    def linearise(self, field: Array) -> tuple[Array, LinearOperator]:
+        """Data over u, and their derivative by u as an operator, shape (n_data, n_nodes)."""
+
+    @abstractmethod
+    def rays(self, field: Array) -> tuple[Array, ...]:
+        """The ways of the data through u, polylines of shape (n_points, n_axes), m; may be empty."""
+
+
 @dataclass(frozen=True)
 class Iterate:
     """One step of an iteration in standard form; iterate 0 is the prior mean.
@@ -498,6 +535,11 @@ class Result:
         The user broke off: this is what had been done by then.
     averages : mapping of str to Average
         Means that practice asks for, by what they are over, as "down to 30 m".
+    rays : tuple of array, shape (n_points, n_axes)
+        The ways of the data through the answer where they bend with it, m.
+    start_dependence : mapping of str to float
+        Of a nonlinear measurement, how far the answer on a coarse rung moves from another start, by its
+        name: relative L2 change.
     """
 
     property: GroundProperty
@@ -525,6 +567,8 @@ class Result:
     remarks: tuple[str, ...]
     interrupted: bool = False
     averages: Mapping[str, Average] = field(default_factory=dict)
+    rays: tuple[Array, ...] = ()
+    start_dependence: Mapping[str, float] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -617,7 +661,7 @@ class Scene(ABC):
     grid: Grid | None = None
 
     @abstractmethod
-    def assemble(self, grid: Grid) -> Measurement:
+    def assemble(self, grid: Grid) -> Measurement | NonlinearMeasurement:
         """The measurement on a grid."""
 
     @abstractmethod
@@ -650,7 +694,7 @@ class Kind(ABC):
     values at points, +1/2 for integrals over intervals in one. Answers have a limit under refinement only
     on a prior smoother than ``-regularity``. ``Settings`` is a pydantic model for the table ``[physics]``
     of the configuration, ``Plan`` one for those keys of ``[simulate]`` that say where a survey stands that
-    is only planned.
+    is only planned. A kind that is ``logarithmic`` is reconstructed in the logarithm of its property.
     """
 
     name: str
@@ -662,6 +706,7 @@ class Kind(ABC):
     regularity: float
     Settings: type[BaseModel]
     Plan: type[BaseModel]
+    logarithmic: bool = False
 
     def configured(self, settings: Any) -> Kind:
         """This kind once its ``Settings`` are known: where its property or its axes depend on them."""
