@@ -102,6 +102,42 @@ def _next(
 
 
 @njit(**_JIT)
+def follow(stride: int, field: Array, source: Array, spacing: Array, receiver: Array) -> Array:
+    """The corners of one ray.
+
+    Parameters
+    ----------
+    stride : int
+        Columns of the padded array.
+    field : array, shape (n * stride, 2)
+        T and tau as `fast_marching.march` left them.
+    source, receiver : array, shape (2,)
+        In index units of the padded array.
+    spacing : array, shape (2,)
+        m.
+
+    Returns
+    -------
+    array, shape (n_corners, 2)
+        From receiver to source, in index units; none where the ray got lost.
+    """
+    # More pieces than this is a ray that goes in circles.
+    most = 8 * (field.shape[0] // stride + stride)
+    corners = np.empty((most + 1, 2))
+    corners[0] = receiver
+    for piece in range(most):
+        a, b = corners[piece, 0], corners[piece, 1]
+        if (a - source[0]) ** 2 + (b - source[1]) ** 2 <= NEAR**2:
+            corners[piece + 1] = source
+            return corners[: piece + 2]
+        next_a, next_b = _next(a, b, stride, field, source, spacing)
+        if next_a == a and next_b == b:
+            break
+        corners[piece + 1, 0], corners[piece + 1, 1] = next_a, next_b
+    return corners[:0]
+
+
+@njit(**_JIT)
 def trace(
     slowness: Array,
     field: Array,
@@ -111,18 +147,14 @@ def trace(
     lengths: Array,
     row: Integers,
 ) -> tuple[int, float]:
-    """Follow one ray.
+    """Integrate along one ray.
 
     Parameters
     ----------
     slowness : array, shape (n, m)
         Padded, s/m.
-    field : array, shape (n * m, 2)
-        T and tau as `fast_marching.march` left them.
-    source, receiver : array, shape (2,)
-        In index units of the padded array.
-    spacing : array, shape (2,)
-        m.
+    field, source, spacing, receiver
+        As in `follow`.
     lengths : array, shape (n * m,)
         Zeros; filled with the length of the ray in each node's basis function, m.
     row : int array, shape (n * m,)
@@ -133,21 +165,15 @@ def trace(
     int, float
         Nodes touched, and the ray's time, s: infinite where it got lost.
     """
-    rows, stride = slowness.shape
+    stride = slowness.shape[1]
     slow = slowness.reshape(-1)
     nodes, weights = np.empty(_ROOM, np.int64), np.empty(_ROOM)
-    a, b = receiver[0], receiver[1]
+    corners = follow(stride, field, source, spacing, receiver)
     touched = 0
-    time = 0.0
-    # More pieces than this is a ray that goes in circles.
-    for _ in range(8 * (rows + stride)):
-        arrived = (a - source[0]) ** 2 + (b - source[1]) ** 2 <= NEAR**2
-        if arrived:
-            next_a, next_b = source[0], source[1]
-        else:
-            next_a, next_b = _next(a, b, stride, field, source, spacing)
-            if next_a == a and next_b == b:
-                return touched, np.inf
+    time = 0.0 if len(corners) else np.inf
+    for piece in range(len(corners) - 1):
+        a, b = corners[piece, 0], corners[piece, 1]
+        next_a, next_b = corners[piece + 1, 0], corners[piece + 1, 1]
         length = np.hypot((next_a - a) * spacing[0], (next_b - b) * spacing[1])
         entries = mean_weights(a, b, next_a, next_b, stride, nodes, weights)
         for e in range(entries):
@@ -157,7 +183,4 @@ def trace(
                 touched += 1
             lengths[m] += length * weights[e]
             time += length * weights[e] * slow[m]
-        if arrived:
-            return touched, time
-        a, b = next_a, next_b
-    return touched, np.inf
+    return touched, time

@@ -8,11 +8,12 @@ from functools import partial
 import numpy as np
 from numpy.typing import NDArray
 from pylops import LinearOperator
-from scipy.sparse import csr_array
+from scipy.sparse import csr_array, diags_array
 
 from stillground.grid import Grid
 from stillground.kernels.blocks import run_blocks
-from stillground.kernels.traced_rays import trace
+from stillground.kernels.fast_marching import PAD
+from stillground.kernels.traced_rays import follow, trace
 from stillground.operators.arrival_derivative import ArrivalDerivative
 from stillground.operators.marching import Marched, Marcher, lay_out
 
@@ -79,6 +80,7 @@ class TravelTimes:
         threads: int | None = None,
     ) -> None:
         self._layout = lay_out(grid, starts, ends, surface)
+        self._starts = np.asarray(starts, dtype=np.float64)
         self._threads = threads
         self.n_data = self._layout.source.size
 
@@ -150,6 +152,27 @@ class TravelTimes:
         matrix = csr_array(entries, shape=(self.n_data, layout.grid.n_nodes))
         return CurvedRays(matrix, times, replaced)
 
+    def rays(self, slowness: Array) -> tuple[Array, ...]:
+        """The ray of each datum, corners from its start to its end, shape (n_corners, 2), m.
+
+        A ray that tracing loses, as `linearise` finds out too, has no corners.
+        """
+        layout, rays = self._layout, [np.empty((0, 2))] * self.n_data
+        spacing, stride = layout.spacing, layout.padded_shape[1]
+
+        def visit(marcher: Marcher, source: int, data: Integers) -> None:
+            for datum in data:
+                place, receiver = layout.sources[source], layout.receivers[datum]
+                corners = follow(stride, marcher.field, place, spacing, receiver)
+                ray = np.array(layout.grid.origin) + (corners - PAD) * spacing
+                # The march may have begun at the datum's end.
+                if len(ray):
+                    first, last = np.linalg.norm(ray[[0, -1]] - self._starts[datum], axis=1)
+                    rays[datum] = ray if first < last else ray[::-1]
+
+        self._each_source(self._padded(slowness), visit)
+        return tuple(rays)
+
     def differentiate(self, slowness: Array) -> ArrivalDerivative:
         """Times and their exact derivative, at a cost of one march for each product and source."""
         padded = self._padded(slowness)
@@ -208,6 +231,14 @@ class CurvedRays(LinearOperator):
     def rows(self, index: Integers) -> CurvedRays:
         """The operator of some data only."""
         return CurvedRays(self._matrix[index], self.times[index], self.replaced[index])
+
+    def scaled(self, data: Array, nodes: Array) -> CurvedRays:
+        """The derivative of ``data`` times the times by an unknown whose unit changes slowness by ``nodes``.
+
+        Shapes (n_data,) and (n_nodes,).
+        """
+        matrix = diags_array(data) @ self._matrix @ diags_array(nodes)
+        return CurvedRays(csr_array(matrix), data * self.times, self.replaced)
 
     def _matvec(self, x: Array) -> Array:
         return np.asarray(self._matrix @ x)
