@@ -264,4 +264,4 @@ def test_two_lines_of_one_name_are_refused(picks: Picks) -> None:
 def test_the_vocabulary_is_in_base_units() -> None:
     # Source: UDUNITS text of SI base and derived units without a prefix, as CF conventions 1.8 ask for.
     # A value has the unit that its kernel gives it.
-    assert {column.units for column in COLUMNS.values()} == {"m", "s", "S m-1", "1", ""}
+    assert {column.units for column in COLUMNS.values()} == {"m", "s", "m s-1", "S m-1", "1", ""}

@@ -20,6 +20,7 @@ from stillground.survey.polyline import Polyline, through_stations
 from stillground.survey.read import profiles, read
 from stillground.survey.surface import read_surface
 from stillground.survey.units import quantity, to_si
+from stillground.survey.velocities import read_velocities
 from stillground.survey.write import write_table
 
 __all__ = [
@@ -39,6 +40,7 @@ __all__ = [
     "read",
     "read_known",
     "read_surface",
+    "read_velocities",
     "require_plausible",
     "row_numbers",
     "source_of",

@@ -65,6 +65,8 @@ COLUMNS: Final = {
             "positive",
             _CONDUCTIVITY_ERROR,
         ),
+        Column("depth", "m", "depth below the ground surface", "not negative"),
+        Column("velocity", "m s-1", "velocity", "positive", ("m/s", 1)),
         Column("value", "", "measured value", "any", ("", 9)),
         Column("value_error", "", "standard deviation of the measured value", "positive", ("", 9)),
         Column("line", "1", "line of the survey", "text"),
