@@ -7,6 +7,7 @@ from pathlib import Path
 
 import netCDF4
 import numpy as np
+import pandas as pd
 import pytest
 import xarray as xr
 
@@ -14,7 +15,7 @@ from stillground.products.boreholes import boreholes
 from stillground.products.survey import survey_dataset, write_survey
 from stillground.protocols import Result
 
-from .crossing_lines import CENTRES, PROVENANCE, bent, crossing_lines, make_line, straight, unit
+from .crossing_lines import CENTRES, PROVENANCE, TOP, bent, crossing_lines, make_line, straight, unit
 
 UTM = "EPSG:32631"
 EAST, NORTH = CENTRES[UTM]
@@ -52,6 +53,23 @@ def test_lines_carry_the_argument_for_their_answer(layers: xr.Dataset) -> None:
     first = layers.isel(line=0)
     assert (first.line_verdict, first.line_rule, first.line_order) == ("settled", "gcv", 2.0)
     assert float(first.line_iteration) == 9
+
+
+def test_bent_rays_are_lines_in_space_with_row_and_residual(result: Result) -> None:
+    line = make_line("ab", result, straight(result.axes[0], 0.0, 9.0), UTM)
+    rays = (
+        np.array([[0.0, TOP], [9.0, TOP - 4], [18.0, TOP]]),
+        np.empty((0, 2)),
+        np.array([[3.0, 1], [4, 2]]),
+    )
+    fit = pd.DataFrame({"row": [2, 3, 5], "residual_over_error": [0.5, 0.0, -1.5]})
+    lines = [replace(line, rays=rays, fit=fit), make_line("cd", result, bent(result.axes[0]), UTM)]
+    layers = survey_dataset(lines, static_units="s", crs=unit(UTM)[0], provenance=PROVENANCE)
+    assert layers.ray_row.values.tolist() == [2, 5]  # one was not found
+    assert layers.ray_residual.values.tolist() == [0.5, -1.5]
+    east, north = (np.array(along) for along in straight(np.array([0.0, 9.0, 18.0]), 0.0, 9.0))
+    expected = np.column_stack([EAST + east, NORTH + north, [TOP, TOP - 4, TOP]])
+    np.testing.assert_allclose(nodes(layers, "ray", 0), expected, atol=1e-6)
 
 
 def test_an_order_that_cannot_be_told_is_missing(result: Result, tmp_path: Path) -> None:

@@ -21,6 +21,7 @@ from stillground.products.line import Line
 from stillground.products.map import Slicing, map_dataset, map_nodes, nice, write_map
 from stillground.products.picture import product
 from stillground.products.provenance import CAUTION, Provenance
+from stillground.products.rays import rays_of
 from stillground.products.survey import survey_dataset, write_survey
 from stillground.protocols import Integers
 
@@ -34,9 +35,8 @@ _ACROSS = 8
 def line(result: ProfileResult) -> Line:
     """A finished profile as the map and the survey's layers need it."""
     groupings = result.arrays.groupings
-    return _line(
-        result.profile, result.picture, _stations(result.profile, groupings, result.history, result.fit)
-    )
+    stations = _stations(result.profile, groupings, result.history, result.fit)
+    return _line(result.profile, result.picture, stations, result.history, result.fit)
 
 
 def recalled(folder: Path, files: Mapping[str, str], profile: Profile, grid: Grid) -> Line:
@@ -49,7 +49,7 @@ def recalled(folder: Path, files: Mapping[str, str], profile: Profile, grid: Gri
     history = opened("history") if "history" in files else xr.Dataset()
     fit = pd.read_csv(folder / files["fit"])
     stations = _stations(profile, profile.scene.assemble(grid).groupings, history, fit)
-    return _line(profile, opened(product(len(grid.axes))), stations)
+    return _line(profile, opened(product(len(grid.axes))), stations, history, fit)
 
 
 def write_site(
@@ -118,7 +118,9 @@ def _ground_top(profile: Profile) -> float:
     return profile.scene.upper[-1] if surface is None else float(surface[1].max())
 
 
-def _line(profile: Profile, picture: xr.Dataset, stations: pd.DataFrame) -> Line:
+def _line(
+    profile: Profile, picture: xr.Dataset, stations: pd.DataFrame, history: xr.Dataset, fit: pd.DataFrame
+) -> Line:
     scene = profile.scene
     return Line(
         name=profile.name,
@@ -127,6 +129,8 @@ def _line(profile: Profile, picture: xr.Dataset, stations: pd.DataFrame) -> Line
         last=scene.upper[0],
         top=scene.upper[-1],
         stations=stations,
+        rays=rays_of(history),
+        fit=fit,
     )
 
 

@@ -12,6 +12,7 @@ from stillground.products.cf import COORDINATES
 from stillground.products.netcdf import write_netcdf
 from stillground.products.provenance import Provenance, argument
 from stillground.products.raster import Surface, coordinates, ground, map_variable
+from stillground.products.rays import ray_variables
 from stillground.protocols import Array, Choice, Field, Result, RuleOptions
 
 CURVES = {
@@ -59,7 +60,9 @@ def history_dataset(
         ``<property>_at_iteration(kept_iteration, elevation, distance)``. The scalars ``noise`` and
         ``target_chi_square``, what the misfit is asked to fall to. Unknowns
         beside the ground by their names: a lone one is a scalar, several lie on ``<name>_number``, which
-        counts the groups of the survey in their order.
+        counts the groups of the survey in their order. Where rays bend with the ground, some corners of
+        each datum's ray through the answer: ``ray_distance(ray_node)``, ``ray_elevation(ray_node)`` and
+        ``ray_node_count(ray)``, in the order of the fit table.
     """
     history, choices = result.history, result.choices
     inside = ground(result.axes, surface)
@@ -90,6 +93,7 @@ def history_dataset(
     variables["target_chi_square"] = _numbers((), target, "target of the mean squared whitened residual")
     for label, found in result.extras.items():
         variables[label] = _extra(label, found.values, found.units)
+    variables |= ray_variables(result.rays)
     seen = result.property
     pictures = [
         Field(f"{seen.name}_at_pick", choice.model, seen.units, f"{seen.long_name} at the pick of the rule")

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 import pandas as pd
@@ -29,6 +29,10 @@ class Line:
         One row a position: ``what`` stands there, its ``number`` from 1, ``x``, ``y``, ``z`` in m,
         ``data`` (how many it has part in), their mean ``residual`` over error and mean ``weight``, and
         its ``static``, NaN where none was fitted.
+    rays : tuple of array, shape (n_nodes, 2)
+        Distance and elevation along the ray of each datum, where rays bend with the ground.
+    fit : pandas.DataFrame
+        As in ``<name>_fit.csv``, one row a datum.
     """
 
     name: str
@@ -37,6 +41,8 @@ class Line:
     last: float
     top: float
     stations: pd.DataFrame
+    rays: tuple[Array, ...] = ()
+    fit: pd.DataFrame = field(default_factory=pd.DataFrame)
 
     @property
     def trace(self) -> Array:

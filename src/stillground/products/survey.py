@@ -43,9 +43,9 @@ def survey_dataset(
     -------
     xarray.Dataset
         The layers ``lines`` (traces from the first position to the last; none of columns), ``stations``
-        (points) and ``boreholes`` (lines from the top down), with fields that begin with ``line_``,
-        ``station_`` and ``borehole_``. Elevations are in the CRS's unit, as clients that draw in space
-        expect.
+        (points), ``boreholes`` (lines from the top down) and ``rays`` (the ways of data where rays bend),
+        with fields that begin with ``line_``, ``station_``, ``borehole_`` and ``ray_``. Elevations are in
+        the CRS's unit, as clients that draw in space expect.
     """
     unit, metres = cf.plan_unit(crs)
     stations = pd.concat([line.stations.assign(profile=line.name) for line in lines], ignore_index=True)
@@ -56,6 +56,7 @@ def survey_dataset(
     alone = not variables
     variables |= layer("station", "point", tuple(places.T), fields, crs=crs, named=alone)
     variables |= _boreholes(stations, places, metres, crs)
+    variables |= _rays(lines, metres, crs)
     variables["crs"] = xr.Variable((), np.int32(0), cf.crs_attributes(crs))
     summary = (
         f"Lines, stations and boreholes of {len(lines)} profiles, "
@@ -136,6 +137,27 @@ def _boreholes(
     }
     nodes = tuple(places[np.concatenate(holes)].T)
     return layer("borehole", "line", nodes, fields, counts=counts, crs=crs)
+
+
+def _rays(lines: Sequence[Line], metres: float, crs: CRS | None) -> dict[str, xr.Variable]:
+    kept = [(line, datum) for line in lines for datum, ray in enumerate(line.rays) if len(ray)]
+    if not kept:
+        return {}
+    nodes = []
+    for line, datum in kept:
+        distance, elevation = line.rays[datum].T
+        plan = [np.interp(distance, line.picture["distance"].to_numpy(), along) for along in line.trace.T]
+        nodes.append(np.column_stack([*plan, elevation / metres]))
+    fields: Fields = {
+        "ray_profile": _text([line.name for line, _ in kept], "profile"),
+        "ray_row": _counts([line.fit["row"].iloc[datum] for line, datum in kept], "row of the table"),
+        "ray_residual": _numbers(
+            [line.fit["residual_over_error"].iloc[datum] for line, datum in kept],
+            "observed less predicted over error",
+        ),
+    }
+    counts = np.array([len(each) for each in nodes])
+    return layer("ray", "line", tuple(np.vstack(nodes).T), fields, counts=counts, crs=crs)
 
 
 def _text(values: Any, long_name: str) -> tuple[NDArray[Any], dict[str, str]]:

@@ -11,6 +11,7 @@ from stillground.products.figures.aspect import elevation_label, proportions
 from stillground.products.figures.field import FIELD_COLOURS, colour_scale, draw_field, hatch_key
 from stillground.products.figures.known import draw_known
 from stillground.products.figures.positions import draw_positions, position_key
+from stillground.products.figures.rays import draw_rays
 from stillground.products.figures.sheet import FOOT, HEADING, panel, sheet, styled, unit_text
 from stillground.products.overlay import Overlay
 from stillground.products.raster import Surface, ground
@@ -32,7 +33,7 @@ def section_figure(
     positions: Mapping[str, Array],
     known: Overlay | None = None,
 ) -> Figure:
-    """The answer with positions, surface and colour bar; unreliable ground faded and hatched.
+    """The answer with positions, bent rays, surface and colour bar; unreliable ground faded and hatched.
 
     Parameters
     ----------
@@ -68,6 +69,7 @@ def section_figure(
 
     axes = panel(figure, left, bottom, width, height)
     draw_field(axes, result.axes, values, scale, flags=flags, surface=surface, pixels=700)
+    rays = [] if not result.rays else [draw_rays(axes, result.rays)]
     draw_positions(axes, positions)
     chosen = result.chosen
     axes.set(
@@ -81,7 +83,7 @@ def section_figure(
     bar.set_label(f"{long_name} ({unit_text(units)})")
     bar.outline.set_linewidth(0.5)
 
-    signs = position_key(positions)
+    signs = [*position_key(positions), *rays]
     if known is not None:
         signs += draw_known(axes, known, scale)
     hatch_key(figure, flags, signs)
