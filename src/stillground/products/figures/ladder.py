@@ -143,7 +143,7 @@ def _rungs(
     tiles = tiling(len(rungs), result.axes, room, GAP)
     step = ((room[0] + GAP[0]) / tiles.columns, room[1] / tiles.rows)
     across_sheet, up_sheet = figure.get_size_inches()
-    said = f"{shown(result.property, result.model)[1]}, colours as in the section"
+    said = "colours as in the section"
     if (times := exaggeration(result.axes)) > 1:
         said += f", elevation {times} times exaggerated"
     middle = (corner[0] + MAPS[0] / 2) / across_sheet
