@@ -22,7 +22,7 @@ ENDS = ("source", "receiver")
 
 # Seismic velocities of the ground, m s-1: from loose dry soil to the hardest rock, both with room
 # (common practice, no source).
-_PLAUSIBLE = (50, 10_000)
+PLAUSIBLE = (50, 10_000)
 _LARGE_ERROR = 0.3
 
 
@@ -80,7 +80,7 @@ def doubts(survey: xr.Dataset, lengths: Array) -> tuple[str, ...]:
     if "time" not in survey:
         return ()
     time, said = survey["time"].values, []
-    slowest, fastest = _PLAUSIBLE
+    slowest, fastest = PLAUSIBLE
     odd = int(np.sum((lengths < slowest * time) | (lengths > fastest * time)))
     if odd:
         said.append(

@@ -15,26 +15,16 @@ from stillground.grid import Grid
 from stillground.ground import Ground
 from stillground.operators.straight_rays import StraightRays
 from stillground.physics import first_arrivals
+from stillground.physics.shot_section import shot_section
 from stillground.protocols import Array, Extra, Integers, Kind, Measurement, Scene
 from stillground.protocols import Field as GroundField
-from stillground.survey import (
-    Section,
-    fit_section,
-    numbered,
-    out_of_plane,
-    plan_positions,
-    read_surface,
-    require_plausible,
-    row_numbers,
-    source_of,
-)
+from stillground.survey import Section, read_surface
 from stillground.survey.quantities import InputPath, Length
 
 # Prior standard deviation of the anisotropy: sediments seldom pass a tenth (common practice, no source).
 _ANISOTROPY = 0.1
-# Points of the surface are taken within this share of the section's length; positions may stand this
-# far above it, as on a tripod.
-_CORRIDOR, _ABOVE = 0.1, 2.0
+# Positions may stand this far above the surface, as on a tripod, m.
+_ABOVE = 2.0
 
 
 class StraightRaySettings(BaseModel):
@@ -147,57 +137,38 @@ class StraightRay(Kind):
             When positions lie too far off the section, all in one place in plan, or a source and a
             receiver on the same point of it.
         """
-        name = source_of(survey)
-        first = (float(survey["source_x"][0]), float(survey["source_y"][0]))
-        section = fit_section(plan_positions(survey), first, source=name)
-        require_plausible(survey, section)
-        aside, row = out_of_plane(survey, section, settings.out_of_plane)
-        in_space = first_arrivals.ends(survey)
-        starts, ends = (
-            np.column_stack([section.along(places[:, 0], places[:, 1]), places[:, 2]]) for places in in_space
-        )
-        span = ends - starts
-        across = np.linalg.norm(span, axis=1)
-        if (across < 1e-3).any():
-            rows = ", ".join(str(row) for row in row_numbers(survey)[across < 1e-3][:5])
-            raise SurveyError(name, [f"source and receiver fall on one point of the section in row {rows}"])
-        lengths = np.linalg.norm(in_space[1] - in_space[0], axis=1)
+        placed = shot_section(survey, settings.out_of_plane)
+        starts, ends, lengths = placed.starts, placed.ends, placed.lengths
+        span, everywhere = ends - starts, placed.everywhere
         data, errors = first_arrivals.times(survey)
-        groupings, positions = {}, {}
-        for end, places, flat in zip(first_arrivals.ENDS, in_space, (starts, ends), strict=True):
-            groupings[end], where = numbered(places)
-            positions[end] = flat[where]
-        everywhere = np.vstack([starts, ends])
         surface = None
         if settings.surface is not None:
-            corridor = max(_CORRIDOR * section.length, settings.out_of_plane or 0.0)
-            surface = read_surface(settings.surface, section, corridor)
+            surface = read_surface(settings.surface, placed.section, placed.corridor)
             _require_below(settings.surface, surface, everywhere)
         return RayScene(
             lower=tuple(everywhere.min(axis=0).tolist()),
             upper=tuple(everywhere.max(axis=0).tolist()),
-            positions=positions,
+            positions=placed.positions,
             apparent=data / lengths,
             against={
-                "offset (m)": across,
+                "offset (m)": placed.across,
                 "ray angle (degrees above level)": np.degrees(np.arctan2(span[:, 1], np.abs(span[:, 0]))),
             },
             paths=(starts, ends),
             surface=surface,
             facts=(
-                f"section {section.length:.4g} m long; "
-                f"positions lie at most {aside:.2g} m off it (row {row})",
+                placed.fact,
                 *first_arrivals.facts(survey, lengths),
             ),
             doubts=(*first_arrivals.doubts(survey, lengths), *_above(surface, everywhere)),
             inputs=() if settings.surface is None else (settings.surface,),
-            section=section,
+            section=placed.section,
             starts=starts,
             ends=ends,
             lengths=lengths,
             data=data,
             errors=errors,
-            groupings=groupings,
+            groupings=placed.groupings,
             anisotropy=settings.anisotropy == "fit",
         )
 

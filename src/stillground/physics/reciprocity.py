@@ -1,0 +1,81 @@
+"""What times measured both ways between two places tell of their errors."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from stillground.protocols import Array
+
+# From fewer pairs the error is known too badly to doubt the given one: to a quarter with eight.
+_FEW = 8
+_FACTOR = 1.5
+
+
+@dataclass(frozen=True)
+class Reciprocity:
+    """Errors by pairs measured both ways.
+
+    Parameters
+    ----------
+    pairs : int
+    error : float
+        Standard deviation of one time, s.
+    given : float
+        Root mean square of the errors given for the same times, s.
+    """
+
+    pairs: int
+    error: float
+    given: float
+
+    @property
+    def fact(self) -> str:
+        return (
+            f"{self.pairs} pairs measured both ways differ as errors of {1e3 * self.error:.3g} ms would make "
+            f"them; given for them are {1e3 * self.given:.3g} ms"
+        )
+
+    @property
+    def doubts(self) -> tuple[str, ...]:
+        ratio = self.error / self.given
+        if self.pairs < _FEW or 1 / _FACTOR <= ratio <= _FACTOR:
+            return ()
+        than = "larger" if ratio > 1 else "smaller"
+        return (
+            f"errors by the {self.pairs} pairs measured both ways are {1e3 * self.error:.3g} ms, "
+            f"{than} than the {1e3 * self.given:.3g} ms given: check [errors] or the column time_error, "
+            f"since where to stop hangs on it",
+        )
+
+
+def reciprocity(starts: Array, ends: Array, times: Array, errors: Array) -> Reciprocity | None:
+    """Compares times of pairs of places measured both ways; None without any.
+
+    Times of one way that were measured again are averaged first. By reciprocity both ways take equal time,
+    so half the mean squared difference is the variance of one time, each difference counted by the
+    variance that the given errors lead one to expect.
+
+    Parameters
+    ----------
+    starts, ends : array, shape (n_data, n_axes), m
+        Places are equal to the centimetre.
+    times, errors : array, shape (n_data,), s
+    """
+    n_data = times.size
+    _, place = np.unique(np.vstack([starts, ends]).round(2), axis=0, return_inverse=True)
+    here, there = place.reshape(2, n_data)
+    n_places = int(place.max()) + 1
+    way, group, count = np.unique(here * n_places + there, return_inverse=True, return_counts=True)
+    mean = np.bincount(group, times) / count
+    variance = np.bincount(group, errors**2) / count**2
+    back = way % n_places * n_places + way // n_places
+    at = np.minimum(np.searchsorted(way, back), way.size - 1)
+    # Each pair once.
+    both = np.flatnonzero((way[at] == back) & (way < back))
+    if not both.size:
+        return None
+    scaled = (mean[both] - mean[at[both]]) ** 2 / (variance[both] + variance[at[both]])
+    given = float(np.sqrt(np.mean(errors[np.isin(group, np.r_[both, at[both]])] ** 2)))
+    return Reciprocity(both.size, float(np.sqrt(np.mean(scaled))) * given, given)
