@@ -17,8 +17,9 @@ from stillground.grid import Grid, ladder
 from stillground.ground import Ground, Layer
 from stillground.operators.interval_integrals import IntervalIntegrals
 from stillground.physics.downhole import Downhole, DownholeSettings, HoleScene
-from stillground.pipeline.answer import assembly, plan_method, rehearse_profile, repeated_rung
+from stillground.pipeline.answer import plan_method, rehearse_profile, repeated_rung
 from stillground.pipeline.grids import plan_grids
+from stillground.pipeline.linear import linear_ladder
 from stillground.pipeline.profiles import read_profiles
 from stillground.pipeline.simulate import described_ground
 from stillground.progress import finish
@@ -220,7 +221,8 @@ def ensemble(draws: int = 50) -> tuple[Array, Array, Array, Rehearsal, Array]:
     chosen = [run.inside(run.history.last if stop is None else stop)
               for run, stop in zip(runs, stops, strict=True)]  # fmt: skip
     answers = background[:, None] + problem.anomaly(back(problem.operator, np.column_stack(chosen)))
-    rehearsal = finish(rehearse_profile(profile, config, grids, assembly(profile, config), 1.0))
+    linear = finish(linear_ladder(profile, config, grids, 0, plan_method(config)))
+    rehearsal = finish(rehearse_profile(profile, config, grids, linear, 1.0))
     elevation = grid.axes[0]
     return elevation, ground.values(elevation[:, None]), answers, rehearsal, noisy / scene.factors[:, None]
 

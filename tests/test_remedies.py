@@ -249,7 +249,8 @@ def test_the_ground_has_its_true_size_beside_extra_unknowns(extra: str) -> None:
             measurement = with_statics(replace(twin.measurement, data=data), BOTH, "s")
         else:
             measurement = with_delay(replace(twin.measurement, data=data + 0.3e-3), "s")
-        squares.append(ground_deviation(measurement, root, fit_background(measurement)) ** 2)
+        mean = np.full(twin.grid.n_nodes, fit_background(measurement))
+        squares.append(ground_deviation(measurement, root, mean) ** 2)
     assert float(np.sqrt(np.mean(squares))) == pytest.approx(0.01 * BACKGROUND, rel=0.12)
 
 
@@ -258,7 +259,8 @@ def test_the_size_of_the_ground_settles_on_finer_grids() -> None:
 
     def size(grid: Grid) -> float:
         measurement = with_statics(twin.scene.assemble(grid), BOTH, "s")
-        return ground_deviation(measurement, PriorRoot(grid, (3.0, 2.0), 2.0), BACKGROUND)
+        mean = np.full(grid.n_nodes, BACKGROUND)
+        return ground_deviation(measurement, PriorRoot(grid, (3.0, 2.0), 2.0), mean)
 
     sizes = [size(twin.grid), size(twin.grid.refined()), size(twin.grid.refined().refined())]
     assert abs(sizes[2] - sizes[1]) < abs(sizes[1] - sizes[0]) / 3 < 0.01 * sizes[2]

@@ -94,6 +94,9 @@ class Measurement:
         Which data share a source, a receiver, a station: numbers from 0, no labels.
     extras : tuple of Extra
         Unknowns beside the ground.
+    background : array, shape (n_nodes,), or None
+        The prior mean where the measurement brings its own, as the linearisation of a nonlinear one does;
+        None leaves it to the method.
     """
 
     operator: LinearOperator
@@ -101,6 +104,7 @@ class Measurement:
     errors: Array
     groupings: Mapping[str, Integers] = field(default_factory=dict)
     extras: tuple[Extra, ...] = ()
+    background: Array | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -119,6 +123,8 @@ class NonlinearMeasurement(ABC):
         The prior mean of u, where the linearising starts.
     other_starts : mapping of str to array, shape (n_nodes,)
         Other prior means that one might have taken, by name, to tell how far the answer depends on it.
+    extras : tuple of Extra
+        As in Measurement; what they add to the data is no part of `predict`.
     """
 
     data: Array
@@ -126,6 +132,7 @@ class NonlinearMeasurement(ABC):
     groupings: Mapping[str, Integers]
     start: Array
     other_starts: Mapping[str, Array]
+    extras: tuple[Extra, ...] = ()
 
     @abstractmethod
     def predict(self, field: Array) -> Array:
@@ -393,6 +400,8 @@ class Choice:
     ``iteration`` is where the picture is taken (the last one where the rule found none, so
     ``pick.iteration`` may be None); ``distance`` is the relative L2 distance of its picture from
     the chosen one's, None where that is the background; ``model`` the nodal field there.
+    ``chi_square`` is that of the history, of a nonlinear measurement on its last linearisation;
+    ``chi_square_recomputed`` is then what the nonlinear measurement itself gives, of the chosen one only.
     """
 
     rule: str
@@ -402,6 +411,7 @@ class Choice:
     roughness: float
     distance: float | None
     model: Array
+    chi_square_recomputed: float | None = None
 
 
 @dataclass(frozen=True)

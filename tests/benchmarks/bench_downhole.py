@@ -13,8 +13,9 @@ import time
 import numpy as np
 from tests.test_downhole import ensemble, settings, window_errors, within
 
-from stillground.pipeline.answer import assembly, plan_method
+from stillground.pipeline.answer import plan_method
 from stillground.pipeline.grids import plan_grids
+from stillground.pipeline.linear import linear_ladder
 from stillground.pipeline.profiles import read_profiles
 from stillground.progress import finish
 from stillground.refinement import climb
@@ -23,7 +24,8 @@ from stillground.refinement import climb
 def ladder() -> None:
     config = settings()
     (profile,) = read_profiles(config)
-    grids, method, assemble = plan_grids(profile, config), plan_method(config), assembly(profile, config)
+    grids, method = plan_grids(profile, config), plan_method(config)
+    assemble = finish(linear_ladder(profile, config, grids, 0, method))
     took = []
     for _ in range(6):
         begin = time.process_time(), time.perf_counter()

@@ -55,6 +55,14 @@ def profile(done: Done) -> None:
     say(f"{done.result.name}: {result.observed.size} data, {nodes} nodes, background {_background(result)}")
     say()
     _rules(result.choices, result.chosen)
+    if result.chosen.chi_square_recomputed is not None:
+        say(
+            f"misfits are those of the last linearisation; the answer's own is "
+            f"{_number(result.chosen.chi_square_recomputed)}"
+        )
+    if result.start_dependence:
+        moved = ", ".join(f"{name} {100 * part:.2g} %" for name, part in result.start_dependence.items())
+        say(f"from another start the answer moves by (on a coarse rung, relative): {moved}")
     if result.rehearsal is not None:
         _rehearsal(result.rehearsal, result.chosen.rule)
         say()
@@ -92,7 +100,8 @@ def profile(done: Done) -> None:
 
 def _background(result: Result) -> str:
     values, _, units = shown(result.property, result.background)
-    return f"{values.flat[0]:.4g}{_with_space(units)}"
+    least, most = f"{values.min():.4g}", f"{values.max():.4g}"
+    return (least if least == most else f"{least} to {most}") + _with_space(units)
 
 
 def _with_space(units: str) -> str:

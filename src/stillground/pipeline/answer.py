@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Generator, Iterator, Sequence
+from collections.abc import Callable, Generator, Iterator, Mapping, Sequence
 from dataclasses import replace
 from functools import partial
 
@@ -14,8 +14,9 @@ from stillground.errors import ConfigError
 from stillground.grid import Grid, prolong
 from stillground.pipeline.capacity import SNAPSHOT_VALUES
 from stillground.pipeline.grids import correlation
+from stillground.pipeline.linear import in_unknown, linear_ladder, start_dependence
 from stillground.pipeline.profiles import Profile
-from stillground.pipeline.remarks import remark
+from stillground.pipeline.remarks import remark, remark_nonlinear
 from stillground.pipeline.simulate import described_ground
 from stillground.progress import staged
 from stillground.protocols import (
@@ -24,13 +25,14 @@ from stillground.protocols import (
     Choice,
     Found,
     Measurement,
+    NonlinearMeasurement,
     Progress,
     Rehearsal,
     Result,
     RuleOptions,
     Sensitivity,
 )
-from stillground.reconstruct import Method, find_outliers, reweighted, with_delay, with_statics
+from stillground.reconstruct import Method, find_outliers, weighted_errors
 from stillground.refinement import Climb, climb
 from stillground.rehearsal import rehearse
 from stillground.sensitivity import vary
@@ -42,6 +44,7 @@ Assemble = Callable[[Grid], Measurement]
 # Repeated work goes on the finest rung of no more nodes than this; what it tells has settled there.
 _REPEATED_NODES = 6000
 _MEMBERS = 32
+_MOST_RAYS = 400
 
 
 def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator[Progress, None, Result]:
@@ -57,17 +60,14 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     """
     method = plan_method(config)
     repeated = grids[repeated_rung(grids)]
-    plain = assembly(profile, config)
-    weights = np.ones(profile.survey.sizes["datum"])
-    if config.errors.outliers != "off":
+    linear = yield from linear_ladder(profile, config, grids, repeated_rung(grids), method)
+    if config.errors.outliers != "off" and not linear.outer:
         always = config.errors.outliers == "tukey"
-        work = find_outliers(plain(repeated), repeated, method, always=always)
-        weights = yield from staged(work, "looking for outliers")
+        work = find_outliers(linear(repeated), repeated, method, always=always)
+        linear = replace(linear, weights=(yield from staged(work, "looking for outliers")))
+    weights = linear.weights
 
-    def assemble(grid: Grid) -> Measurement:
-        return reweighted(plain(grid), weights)
-
-    top = yield from climb(assemble, grids, method, config.refinement.tolerance, config.kind.regularity)
+    top = yield from climb(linear, linear.grids, method, config.refinement.tolerance, config.kind.regularity)
     finest = top.finest
     chosen_stop = finest.stop(method.choose)
     rung = top.rungs[min(repeated_rung(grids), len(top.rungs) - 1)]
@@ -75,7 +75,8 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     averages = profile.scene.averages
     rehearsal = sensitivity = None
     deviations: dict[str, float] = {}
-    interrupted = top.interrupted
+    moved_by_start: dict[str, float] = {}
+    interrupted = top.interrupted or len(linear.grids) < len(grids)
     try:
         if not interrupted:
             scatter, average_scatter = yield from noise_part(
@@ -84,13 +85,17 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
             deviations = extra_deviations(rung)
         if config.rehearsal.twins and not interrupted:
             noise = 1.0 if config.errors.trust else finest.noise
-            rehearsal = yield from rehearse_profile(profile, config, grids, assemble, noise)
+            rehearsal = yield from rehearse_profile(profile, config, grids, linear, noise)
         if config.sensitivity.vary and not interrupted:
-            sensitivity = yield from vary(assemble(repeated), repeated, method)
+            sensitivity = yield from vary(
+                linear(repeated), repeated, method, logarithmic=config.kind.logarithmic
+            )
+        if not interrupted:
+            moved_by_start = yield from start_dependence(linear, repeated, method)
     except KeyboardInterrupt:
         interrupted = True
 
-    measurement = plain(finest.grid)
+    measurement = linear.measured(finest.grid)
     choices = tuple(_choice(top, name) for name in method.rules)
     chosen = next(choice for choice in choices if choice.rule == method.choose)
     raise_ = partial(prolong, coarse=rung.grid, fine=finest.grid)
@@ -100,8 +105,22 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         name: Found(values, units[name], deviations.get(name))
         for name, values in finest.standard.extras(solution).items()
     }
-    residual = finest.run.residual(chosen_stop) * finest.measurement.errors
-    return Result(
+    predicted = linear.stated(finest.grid).data - finest.run.residual(chosen_stop) * finest.measurement.errors
+    rays: tuple[Array, ...] = ()
+    remarks = _broken_off(top, len(grids), interrupted) + remark(finest, weights, config)
+    if isinstance(measurement, NonlinearMeasurement):
+        answer_of = top.model.reshape(-1)
+        predicted = measurement.predict(answer_of)
+        for extra in measurement.extras:
+            predicted = predicted + extra.response @ extras[extra.name].values
+        left = (measurement.data - predicted) / weighted_errors(measurement.errors, weights)
+        recomputed = float(left @ left) / left.size
+        found = replace(chosen, chi_square_recomputed=recomputed)
+        choices = tuple(found if choice is chosen else choice for choice in choices)
+        chosen = found
+        rays = thinned(measurement.rays(answer_of))
+        remarks += remark_nonlinear(linear.outer[finest.grid], chosen, config)
+    result = Result(
         property=config.kind.ground_property,
         axes=finest.grid.axes,
         background=finest.standard.background.reshape(finest.grid.shape),
@@ -109,7 +128,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         mesh_change=top.mesh_change,
         anomaly=top.anomaly,
         coverage=profile.scene.coverage(finest.grid, method.correlation),
-        predicted=measurement.data - residual,
+        predicted=predicted,
         observed=measurement.data,
         errors=measurement.errors,
         groupings=measurement.groupings,
@@ -124,7 +143,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         noise_part=raise_(scatter),
         rehearsal=_raised_rehearsal(rehearsal, raise_),
         sensitivity=_raised_sensitivity(sensitivity, raise_),
-        remarks=_broken_off(top, len(grids), interrupted) + remark(finest, weights, config),
+        remarks=remarks,
         interrupted=interrupted,
         averages={
             name: Average(
@@ -134,12 +153,66 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
             )
             for name, weights in averages(finest.grid).items()
         },
+        rays=rays,
+        start_dependence=moved_by_start,
+    )
+    if config.kind.logarithmic:
+        result = out_of_the_logarithm(result, finest.grid, averages(finest.grid))
+    return result
+
+
+def thinned(rays: Sequence[Array]) -> tuple[Array, ...]:
+    """Every so many of the rays that were found, few enough for a figure to show."""
+    known = [ray for ray in rays if len(ray) > 1]
+    return tuple(known[:: max(-(-len(known) // _MOST_RAYS), 1)])
+
+
+def out_of_the_logarithm(result: Result, grid: Grid, averages: Mapping[str, Array]) -> Result:
+    """A result in the logarithm of the ground property as one in the property itself.
+
+    Errors and changes are taken to first order, property times error of the logarithm. What is relative, as
+    the changes of the ladder and with them its verdict, stays that of the logarithm.
+    """
+    model = np.exp(result.model)
+
+    def scaled(errors: Array) -> Array:
+        return model * errors
+
+    def average(name: str, mean: Average) -> Average:
+        value = float(averages[name] @ model.reshape(-1))
+        total = None if mean.total_error is None else value * mean.total_error
+        return Average(value, value * mean.noise_part, total)
+
+    choices = tuple(replace(choice, model=np.exp(choice.model)) for choice in result.choices)
+    spread = grid.norm(model - grid.mean(model)) / float(np.sqrt(np.prod(grid.lengths)))
+    rehearsal, sensitivity = result.rehearsal, result.sensitivity
+    return replace(
+        result,
+        background=np.exp(result.background),
+        model=model,
+        mesh_change=scaled(result.mesh_change),
+        anomaly=spread if result.anomaly > 0 else 0.0,
+        choices=choices,
+        chosen=next(choice for choice in choices if choice.rule == result.chosen.rule),
+        snapshots=tuple((iteration, np.exp(field)) for iteration, field in result.snapshots),
+        ladder=replace(
+            result.ladder,
+            rungs=tuple(replace(rung, model=np.exp(rung.model)) for rung in result.ladder.rungs),
+        ),
+        noise_part=scaled(result.noise_part),
+        rehearsal=rehearsal and replace(rehearsal, total_error=scaled(rehearsal.total_error)),
+        sensitivity=sensitivity and replace(sensitivity, spread=scaled(sensitivity.spread)),
+        averages={name: average(name, mean) for name, mean in result.averages.items()},
     )
 
 
 def plan_method(config: Config) -> Method:
     """How a configuration asks to reconstruct."""
-    bounds = config.ground.bounds
+    given = config.ground.bounds
+    bounds = None
+    if given is not None:
+        least, most = min(given), max(given)
+        bounds = (float(np.log(least)), float(np.log(most))) if config.kind.logarithmic else (least, most)
     return Method(
         correlation=correlation(config),
         smoothness=config.ground.smoothness,
@@ -148,21 +221,10 @@ def plan_method(config: Config) -> Method:
         rules={name: plugins.rule(name) for name in config.stopping.judged},
         choose=config.stopping.choose,
         options=RuleOptions(tau=config.stopping.tau, gcv_factor=config.stopping.gcv_factor),
-        background=config.ground.background,
-        bounds=None if bounds is None else (min(bounds), max(bounds)),
+        background=in_unknown(config.ground.background, config),
+        bounds=bounds,
         trust=config.errors.trust,
     )
-
-
-def assembly(profile: Profile, config: Config) -> Assemble:
-    """From a grid to the measurement with the extra unknowns that the configuration asks for."""
-    units = config.kind.datum_units
-
-    def assemble(grid: Grid) -> Measurement:
-        measurement = with_statics(profile.scene.assemble(grid), config.errors.statics, units)
-        return with_delay(measurement, units) if config.errors.delay == "fit" else measurement
-
-    return assemble
 
 
 def repeated_rung(grids: Sequence[Grid]) -> int:
@@ -186,7 +248,7 @@ def two_rungs(grids: Sequence[Grid]) -> tuple[Grid, Grid]:
 
 
 def rehearse_profile(
-    profile: Profile, config: Config, grids: Sequence[Grid], assemble: Assemble, noise: float
+    profile: Profile, config: Config, grids: Sequence[Grid], linear: Assemble, noise: float
 ) -> Generator[Progress, None, Rehearsal]:
     """All rules on twins of a profile; data come from the next finer rung than they are judged on.
 
@@ -200,10 +262,14 @@ def rehearse_profile(
         ground = described_ground(config.simulate, axes)
         points = np.stack(np.meshgrid(*fine.axes, indexing="ij"), axis=-1).reshape(-1, len(axes))
         described = ground.values(points) - ground.background
+        if config.kind.logarithmic:
+            described = np.log(ground.values(points))
+            mean = linear(fine).background
+            described -= np.log(ground.background) if mean is None else mean
     return (
         yield from rehearse(
-            (coarse, assemble(coarse)),
-            (fine, assemble(fine)),
+            (coarse, linear(coarse)),
+            (fine, linear(fine)),
             method,
             twins=config.rehearsal.twins,
             seed=config.rehearsal.seed,

@@ -13,19 +13,22 @@ import psutil
 from stillground.config import Config
 from stillground.grid import Grid
 from stillground.pipeline.advice import advise
-from stillground.pipeline.answer import assembly, plan_method, repeated_rung
+from stillground.pipeline.answer import plan_method, repeated_rung
 from stillground.pipeline.capacity import memory, rows_on_grid
 from stillground.pipeline.grids import correlation, plan_grids
+from stillground.pipeline.linear import Measured, assembly
 from stillground.pipeline.profiles import Profile, read_profiles
 from stillground.products.figures.sheet import write_figure
 from stillground.products.figures.survey import survey_figure
-from stillground.protocols import Measurement
-from stillground.reconstruct import Method, prepare
+from stillground.protocols import Measurement, NonlinearMeasurement
+from stillground.reconstruct import Method, linearised_at, prepare
 from stillground.rehearsal import FAMILIES
 from stillground.sensitivity import RECONSTRUCTIONS
 from stillground.solve import iterate, n_probes
 
 _TIMED_STEPS = 3
+# Outer steps that most surveys need; each also marches once to try its step.
+_OUTER_STEPS = 8
 
 
 @dataclass(frozen=True)
@@ -81,19 +84,32 @@ def draw(plan: Plan, config: Config, folder: Path) -> Path:
 def _seconds(profile: Profile, grids: Sequence[Grid], config: Config) -> dict[str, float]:
     """Coarser rungs cost by their nodes; repeated work is timed on its own grid."""
     method, assemble = plan_method(config), assembly(profile, config)
-    finest = assemble(grids[-1])
+    finest, _ = _at_start(assemble, grids[-1])
     share = sum(grid.n_nodes for grid in grids) / grids[-1].n_nodes
     # Once before it counts, since that includes compiling.
     _seconds_of(finest, grids[-1], method, 1)
     found = {"ladder": share * _seconds_of(finest, grids[-1], method, 1)}
+    _, outer = _at_start(assemble, grids[-1])
+    found["ladder"] += share * outer
     repeated = grids[repeated_rung(grids)]
+    coarse, _ = _at_start(assemble, repeated)
     if config.rehearsal.twins:
         families = len(FAMILIES) + (config.simulate is not None)
-        together = _seconds_of(assemble(repeated), repeated, method, config.rehearsal.twins)
+        together = _seconds_of(coarse, repeated, method, config.rehearsal.twins)
         found["rehearsal"] = families * together
     if config.sensitivity.vary:
-        found["sensitivity"] = RECONSTRUCTIONS * _seconds_of(assemble(repeated), repeated, method, 1)
+        found["sensitivity"] = RECONSTRUCTIONS * _seconds_of(coarse, repeated, method, 1)
     return found
+
+
+def _at_start(assemble: Measured, grid: Grid) -> tuple[Measurement, float]:
+    """The measurement on a grid, linearised at its start, and the seconds that its outer steps will take."""
+    measurement = assemble(grid)
+    if not isinstance(measurement, NonlinearMeasurement):
+        return measurement, 0.0
+    begin = time.perf_counter()
+    linear, _ = linearised_at(measurement, measurement.start)
+    return linear, _OUTER_STEPS * (time.perf_counter() - begin)
 
 
 def _seconds_of(measurement: Measurement, grid: Grid, method: Method, problems: int) -> float:

@@ -8,9 +8,10 @@ from pathlib import Path
 
 from stillground.config import Config
 from stillground.grid import Grid
-from stillground.pipeline.answer import assembly, plan_method, rehearse_profile, two_rungs
+from stillground.pipeline.answer import plan_method, rehearse_profile, two_rungs
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.labels import provenance
+from stillground.pipeline.linear import linear_ladder
 from stillground.pipeline.profiles import Profile, read_profiles
 from stillground.products.figures import write_pattern_figure, write_rehearsal_figure
 from stillground.products.pattern import pattern_dataset, write_pattern
@@ -67,11 +68,11 @@ def rehearse_all(
         if pattern:
             yield (yield from _patterns(profile, grids, config, text, folder, command))
         else:
-            assemble, noise = assembly(profile, config), 1.0
+            method, pair, noise = plan_method(config), two_rungs(grids), 1.0
+            linear = yield from linear_ladder(profile, config, pair, 0, method)
             if not config.errors.trust:
-                coarse, _ = two_rungs(grids)
-                noise = (yield from _own_answer(assemble(coarse), coarse, plan_method(config))).noise
-            found = yield from rehearse_profile(profile, config, grids, assemble, noise)
+                noise = (yield from _own_answer(linear(pair[0]), pair[0], method)).noise
+            found = yield from rehearse_profile(profile, config, grids, linear, noise)
             choose = config.stopping.choose
             file = write_rehearsal(folder, profile.name, found, choose)
             figure = write_rehearsal_figure(folder / "figures", profile.name, found, choose)
@@ -88,12 +89,13 @@ def _patterns(
     profile: Profile, grids: tuple[Grid, ...], config: Config, text: str, folder: Path, command: str
 ) -> Generator[Progress, None, Patterns]:
     coarse, fine = two_rungs(grids)
-    assemble, method = assembly(profile, config), plan_method(config)
+    method = plan_method(config)
+    linear = yield from linear_ladder(profile, config, (coarse, fine), 0, method)
     sizes = config.rehearsal.patterns or [factor * method.correlation[-1] for factor in _SIZES]
-    answer = yield from _own_answer(assemble(coarse), coarse, method)
+    answer = yield from _own_answer(linear(coarse), coarse, method)
     stop = answer.stop(method.choose)
     patterns = yield from through_patterns(
-        (coarse, assemble(coarse)), (fine, assemble(fine)), method, stop, sizes, seed=config.rehearsal.seed
+        (coarse, linear(coarse)), (fine, linear(fine)), method, stop, sizes, seed=config.rehearsal.seed
     )
     origin = provenance((profile,), config, text, command)
     dataset = pattern_dataset(

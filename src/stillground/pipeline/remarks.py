@@ -5,14 +5,15 @@ from __future__ import annotations
 import numpy as np
 
 from stillground.config import Config
-from stillground.protocols import Array, RuleOptions
-from stillground.reconstruct import Reconstruction, shared_constants
+from stillground.protocols import Array, Choice, RuleOptions
+from stillground.reconstruct import Linearised, Reconstruction, shared_constants
 from stillground.stopping.gcv import gcv
 
 _MISSTATED = 1.3
 _ROUNDING = 1e-6
 _STATICS, _WARY = 2.5, 1.4
 _STALLED = 0.01
+_NOT_LINEAR = 0.2
 
 
 def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str, ...]:
@@ -62,4 +63,23 @@ def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str,
             f"residuals are alike within each {named}: constants are likely; "
             f"set errors.statics = {{ {setting} }}"
         )
+    return tuple(said)
+
+
+def remark_nonlinear(outer: Linearised, chosen: Choice, config: Config) -> tuple[str, ...]:
+    """Sentences on how far the last linearisation of a nonlinear measurement is to be trusted."""
+    said = [] if outer.reached else [outer.reason]
+    recomputed = chosen.chi_square_recomputed
+    if recomputed is not None and abs(recomputed / chosen.chi_square - 1) > _NOT_LINEAR:
+        said.append(
+            f"the misfit of the answer is {recomputed:.3g} where its last linearisation has "
+            f"{chosen.chi_square:.3g}: the answer is farther off than that reaches; trust its details less"
+        )
+    resting = ["error bars"]
+    resting += ["rehearsal"] if config.rehearsal.twins else []
+    resting += ["sensitivity"] if config.sensitivity.vary else []
+    named = " and ".join([", ".join(resting[:-1]), resting[-1]] if len(resting) > 1 else resting)
+    said.append(
+        f"{named} are those of the last linearisation: they do not know how far the data are not linear"
+    )
     return tuple(said)

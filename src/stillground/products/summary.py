@@ -36,7 +36,10 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
     dict
         Of extra unknowns a lone one is told with its ``values`` and posterior ``deviation``, many by their
         ``rms`` and ``largest`` size. ``index`` is the grid convergence index of the rms anomaly, None for
-        ``index_reason``. ``averages`` are of what people read, as velocity. ``rehearsal`` and
+        ``index_reason``. ``averages`` are of what people read, as velocity. Of a nonlinear measurement
+        ``chi_square_recomputed`` is the chosen answer's own misfit, beside that on its last linearisation
+        (else None), and ``start_dependence`` how far other starts move the answer on a coarse rung,
+        relative. ``rehearsal`` and
         ``sensitivity`` are None where they were not asked for.
     """
     ladder, chosen = result.ladder, result.chosen
@@ -48,6 +51,7 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
             "rule": chosen.rule,
             "iteration": _count(chosen.iteration),
             "chi_square": chosen.chi_square,
+            "chi_square_recomputed": chosen.chi_square_recomputed,
         },
         "rules": [
             {
@@ -95,6 +99,7 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
             for mean in read_averages(result)
         ],
         "noise": result.noise,
+        "start_dependence": dict(result.start_dependence),
         "remarks": list(result.remarks),
         "extras": {name: _extra(extra) for name, extra in result.extras.items()},
         "rehearsal": None if result.rehearsal is None else rehearsal_summary(result.rehearsal),

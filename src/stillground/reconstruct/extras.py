@@ -4,13 +4,16 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import replace
+from typing import TypeVar
 
 import numpy as np
 from pylops import LinearOperator
 from scipy.linalg import orth
 
 from stillground.errors import ConfigError
-from stillground.protocols import Extra, Measurement
+from stillground.protocols import Array, Extra, Measurement, NonlinearMeasurement
+
+Measured = TypeVar("Measured", bound=Measurement | NonlinearMeasurement)
 
 # Wide against any delay that would not be seen at once, and still narrower than the data.
 _DELAY_SHARE = 0.1
@@ -18,12 +21,12 @@ _LEAST_SIGNAL = 0.05
 _PROBES = 64
 
 
-def with_statics(measurement: Measurement, statics: Mapping[str, float], units: str) -> Measurement:
+def with_statics(measurement: Measured, statics: Mapping[str, float], units: str) -> Measured:
     """Adds one constant for every source, receiver or other group, with a prior.
 
     Parameters
     ----------
-    measurement : Measurement
+    measurement : Measurement or NonlinearMeasurement
     statics : mapping of str to float
         Grouping to prior standard deviation in units of the median error.
     units : str
@@ -54,14 +57,14 @@ def with_statics(measurement: Measurement, statics: Mapping[str, float], units: 
     return replace(measurement, extras=tuple(extras))
 
 
-def with_delay(measurement: Measurement, units: str) -> Measurement:
+def with_delay(measurement: Measured, units: str) -> Measured:
     """Adds one constant common to all data, such as a trigger delay."""
     response = np.ones((measurement.data.size, 1))
     deviation = _DELAY_SHARE * float(np.median(np.abs(measurement.data)))
     return replace(measurement, extras=(*measurement.extras, Extra("delay", response, deviation, units)))
 
 
-def ground_deviation(measurement: Measurement, root: LinearOperator, background: float) -> float:
+def ground_deviation(measurement: Measurement, root: LinearOperator, background: Array) -> float:
     """Standard deviation of the ground that makes the data as large as they are; 0 where they do not tell.
 
     Extra unknowns have a deviation of their own, so the ground needs a true one: one far too large, and
@@ -72,7 +75,7 @@ def ground_deviation(measurement: Measurement, root: LinearOperator, background:
     measurement : Measurement
     root : pylops.LinearOperator, shape (n_nodes, n_nodes)
         Of a prior of deviation 1.
-    background : float
+    background : array, shape (n_nodes,)
 
     Notes
     -----
@@ -87,7 +90,7 @@ def ground_deviation(measurement: Measurement, root: LinearOperator, background:
     common = [response for response in whitened if response.shape[1] == 1]
     explained = np.hstack([constant[:, None] / errors, *common])
     basis = orth(explained / np.maximum(np.linalg.norm(explained, axis=0), np.finfo(float).tiny))
-    b = (measurement.data - background * constant)[:, None] / errors
+    b = (measurement.data - operator.matvec(background))[:, None] / errors
     signs = np.random.default_rng(0).choice([-1.0, 1.0], size=(errors.size, _PROBES))
     left, probes, *others = (
         values - basis @ (basis.T @ values)

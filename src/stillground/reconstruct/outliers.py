@@ -27,12 +27,22 @@ def reweighted(measurement: Measurement, weights: Array) -> Measurement:
 
     Where data are weighted, all are scaled so that the mean squared residual of normal data stays 1.
     """
-    return replace(measurement, errors=measurement.errors / _applied(weights))
+    return replace(measurement, errors=weighted_errors(measurement.errors, weights))
+
+
+def weighted_errors(errors: Array, weights: Array) -> Array:
+    """The errors that `reweighted` gives, shape (n_data,)."""
+    return errors / _applied(weights)
 
 
 def _applied(weights: Array) -> Array:
     factor = np.sqrt(np.maximum(weights, 1e-6))
     return factor if np.all(weights == 1) else factor / np.sqrt(_ENERGY)
+
+
+def some_wild(residual: Array) -> bool:
+    """Whether at least two residuals pass 5 robust standard deviations."""
+    return int(np.sum(np.abs(residual) > _WILD * _deviation(residual))) >= _LEAST_WILD
 
 
 def biweight(residual: Array) -> Array:
@@ -72,10 +82,8 @@ def find_outliers(
         found = yield from reconstruct(reweighted(measurement, weights), grid, method)
         # In stated errors: those of data that are all but left out would hide them.
         residual = found.run.residual(found.stop("gcv")) / _applied(weights)
-        if passed == 0 and not always:
-            wild = np.abs(residual) > _WILD * _deviation(residual)
-            if int(wild.sum()) < _LEAST_WILD:
-                return weights
+        if passed == 0 and not always and not some_wild(residual):
+            return weights
         before, weights = weights, biweight(residual)
         if passed and float(np.abs(weights - before).max()) < _SETTLED:
             break

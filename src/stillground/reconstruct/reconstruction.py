@@ -36,7 +36,8 @@ class Method:
         The rule whose pick is the answer; one of ``rules``.
     options : RuleOptions
     background : float or None
-        Constant prior mean in the unit of the ground property; None fits it to the data.
+        Constant prior mean in the unit of the ground property; None fits it to the data. That of a
+        measurement with a ``background`` of its own goes before it.
     bounds : pair of float or None
         Least and greatest value of the ground property; only some solvers keep them.
     trust : bool
@@ -99,24 +100,28 @@ def takes_data_space(n_data: int, products: int, bounds: tuple[float, float] | N
     return bounds is None and n_data <= min(products, MOST_DATA)
 
 
+def prior(measurement: Measurement, grid: Grid, method: Method) -> tuple[PriorRoot, Array]:
+    """The root of the prior covariance, scaled for a measurement, and the prior mean, (n_nodes,)."""
+    background = measurement.background
+    if background is None:
+        constant = fit_background(measurement) if method.background is None else method.background
+        background = np.full(grid.n_nodes, constant)
+    # Relative to the background, solutions have no unit. Iterates do not depend on the scale, but for how
+    # much the ground may do before extra unknowns do.
+    deviation = abs(float(background[0])) or 1.0
+    if measurement.extras:
+        root = PriorRoot(grid, method.correlation, method.smoothness)
+        deviation = ground_deviation(measurement, root, background) or deviation
+    return PriorRoot(grid, method.correlation, method.smoothness, deviation), background
+
+
 def prepare(measurement: Measurement, grid: Grid, method: Method, *, products: int) -> Problem:
     """Brings a measurement to standard form.
 
     ``products`` is the number of iterations times that of columns.
     """
-    constant = fit_background(measurement) if method.background is None else method.background
-    # Relative to the background, solutions have no unit. Iterates do not depend on the scale, but for how
-    # much the ground may do before extra unknowns do.
-    deviation = abs(constant) or 1.0
-    if measurement.extras:
-        root = PriorRoot(grid, method.correlation, method.smoothness)
-        deviation = ground_deviation(measurement, root, constant) or deviation
-    standard = standard_form(
-        measurement,
-        PriorRoot(grid, method.correlation, method.smoothness, deviation),
-        np.full(grid.n_nodes, constant),
-        method.bounds,
-    )
+    root, background = prior(measurement, grid, method)
+    standard = standard_form(measurement, root, background, method.bounds)
     if takes_data_space(measurement.data.size, products, method.bounds):
         return Problem(grid, standard, DataSpace(standard.operator))
     return Problem(grid, standard, standard.operator)

@@ -20,7 +20,9 @@ RECONSTRUCTIONS = 1 + len(_LENGTHS) + len(_SMOOTHNESS) + len(_BACKGROUNDS)
 """How many of them `vary` makes."""
 
 
-def vary(measurement: Measurement, grid: Grid, method: Method) -> Generator[Progress, None, Sensitivity]:
+def vary(
+    measurement: Measurement, grid: Grid, method: Method, *, logarithmic: bool = False
+) -> Generator[Progress, None, Sensitivity]:
     """Reconstructs once as asked and once for each variation, every time with its own pick.
 
     Parameters
@@ -29,6 +31,8 @@ def vary(measurement: Measurement, grid: Grid, method: Method) -> Generator[Prog
     grid : Grid
         A coarser rung is enough.
     method : Method
+    logarithmic : bool
+        The unknown is the logarithm of the ground property, and so is what is returned.
 
     Yields
     ------
@@ -46,7 +50,6 @@ def vary(measurement: Measurement, grid: Grid, method: Method) -> Generator[Prog
     """
     asked = yield from _made(measurement, grid, method, "as asked")
     base = asked.model(asked.stop(method.choose))
-    constant = float(asked.standard.background[0])
     changes = {
         name: replace(method, correlation=tuple(factor * length for length in method.correlation))
         for name, factor in _LENGTHS.items()
@@ -55,23 +58,29 @@ def vary(measurement: Measurement, grid: Grid, method: Method) -> Generator[Prog
         name: replace(method, smoothness=max(method.smoothness + step, 0.0))
         for name, step in _SMOOTHNESS.items()
     }
-    changes |= {name: replace(method, background=factor * constant) for name, factor in _BACKGROUNDS.items()}
+    mean = asked.standard.background
+    means = {
+        name: mean + np.log(factor) if logarithmic else factor * mean for name, factor in _BACKGROUNDS.items()
+    }
+    cases = {name: (measurement, changed) for name, changed in changes.items()}
+    cases |= {name: (replace(measurement, background=other), method) for name, other in means.items()}
     size = grid.norm(base - grid.mean(base))
     models: dict[str, Array] = {}
     variations = []
-    for name, changed in changes.items():
-        found = yield from _made(measurement, grid, changed, name)
+    for name, (seen, changed) in cases.items():
+        found = yield from _made(seen, grid, changed, name)
         stop = found.stop(method.choose)
         models[name] = found.model(stop)
         distance = grid.norm(models[name] - base) / size if size > 0 else 0.0
         variations.append(Variation(name, stop, distance))
     moved = [np.square(models[name] - base) for name in (*_LENGTHS, *_SMOOTHNESS)]
     low, high = (models[name] for name in _BACKGROUNDS)
-    between = constant * float(np.ptp(list(_BACKGROUNDS.values())))
+    less, more = (means[name].reshape(grid.shape) for name in _BACKGROUNDS)
+    between = np.abs(more - less)
     return Sensitivity(
         variations=tuple(variations),
         spread=np.sqrt(np.mean(moved, axis=0)),
-        investigation=np.abs(high - low) / abs(between) if between else np.zeros(grid.shape),
+        investigation=np.divide(np.abs(high - low), between, out=np.zeros(grid.shape), where=between > 0),
     )
 
 

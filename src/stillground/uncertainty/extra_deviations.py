@@ -50,7 +50,8 @@ def extra_deviations(reconstruction: Reconstruction) -> dict[str, float]:
         return np.asarray(cg(covariance, column, rtol=_NEARNESS, maxiter=_MOST_STEPS)[0])
 
     constant = measurement.operator.matvec(np.ones(grid.n_nodes)) / measurement.errors
-    weighted = solved(constant) if method.background is None else np.zeros(n_data)
+    fitted = method.background is None and measurement.background is None
+    weighted = solved(constant) if fitted else np.zeros(n_data)
     size = float(constant @ weighted) or 1.0
     found = {}
     for extra in single:

@@ -1,0 +1,144 @@
+"""What a profile's ladder iterates on: its measurement, or the last linearisation of a nonlinear one."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Generator, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from stillground.config import Config
+from stillground.grid import Grid, carry
+from stillground.pipeline.profiles import Profile
+from stillground.progress import staged
+from stillground.protocols import Array, Measurement, NonlinearMeasurement, Progress
+from stillground.reconstruct import (
+    Linearised,
+    Method,
+    linearise,
+    reconstruct,
+    reweighted,
+    with_delay,
+    with_statics,
+)
+
+Measured = Callable[[Grid], Measurement | NonlinearMeasurement]
+
+
+@dataclass(frozen=True)
+class Linear:
+    """From a grid of the ladder to the linear measurement on it, data weighted.
+
+    Parameters
+    ----------
+    measured : callable
+        From a grid to the measurement with the stated errors, linear or not.
+    grids : tuple of Grid
+        The ladder; where the user broke off, what of it was linearised by then.
+    weights : array, shape (n_data,)
+        Of the data.
+    outer : mapping of Grid to Linearised
+        What the outer loop left of a nonlinear measurement; empty of a linear one.
+    """
+
+    measured: Measured
+    grids: tuple[Grid, ...]
+    weights: Array
+    outer: Mapping[Grid, Linearised] = field(default_factory=dict)
+
+    def stated(self, grid: Grid) -> Measurement:
+        """The linear measurement with the stated errors."""
+        if grid in self.outer:
+            return self.outer[grid].measurement
+        measurement = self.measured(grid)
+        assert isinstance(measurement, Measurement)
+        return measurement
+
+    def __call__(self, grid: Grid) -> Measurement:
+        return reweighted(self.stated(grid), self.weights)
+
+
+def assembly(profile: Profile, config: Config) -> Measured:
+    """From a grid to the measurement with the extra unknowns and prior mean that a configuration asks for."""
+    units = config.kind.datum_units
+    mean = in_unknown(config.ground.background, config)
+
+    def assemble(grid: Grid) -> Measurement | NonlinearMeasurement:
+        measurement = profile.scene.assemble(grid)
+        if isinstance(measurement, NonlinearMeasurement) and mean is not None:
+            measurement = replace(measurement, start=np.full(grid.n_nodes, mean))
+        measurement = with_statics(measurement, config.errors.statics, units)
+        return with_delay(measurement, units) if config.errors.delay == "fit" else measurement
+
+    return assemble
+
+
+def in_unknown(value: float | None, config: Config) -> float | None:
+    """A ground property as what is reconstructed: of a logarithmic kind its logarithm."""
+    return float(np.log(value)) if value is not None and config.kind.logarithmic else value
+
+
+def linear_ladder(
+    profile: Profile, config: Config, grids: Sequence[Grid], first: int, method: Method
+) -> Generator[Progress, None, Linear]:
+    """Linearises a nonlinear measurement on every grid, with the weights found on the ``first`` one.
+
+    Every rung makes the same few steps from the answer of a neighbour, in the end that of the first grid:
+    full schedules of their own would leave rungs apart by where each happened to halve a step. Of a linear
+    measurement there is nothing to do. A keyboard interrupt ends the ladder at the rung before, if any.
+
+    Yields
+    ------
+    Progress
+    """
+    measured = assembly(profile, config)
+    plain = Linear(measured, tuple(grids), np.ones(profile.survey.sizes["datum"]))
+    pilot = measured(grids[first])
+    if not isinstance(pilot, NonlinearMeasurement):
+        return plain
+    work = linearise(pilot, grids[first], method, outliers=config.errors.outliers)
+    led = yield from staged(work, "outer steps of the nonlinear measurement")
+    near, outer = (grids[first], led.field), dict[Grid, Linearised]()
+    try:
+        for number, grid in enumerate(grids, start=1):
+            measurement = measured(grid)
+            assert isinstance(measurement, NonlinearMeasurement)
+            here, values = near
+            begin = carry(values.reshape(here.shape), here, grid).reshape(-1)
+            work = linearise(measurement, grid, method, targets=led.onwards, weights=led.weights, begin=begin)
+            outer[grid] = yield from staged(work, f"outer steps on rung {number} of {len(grids)}")
+            if number > first:
+                near = grid, outer[grid].field
+    except KeyboardInterrupt:
+        if not outer:
+            raise
+    return replace(plain, grids=tuple(grids[: len(outer)]), weights=led.weights, outer=outer)
+
+
+def start_dependence(
+    linear: Linear, grid: Grid, method: Method
+) -> Generator[Progress, None, dict[str, float]]:
+    """How far the answer on a grid moves from other starts, relative L2 in the unknown; empty if linear.
+
+    Yields
+    ------
+    Progress
+    """
+    measurement = linear.measured(grid)
+    if not isinstance(measurement, NonlinearMeasurement):
+        return {}
+
+    def solved(linearised: Measurement, name: str) -> Generator[Progress, None, Array]:
+        work = reconstruct(reweighted(linearised, linear.weights), grid, method)
+        found = yield from staged(work, f"start: {name}")
+        return found.model(found.stop(method.choose))
+
+    base = yield from solved(linear.stated(grid), "as asked")
+    size = grid.norm(base - grid.mean(base))
+    moved = {}
+    for name, start in measurement.other_starts.items():
+        work = linearise(replace(measurement, start=start), grid, method, weights=linear.weights)
+        outcome = yield from staged(work, f"start: {name}")
+        other = yield from solved(outcome.measurement, name)
+        moved[name] = grid.norm(other - base) / size if size > 0 else 0.0
+    return moved

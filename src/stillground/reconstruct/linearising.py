@@ -1,0 +1,244 @@
+"""The outer loop of a nonlinear measurement: linear ones, each about the answer of the one before."""
+
+from __future__ import annotations
+
+from collections.abc import Generator, Sequence
+from dataclasses import dataclass, replace
+from itertools import islice
+from typing import Literal
+
+import numpy as np
+from pylops import LinearOperator
+
+from stillground.grid import Grid
+from stillground.protocols import Array, Measurement, NonlinearMeasurement, Progress
+from stillground.reconstruct.outliers import biweight, some_wild, weighted_errors
+from stillground.reconstruct.reconstruction import Method, prior
+from stillground.solve.cgls import cgls
+from stillground.standard_form import StandardForm, standard_form
+
+Outliers = Literal["auto", "tukey", "off"]
+
+# A linearisation is trusted for this fall of chi-square, no further.
+_FALL = 0.25
+# Chi-square by the nonlinear measurement is at its target when it is so near.
+_NEAR, _TOLD = 1.1, 1.25
+_OUTER, _INNER, _HALVINGS = 20, 60, 5
+# Two steps in a row that bring less than this part of the fall they aim at fit what is no ground.
+_STALLED = 0.25
+# From the field of a neighbouring rung, so many steps bring the misfit to rest.
+_ONWARDS = 3
+# In parts of the way from the prior mean.
+_STILL = 2e-3
+
+
+@dataclass(frozen=True)
+class Linearised:
+    """What the outer loop leaves on one grid.
+
+    Parameters
+    ----------
+    measurement : Measurement
+        The last linearisation with the stated errors, centred on the prior mean: operator J at u_K, data
+        ``d - F(u_K) + J u_K``.
+    field : array, shape (n_nodes,)
+        The model that the last step led to from u_K: the iterate of that linearisation whose misfit is 1.
+    targets : tuple of float
+        Chi-squares that the steps aimed at.
+    chi_squares : tuple of float
+        Mean squared whitened residual at the prior mean and after each step made, by F itself.
+    weights : array, shape (n_data,)
+        Of the data, 1 but for outliers.
+    reached : bool
+        Whether chi-square came to 1, within a quarter.
+    reason : str
+        How the loop ended, in words.
+    """
+
+    measurement: Measurement
+    field: Array
+    targets: tuple[float, ...]
+    chi_squares: tuple[float, ...]
+    weights: Array
+    reached: bool
+    reason: str
+
+    @property
+    def onwards(self) -> tuple[float, ...]:
+        """Targets for every rung of a ladder that begins with this field: no further than it came."""
+        return (1.0 if self.reached else self.chi_squares[-1],) * _ONWARDS
+
+
+def linearise(
+    measurement: NonlinearMeasurement,
+    grid: Grid,
+    method: Method,
+    *,
+    targets: Sequence[float] | None = None,
+    weights: Array | None = None,
+    begin: Array | None = None,
+    outliers: Outliers = "off",
+) -> Generator[Progress, None, Linearised]:
+    """Fits a nonlinear measurement by linear ones in standard form, until chi-square is 1.
+
+    Each linearisation, about the model before, is solved from the prior mean: its CGLS ends where the linear
+    misfit meets the step's target exactly. The way there is halved until the nonlinear misfit falls. So the
+    last one has the answer among its own iterates, which steps from model to model would not leave there.
+    Only the prior's covariance is taken from ``method``, its mean from the measurement.
+
+    Parameters
+    ----------
+    measurement : NonlinearMeasurement
+    grid : Grid
+    method : Method
+    targets : sequence of float, optional
+        Chi-squares to aim at, a step each and no more: the rungs of a ladder are comparable when all make
+        the same steps. Default: each step aims at a quarter of chi-square, down to 1.
+    weights : array, shape (n_data,), optional
+        Of the data, kept throughout.
+    begin : array, shape (n_nodes,), optional
+        Where to linearise first, as an answer on another grid; default: at the prior mean.
+    outliers : "auto", "tukey" or "off"
+        Without ``weights``: reweight by Tukey's biweight at each step, where "auto" keeps the weights only
+        when at least two residuals turn out wild.
+
+    Yields
+    ------
+    Progress
+
+    Returns
+    -------
+    Linearised
+        A target that is not reached is told in its reason.
+
+    References
+    ----------
+    Hanke (1997), A regularizing Levenberg-Marquardt scheme, with applications to inverse groundwater
+    filtration problems, Inverse Problems 13 (each step aims at a fixed part of the misfit before).
+    """
+    if weights is None:
+        weights = np.ones_like(measurement.data)
+        if outliers != "off":
+            found, residual = yield from _steps(measurement, grid, method, None, None)
+            if outliers == "tukey" or some_wild(residual):
+                weights = found.weights
+    found, _ = yield from _steps(measurement, grid, method, targets, weights, begin)
+    return found
+
+
+def linearised_at(
+    measurement: NonlinearMeasurement, field: Array, mean: Array | None = None
+) -> tuple[Measurement, Array]:
+    """The linear measurement that touches a nonlinear one at a field, and the data over that field.
+
+    ``mean`` is its prior mean, by default the nonlinear measurement's.
+    """
+    predicted, operator = measurement.linearise(field)
+    linear = Measurement(
+        operator,
+        measurement.data - predicted + operator.matvec(field),
+        measurement.errors,
+        measurement.groupings,
+        measurement.extras,
+        measurement.start if mean is None else mean,
+    )
+    return linear, predicted
+
+
+def _steps(
+    measurement: NonlinearMeasurement,
+    grid: Grid,
+    method: Method,
+    targets: Sequence[float] | None,
+    weights: Array | None,
+    begin: Array | None = None,
+) -> Generator[Progress, None, tuple[Linearised, Array]]:
+    """The loop, and its last residual in stated errors; without weights they are found on the way."""
+    data, errors = measurement.data, measurement.errors
+    field = measurement.start if begin is None else begin
+    beside = np.zeros_like(data)
+    root: LinearOperator | None = None
+    aims: list[float] = []
+    chi_squares: list[float] = []
+    slow, ended = 0, ""
+    while True:
+        linear, predicted = linearised_at(measurement, field)
+        residual = data - predicted - beside
+        counted = biweight(residual / errors) if weights is None else weights
+        fitted = replace(linear, errors=weighted_errors(errors, counted))
+        chi_square = _mean_square(residual / fitted.errors)
+        chi_squares = [*chi_squares[: len(aims)], chi_square]
+        yield Progress("", len(aims), len(targets or ()) or _OUTER, f"misfit {chi_square:.3g}")
+        aim = max(_FALL * chi_square, 1.0)
+        if targets is not None:
+            if len(aims) == len(targets):
+                break
+            aim = targets[len(aims)]
+        elif not aims and chi_square <= 1:
+            break
+        aims.append(aim)
+        if root is None:
+            root, _ = prior(fitted, grid, method)
+        standard = standard_form(fitted, root, measurement.start)
+        solution = _iterate_at(standard, aim)
+        step = standard.ground(solution) - field
+        found = standard.extras(solution)
+        constants = sum((extra.response @ found[extra.name] for extra in fitted.extras), -beside)
+        part = 1.0
+        for _ in range(_HALVINGS):
+            residual = data - measurement.predict(field + part * step) - beside - part * constants
+            after = _mean_square(residual / fitted.errors)
+            if after <= max(chi_square, _NEAR * aim):
+                break
+            part /= 2
+        else:
+            aims.pop()
+            residual = data - predicted - beside
+            ended = "no shorter step lowers it"
+            break
+        field, beside = field + part * step, beside + part * constants
+        chi_squares.append(after)
+        if targets is not None:
+            # The last one stays, as it stayed where the schedule comes from.
+            if len(aims) == len(targets):
+                break
+            continue
+        if part == 1 and aim == 1 and after <= _NEAR:
+            break
+        still = grid.norm(part * step) < _STILL * grid.norm(field - measurement.start)
+        slow = slow + 1 if chi_square - after < _STALLED * (chi_square - aim) and after > _NEAR else 0
+        if still or slow > 1 or len(aims) == _OUTER:
+            ended = "further steps hardly lower it"
+            break
+    made = len(aims)
+    reached = chi_squares[-1] <= _TOLD
+    reason = f"the misfit comes to {chi_squares[-1]:.3g} in {made} outer steps"
+    if not reached:
+        reason = (
+            f"the misfit stays at {chi_squares[-1]:.3g} after {made} outer steps, its target is 1"
+            f"{': ' + ended if ended else ''}; the errors may be too small, some data outliers, or the grid "
+            f"too coarse for them"
+        )
+    used = tuple(aims if targets is None else targets)
+    outcome = Linearised(linear, field, used, tuple(chi_squares), counted, reached, reason)
+    return outcome, residual / errors
+
+
+def _iterate_at(standard: StandardForm, target: float) -> Array:
+    """The CGLS iterate, shape (n_unknowns,), between steps, whose mean squared residual is the target."""
+    aim = target * standard.b.size
+    x, r = np.zeros(standard.operator.shape[1]), standard.b
+    for step in islice(cgls(standard.operator, standard.b[:, None]), 1, _INNER + 1):
+        before, left = x, r
+        x, r = step.solution[:, 0], step.residual[:, 0]
+        if r @ r <= aim:
+            change = r - left
+            slope, excess = float(left @ change), float(left @ left) - aim
+            # |left + t change|^2 = aim, the smaller root.
+            t = excess / (np.sqrt(max(slope**2 - float(change @ change) * excess, 0.0)) - slope)
+            return np.asarray(before + t * (x - before))
+    return x
+
+
+def _mean_square(values: Array) -> float:
+    return float(np.mean(np.square(values)))
