@@ -144,7 +144,10 @@ class NonlinearMeasurement(ABC):
 
     @abstractmethod
     def rays(self, field: Array) -> tuple[Array, ...]:
-        """The ways of the data through u, polylines of shape (n_points, n_axes), m; may be empty."""
+        """The way of each datum through u, polylines of shape (n_points, n_axes), m.
+
+        One that was not found has no points; none at all where there are no ways to show.
+        """
 
 
 @dataclass(frozen=True)
@@ -546,7 +549,8 @@ class Result:
     averages : mapping of str to Average
         Means that practice asks for, by what they are over, as "down to 30 m".
     rays : tuple of array, shape (n_points, n_axes)
-        The ways of the data through the answer where they bend with it, m.
+        The way of each datum through the answer where they bend with it, m; as in
+        `NonlinearMeasurement.rays`.
     start_dependence : mapping of str to float
         Of a nonlinear measurement, how far the answer on a coarse rung moves from another start, by its
         name: relative L2 change.

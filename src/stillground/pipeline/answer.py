@@ -44,7 +44,6 @@ Assemble = Callable[[Grid], Measurement]
 # Repeated work goes on the finest rung of no more nodes than this; what it tells has settled there.
 _REPEATED_NODES = 6000
 _MEMBERS = 32
-_MOST_RAYS = 400
 
 
 def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator[Progress, None, Result]:
@@ -118,7 +117,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         found = replace(chosen, chi_square_recomputed=recomputed)
         choices = tuple(found if choice is chosen else choice for choice in choices)
         chosen = found
-        rays = thinned(measurement.rays(answer_of))
+        rays = measurement.rays(answer_of)
         remarks += remark_nonlinear(linear.outer[finest.grid], chosen, config)
     result = Result(
         property=config.kind.ground_property,
@@ -159,12 +158,6 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     if config.kind.logarithmic:
         result = out_of_the_logarithm(result, finest.grid, averages(finest.grid))
     return result
-
-
-def thinned(rays: Sequence[Array]) -> tuple[Array, ...]:
-    """Every so many of the rays that were found, few enough for a figure to show."""
-    known = [ray for ray in rays if len(ray) > 1]
-    return tuple(known[:: max(-(-len(known) // _MOST_RAYS), 1)])
 
 
 def out_of_the_logarithm(result: Result, grid: Grid, averages: Mapping[str, Array]) -> Result:
