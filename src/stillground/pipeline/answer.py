@@ -44,6 +44,8 @@ Assemble = Callable[[Grid], Measurement]
 # Repeated work goes on the finest rung of no more nodes than this; what it tells has settled there.
 _REPEATED_NODES = 6000
 _MEMBERS = 32
+# Of a logarithm: no ground differs so much from its prior mean, and marches end in overflow.
+_BEYOND = 20.0
 
 
 def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator[Progress, None, Result]:
@@ -109,6 +111,12 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     remarks = _broken_off(top, len(grids), interrupted) + remark(finest, weights, config)
     if isinstance(measurement, NonlinearMeasurement):
         answer_of = top.model.reshape(-1)
+        if config.kind.logarithmic and np.abs(answer_of - measurement.start).max() > _BEYOND:
+            raise ConfigError(
+                f"{profile.name}: to fit the data the ground would have to change by a factor of more than "
+                f"{np.exp(_BEYOND):.0g}; look at errors.floor, which may be too small, and at the picks; "
+                f'errors.outliers = "tukey" leaves wild ones out'
+            )
         predicted = measurement.predict(answer_of)
         for extra in measurement.extras:
             predicted = predicted + extra.response @ extras[extra.name].values

@@ -28,6 +28,9 @@ _OUTER, _INNER, _HALVINGS = 20, 60, 5
 _STALLED = 0.25
 # From the field of a neighbouring rung, so many steps bring the misfit to rest.
 _ONWARDS = 3
+_PASSES, _SETTLED = 8, 0.05
+# Of a logarithm, a factor of seven: what is farther from a linearisation is nonsense.
+_FARTHEST = 2.0
 # In parts of the way from the prior mean.
 _STILL = 2e-3
 
@@ -122,6 +125,12 @@ def linearise(
             found, residual = yield from _steps(measurement, grid, method, None, None)
             if outliers == "tukey" or some_wild(residual):
                 weights = found.weights
+                # Data left out early, when ground still to come looked like outliers, come back.
+                for _ in range(_PASSES):
+                    found, residual = yield from _steps(measurement, grid, method, None, weights)
+                    before, weights = weights, biweight(residual)
+                    if float(np.abs(weights - before).max()) < _SETTLED:
+                        break
     found, _ = yield from _steps(measurement, grid, method, targets, weights, begin)
     return found
 
@@ -184,7 +193,7 @@ def _steps(
         step = standard.ground(solution) - field
         found = standard.extras(solution)
         constants = sum((extra.response @ found[extra.name] for extra in fitted.extras), -beside)
-        part = 1.0
+        part = min(1.0, _FARTHEST / max(float(np.abs(step).max()), _FARTHEST))
         for _ in range(_HALVINGS):
             residual = data - measurement.predict(field + part * step) - beside - part * constants
             after = _mean_square(residual / fitted.errors)
