@@ -209,7 +209,7 @@ def test_every_command_teaches_by_example(stillground: Command) -> None:
 
 def test_plugins_and_schema_print(stillground: Command) -> None:
     listed = stillground("plugins").stdout
-    kinds = {"straight-ray", "induction", "downhole", "kernel"}
+    kinds = {"straight-ray", "curved-ray", "induction", "downhole", "kernel"}
     for name in (*kinds, "lsqr", "cgls", "discrepancy", "gcv", "stillground"):
         assert name in listed
     choices = json.loads(stillground("schema").stdout)["oneOf"]
