@@ -83,7 +83,7 @@ def test_times_of_a_gradient_medium_give_back_its_velocities() -> None:
 def test_a_few_wild_times_hardly_move_the_start() -> None:
     def wild(starts: Array, ends: Array) -> Array:
         times = slotnick(starts, ends)
-        times[::25] *= 3.0
+        times[::10] *= 5.0
         return times
 
     depths = np.linspace(0.0, 10.0, 5)
@@ -150,7 +150,8 @@ def test_the_derivative_is_that_of_the_times_by_log_slowness() -> None:
 
 
 def test_air_has_no_part_in_any_time() -> None:
-    scene = placed(line(relief=dome))
+    """Across a valley of uniform ground: through the air the way would be straight."""
+    scene = placed(line(relief=lambda x: 0.01 * (x - 24.0) ** 2), start="500 m/s")
     here = replace(grid(scene), shape=(53, 25))
     _, derivative = scene.assemble(here).linearise(scene.assemble(here).start)
     weight = np.abs(derivative.rmatvec(np.ones(len(scene.data)))).reshape(here.shape)
@@ -183,7 +184,7 @@ def test_kept_rays_come_back_from_the_file_of_the_iteration() -> None:
 
 
 def test_the_surface_goes_through_positions_that_lie_below_no_other() -> None:
-    hole = {"receiver_x": np.full(24, 20.1), "receiver_z": np.linspace(1.0, -20.0, 24)}
+    hole = {"receiver_x": np.linspace(20.1, 20.6, 24), "receiver_z": np.linspace(1.0, -20.0, 24)}
     survey = line(shots=np.array([0.0]), relief=dome, times=lambda a, b: np.full(len(a), 0.05), **hole)
     survey["source_x"][:12], survey["source_z"][:12] = 40.0, 1.5
     scene = placed(survey)
