@@ -377,6 +377,29 @@ def test_odd_readings_are_kept_and_told() -> None:
     assert scene.spacing[0] == 1.005, "the response takes the spacing as it stands"
 
 
+@pytest.mark.parametrize(("height", "doubted"), [(7.9, False), (8.0, True), (30.0, True)])
+def test_a_height_beyond_twice_the_largest_coil_spacing_is_doubted(height: float, doubted: bool) -> None:
+    survey = measured(line(height=height), np.full(186, 0.02), np.full(186, 1e-9))
+    said = [doubt for doubt in placed(survey).doubts if doubt.startswith("height: ")]
+    assert bool(said) == doubted
+    if height == 30.0:
+        assert said == ["height: 30 m is 7.5 times the largest coil spacing: is its unit right?"]
+
+
+@pytest.mark.parametrize(("wrong", "negative"), [(False, False), (True, True)])
+def test_negative_conductivity_is_remarked_with_its_share(wrong: bool, negative: bool) -> None:
+    """Readings on the ground that are said to be from 3 m above it contradict each other."""
+    readings = placed(line(height=0.3)).predict(GAP)
+    survey = measured(line(height=3.0 if wrong else 0.3), readings, 0.02 * readings)
+    found = stillground.reconstruct_survey(survey.assign_attrs(source="a.csv"), kind="induction", **TABLES)
+    ends = [np.where((axis == axis[0]) | (axis == axis[-1]), 0.5, 1.0) for axis in found.arrays.axes]
+    share = float(np.average(found.arrays.model < 0, weights=np.multiply.outer(*ends)))
+    said = [remark for remark in found.arrays.remarks if remark.startswith("conductivity is negative in ")]
+    assert (share > 0) == negative
+    told = [f"conductivity is negative in {100 * share:.2g} % of the ground"] * negative
+    assert [remark.split(",")[0] for remark in said] == told
+
+
 def test_stations_are_numbered_along_the_line_whatever_the_order_of_rows() -> None:
     survey = line()
     shuffled = survey.isel(datum=np.random.default_rng(0).permutation(186))

@@ -237,6 +237,8 @@ def test_a_background_that_no_kernel_sees_stays_zero(tmp_path: Path) -> None:
     assert any("ground.background is taken as 0" in doubt for doubt in profile.scene.doubts)
     (result,) = run_config(path, out=tmp_path / "out")
     assert_allclose(result.arrays.background, 0.0, atol=1e-12)
+    assert result.arrays.model.min() < 0, "of a property that may be anything"
+    assert not any("negative" in remark for remark in result.arrays.remarks)
 
 
 Spoil = Callable[[Path, np.ndarray, np.ndarray], None]

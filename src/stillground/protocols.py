@@ -34,13 +34,15 @@ class GroundProperty:
     """The property of the ground that a kind of measurement sees.
 
     ``reciprocal`` is (name, units, long_name) of one over the property where people read that
-    instead, as velocity for slowness; figures then show the reciprocal.
+    instead, as velocity for slowness; figures then show the reciprocal. ``positive`` says that nature has
+    none below zero.
     """
 
     name: str
     units: str
     long_name: str
     reciprocal: tuple[str, str, str] | None = None
+    positive: bool = True
 
 
 @dataclass(frozen=True)

@@ -161,7 +161,7 @@ class Kernel(Kind):
     """Any linear measurement: each datum the integral of its own kernel, from a table, times the ground."""
 
     name = "kernel"
-    ground_property = GroundProperty("property", "1", "ground property")
+    ground_property = GroundProperty("property", "1", "ground property", positive=False)
     columns = ("value", "value_error")
     datum = "value"
     datum_units = "1"
@@ -190,7 +190,7 @@ class Kernel(Kind):
             raise SurveyError(str(settings.kernel), [f"attributes of kernel: {error}"]) from error
         made = copy.copy(self)
         long_name = self.ground_property.long_name if name == "property" else name.replace("_", " ")
-        made.ground_property = GroundProperty(name, units, long_name)
+        made.ground_property = GroundProperty(name, units, long_name, positive=False)
         made.datum_units, made.axes, made._file = data_units, axes, settings.kernel
         return made
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from stillground.config import Config
+from stillground.percent import percent
 from stillground.protocols import Array, Choice, RuleOptions
 from stillground.reconstruct import Linearised, Reconstruction, shared_constants
 from stillground.stopping.gcv import gcv
@@ -17,11 +18,14 @@ _NOT_LINEAR = 0.2
 
 
 def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str, ...]:
-    """Sentences on the size of the errors, outliers, statics and bounds; empty where all is well."""
-    said: list[str] = []
+    """Sentences on the size of the errors, outliers, statics, bounds and signs; empty where all is well."""
+    said = _impossible(finest, config)
     noise = finest.noise
     if noise < _ROUNDING:
-        return ("the data are fitted to rounding: they carry no noise, and rules have nothing to judge",)
+        return (
+            *said,
+            "the data are fitted to rounding: they carry no noise, and rules have nothing to judge",
+        )
     history = finest.run.history
     contradicted = False
     if config.ground.bounds is not None:
@@ -83,3 +87,21 @@ def remark_nonlinear(outer: Linearised, chosen: Choice, config: Config) -> tuple
         f"{named} are those of the last linearisation: they do not know how far the data are not linear"
     )
     return tuple(said)
+
+
+def _impossible(finest: Reconstruction, config: Config) -> list[str]:
+    """What to say where a property that nature has only above zero came out below."""
+    seen = config.kind.ground_property
+    # The reconstruction of a logarithm is one of the logarithm, and its answer above zero.
+    if not seen.positive or config.kind.logarithmic:
+        return []
+    below = finest.model(finest.stop(config.stopping.choose)).reshape(-1) < 0
+    weights = finest.grid.weights()
+    share = float(weights[below].sum() / weights.sum())
+    if share == 0:
+        return []
+    return [
+        f"{seen.name} is negative in {percent(share)} of the ground, which no ground has: check units, "
+        f'orientations and heights of the data; then keep it above zero (solver.method = "kaczmarz" with '
+        f"ground.bounds), or stop earlier (stopping.choose)"
+    ]
