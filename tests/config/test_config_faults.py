@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import shlex
 from pathlib import Path
 from typing import Any
 
 import pytest
 
+from stillground.cli.app import app
 from stillground.config import from_mapping, load
 from stillground.errors import ConfigError
 
@@ -30,7 +32,8 @@ def tables(**changes: dict[str, Any]) -> dict[str, Any]:
         ({"physics": {"surfce": "x"}}, "physics.surfce is no setting; did you mean 'surface'?"),
         ({"ground": {"spacing": 0.5}}, "ground.spacing: 0.5 has no unit; give it with one, like '0.5 m'"),
         ({"ground": {"spacing": "0.5 s"}}, "ground.spacing: '0.5 s': unit 's' does not convert to m"),
-        ({"ground": {"spacing": "-1 m"}}, "must be above zero; got -1 m"),
+        ({"ground": {"spacing": "-1 m"}}, "ground.spacing: must be above zero; got '-1 m'"),
+        ({"ground": {"spacing": {"vertical": "0 m"}}}, "ground.spacing.vertical = '0 m': must be above zero"),
         ({"ground": {"background": "1900"}}, "give it with one, like '1900 m/s'"),
         ({"errors": {"floor": "1 m"}}, "errors.floor: '1 m': unit 'm' does not convert to s"),
         ({"solver": {"iterations": "many"}}, "solver.iterations = 'many': must be a valid integer"),
@@ -96,11 +99,24 @@ def test_overrides_win_and_are_kept_with_the_text(small: Path) -> None:
 
 @pytest.mark.parametrize(
     ("override", "told"),
-    [("spacing", "write it as key=value"), ("title.x=1", "title is a value and not a table")],
+    [
+        ("spacing", "write it as key=value"),
+        ("title.x=1", "title is a value and not a table"),
+        ("rehearsal.patterns=[2 m,4 m]", r"""put the whole in single quotes, as in --set 'rehearsal\."""),
+    ],
 )
 def test_an_override_that_cannot_be_applied_is_told(small: Path, override: str, told: str) -> None:
     with pytest.raises(ConfigError, match=told):
         load(small / "small.toml", [override])
+
+
+def test_the_overrides_of_the_help_work_as_a_shell_gives_them(small: Path) -> None:
+    lines = [line for each in app.registered_commands for line in (each.callback.__doc__ or "").splitlines()]
+    words = [shlex.split(line) for line in lines if " --set " in line]
+    overrides = [line[i + 1] for line in words for i, word in enumerate(line) if word == "--set"]
+    config, _ = load(small / "small.toml", overrides)
+    assert config.rehearsal.patterns == [2.0, 4.0]
+    assert len(overrides) >= 4
 
 
 @pytest.mark.parametrize(

@@ -160,7 +160,7 @@ def rehearse(
     Examples:
       stillground rehearse line.toml
       stillground rehearse line.toml --set rehearsal.twins=100
-      stillground rehearse line.toml --pattern --set rehearsal.patterns=["2 m","4 m"]
+      stillground rehearse line.toml --pattern --set 'rehearsal.patterns=["2 m", "4 m"]'
     """
     from stillground.cli import console, tables
     from stillground.config import load

@@ -102,7 +102,13 @@ def _apply(data: dict[str, Any], override: str) -> None:
             raise ConfigError(f"--set {override}: {name} is a value and not a table")
     try:
         data[last] = tomllib.loads(f"value = {value}")["value"]
-    except tomllib.TOMLDecodeError:
+    except tomllib.TOMLDecodeError as error:
+        if value.strip().startswith(("[", "{")):
+            # Shells take the quotes within away.
+            raise ConfigError(
+                f"--set {override}: is no TOML: {error}; put the whole in single quotes, as in "
+                f'--set \'rehearsal.patterns=["2 m", "4 m"]\''
+            ) from error
         data[last] = value.strip()
 
 

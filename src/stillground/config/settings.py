@@ -68,7 +68,8 @@ def _crs(text: str) -> str:
 def _both_ways(value: Any) -> Any:
     if isinstance(value, Mapping):
         return value
-    quantity(value, "m")
+    if not quantity(value, "m") > 0:
+        raise ValueError(f"must be above zero; got '{value}'")
     return {"horizontal": value, "vertical": value}
 
 
