@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import re
 import shutil
 import signal
 import subprocess
@@ -11,6 +12,7 @@ import sys
 import time
 import tracemalloc
 from collections.abc import Callable
+from contextlib import nullcontext
 from pathlib import Path
 from types import SimpleNamespace
 
@@ -497,3 +499,21 @@ def test_few_data_that_are_used_up_are_not_told_to_iterate_on(survey: xr.Dataset
     assert few.arrays.history.ended
     assert few.arrays.history.last < 10
     assert not any("solver.iterations" in reason for reason in reasons), reasons
+
+
+@pytest.mark.parametrize("spacing", ["50 m", "5 m", '{ horizontal = "50 m", vertical = "0.25 m" }'])
+def test_the_spacing_that_is_told_is_the_largest_that_works(small: Path, spacing: str) -> None:
+    def planned(value: str) -> None:
+        config, _ = load(small / "small.toml", [f"ground.spacing={value}"])
+        plan_grids(read_profiles(config)[0], config)
+
+    with pytest.raises(ConfigError, match="for refinement.levels = 3 take at most") as refused:
+        planned(spacing)
+    # Two digits: a tenth more is too much.
+    for share in (1.0, 1.1):
+        told = [share * float(number) for number in re.findall(r"([\d.]+) m(?: along|$)", str(refused.value))]
+        value = f'"{told[0]} m"'
+        if len(told) > 1:
+            value = f'{{ horizontal = "{told[0]} m", vertical = "{told[1]} m" }}'
+        with nullcontext() if share == 1.0 else pytest.raises(ConfigError):
+            planned(value)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 
 import numpy as np
 
@@ -11,6 +12,7 @@ from stillground.errors import ConfigError, GridError
 from stillground.grid import Grid, ladder, ladder_up_to
 from stillground.pipeline.capacity import refuse_too_large
 from stillground.pipeline.profiles import Profile
+from stillground.protocols import Array
 
 # How far a stated spacing may differ from a survey's own, of itself.
 _SAME = 1e-3
@@ -44,12 +46,6 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
     axes = config.kind.axes
     spacing = ground.spacing.along(axes)
     margin = [length / 2 if ground.margin is None else ground.margin for length in correlation(config)]
-    extent = max(high - low for low, high in zip(scene.lower, scene.upper, strict=True))
-    if extent < max(spacing):
-        raise ConfigError(
-            f"ground.spacing: {max(spacing):g} m is larger than the survey {profile.name}, {extent:.3g} m "
-            f"across; take at most {_round_down(extent / 2 ** (config.refinement.levels + 2))} m"
-        )
     bottom = scene.lower[-1]
     depth = scene.depth if ground.depth is None else ground.depth
     if depth is not None:
@@ -67,14 +63,32 @@ def plan_grids(profile: Profile, config: Config) -> tuple[Grid, ...]:
     lower = [low - pad for low, pad in zip(scene.lower, margin, strict=True)]
     upper = [high + pad for high, pad in zip(scene.upper, margin, strict=True)]
     lower[-1] = bottom - margin[-1]
+    extent = max(high - low for low, high in zip(scene.lower, scene.upper, strict=True))
+    most = _widest(extent, np.subtract(upper, lower), spacing, config)
+    if extent < max(spacing):
+        raise ConfigError(
+            f"ground.spacing: {max(spacing):g} m is larger than the survey {profile.name}, {extent:.3g} m "
+            f"across; {most}"
+        )
     try:
         grids = ladder(lower, upper, spacing, config.refinement.levels)
     except GridError as error:
-        widths = [high - low for low, high in zip(lower, upper, strict=True)]
-        most = _round_down(min(widths) / 2**config.refinement.levels)
-        raise ConfigError(f"profile {profile.name}: {error}, such as {most} m") from error
+        raise ConfigError(f"profile {profile.name}: {error}; {most}") from error
     refuse_too_large(profile.name, grids, profile.survey.sizes["datum"], config)
     return grids
+
+
+def _widest(extent: float, widths: Array, spacing: Sequence[float], config: Config) -> str:
+    """The largest spacing that a ladder of so many levels takes over ground of these widths."""
+    levels = config.refinement.levels
+    most = np.minimum(widths / 2**levels, extent)
+    if len(set(spacing)) == 1:
+        found = f"{_round_down(float(most.min()))} m"
+    else:
+        found = " and ".join(
+            f"{_round_down(float(h))} m along {axis}" for axis, h in zip(config.kind.axes, most, strict=True)
+        )
+    return f"for refinement.levels = {levels} take at most {found}"
 
 
 def _up_to(finest: Grid, profile: str, config: Config) -> tuple[Grid, ...]:
