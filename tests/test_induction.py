@@ -250,7 +250,7 @@ def test_three_of_six_readings_are_informative() -> None:
     assert_allclose(values[:5], [46, 10, 1.1, 0.1, 0.01], rtol=0.3)
     assert values[5] < 0.002
     facts = placed(measured(line(), np.full(186, 0.02), np.full(186, 4e-4))).facts
-    assert any("3 of the 6 readings of a station are informative" in fact for fact in facts)
+    assert any("informative at a station: 3 of 6 readings" in fact for fact in facts)
 
 
 TABLES = {
@@ -366,7 +366,7 @@ def test_odd_readings_are_kept_and_told() -> None:
     readings[7] = -0.003
     scene = placed(measured(line(), readings, np.full(186, 1e-9)))
     assert scene.data[7] == pytest.approx(-0.003)
-    assert any("1 readings are zero or negative (row 8)" in doubt for doubt in scene.doubts)
+    assert any("1 reading is zero or negative (row 8)" in doubt for doubt in scene.doubts)
     milli = placed(measured(line(), np.full(186, 20.0), np.full(186, 0.1)))
     assert any("is the unit of reading right?" in doubt for doubt in milli.doubts)
     spacing = np.tile(SIX["coil_spacing"], 31)

@@ -18,6 +18,7 @@ from scipy.fft import next_fast_len
 from scipy.interpolate import RegularGridInterpolator
 from scipy.ndimage import gaussian_filter
 
+from stillground.counted import counted
 from stillground.errors import GridError
 from stillground.quadrature import TRAPEZOID, Quadrature
 
@@ -238,8 +239,8 @@ def ladder(
         if (high - low) / coarse < 2 - 1e-9:
             raise GridError(
                 f"the ground is {high - low:g} m across, too little for a coarsest rung of {coarse:g} m "
-                f"(finest spacing {h:g} m, {levels} rungs): take a smaller ground.spacing "
-                f"or fewer refinement.levels"
+                f"(finest spacing {h:g} m, {counted(levels, 'rung', 'rungs')}): take a smaller "
+                f"ground.spacing or fewer refinement.levels"
             )
         first = math.floor(low / coarse + 1e-9)
         needed = math.ceil(high / coarse - 1e-9) - first
@@ -273,7 +274,8 @@ def ladder_up_to(finest: Grid, levels: int) -> tuple[Grid, ...]:
         except GridError as error:
             counts = " by ".join(str(n) for n in finest.intervals)
             raise GridError(
-                f"{counts} intervals with {finest.rule.name} weights make {len(rungs)} rungs and not {levels}"
+                f"{counts} intervals with {finest.rule.name} weights make "
+                f"{counted(len(rungs), 'rung', 'rungs')} and not {levels}"
             ) from error
         rungs.insert(0, replace(rungs[0], spacing=tuple(2 * h for h in rungs[0].spacing), shape=shape))
     return tuple(rungs)

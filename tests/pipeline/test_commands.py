@@ -507,7 +507,7 @@ def test_the_spacing_that_is_told_is_the_largest_that_works(small: Path, spacing
         config, _ = load(small / "small.toml", [f"ground.spacing={value}"])
         plan_grids(read_profiles(config)[0], config)
 
-    with pytest.raises(ConfigError, match="for refinement.levels = 3 take at most") as refused:
+    with pytest.raises(ConfigError, match=r"for refinement\.levels = 3 take at most") as refused:
         planned(spacing)
     # Two digits: a tenth more is too much.
     for share in (1.0, 1.1):

@@ -66,6 +66,6 @@ def test_the_survey_can_be_made_again_to_the_byte(stillground: Command, tmp_path
 def test_inspect_tells_how_many_readings_are_informative(stillground: Command, tmp_path: Path) -> None:
     done = stillground("inspect", CONFIG, "--out", tmp_path)
     assert done.returncode == 0, done.stderr
-    for part in ("61 stations", "3 of the 6 readings of a station are informative", "was not checked"):
+    for part in ("61 stations", "informative at a station: 3 of 6 readings", "was not checked"):
         assert part in done.stdout
     assert len(list((tmp_path / "figures").glob("*_survey.png"))) == 3

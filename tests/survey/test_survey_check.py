@@ -243,6 +243,18 @@ def test_suspicion_starts_at_five_robust_deviations(picks: Picks, rays: tuple[st
     assert [row for row, _ in report(10 + 5 * 1.4826 + 0.1).suspicious] == [12]
 
 
+def test_a_tail_without_a_gap_is_not_suspicious(picks: Picks, rays: tuple[str, ...]) -> None:
+    # Slowness that falls with depth: the slowest rays are 10 robust deviations off, each close to the next.
+    tail = [1 + float(t) ** 4 for t in np.linspace(0, 1, 120)]
+
+    def rows(times: list[float]) -> list[int]:
+        cells = [f"0,0,0,1,0,{i * 1e-5},{t},0.1" for i, t in enumerate(times)]
+        return [row for row, _ in checked(picks(*cells), rays)[1].suspicious]
+
+    assert rows(tail) == []
+    assert rows([*tail, 2.5]) == [122]
+
+
 def test_suspicion_is_by_line(picks: Picks, rays: tuple[str, ...]) -> None:
     # Row 7 would pass on line B, where the ground is slower.
     times = [(10.0, "A"), (10.1, "A"), (9.9, "A"), (10.2, "A"), (9.8, "A"), (20.0, "A")]

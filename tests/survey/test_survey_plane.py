@@ -33,6 +33,15 @@ def test_a_straight_line_is_recovered_in_every_direction(angle: float, from_the_
     np.testing.assert_allclose(np.hypot(*section.direction), 1, rtol=1e-12)
 
 
+@pytest.mark.parametrize("angle", [0.3, 1.0, 2.0])
+def test_positions_on_a_straight_line_lie_0_m_off_it(angle: float) -> None:
+    x, y = spots(angle, [0.0, 3.0, 11.0, 18.0], [0.0] * 4).T
+    survey = xr.Dataset({"x": ("datum", x), "y": ("datum", y), "z": ("datum", 0 * x)})
+    section = fit_section(plan_positions(survey), (x[0], y[0]))
+    assert np.abs(section.across(x, y)).max() > 0, "but for rounding"
+    assert out_of_plane(survey, section)[0] == 0
+
+
 @given(ANGLES, st.floats(-50, 50), st.floats(-50, 50))
 def test_along_and_across_are_coordinates_of_the_plan(angle: float, s: float, n: float) -> None:
     positions = spots(angle, [0.0, 20.0], [0.0, 0.0])

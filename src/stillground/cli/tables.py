@@ -11,6 +11,7 @@ from rich.table import Table
 
 from stillground import plugins as registry
 from stillground.cli.console import out, say
+from stillground.counted import counted
 from stillground.percent import percent
 from stillground.pipeline.inspect import Plan
 from stillground.pipeline.rehearse import Patterns, Rehearsed
@@ -175,7 +176,7 @@ def _rehearsal(found: Rehearsal, choose: str) -> None:
                         f"{value:.2f}"
                         for value in (np.median(ratios), np.quantile(ratios, 0.9), ratios.max())
                     ),
-                    "" if number else f"{100 * found.cost[rule]:.0f} %",
+                    "" if number else f"{100 * found.cost[rule]:z.0f} %",
                     "" if number else str(group),
                 )
     _show(table)
@@ -185,12 +186,14 @@ def _rehearsal(found: Rehearsal, choose: str) -> None:
     named = ", ".join(best)
     if choose in best:
         cost = 100 * found.cost[choose]
-        say(f'stopping.choose = "{choose}" is among the best here ({named}); trusting it costs {cost:.0f} %.')
+        say(
+            f'stopping.choose = "{choose}" is among the best here ({named}); trusting it costs {cost:z.0f} %.'
+        )
     elif choose in found.cost:
         least, cost = 100 * found.cost[best[0]], 100 * found.cost[choose]
         say(
-            f'set stopping.choose = "{best[0]}" (best here: {named}): it costs {least:.0f} % on its worst '
-            f'family, "{choose}" {cost:.0f} %.'
+            f'set stopping.choose = "{best[0]}" (best here: {named}): it costs {least:z.0f} % on its worst '
+            f'family, "{choose}" {cost:z.0f} %.'
         )
     else:
         say(f'stopping.choose = "{choose}" does not apply to all of these grounds; best here: {named}.')
@@ -216,7 +219,7 @@ def pattern(found: Patterns) -> None:
 def _sensitivity(found: Sensitivity) -> None:
     table = _table("changed", ">stop", ">picture moves")
     for variation in found.variations:
-        table.add_row(variation.name, _number(variation.iteration), f"{100 * variation.distance:.0f} %")
+        table.add_row(variation.name, _number(variation.iteration), f"{100 * variation.distance:z.0f} %")
     _show(table)
 
 
@@ -233,15 +236,16 @@ def remarks(report: SurveyReport) -> None:
     """What the check found worth knowing, a line each."""
     lines = []
     if report.switched_off:
-        lines.append(f"{report.switched_off} of {report.rows} rows switched off by 'use'")
+        lines.append(f"{report.switched_off} of {counted(report.rows, 'row', 'rows')} switched off by 'use'")
     if report.repeated:
         rows = "; ".join(", ".join(map(str, group)) for group in report.repeated[:_LISTED])
-        lines.append(f"{len(report.repeated)} measurements repeated (rows {_shorten(rows, report.repeated)})")
+        repeated = counted(len(report.repeated), "measurement", "measurements")
+        lines.append(f"{repeated} repeated (rows {_shorten(rows, report.repeated)})")
     if report.suspicious:
         rows = ", ".join(f"{row} ({1 / value:.4g} m s-1)" for row, value in report.suspicious[:_LISTED])
         lines.append(
-            f"{len(report.suspicious)} rows with an apparent velocity far from the others: "
-            f"{_shorten(rows, report.suspicious)}; look at these picks"
+            f"{counted(len(report.suspicious), 'row', 'rows')} with an apparent velocity far from the "
+            f"others: {_shorten(rows, report.suspicious)}; look at these picks"
         )
     if report.ignored_columns:
         lines.append(f"columns not used: {', '.join(report.ignored_columns)}")

@@ -8,6 +8,7 @@ import numpy as np
 import xarray as xr
 from pydantic import BaseModel, ConfigDict, Field, model_validator
 
+from stillground.counted import counted
 from stillground.protocols import Array, GroundProperty
 from stillground.survey.places import Places
 
@@ -84,7 +85,8 @@ def doubts(survey: xr.Dataset, lengths: Array) -> tuple[str, ...]:
     odd = int(np.sum((lengths < slowest * time) | (lengths > fastest * time)))
     if odd:
         said.append(
-            f"{odd} apparent velocities lie outside {slowest} to {fastest} m s-1: is the unit of time right?"
+            f"{counted(odd, 'apparent velocity lies', 'apparent velocities lie')} outside {slowest} to "
+            f"{fastest} m s-1: is the unit of time right?"
         )
     relative = np.median(survey["time_error"].values / time) if "time_error" in survey else 0.0
     if relative > _LARGE_ERROR:

@@ -17,6 +17,7 @@ import numpy as np
 import xarray as xr
 from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, WithJsonSchema, model_validator
 
+from stillground.counted import counted
 from stillground.errors import SurveyError
 from stillground.grid import Grid
 from stillground.ground import Ground
@@ -353,13 +354,16 @@ def _told(scene: InductionScene, frequency: float | None, rows: Integers) -> Ind
     negative = data <= 0
     if negative.any():
         doubts.append(
-            f"{int(negative.sum())} readings are zero or negative (row {rows[negative][0]}"
-            f"{' first' if negative.sum() > 1 else ''}); they are kept: look for metal and for the zero of "
-            f"the instrument"
+            f"{counted(int(negative.sum()), 'reading is', 'readings are')} zero or negative "
+            f"(row {rows[negative][0]}{' first' if negative.sum() > 1 else ''}) and kept: look for metal and "
+            f"for the zero of the instrument"
         )
     odd = int(np.sum((size > 0) & ((size < _PLAUSIBLE[0]) | (size > _PLAUSIBLE[1]))))
     if odd:
-        doubts.append(f"{odd} readings lie outside 0.01 mS/m to 10 S/m: is the unit of reading right?")
+        doubts.append(
+            f"{counted(odd, 'reading lies', 'readings lie')} outside 0.01 mS/m to 10 S/m: is the unit of "
+            f"reading right?"
+        )
     highest, widest = float(scene.height.max()), float(scene.spacing.max())
     if highest >= _HIGH * widest:
         doubts.append(
@@ -379,9 +383,10 @@ def _told(scene: InductionScene, frequency: float | None, rows: Integers) -> Ind
         said = f"coil spacing over skin depth is at most {number[worst]:.2g} (row {rows[worst]})"
         facts.append(said)
         if number[worst] > _LARGE_NUMBER:
+            lower = counted(int(np.sum(number > _LARGE_NUMBER)), "reading is", "readings are")
             doubts.append(
-                f"{said}, above {_LARGE_NUMBER:g}: {int(np.sum(number > _LARGE_NUMBER))} readings are lower "
-                f"than the response assumes, by 11 % at {_LARGE_NUMBER:g} with vertical dipoles and 5 % with "
+                f"{said}, above {_LARGE_NUMBER:g}: {lower} lower than the response assumes, by 11 % "
+                f"at {_LARGE_NUMBER:g} with vertical dipoles and 5 % with "
                 f"horizontal ones"
             )
     return replace(scene, facts=tuple(facts), doubts=tuple(doubts))
@@ -395,10 +400,11 @@ def _informative(scene: InductionScene, deviation: float) -> str:
         scene.height[here], scene.spacing[here], scene.vertical[here], scene.errors[here], deviation
     )
     shown = ", ".join(f"{value:.2g}" for value in values[:_SHOWN])
+    readings = counted(here.size, "reading", "readings")
     return (
-        f"{int(np.sum(values > 1))} of the {here.size} readings of a station are informative: singular "
-        f"values {shown} (in errors; above 1 is signal) on level ground whose conductivity scatters by "
-        f"{1000 * deviation:.3g} mS/m, correlated over {scene.spacing[here].min():.3g} m"
+        f"informative at a station: {int(np.sum(values > 1))} of {readings}, "
+        f"singular values {shown} (in errors; above 1 is signal) on level ground whose conductivity scatters "
+        f"by {1000 * deviation:.3g} mS/m, correlated over {scene.spacing[here].min():.3g} m"
     )
 
 

@@ -13,6 +13,7 @@ import xarray as xr
 from numpy.typing import NDArray
 from pydantic import AfterValidator, BaseModel, ConfigDict, Field, model_validator
 
+from stillground.counted import counted
 from stillground.errors import GridError, SurveyError
 from stillground.grid import Grid, carry
 from stillground.ground import Ground
@@ -306,7 +307,8 @@ def _doubts(survey: xr.Dataset, size: Array, seen: NDArray[np.bool_]) -> tuple[s
     if blind.size:
         listed = ", ".join(str(row) for row in blind[:5])
         said.append(
-            f"{blind.size} data have a kernel of zeros and see nothing (row {listed}): is that right?"
+            f"{counted(blind.size, 'datum has', 'data have')} a kernel of zeros, which sees nothing "
+            f"(row {listed}): is that right?"
         )
     if not seen.any():
         said.append("no kernel sees a constant ground: ground.background is taken as 0, give a value")

@@ -10,6 +10,7 @@ import numpy as np
 import xarray as xr
 from pydantic import BaseModel, ConfigDict, Field
 
+from stillground.counted import counted
 from stillground.errors import SurveyError
 from stillground.grid import Grid
 from stillground.ground import Ground
@@ -177,7 +178,8 @@ def _above(surface: tuple[Array, Array] | None, places: Array) -> tuple[str, ...
     if surface is None:
         return ()
     above = int(np.sum(places[:, 1] > np.interp(places[:, 0], *surface) + 0.1))
-    said = f"{above} positions of the table stand above the surface: z is elevation, up"
+    standing = counted(above, "position of the table stands", "positions of the table stand")
+    said = f"{standing} above the surface: z is elevation, up"
     return (said,) if above else ()
 
 

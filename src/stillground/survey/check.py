@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 import xarray as xr
+from numpy.typing import NDArray
 
 from stillground.errors import SurveyError
 from stillground.protocols import Array
@@ -16,7 +17,7 @@ from stillground.survey.faults import label, list_rows, row_numbers, source_of, 
 
 # Outliers are called so past 5 robust standard deviations; 1.4826 turns the median absolute
 # deviation of a normal distribution into its standard deviation (Hampel 1974).
-_SUSPICIOUS = 5 * 1.4826
+_DEVIATION, _SUSPICIOUS = 1.4826, 5.0
 _SAME_PLACE = 1e-6
 
 
@@ -33,7 +34,8 @@ class SurveyReport:
         Groups of rows of one line that measure the same thing again.
     suspicious : tuple of (int, float)
         Rows whose time over straight distance (s m-1, given) lies more than 5 robust standard
-        deviations off the median of their line.
+        deviations off the median of their line, and one or more beyond the rest of it: ground that grows
+        faster downwards has a tail, without a gap.
     ranges : mapping of str to (float, float)
         Smallest and largest value of each number column, SI.
     errors : str
@@ -247,9 +249,17 @@ def _suspicious(ds: xr.Dataset) -> tuple[tuple[int, float], ...]:
     slowness = ds["time"].values / distances
     found: list[tuple[int, float]] = []
     for group in _lines(ds).values():
-        deviation = np.abs(slowness[group] - np.median(slowness[group]))
+        middle = np.median(slowness[group])
+        away = slowness[group] - middle
         # Times of uniform ground may agree to the last digit but one.
-        limit = max(_SUSPICIOUS * np.median(deviation), 1e-9 * np.median(slowness[group]))
-        rows = group[deviation > limit]
+        deviation = max(_DEVIATION * np.median(np.abs(away)), 1e-9 / _SUSPICIOUS * middle)
+        rows = group[_apart(away / deviation) | _apart(-away / deviation)]
         found += zip(row_numbers(ds)[rows].tolist(), slowness[rows].tolist(), strict=True)
     return tuple(sorted(found))
+
+
+def _apart(away: Array) -> NDArray[np.bool_]:
+    """Which values lie past the limit and past a gap of one from all that are smaller."""
+    order = np.sort(away)
+    gaps = np.flatnonzero((order[1:] > _SUSPICIOUS) & (np.diff(order) > 1))
+    return away >= order[gaps[0] + 1] if gaps.size else np.zeros(away.shape, dtype=bool)

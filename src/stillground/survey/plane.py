@@ -154,7 +154,7 @@ def require_plausible(ds: xr.Dataset, section: Section) -> None:
 
 
 def out_of_plane(ds: xr.Dataset, section: Section, tolerance: float | None = None) -> tuple[float, int]:
-    """Largest distance of a position off the section plane, and the row that has it.
+    """Largest distance of a position off the section plane, 0 within rounding, and the row that has it.
 
     Parameters
     ----------
@@ -181,4 +181,4 @@ def out_of_plane(ds: xr.Dataset, section: Section, tolerance: float | None = Non
                 f"split the survey in straight lines (column line), or allow more with physics.out_of_plane"
             ],
         )
-    return distance, row
+    return distance if distance > _COINCIDE else 0.0, row
