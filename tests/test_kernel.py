@@ -292,7 +292,7 @@ same = np.asarray
 @pytest.mark.parametrize(
     ("spoil", "overrides", "message"),
     [
-        (lambda f, n, k: (f / "kernel.csv").unlink(), [], r"kernel.csv: there is no such file"),
+        (lambda f, n, k: (f / "kernel.csv").unlink(), [], r"kernel.csv: there is .*; mend physics.kernel"),
         (with_(same, lambda k: k[:5]), [], r"kernel.csv: it has 5 kernels, and .*data.csv has 7 data"),
         (with_(lambda n: n**2, same), [], r"kernel.csv: nodes along elevation must be evenly spaced, 0.0156"),
         (with_(lambda n: n[:2], lambda k: k[:, :2]), [], r"elevation needs 3 nodes or more at finite places"),
@@ -312,6 +312,7 @@ same = np.asarray
             r"attributes of kernel: 'crs' cannot name a variable",
         ),
         (units, [], r"column value is in 'mS/m', but the kernels make data in '1': physics.data_units must"),
+        (lambda f, n, k: (f / "k.nc").write_bytes(b"\x89HDF junk"), ["physics.kernel=k.nc"], "file again"),
         (nothing, ["physics.kernel=ground.csv"], r"ground.csv: there is no such file"),
         (nothing, ["physics.property=elevation"], r"physics.property: 'elevation' cannot name a variable"),
         (nothing, ["physics.units=furlong per"], r"physics.units: unknown unit 'furlong per'"),

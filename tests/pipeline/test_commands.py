@@ -43,12 +43,13 @@ def rewrite(path: Path, before: str, after: str) -> None:
 @pytest.mark.parametrize(
     ("before", "after", "told"),
     [
-        ('files = ["small.csv"]', 'files = ["no.csv"]', "no.csv: there is no such file"),
+        ('files = ["small.csv"]', 'files = ["no.csv"]', "no.csv); mend survey.files"),
         ('spacing = "0.25 m"', 'spacing = "20 m"', "is larger than the survey small"),
         ('spacing = "0.25 m"', 'spacing = "2 m"', "take a smaller ground.spacing"),
         ('spacing = "0.25 m"', 'spacing = "0.1 mm"', "this machine has"),
         ("[solver]", "depth = \"2 m\"\n[solver]", "ground.depth: 2 m reach down to -2.5 m"),
-        ("[ground]", "[physics]\nsurface = \"no.csv\"\n[ground]", "no.csv"),
+        ("[ground]", "[physics]\nsurface = \"no.csv\"\n[ground]", "no.csv); mend physics.surface"),
+        ("[ground]", "[[overlay]]\nfile = \"no.csv\"\n[ground]", "no.csv); mend overlay.file"),
         ("[ground]", "[ground]\nspacng = 1", "did you mean 'spacing'?"),
     ],
 )  # fmt: skip

@@ -21,7 +21,7 @@ from stillground.operators.kernel_integrals import KernelIntegrals
 from stillground.protocols import Array, GroundProperty, Kind, Measurement, Scene
 from stillground.protocols import Field as GroundField
 from stillground.quadrature import RULES
-from stillground.survey import row_numbers, source_of, to_si
+from stillground.survey import require_file, row_numbers, source_of, to_si
 from stillground.survey.kernels import LAYOUTS, kernel_layout, read_kernels
 from stillground.survey.quantities import InputPath
 
@@ -182,6 +182,7 @@ class Kernel(Kind):
         SurveyError
             When the file is missing, or says what cannot be used.
         """
+        require_file(settings.kernel, "physics.kernel")
         axes, said = kernel_layout(settings.kernel)
         try:
             name = settings.property or _name(said.get("property", "property"))

@@ -19,7 +19,7 @@ from stillground.physics import first_arrivals
 from stillground.physics.shot_section import shot_section
 from stillground.protocols import Array, Extra, Integers, Kind, Measurement, Scene
 from stillground.protocols import Field as GroundField
-from stillground.survey import Section, read_surface
+from stillground.survey import Section, read_surface, require_file
 from stillground.survey.quantities import InputPath, Length
 
 # Prior standard deviation of the anisotropy: sediments seldom pass a tenth (common practice, no source).
@@ -144,6 +144,7 @@ class StraightRay(Kind):
         data, errors = first_arrivals.times(survey)
         surface = None
         if settings.surface is not None:
+            require_file(settings.surface, "physics.surface")
             surface = read_surface(settings.surface, placed.section, placed.corridor)
             _require_below(settings.surface, surface, everywhere)
         return RayScene(

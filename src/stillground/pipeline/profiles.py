@@ -9,7 +9,7 @@ import xarray as xr
 from stillground.config import Config
 from stillground.errors import ConfigError, SurveyError
 from stillground.protocols import Known, Scene
-from stillground.survey import SurveyReport, check, profiles, read, read_known
+from stillground.survey import SurveyReport, check, profiles, read, read_known, require_file
 
 
 @dataclass(frozen=True)
@@ -37,6 +37,7 @@ def read_profiles(config: Config) -> tuple[Profile, ...]:
     refused: list[SurveyError] = []
     for path in config.survey.files:
         try:
+            require_file(path, "survey.files")
             table = read(
                 path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns
             )
@@ -59,6 +60,8 @@ def read_profiles(config: Config) -> tuple[Profile, ...]:
 
 def read_overlays(config: Config) -> tuple[Known, ...]:
     """Reads the known ground that is to be set beside the answer; `SurveyError` for a faulty table."""
+    for one in config.overlay:
+        require_file(one.file, "overlay.file")
     return tuple(read_known(one.file, config.kind.ground_property) for one in config.overlay)
 
 

@@ -12,7 +12,7 @@ from stillground.config.settings import SimulateSettings
 from stillground.errors import ConfigError, OutputError
 from stillground.ground import Blob, Body, Box, Disc, Ground, Layer
 from stillground.pipeline.profiles import checked
-from stillground.survey import column, profiles, read, write_table
+from stillground.survey import column, profiles, read, require_file, write_table
 from stillground.survey.columns import error_of
 
 
@@ -92,6 +92,7 @@ def _planned(config: Config, settings: SimulateSettings) -> xr.Dataset:
         places = " and ".join(kind.Plan.model_fields)
         raise ConfigError(f"simulate: give {places}, or one table in survey.files to take places from")
     path = config.survey.files[0]
+    require_file(path, "survey.files")
     table = read(path, columns=config.survey.columns, units=config.survey.units, expected=kind.columns)
     usable, _ = checked(table, config)
     return usable.drop_vars([kind.datum, error_of(kind.datum)])

@@ -19,6 +19,7 @@ from stillground.survey.plane import (
 from stillground.survey.polyline import Polyline, through_stations
 from stillground.survey.read import profiles, read
 from stillground.survey.surface import read_surface
+from stillground.survey.table import require_file
 from stillground.survey.units import quantity, to_si
 from stillground.survey.velocities import read_velocities
 from stillground.survey.write import write_table
@@ -41,6 +42,7 @@ __all__ = [
     "read_known",
     "read_surface",
     "read_velocities",
+    "require_file",
     "require_plausible",
     "row_numbers",
     "source_of",

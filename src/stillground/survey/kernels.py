@@ -122,7 +122,7 @@ def _opened(path: Path) -> xr.Dataset:
     try:
         return xr.open_dataset(path, engine="netcdf4", decode_times=False, decode_timedelta=False)
     except (OSError, RuntimeError, ValueError) as error:
-        raise SurveyError(str(path), [f"cannot be read as NetCDF: {error}"]) from error
+        raise SurveyError(str(path), [f"damaged or no NetCDF: get the file again ({error})"]) from error
 
 
 def _kernel(path: Path, ds: xr.Dataset) -> xr.DataArray:

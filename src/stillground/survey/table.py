@@ -85,6 +85,26 @@ def is_netcdf(path: str | Path) -> bool:
         raise SurveyError(str(path), [f"cannot be read: {error.strerror}"]) from error
 
 
+def require_file(path: Path, key: str) -> None:
+    """Refuse a setting that names a file which is not there.
+
+    Parameters
+    ----------
+    path : Path
+    key : str
+        Of the setting, whose paths are relative to the configuration.
+
+    Raises
+    ------
+    SurveyError
+    """
+    if not path.exists():
+        tried = path.resolve()
+        raise SurveyError(
+            str(path), [f"there is no such file ({tried}); mend {key}, relative to the configuration"]
+        )
+
+
 def _csv(source: str, content: bytes, numbers: bool) -> RawTable:
     lines = _lines(source, content)
     first = next(lines, None)
@@ -175,7 +195,7 @@ def _netcdf(source: str) -> RawTable:
         with xr.open_dataset(source, engine="netcdf4", decode_times=False, decode_timedelta=False) as opened:
             ds = opened.load()
     except (OSError, RuntimeError, ValueError) as error:
-        raise SurveyError(source, [f"cannot be read as NetCDF: {error}"]) from error
+        raise SurveyError(source, [f"damaged or no NetCDF: get the file again ({error})"]) from error
     variables = {str(name): variable for name, variable in ds.variables.items() if variable.ndim > 0}
     layouts = {variable.dims for variable in variables.values()}
     if len(layouts) != 1 or len(next(iter(layouts))) != 1:
