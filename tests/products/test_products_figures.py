@@ -284,7 +284,10 @@ def test_the_apparent_property_is_drawn_as_people_read_it_against_what_the_kind_
     (axes,) = figure.axes[2:]
     np.testing.assert_allclose(axes.lines[0].get_xdata(), length)
     np.testing.assert_allclose(axes.lines[0].get_ydata(), length / result.observed)
-    assert (axes.get_xlabel(), axes.get_ylabel()) == ("offset (m)", "apparent velocity (m s⁻¹)")
+    assert (axes.get_xlabel(), axes.get_ylabel()) == (
+        "offset (m)",
+        "apparent velocity (m\N{NO-BREAK SPACE}s⁻¹)",
+    )
     assert write_figure(tmp_path, "survey", figure)[0].stat().st_size > 10_000
 
 

@@ -132,7 +132,10 @@ def test_positions_stand_on_the_left_edge_and_the_average_in_the_title(column: R
     figure.draw_without_rendering()
     at = axes.transAxes.inverted().transform(sources.get_transform().transform(sources.get_xydata()))
     np.testing.assert_allclose(at, [[0, 1]], atol=1e-9)
-    assert "Average velocity down to 10 m: 1667 m s⁻¹, ± 5.6 (total error)" in axes.get_title(loc="left")
+    assert (
+        "Average velocity down to 10 m: 1667 m\N{NO-BREAK SPACE}s⁻¹, ± 5.6 (total error)"
+        in axes.get_title(loc="left")
+    )
 
 
 def test_averages_are_told_as_people_read_them(column: Result) -> None:
@@ -192,7 +195,7 @@ def test_the_survey_figure_draws_the_coverage_beside_the_positions(column: Resul
     )
     assert figure.axes[0].get_xlabel() == "ray length per elevation"
     np.testing.assert_array_equal(figure.axes[0].lines[0].get_xdata(), column.coverage.values)
-    assert figure.axes[1].get_ylabel() == "apparent velocity (m s⁻¹)"
+    assert figure.axes[1].get_ylabel() == "apparent velocity (m\N{NO-BREAK SPACE}s⁻¹)"
 
 
 def test_no_words_leave_the_sheet_or_cover_each_other(column: Result, tmp_path: Path) -> None:

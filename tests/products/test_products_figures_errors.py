@@ -110,7 +110,7 @@ def test_a_property_without_a_reciprocal_keeps_its_unit(sound: Result) -> None:
         shown_change(plain.property, plain.model, plain.noise_part), plain.noise_part
     )
     figure = errors_figure("line", plain, tolerance=0.02, surface=None)
-    assert "of conductivity (S m⁻¹)" in [axes.get_xlabel() for axes in figure.axes]
+    assert "of conductivity (S\N{NO-BREAK SPACE}m⁻¹)" in [axes.get_xlabel() for axes in figure.axes]
 
 
 def test_bars_are_as_long_as_the_picture_moves(result: Result, surface: Any) -> None:

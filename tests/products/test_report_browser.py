@@ -233,7 +233,7 @@ def test_the_readout_tells_the_value_of_the_file(page: Browser) -> None:
             assert state["value"] == pytest.approx(truth, abs=0.02)
             told = page.run("return arguments[0].textContent", page.part("readout"))
             assert f"{truth:.5g}" in told.replace("−", "-") or f"{truth:.4g}" in told
-            assert "m s⁻¹" in told
+            assert "m\N{NO-BREAK SPACE}s⁻¹" in told
     page.set("slider", 1)
     page.point_at((44, 30))
     assert "display rounding" in page.run("return arguments[0].textContent", page.part("readout"))
@@ -288,7 +288,7 @@ def test_keys_move_slider_and_probe(page: Browser) -> None:
     assert page.state()["probe"] == [row - 9, column + 1]
     time.sleep(0.6)
     assert "velocity" not in page.part("status").text
-    assert "m s⁻¹" in page.run("return arguments[0].textContent", page.part("status"))
+    assert "m\N{NO-BREAK SPACE}s⁻¹" in page.run("return arguments[0].textContent", page.part("status"))
 
 
 def test_veil_difference_and_spread_change_the_picture(page: Browser) -> None:

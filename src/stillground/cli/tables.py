@@ -21,6 +21,7 @@ from stillground.products.overlay import overlay_sentence
 from stillground.products.provenance import CAUTION
 from stillground.products.reading import shown
 from stillground.products.reliability import MESH_DEPENDENT, NO_DATA
+from stillground.products.units import with_unit
 from stillground.protocols import Choice, Ladder, Rehearsal, Result, Sensitivity
 from stillground.survey import SurveyReport, to_si
 
@@ -70,13 +71,15 @@ def profile(done: Done) -> None:
     if result.sensitivity is not None:
         _sensitivity(result.sensitivity)
     for name, found in result.extras.items():
-        values, units = found.values, _with_space(found.units)
+        values, units = found.values, found.units
         if values.size > 1:
-            say(f"{name}: rms {np.sqrt(np.mean(values**2)):.3g}, largest {np.abs(values).max():.3g}{units}")
+            largest = with_unit(f"{np.abs(values).max():.3g}", units)
+            say(f"{name}: rms {np.sqrt(np.mean(values**2)):.3g}, largest {largest}")
         elif found.deviation is None:
-            say(f"{name}: {values[0]:.3g}{units}")
+            say(f"{name}: {with_unit(f'{values[0]:.3g}', units)}")
         else:
-            say(f"{name}: {values[0]:.3g} +- {found.deviation:.2g}{units} (one standard deviation)")
+            told = with_unit(f"{values[0]:.3g} +- {found.deviation:.2g}", units)
+            say(f"{name}: {told} (one standard deviation)")
     averages = read_averages(result)
     for mean in averages:
         say(mean.sentence)
@@ -102,11 +105,7 @@ def profile(done: Done) -> None:
 def _background(result: Result) -> str:
     values, _, units = shown(result.property, result.background)
     least, most = f"{values.min():.4g}", f"{values.max():.4g}"
-    return (least if least == most else f"{least} to {most}") + _with_space(units)
-
-
-def _with_space(units: str) -> str:
-    return "" if units == "1" else f" {units}"
+    return with_unit(least if least == most else f"{least} to {most}", units)
 
 
 def _rules(choices: tuple[Choice, ...], chosen: Choice) -> None:

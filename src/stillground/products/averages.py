@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from stillground.products.reading import read_as, shown, shown_change
+from stillground.products.units import with_unit
 from stillground.protocols import Result
 
 
@@ -38,7 +39,8 @@ class ReadAverage:
         if self.total_error is not None:
             error, kind = self.total_error, "total error"
         bar = "" if math.isnan(error) else f", ± {error:.2g} ({kind})"
-        return f"average {self.of} {self.over}: {self.value:.4g} {self.units}{bar}"
+        value = with_unit(f"{self.value:.4g}", self.units)
+        return f"average {self.of} {self.over}: {value}{bar}"
 
 
 def read_averages(result: Result) -> tuple[ReadAverage, ...]:

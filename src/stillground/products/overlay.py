@@ -12,6 +12,7 @@ import pandas as pd
 import xarray as xr
 
 from stillground.products.reading import shown, shown_change
+from stillground.products.units import with_unit
 from stillground.protocols import Array, GroundProperty, Known
 from stillground.whole import whole
 
@@ -58,9 +59,10 @@ def overlay_sentence(found: Mapping[str, Any]) -> str:
         said += f" ({found['out_of_reach']} out of reach)"
     if not found["compared"]:
         return f"{said}, none with a value to compare"
+    rms = with_unit(f"{found['rms_difference']:.3g}", found["units"])
     return (
         f"{said}, {found['compared']} compared: root mean square difference "
-        f"{found['rms_difference']:.3g} {found['units']}, {100 * found['within_two_errors']:.0f} % within "
+        f"{rms}, {100 * found['within_two_errors']:.0f} % within "
         f"two error bars ({found['error']})"
     )
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from stillground.products.units import with_unit
 from stillground.protocols import Result
 
 RELIABLE, MESH_DEPENDENT, POORLY_COVERED, NO_DATA = 0, 1, 2, 127
@@ -53,8 +54,9 @@ def reliability_comment(result: Result, tolerance: float) -> str:
     if result.rehearsal is not None:
         limits += f", or resolved_fraction under {LEAST_RESOLVED:g}"
     unjudged = "" if result.rehearsal is not None else " What comes back was not rehearsed."
+    anomaly = with_unit(f"{result.anomaly:.6g}", result.property.units)
     return (
         f"mesh_dependent: mesh_change above {tolerance:g} of the rms anomaly, "
-        f"{result.anomaly:.6g} {result.property.units}; not judged where there is one rung only. "
+        f"{anomaly}; not judged where there is one rung only. "
         f"poorly_covered: {limits}.{unjudged}"
     )

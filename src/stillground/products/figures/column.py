@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 from matplotlib.artist import Artist
@@ -15,11 +16,12 @@ from stillground.products.figures.curves import draw_band, draw_curve, frame_col
 from stillground.products.figures.field import hatch_key
 from stillground.products.figures.known import draw_known_beside
 from stillground.products.figures.positions import draw_positions, position_key
-from stillground.products.figures.sheet import FOOT, HEADING, TEAL, panel, sheet, styled, unit_text
+from stillground.products.figures.sheet import FOOT, HEADING, TEAL, panel, sheet, styled
 from stillground.products.overlay import Overlay
 from stillground.products.raster import Surface, ground
 from stillground.products.reading import shown, shown_change
 from stillground.products.reliability import RELIABLE, reliability
+from stillground.products.units import labelled, unit_text
 from stillground.protocols import Array, Differences, Result
 
 SIZE = (5.6, 5.6)
@@ -66,7 +68,7 @@ def column_figure(
         error, band = result.rehearsal.total_error, "± total error"
     spread = shown_change(result.property, result.model, error)
 
-    averages = [unit_text(mean.sentence) for mean in read_averages(result)]
+    averages = [replace(mean, units=unit_text(mean.units)).sentence for mean in read_averages(result)]
     verdict, chosen = result.ladder.verdict, result.chosen
     bottom = FOOT + 1.1
     figure = sheet(
@@ -94,7 +96,7 @@ def column_figure(
     sure = inside & (flags == RELIABLE) if (flags == RELIABLE).any() else inside
     axes.set(
         xlim=_limits((values - spread)[sure], (values + spread)[sure], values[sure], steps),
-        xlabel=f"{long_name} ({unit_text(units)})",
+        xlabel=labelled(long_name, units),
         ylabel="elevation (m)",
         title="\n".join(
             [

@@ -21,6 +21,7 @@ from stillground.products.figures.sheet import FOOT, HEADING, INK, sheet, styled
 from stillground.products.raster import Surface, ground
 from stillground.products.reading import shown_change
 from stillground.products.reliability import reliability
+from stillground.products.units import labelled, with_unit
 from stillground.protocols import Result
 
 ROOM = (6.5, 6.6)
@@ -52,11 +53,11 @@ def errors_figure(profile: str, result: Result, *, tolerance: float, surface: Su
     else:
         errors["Total error"] = shown_change(seen, result.model, rehearsal.total_error)
         said += ". Total error: root mean square on synthetic ground drawn from the prior"
-    said += f". Rms anomaly: {shown_anomaly(result):.3g} {units}"
+    anomaly = f"{shown_anomaly(result):.3g}"
+    said += f". Rms anomaly: {with_unit(anomaly, units)}"
     scale = error_scale(result, list(errors.values()), flags)
-    maps = [
-        Map(title, f"of {name} ({units})", values, scale, ERROR_COLOURS) for title, values in errors.items()
-    ]
+    label = labelled(f"of {name}", units)
+    maps = [Map(title, label, values, scale, ERROR_COLOURS) for title, values in errors.items()]
     lines = []
     if rehearsal is not None:
         lines = [Line2D([], [], color=INK, lw=0.8, label="half comes back")]

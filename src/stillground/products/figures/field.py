@@ -19,10 +19,11 @@ from matplotlib.patches import Patch, Polygon
 from numpy.typing import NDArray
 
 from stillground.products.figures.aspect import exaggeration, proportions
-from stillground.products.figures.sheet import FOOT, INK, PAPER, unit_text
+from stillground.products.figures.sheet import FOOT, INK, PAPER
 from stillground.products.raster import Surface, altitude, carried_up, raster
 from stillground.products.reading import read_as
 from stillground.products.reliability import MESH_DEPENDENT, POORLY_COVERED, RELIABLE
+from stillground.products.units import unit_text
 from stillground.protocols import Array, GroundProperty
 
 FIELD_COLOURS = colormaps["cividis"]
@@ -32,7 +33,7 @@ HATCH_NAMES = {POORLY_COVERED: "poorly covered", MESH_DEPENDENT: "depends on the
 
 
 def shown_name(seen: GroundProperty) -> tuple[str, str]:
-    """Name and units of what people read, as ``velocity`` and ``m s⁻¹``."""
+    """Name and units of what people read, as ``velocity`` and ``m s⁻¹``; no units for pure numbers."""
     name, units = read_as(seen)
     return name.replace("_", " "), unit_text(units)
 

@@ -20,12 +20,12 @@ from stillground.products.figures.sheet import (
     panel,
     sheet,
     styled,
-    unit_text,
 )
 from stillground.products.ladder import rung_spacing
 from stillground.products.raster import Surface, ground
 from stillground.products.reading import shown
 from stillground.products.reliability import NO_DATA, RELIABLE, reliability
+from stillground.products.units import labelled
 from stillground.protocols import Ladder, Result
 
 MAPS = (3.7, 3.5)
@@ -197,7 +197,7 @@ def _curves(
     room = 0.08 * (high - low)
     axes.set(
         xlim=(low - room, high + room),
-        xlabel=f"{long_name} ({unit_text(units)})",
+        xlabel=labelled(long_name, units),
         ylabel="elevation (m)",
         title="the rungs over one another",
     )

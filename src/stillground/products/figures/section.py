@@ -12,11 +12,12 @@ from stillground.products.figures.field import FIELD_COLOURS, colour_scale, draw
 from stillground.products.figures.known import draw_known
 from stillground.products.figures.positions import draw_positions, position_key
 from stillground.products.figures.rays import draw_rays
-from stillground.products.figures.sheet import FOOT, HEADING, panel, sheet, styled, unit_text
+from stillground.products.figures.sheet import FOOT, HEADING, panel, sheet, styled
 from stillground.products.overlay import Overlay
 from stillground.products.raster import Surface, ground
 from stillground.products.reading import shown
 from stillground.products.reliability import reliability
+from stillground.products.units import labelled
 from stillground.protocols import Array, Result
 
 LARGEST = (6.4, 5.6)
@@ -80,7 +81,7 @@ def section_figure(
     bar = figure.colorbar(
         ScalarMappable(scale, FIELD_COLOURS), cax=panel(figure, left + width + 0.18, bottom, 0.14, height)
     )
-    bar.set_label(f"{long_name} ({unit_text(units)})")
+    bar.set_label(labelled(long_name, units))
     bar.outline.set_linewidth(0.5)
 
     signs = [*position_key(positions), *rays]

@@ -30,6 +30,7 @@ from stillground.products.figures.sheet import (
 from stillground.products.raster import Surface, ground
 from stillground.products.reading import shown_change
 from stillground.products.reliability import reliability
+from stillground.products.units import labelled
 from stillground.protocols import Result, Variation
 
 ROOM = (3.8, 5.2)
@@ -63,7 +64,7 @@ def sensitivity_figure(profile: str, result: Result, *, tolerance: float, surfac
     maps = [
         Map(
             "Spread by lengths, smoothness",
-            f"of {name} ({units})",
+            labelled(f"of {name}", units),
             spread,
             error_scale(result, [spread], flags),
             ERROR_COLOURS,

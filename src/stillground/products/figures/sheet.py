@@ -113,7 +113,8 @@ def fitted(text: str, size: float, weight: str, room: float, n_lines: int) -> st
         """How many characters of the line fit, with the ending after them."""
         return bisect_right(range(1, len(line) + 1), room, key=lambda n: width(line[:n] + ending))
 
-    rest = " ".join(text.split())
+    # Not at spaces that hold a unit together.
+    rest = re.sub(r"[ \n\t]+", " ", text).strip(" ")
     lines: list[str] = []
     while longest(rest, "") < len(rest):
         if len(lines) == n_lines - 1:
@@ -125,18 +126,6 @@ def fitted(text: str, size: float, weight: str, room: float, n_lines: int) -> st
         lines.append(rest[:end])
         rest = rest[end:].lstrip()
     return "\n".join([*lines, rest])
-
-
-def unit_text(units: str) -> str:
-    """UDUNITS text as people write it.
-
-    Examples
-    --------
-    >>> unit_text("m s-1")
-    'm s⁻¹'
-    """
-    raised = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
-    return re.sub(r"(?<=[A-Za-z])-?\d+", lambda power: power.group().translate(raised), units)
 
 
 def write_figure(folder: Path, name: str, figure: Figure) -> tuple[Path, Path]:

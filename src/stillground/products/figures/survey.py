@@ -14,9 +14,10 @@ from stillground.products.figures.aspect import elevation_label, proportions
 from stillground.products.figures.curves import draw_curve, frame_column
 from stillground.products.figures.field import colour_scale, draw_field, shown_name
 from stillground.products.figures.positions import draw_positions
-from stillground.products.figures.sheet import FOOT, HEADING, INK, TEAL, panel, sheet, styled, unit_text
+from stillground.products.figures.sheet import FOOT, HEADING, INK, TEAL, panel, sheet, styled
 from stillground.products.raster import Surface, ground
 from stillground.products.reading import shown
+from stillground.products.units import labelled
 from stillground.protocols import Array, Field, GroundProperty, Integers
 
 # Not the colours of the ground's properties: coverage says how well, not what.
@@ -63,7 +64,7 @@ def survey_figure(
         if drawn.size == n_data or paths is None or len(nodes) == 1
         else f", {drawn.size} of their rays drawn"
     )
-    covered = coverage.long_name + ("" if coverage.units == "1" else f" ({unit_text(coverage.units)})")
+    covered = labelled(coverage.long_name, coverage.units)
     bottom = FOOT + 0.5
     figure = sheet(
         7.4,
@@ -87,7 +88,7 @@ def survey_figure(
     apparent = shown(seen, apparent)[0]
     known = apparent[np.isfinite(apparent)]
     name, units = shown_name(seen)
-    label = f"apparent {name} ({units})"
+    label = labelled(f"apparent {name}", units)
     rows = max(len(against), 1)
     height = (PICTURE[1] + 0.75) / rows - 0.75
     for row, (beside, values) in enumerate(against.items()):

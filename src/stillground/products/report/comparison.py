@@ -19,6 +19,7 @@ from stillground.products.report.folder import Profile, Results, read_results
 from stillground.products.report.ground import CHANGE, Frame, Ground, ground_of
 from stillground.products.report.page import frame_data, numbers, rendered, write_page
 from stillground.products.report.picture import Sight, large
+from stillground.products.units import labelled, with_unit
 from stillground.protocols import Array
 
 # Traces of one line may lie apart by this share of its length.
@@ -85,9 +86,9 @@ def common(first: Profile, second: Profile) -> Common:
     name = first.entry.name
     if (one.long_name, one.units, first.dims) != (other.long_name, other.units, second.dims):
         raise ResultError(
-            f"profile '{name}' is of {one.long_name} ({one.units}) on {', '.join(first.dims)} in one result "
-            f"and of {other.long_name} ({other.units}) on {', '.join(second.dims)} in the other: "
-            f"they do not compare"
+            f"profile '{name}' is of {labelled(one.long_name, one.units)} on {', '.join(first.dims)} "
+            f"in one result and of {labelled(other.long_name, other.units)} on {', '.join(second.dims)} "
+            f"in the other: they do not compare"
         )
     axes = [(one.frame.elevation[::-1], other.frame.elevation[::-1])]
     if one.frame.distance is not None:
@@ -161,17 +162,20 @@ def _pair(first: Profile, second: Profile, number: int) -> dict[str, Any]:
     both = common(first, second)
     ground, unit = both.first, both.first.units
     reliable = ground.inside & (ground.flags == RELIABLE)
-    used = reliable if reliable.any() else ground.inside
+    used, where = reliable, "Over the ground that is reliable in both,"
+    if not reliable.any():
+        used, where = ground.inside, "No ground is reliable in both; over all that both have"
     change = max(
         float(np.percentile(np.abs(both.difference[used]), 99)), 1e-3 * (ground.scale[1] - ground.scale[0])
     )
     anomaly = float(np.std(ground.model[used]))
     moved = float(np.sqrt(np.mean(both.difference[used] ** 2)))
-    label = f"{ground.name} ({unit})"
+    label = ground.label
+    less = labelled("B less A", unit)
     sights = [
         Sight(model, ground.scale, label, f"{ground.long_name} of {name}")
         for name, model in zip(_NAMES, (ground.model, both.second), strict=True)
-    ] + [Sight(both.difference, (-change, change), f"B less A ({unit})", "difference, B less A", CHANGE)]
+    ] + [Sight(both.difference, (-change, change), less, "difference, B less A", CHANGE)]
     stacks = {
         "pair": pack(np.stack([ground.model, both.second, both.difference]), 2),
         "flags": pack(ground.flags[np.newaxis].astype(float), 1),
@@ -183,7 +187,7 @@ def _pair(first: Profile, second: Profile, number: int) -> dict[str, Any]:
         "numbers": [numbers(entry) for entry in entries],
         "ground": ground,
         "static": [large(ground, sight, {}) for sight in sights],
-        "said": f"Over the ground that is reliable in both, the pictures differ by {moved:.3g} {unit} (rms)"
+        "said": f"{where} the pictures differ by {with_unit(f'{moved:.3g}', unit)} (rms)"
         + (f", {percent(moved / anomaly)} of the variation of A." if anomaly > 0 else "."),
         "configuration": _changed(first, second),
         "live": {

@@ -11,11 +11,11 @@ from matplotlib import colormaps
 from numpy.typing import NDArray
 
 from stillground.products.figures.aspect import exaggeration
-from stillground.products.figures.sheet import unit_text
 from stillground.products.raster import carried_up
 from stillground.products.reliability import RELIABLE
 from stillground.products.report.encoding import coarser
 from stillground.products.report.folder import Profile
+from stillground.products.units import labelled, unit_text
 from stillground.protocols import Array
 
 FIELD, CHANGE = "cividis", "PuOr"
@@ -125,7 +125,7 @@ class Ground:
     @property
     def label(self) -> str:
         """Of an axis or a colour bar."""
-        return f"{self.name} ({self.units})"
+        return labelled(self.name, self.units)
 
     @property
     def scale(self) -> tuple[float, float]:

@@ -9,11 +9,11 @@ import numpy as np
 import pandas as pd
 from markupsafe import Markup
 
-from stillground.products.figures.sheet import unit_text
 from stillground.products.report.drawing import Chart, limits, minus
 from stillground.products.report.encoding import png
 from stillground.products.report.folder import Profile
 from stillground.products.report.ground import CHANGE, colours
+from stillground.products.units import labelled, unit_text, with_unit
 from stillground.protocols import Array
 
 SIZE = (400.0, 250.0)
@@ -79,7 +79,7 @@ def extra_charts(profile: Profile) -> list[Shown]:
             (400, 180), (0.5, values.size + 0.5), limits(np.append(values, 0.0)), margins=(52, 10, 8, 34)
         )
         said = name.replace("_", " ")
-        chart.frame(f"{said.split()[0]}, in the table's order", f"{said} ({units})")
+        chart.frame(f"{said.split()[0]}, in the table's order", labelled(said, units))
         base = float(chart.up(0.0))
         chart.add("path", class_="axis", d=f"M{chart.left:.1f} {base:.1f}H{chart.right:.1f}")
         stems = "".join(
@@ -89,7 +89,8 @@ def extra_charts(profile: Profile) -> list[Shown]:
         chart.add("path", class_="stem", d=stems)
         chart.dots(number, values, "dot", 3)
         largest = int(np.argmax(np.abs(values)))
-        caption = f"{said}: largest {minus(f'{values[largest]:.3g}')} {units}, number {largest + 1}"
+        highest = with_unit(minus(f"{values[largest]:.3g}"), units)
+        caption = f"{said}: largest {highest}, number {largest + 1}"
         charts.append(Shown(chart.svg(caption), caption))
     return charts
 
@@ -110,7 +111,7 @@ def legible(values: Array, units: str) -> tuple[Array, str]:
         for factor, prefix in ((1.0, ""), (1e3, "m"), (1e6, "µ"), (1e9, "n")):
             if largest * factor >= 1:
                 return np.round(values * factor, 9), prefix + unit_text(units)
-    return values, "" if units == "1" else unit_text(units)
+    return values, unit_text(units)
 
 
 def _matrix(fit: pd.DataFrame, residual: Array, groupings: tuple[str, ...]) -> Shown:
@@ -205,7 +206,7 @@ def _worst(profile: Profile, residual: Array) -> Shown | None:
     order = np.argsort(along[rows], kind="stable")
     x, seen, told = along[rows][order], observed[rows][order], predicted[rows][order]
     chart = Chart(SIZE, limits(x), limits(np.concatenate([seen, told])), margins=(52, 10, 8, 36))
-    chart.frame(label, f"{datum} ({unit})")
+    chart.frame(label, labelled(datum, unit))
     chart.line(x, told)
     chart.dots(x, seen, "observed", 3)
     chart.dots(x, seen, "hollow", 1.8)
@@ -228,7 +229,7 @@ def _offset(profile: Profile) -> Shown | None:
     (observed, predicted), datum, unit = _data(fit)
     x, seen, told = _thinned(offset, observed, predicted)
     chart = Chart(SIZE, limits(x), limits(np.concatenate([seen, told])), margins=(52, 10, 8, 36))
-    chart.frame(f"from {placed[0]} to {placed[1]} (m)", f"{datum} ({unit})")
+    chart.frame(f"from {placed[0]} to {placed[1]} (m)", labelled(datum, unit))
     chart.dots(x, seen, "observed", 2.2)
     chart.dots(x, told, "predicted", 1.1)
     some = "" if x.size == offset.size else f"; {x.size} of {offset.size} data drawn"

@@ -32,6 +32,7 @@ from stillground.products.report.misfits import Shown as FigureShown
 from stillground.products.report.misfits import extra_charts, fit_charts, legible, outliers, places
 from stillground.products.report.picture import Sight, colour_bar, large, small
 from stillground.products.report.rungs import change_chart, rung_pictures
+from stillground.products.units import with_unit
 from stillground.protocols import Array
 from stillground.whole import whole
 
@@ -125,7 +126,7 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
     stop = _number(entry.chosen.iteration)
     said = (
         f"{ground.long_name} at the pick of {entry.chosen.rule}, iteration {stop}: from "
-        f"{ground.model.min():.4g} to {ground.model.max():.4g} {ground.units}; "
+        f"{ground.model.min():.4g} to {with_unit(f'{ground.model.max():.4g}', ground.units)}; "
         f"hatched where it is not reliable"
     )
     band = ground.band
@@ -313,7 +314,7 @@ def _quality(ground: Ground, companion: Companion) -> tuple[Markup, Markup, str,
     """A companion's picture, colour bar, caption and comment."""
     values = companion.values[ground.inside]
     low, high = np.percentile(values, [0, 99])
-    label = companion.units if companion.units not in ("", "1") else "no unit"
+    label = companion.units or "no unit"
     title = companion.long_name[:1].upper() + companion.long_name[1:]
     sight = Sight(companion.values, (min(float(low), 0.0), max(float(high), 1e-12)), label, title)
     return small(ground, sight, _ROOM), colour_bar(sight, 220), title, companion.comment
@@ -337,7 +338,7 @@ def _extras(entry: Entry) -> list[tuple[str, str]]:
         lone = extra.values is not None and len(extra.values) == 1
         pair = (extra.values[0], extra.deviation) if lone and extra.values else (extra.rms, extra.largest)
         values, units = legible(np.array([value or 0.0 for value in pair]), extra.units)
-        first, second = (f"{minus(f'{value:.3g}')} {units}".strip() for value in values)
+        first, second = (with_unit(minus(f"{value:.3g}"), units) for value in values)
         said = f"rms {first}, largest {second}"
         if lone:
             said = first if extra.deviation is None else f"{first}, give or take {second}"

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from stillground.products.figures.field import FADE, resampled
 from stillground.products.figures.sheet import PAPER
 from stillground.products.reliability import MESH_DEPENDENT, POORLY_COVERED, RELIABLE
-from stillground.products.report.drawing import Chart, limits, minus
+from stillground.products.report.drawing import Chart, limits
 from stillground.products.report.encoding import png
 from stillground.products.report.ground import FIELD, Frame, Ground, colours
 from stillground.protocols import Array
@@ -208,14 +208,3 @@ def _column(
 
 def _hex(shade: NDArray[np.uint8]) -> str:
     return "#" + bytes(shade).hex()
-
-
-def scale_text(value: float, units: str) -> str:
-    """A number with its unit, four digits.
-
-    Examples
-    --------
-    >>> scale_text(-1612.34, "m s⁻¹")
-    '−1612 m s⁻¹'
-    """
-    return f"{minus(f'{value:.4g}')} {units}".strip()

@@ -66,6 +66,8 @@ class Stack {
 }
 
 const minus = text => text.replace('-', '\u2212');
+const withUnit = (text, unit) => unit ? `${text} ${unit}` : text;
+const labelled = (name, unit) => unit ? `${name} (${unit})` : name;
 const digits = (value, n = 4) => Number.isFinite(value) ? minus(String(+value.toPrecision(n))) : '\u2013';
 
 function element(name, attributes, text) {
@@ -253,13 +255,21 @@ class Column extends Section {
     const box = this.host.getBoundingClientRect(), down = (event.clientY - box.top - PAD.top) / this.high;
     return down < 0 || down > 1 ? null : [Math.round(down * (this.ground.nz - 1)), 0];
   }
+  // At least the sight's range, and all that the curves reach.
+  range(sight) {
+    const {field, chosen, band} = sight, curves = [...field.values, ...(chosen || [])];
+    if (band) band.forEach((b, i) => curves.push(chosen[i] - b, chosen[i] + b));
+    const known = curves.filter(Number.isFinite), [low, high] = sight.range;
+    const least = Math.min(...known), most = Math.max(...known), room = 0.04 * (most - least);
+    return [least < low ? least - room : low, most > high ? most + room : high];
+  }
   nodeXY([row]) { return [PAD.left + this.wide / 2, PAD.top + row / (this.ground.nz - 1) * this.high]; }
   overlay() {
     const {host, ground, sight} = this, width = host.clientWidth, height = host.clientHeight;
     const bottom = height - PAD.bottom, right = PAD.left + this.wide, n = ground.nz - 1, parts = [];
     const add = (name, attributes, text) => parts.push(element(name, attributes, text));
     this.over.setAttribute('viewBox', `0 0 ${width} ${height}`);
-    const [low, high] = sight.range;
+    const [low, high] = this.range(sight);
     const x = v => PAD.left + (v - low) / (high - low) * this.wide, y = i => PAD.top + i / n * this.high;
     const under = Array.from({length: n + 1}, (_, i) => i).filter(i => !ground.surface || place([i, 0], ground)[1] <= ground.surface[0] + 1e-6);
     const half = this.high / n / 2;
@@ -388,7 +398,7 @@ class Live {
     const slider = this.part('threshold');
     const most = this.coverage ? this.stacks.quality.about.high[1] : 0;
     const under = slider ? most * (slider.value / 100) ** 2 : 0;
-    if (slider) this.part('under').textContent = `${digits(under, 2)} ${this.about.companions[0][2]}`;
+    if (slider) this.part('under').textContent = withUnit(digits(under, 2), this.about.companions[0][2]);
     this.marked = this.flags.map((flag, n) => flag || (under > 0 && this.coverage[n] < under ? POORLY_COVERED : 0));
   }
   sight() {
@@ -396,11 +406,11 @@ class Live {
     const common = {flags: this.marked, veiled: this.part('veiled').checked};
     if (this.mode === 'spread') {
       const values = this.spreadField();
-      return {...common, field: {values, nz: frame.nz, nx: frame.nx}, scale: [0, spread], range: [0, spread * 1.1], table: tables.field, label: `spread (${unit})`};
+      return {...common, field: {values, nz: frame.nz, nx: frame.nx}, scale: [0, spread], range: [0, spread * 1.1], table: tables.field, label: labelled('spread', unit)};
     }
     if (this.mode === 'value') {
       const room = 0.25 * (scale[1] - scale[0]);
-      const sight = {...common, field: this.frame(this.now), scale, range: [scale[0] - room, scale[1] + room], table: tables.field, label: `${property.name} (${unit})`};
+      const sight = {...common, field: this.frame(this.now), scale, range: [scale[0] - room, scale[1] + room], table: tables.field, label: labelled(property.name, unit)};
       if (this.about.column) {
         sight.chosen = this.frame(this.chosen.frame).values;
         sight.usual = this.about.usual;
@@ -410,7 +420,7 @@ class Live {
     }
     const base = this.onFullGrid(this.rules[+this.mode].frame), now = this.onFullGrid(this.now);
     const values = now.map((v, n) => v - base[n]);
-    return {...common, field: {values, nz: frame.nz, nx: frame.nx}, scale: [-change, change], range: [-change, change], table: tables.change, label: `difference (${unit})`, signed: true};
+    return {...common, field: {values, nz: frame.nz, nx: frame.nx}, scale: [-change, change], range: [-change, change], table: tables.change, label: labelled('difference', unit), signed: true};
   }
   here() { return this.rules.filter(rule => rule.frame === this.now); }
   show(k) {
@@ -456,14 +466,14 @@ class Live {
     let told = 'above the surface', rest = '';
     if (!this.above()) {
       const [stack, index] = this.about.frames[this.now], exact = stack === 'picks';
-      told = `${digits(this.valueAt(this.now, this.probe), exact ? 5 : 4)} ${property.units}`;
+      told = withUnit(digits(this.valueAt(this.now, this.probe), exact ? 5 : 4), property.units);
       if (!exact) rest += ` (\u00b1 ${digits(this.stacks[stack].step(index) / 2, 1)}, display rounding)`;
       if (this.mode === 'spread') rest += `, spread between ${this.spreadOf.length} picks ${digits(this.spreadField()[n], 3)}`;
       else if (this.mode !== 'value') rest += `, difference from ${this.rules[+this.mode].name} ${digits(this.valueAt(this.now, this.probe) - this.valueAt(this.rules[+this.mode].frame, this.probe), 3)}`;
       companions.forEach(([name, , units], i) => {
         const said = {noise_part: 'noise part', total_error: 'total error', resolved_fraction: 'comes back'};
         const key = Object.keys(said).find(end => name.endsWith(end));
-        if (key || i === 0) rest += `; ${key ? said[key] : companions[0][1]} ${digits(this.stacks.quality.at(i + 1, this.probe[0] / Math.max(frame.nz - 1, 1), frame.nx > 1 ? this.probe[1] / (frame.nx - 1) : 0), 2)} ${units === '1' ? '' : units}`.trimEnd();
+        if (key || i === 0) rest += `; ${key ? said[key] : companions[0][1]} ${withUnit(digits(this.stacks.quality.at(i + 1, this.probe[0] / Math.max(frame.nz - 1, 1), frame.nx > 1 ? this.probe[1] / (frame.nx - 1) : 0), 2), units)}`;
       });
       rest += `; ${meanings[this.flags[n]] || 'unknown'}`;
     }
@@ -602,7 +612,7 @@ class Pair {
     this.sights = [0, 1, 2].map(i => ({
       field: stacks.pair.field(i), veiled: true, table: i < 2 ? tables.field : tables.change, signed: i === 2,
       scale: i < 2 ? scale : [-change, change], range: i < 2 ? [scale[0] - room, scale[1] + room] : [-change, change],
-      label: `${i < 2 ? about.property.name : 'difference'} (${unit})`,
+      label: labelled(i < 2 ? about.property.name : 'difference', unit),
     }));
     const flags = Float32Array.from(stacks.flags.field(0).values, Math.round);
     for (const sight of this.sights) sight.flags = flags;
@@ -627,7 +637,7 @@ class Pair {
     for (const map of this.maps) { map.probe = node; if (map.sight) map.overlay(); }
     const {property, frame, names} = this.about, s = frame.surface;
     const where = placeText(place(node, frame)), above = s && place(node, frame)[1] > s[node[1]] + 1e-6;
-    const text = above ? `${where}: above the surface` : `${where}: ${names[0]} ${digits(this.value(0), 5)}, ${names[1]} ${digits(this.value(1), 5)}, difference ${digits(this.value(2), 3)} ${property.units}`;
+    const text = above ? `${where}: above the surface` : `${where}: ${names[0]} ${digits(this.value(0), 5)}, ${names[1]} ${digits(this.value(1), 5)}, difference ${withUnit(digits(this.value(2), 3), property.units)}`;
     this.article.querySelector('[data-part="readout"]').textContent = text;
     this.say(text);
   }
