@@ -17,6 +17,7 @@ from stillground.products.figures.sheet import (
     LINE,
     MUTED,
     TEAL,
+    fitted,
     panel,
     sheet,
     styled,
@@ -58,20 +59,21 @@ def ladder_figure(profile: str, result: Result, *, tolerance: float, surface: Su
     _changes(figure, result.ladder, tolerance, (0.72, bottom, 2.55, body))
     index = result.ladder.index.index
     checked = "none" if index is None else f"{percent(index)} of the rms anomaly"
-    across, up = figure.get_size_inches()
-    figure.text(
-        (0.72 + 2.55 / 2) / across,
-        (FOOT + 0.02) / up,
-        f"cross-check, grid convergence index: {checked}",
-        size=7,
-        color=MUTED,
-        ha="center",
-    )
+    _caption(figure, f"grid convergence index: {checked}", 0.72 + 2.55 / 2, 3.1)
     if len(result.axes) == 1:
         _curves(figure, result, surface, (4.1, bottom, 3.1, body))
     else:
         _rungs(figure, result, surface, tolerance, (3.55, bottom - 0.3))
     return figure
+
+
+def _caption(figure: Figure, said: str, middle: float, room: float) -> None:
+    """At the foot, in at most two lines of ``room`` inches about ``middle``."""
+    across, up = figure.get_size_inches()
+    shown_text = fitted(said, 7, "normal", room * 72, 2)
+    figure.text(
+        middle / across, (FOOT - 0.04) / up, shown_text, size=7, color=MUTED, ha="center", va="bottom"
+    )
 
 
 def _changes(
@@ -142,12 +144,10 @@ def _rungs(
     room = (MAPS[0], MAPS[1] + 0.3)
     tiles = tiling(len(rungs), result.axes, room, GAP)
     step = ((room[0] + GAP[0]) / tiles.columns, room[1] / tiles.rows)
-    across_sheet, up_sheet = figure.get_size_inches()
-    said = "colours as in the section"
+    said = f"{shown(result.property, result.model)[1]}, colours as in the section"
     if (times := exaggeration(result.axes)) > 1:
         said += f", elevation {times} times exaggerated"
-    middle = (corner[0] + MAPS[0] / 2) / across_sheet
-    figure.text(middle, (FOOT + 0.02) / up_sheet, said, size=7, color=MUTED, ha="center")
+    _caption(figure, said, corner[0] + MAPS[0] / 2, MAPS[0])
     for i, rung in enumerate(rungs):
         row, column = divmod(i, tiles.columns)
         axes = panel(

@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 from itertools import cycle
-from typing import Literal
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -41,12 +40,12 @@ WHITE = 1.36
 
 @dataclass(frozen=True)
 class Curves:
-    """What one panel draws against the iteration: curves by name, and a limit with its words at one end."""
+    """What one panel draws against the iteration: curves by name, and a limit with its words."""
 
     label: str
     curves: Mapping[str, Array]
     log: bool = False
-    limit: tuple[float, str, Literal["left", "right"]] | None = None
+    limit: tuple[float, str] | None = None
 
 
 @styled
@@ -77,7 +76,10 @@ def rules_figure(profile: str, result: Result, *, options: RuleOptions) -> Figur
     n_key = len(result.choices) if alone else -(-len(result.choices) // 2)
     key_height = KEY_STEP * (n_key + 1)
     step = HEIGHT + BELOW
-    bottom = FOOT + 0.5 + (max(0.0, key_height - HEIGHT - 0.3) if alone else key_height + 0.15)
+    legend = 0.19 * (1 + len(history.whiteness) // 2) if history.whiteness else 0.0
+    bottom = (
+        FOOT + 0.5 + legend + (max(0.0, key_height - HEIGHT - 0.3 - legend) if alone else key_height + 0.15)
+    )
     body = n_rows * step - BELOW
     figure = sheet(
         7.4,
@@ -111,9 +113,7 @@ def rules_figure(profile: str, result: Result, *, options: RuleOptions) -> Figur
 def _panels(history: History, options: RuleOptions) -> list[Curves]:
     target = (options.tau * options.noise) ** 2
     panels = [
-        Curves(
-            "mean squared residual", {"": history.chi_square}, True, (target, f"target {target:.3g}", "right")
-        ),
+        Curves("mean squared residual", {"": history.chi_square}, True, (target, f"target {target:.3g}")),
         # The first iterate has none, and a log scale no place for it.
         Curves("roughness", {"": np.where(history.solution_norm > 0, history.solution_norm, np.nan)}, True),
     ]
@@ -125,9 +125,7 @@ def _panels(history: History, options: RuleOptions) -> list[Curves]:
         ]
     if history.whiteness:
         curves = {f"within each {name}": curve for name, curve in history.whiteness.items()}
-        panels.append(
-            Curves("distance from white", curves, True, (WHITE, f"white stays under {WHITE:g}", "left"))
-        )
+        panels.append(Curves("distance from white", curves, True, (WHITE, f"white stays under {WHITE:g}")))
     return panels
 
 
@@ -144,23 +142,26 @@ def _draw(axes: Axes, one: Curves, last: int) -> None:
         axes.yaxis.set_major_formatter("{x:g}")
         axes.yaxis.set_minor_locator(NullLocator())
     if one.limit is not None:
-        value, text, side = one.limit
-        axes.axhline(value, color=MUTED, lw=1, ls=(0, (5, 3)))
-        axes.annotate(
-            text,
-            (0.01 if side == "left" else 1, value),
-            (0, 2),
-            xycoords=("axes fraction", "data"),
-            textcoords="offset points",
-            ha=side,
-            va="bottom",
-            size=7,
-            color=MUTED,
-        )
+        value, text = one.limit
+        axes.axhline(value, color=MUTED, lw=1, ls=(0, (5, 3)), label=text)
+        if not any(one.curves):
+            axes.annotate(
+                text,
+                (1, value),
+                (0, 2),
+                xycoords=("axes fraction", "data"),
+                textcoords="offset points",
+                ha="right",
+                va="bottom",
+                size=7,
+                color=MUTED,
+            )
     if any(one.curves):
+        # Below the panel: within, some curve always runs under it.
         axes.legend(
-            loc="upper right", borderpad=0.2, frameon=True, facecolor=axes.get_facecolor(), edgecolor="none"
-        )
+            loc="upper left", bbox_to_anchor=(0, -0.42 / HEIGHT), borderaxespad=0, borderpad=0, ncols=2,
+            columnspacing=1.2,
+        )  # fmt: skip
 
 
 def _mark(axes: Axes, one: Curves, placed: list[Choice], chosen: Choice) -> None:
