@@ -10,6 +10,7 @@ from matplotlib.artist import Artist
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 from matplotlib.patches import Patch
+from matplotlib.ticker import MaxNLocator
 
 from stillground.products.averages import read_averages
 from stillground.products.figures.curves import draw_band, draw_curve, frame_column, hatch_column
@@ -70,7 +71,7 @@ def column_figure(
 
     averages = [replace(mean, units=unit_text(mean.units)).sentence for mean in read_averages(result)]
     verdict, chosen = result.ladder.verdict, result.chosen
-    bottom = FOOT + 1.1
+    bottom = FOOT + (1.1 if differences is None else 1.25)
     figure = sheet(
         SIZE[0] + 1.2,
         bottom + SIZE[1] + LINE_STEP * len(averages) + HEADING + 0.3,
@@ -82,20 +83,25 @@ def column_figure(
     hatch_column(axes, elevation, flags)
     draw_band(axes, elevation, values - spread, values + spread, flags=flags, colour=BAND)
     key: list[Artist] = [Line2D([], [], color=TEAL, lw=1.6, label=long_name), Patch(color=BAND, label=band)]
+    sure = inside & (flags == RELIABLE) if (flags == RELIABLE).any() else inside
     steps = np.empty(0)
     if differences is not None:
         steps = shown(result.property, np.where(differences.values > 0, differences.values, np.nan))[0]
+    across = _limits((values - spread)[sure], (values + spread)[sure], values[sure], steps)
+    if differences is not None:
         ends = np.column_stack([differences.lower, differences.upper]).reshape(-1)
         axes.plot(np.repeat(steps, 2), ends, color=STEPS, lw=0.7, zorder=2)
         missing = int(np.isnan(steps).sum())
+        beyond = int(np.sum((steps < across[0]) | (steps > across[1])))
         said = differences.long_name + (f"; {missing} not above zero left out" if missing else "")
+        said += f"; {beyond} of {steps.size} reach beyond the frame" if beyond else ""
         key.append(Line2D([], [], color=STEPS, lw=0.7, label=said))
     draw_curve(axes, elevation, values, flags=flags, colour=TEAL)
     draw_positions(axes, positions)
     frame_column(axes, elevation, surface)
-    sure = inside & (flags == RELIABLE) if (flags == RELIABLE).any() else inside
+    axes.xaxis.set_major_locator(MaxNLocator(7, steps=[1, 2, 5, 10]))
     axes.set(
-        xlim=_limits((values - spread)[sure], (values + spread)[sure], values[sure], steps),
+        xlim=across,
         xlabel=labelled(long_name, units),
         ylabel="elevation (m)",
         title="\n".join(
@@ -110,8 +116,7 @@ def column_figure(
         loc="upper left",
         bbox_to_anchor=(0, -0.42 / SIZE[1]),
         borderaxespad=0,
-        ncols=2,
-        columnspacing=1.6,
+        ncols=1,
     )
     signs = position_key(positions)
     if known is not None:
