@@ -13,7 +13,8 @@ from stillground.products.figures.sheet import INK, MUTED, PAPER, VERDICTS, our_
 from stillground.products.provenance import CAUTION
 from stillground.protocols import Choice, Result
 
-_CELL = "padding:1px 10px 1px 0;text-align:left;border:0;background:none"
+_CELL = "padding:1px 10px 1px 0;text-align:left;border:0;background:none;font-size:inherit"
+_TABLE = "border-collapse:collapse;font-size:12px;line-height:1.35;margin:0;align-self:start"
 
 
 def display(name: str, result: Result, picture: Figure) -> str:
@@ -29,7 +30,7 @@ def display(name: str, result: Result, picture: Figure) -> str:
     """
     small = BytesIO()
     with our_look():
-        picture.savefig(small, format="png", dpi=80, metadata={"Software": None})
+        picture.savefig(small, format="png", dpi=96, metadata={"Software": None})
     verdict = result.ladder.verdict
     _, sign, colour = VERDICTS[verdict.word]
     said = f"{escape(name)}: {verdict.word}"
@@ -37,12 +38,12 @@ def display(name: str, result: Result, picture: Figure) -> str:
     rows = "".join(_row(choice, choice is result.chosen) for choice in result.choices)
     image = b64encode(small.getvalue()).decode()
     return (
-        f'<div style="font:13px sans-serif;color:{INK};background:{PAPER};padding:8px;max-width:60em">'
+        f'<div style="font:13px sans-serif;color:{INK};background:{PAPER};padding:8px;max-width:75em">'
         f'<p style="margin:0 0 6px"><b style="color:{colour}">{sign} {said}</b>. '
-        f"{escape(verdict.reason)}.</p>"
-        f'<div style="display:flex;flex-wrap:wrap;gap:12px"><table style="border-collapse:collapse">'
+        f"{escape(verdict.reason[:1].upper() + verdict.reason[1:])}.</p>"
+        f'<div style="display:flex;flex-wrap:wrap;gap:12px"><table style="{_TABLE}">'
         f"<tr>{head}</tr>{rows}</table>"
-        f'<img src="data:image/png;base64,{image}" alt="{said}" style="max-width:26em;height:auto"></div>'
+        f'<img src="data:image/png;base64,{image}" alt="{said}" style="max-width:36em;height:auto"></div>'
         f'<p style="margin:6px 0 0;color:{MUTED};font-size:11px">{escape(CAUTION)}</p></div>'
     )
 
