@@ -645,6 +645,8 @@ class Scene(ABC):
         The ground property that would explain each datum alone.
     against : mapping of str to array, shape (n_data,)
         What the apparent property is best looked at against, with its unit, as "offset (m)".
+    apart : mapping of str to array of bool, shape (n_data,)
+        Sorts of data, by name, that such a plot must tell apart; none where there is one sort.
     paths : pair of array, shape (n_data, n_axes) each, or None
         The two ends of every datum's way through the ground; None where it has none.
     surface : pair of array or None
@@ -667,6 +669,7 @@ class Scene(ABC):
     positions: Mapping[str, Array]
     apparent: Array
     against: Mapping[str, Array] = field(default_factory=dict)
+    apart: Mapping[str, NDArray[np.bool_]] = field(default_factory=dict)
     paths: tuple[Array, Array] | None = None
     surface: tuple[Array, Array] | None = None
     depth: float | None = None

@@ -275,6 +275,7 @@ def test_the_apparent_property_is_drawn_as_people_read_it_against_what_the_kind_
         paths=(SOURCES[i], RECEIVERS[j]),
         positions=POSITIONS,
         against={"offset (m)": length},
+        apart={},
         apparent=result.observed / length,
         seen=result.property,
         nodes=result.axes,

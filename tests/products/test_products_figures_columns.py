@@ -188,6 +188,7 @@ def test_the_survey_figure_draws_the_coverage_beside_the_positions(column: Resul
         positions=POSITIONS,
         apparent=np.full(26, 5e-4),
         against={"depth (m)": np.arange(26.0)},
+        apart={},
         seen=column.property,
         nodes=(ELEVATION,),
         coverage=column.coverage,

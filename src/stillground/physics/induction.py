@@ -274,6 +274,9 @@ class Induction(Kind):
             positions={"station": positions},
             apparent=data / share,
             against={"distance (m)": along, "coil spacing (m)": spacing},
+            apart=dict(zip(ORIENTATIONS, (vertical, ~vertical), strict=True))
+            if np.unique(vertical).size > 1
+            else {},
             surface=_surface(positions),
             depth=_DEPTH * float(spacing.max()),
             facts=(f"line {laid}", f"configurations: {named}"),

@@ -73,6 +73,7 @@ def draw(plan: Plan, config: Config, folder: Path) -> Path:
         positions=scene.positions,
         apparent=scene.apparent,
         against=scene.against,
+        apart=scene.apart,
         seen=config.kind.ground_property,
         nodes=grid.axes,
         coverage=scene.coverage(grid, correlation(config)),
