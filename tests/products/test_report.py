@@ -310,7 +310,7 @@ def test_a_column_has_a_curve_with_its_error_band(result: Result, tmp_path: Path
     assert "row of the table" in text
 
 
-def test_positions_in_a_column_are_told_as_the_ticks_that_they_are(result: Result, tmp_path: Path) -> None:
+def test_positions_in_a_column_have_the_signs_of_the_figures(result: Result, tmp_path: Path) -> None:
     folder = write_folder(tmp_path, {"sounding": column_of(result, 40)})
     fit = pd.read_csv(folder / "sounding_fit.csv")
     numbers, heights = np.arange(1, len(fit) + 1), np.linspace(40, 50, len(fit))
@@ -318,8 +318,7 @@ def test_positions_in_a_column_are_told_as_the_ticks_that_they_are(result: Resul
         folder / "sounding_fit.csv", index=False
     )
     text = Text(write_report(folder).read_text(encoding="utf-8")).text
-    assert "Ticks at the edge: source." in text
-    assert "Stars" not in text
+    assert "Stars: source." in text
 
 
 def test_groupings_come_by_name_and_may_be_missing(folder: Path, tmp_path: Path) -> None:
@@ -331,7 +330,7 @@ def test_groupings_come_by_name_and_may_be_missing(folder: Path, tmp_path: Path)
     )
     text = Text(write_report(moved).read_text(encoding="utf-8")).text
     assert "Worst station, number 12" in text
-    assert "Stars: station." in text
+    assert "Triangles: station." in text
     assert "receiver" not in text.split("Data fit")[2]
 
 

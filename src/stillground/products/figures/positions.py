@@ -13,10 +13,7 @@ from stillground.products.figures.sheet import INK, RUST
 from stillground.protocols import Array
 
 _RECEIVER: dict[str, Any] = {"marker": "v", "ms": 4.2, "mfc": "white", "mec": INK, "mew": 0.7, "ls": ""}
-_SIGNS: dict[str, dict[str, Any]] = {
-    "source": {"marker": "*", "ms": 6.5, "mfc": RUST, "mec": "white", "mew": 0.4, "ls": ""},
-    "receiver": _RECEIVER,
-}
+_SOURCE: dict[str, Any] = {"marker": "*", "ms": 6.5, "mfc": RUST, "mec": "white", "mew": 0.4, "ls": ""}
 
 
 def draw_positions(axes: Axes, positions: Mapping[str, Array]) -> None:
@@ -24,11 +21,16 @@ def draw_positions(axes: Axes, positions: Mapping[str, Array]) -> None:
 
     Of a column, elevations alone, they stand on the left edge.
     """
-    for name, places in sorted(positions.items(), key=lambda item: item[0] == "source"):
+    for name, places in sorted(positions.items(), key=lambda item: is_star(item[0])):
         section = places.shape[1] > 1
         across = places[:, 0] if section else np.zeros(len(places))
         where = axes.transData if section else axes.get_yaxis_transform()
         axes.plot(across, places[:, -1], **_sign(name), transform=where, clip_on=False, zorder=4)
+
+
+def is_star(name: str) -> bool:
+    """Whether what stands there is drawn as a star, as sources are, and not as a triangle."""
+    return name == "source"
 
 
 def position_key(positions: Mapping[str, Array]) -> list[Line2D]:
@@ -37,4 +39,4 @@ def position_key(positions: Mapping[str, Array]) -> list[Line2D]:
 
 
 def _sign(name: str) -> dict[str, Any]:
-    return _SIGNS.get(name, _RECEIVER)
+    return _SOURCE if is_star(name) else _RECEIVER

@@ -18,6 +18,7 @@ from markupsafe import Markup
 
 from stillground.percent import percent
 from stillground.products.averages import ReadAverage
+from stillground.products.figures.positions import is_star
 from stillground.products.figures.sheet import VERDICTS
 from stillground.products.overlay import overlay_sentence
 from stillground.products.provenance import CAUTION
@@ -30,7 +31,7 @@ from stillground.products.report.ground import CHANGE, FIELD, Companion, Ground,
 from stillground.products.report.history import Pictures, pictures
 from stillground.products.report.misfits import Shown as FigureShown
 from stillground.products.report.misfits import extra_charts, fit_charts, legible, outliers, places
-from stillground.products.report.picture import Sight, colour_bar, large, small
+from stillground.products.report.picture import Sight, colour_bar, column_ends, large, small
 from stillground.products.report.rungs import change_chart, rung_pictures
 from stillground.products.units import with_unit
 from stillground.protocols import Array
@@ -161,7 +162,8 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
         "families": _FAMILIES,
         "cautions": _cautions(profile),
         "provenance": _provenance(profile),
-        "places": list(stand),
+        "beyond": _beyond(ground),
+        "places": _signs(list(stand)),
     }
     quality = pack(np.stack([ground.flags.astype(float), *(one.values for one in ground.companions)]), 1)
     frames = pictures(profile, ground, room - _TEXT - len(quality.text) - _size(list(told.values())))
@@ -219,9 +221,11 @@ def _live(
         "stacks": {name: packed.about for name, packed in stacks.items()},
         "companions": [[one.name, one.long_name, one.units] for one in ground.companions],
         "meanings": [meaning.replace("_", " ") for meaning in MEANINGS],
-        "places": [[name, np.round(where, 3).tolist()] for name, where in stand.items()],
+        "places": [[name, np.round(where, 3).tolist(), is_star(name)] for name, where in stand.items()],
     } | (
-        {} if frame.distance is not None else {"column": True, "usual": _usual(ground), "band": _band(ground)}
+        {}
+        if frame.distance is not None
+        else {"column": True, "usual": _usual(ground), "band": _band(ground), "ends": _ends(ground)}
     )
 
 
@@ -230,10 +234,37 @@ def _band(ground: Ground) -> int | None:
     return None if ground.band is None else ground.companions.index(ground.band)
 
 
+def _ends(ground: Ground) -> tuple[float, float]:
+    """Ends of a column's level axis at the chosen pick."""
+    band = None if ground.band is None else ground.band.values[ground.inside]
+    return column_ends(ground.model[ground.inside], band, ground.scale)
+
+
+def _beyond(ground: Ground) -> int:
+    """How many values of the usual estimate lie beyond these ends, or are missing as zero or less."""
+    if ground.usual is None:
+        return 0
+    low, high = _ends(ground)
+    return int(np.sum(~((ground.usual.values >= low) & (ground.usual.values <= high))))
+
+
+def _signs(names: list[str]) -> str:
+    """What the signs of positions mean."""
+    told = (
+        ("stars", [name for name in names if is_star(name)]),
+        ("triangles", [name for name in names if not is_star(name)]),
+    )
+    said = "; ".join(f"{sign}: {', '.join(found)}" for sign, found in told if found)
+    return said[:1].upper() + said[1:]
+
+
 def _usual(ground: Ground) -> list[list[float]]:
     """Intervals of the usual estimate: lower and upper end, value."""
     usual = ground.usual
-    return [] if usual is None else np.column_stack([usual.lower, usual.upper, usual.values]).tolist()
+    if usual is None:
+        return []
+    drawn = np.column_stack([usual.lower, usual.upper, usual.values])
+    return drawn[np.isfinite(drawn).all(axis=1)].tolist()
 
 
 def frame_data(ground: Ground) -> dict[str, Any]:

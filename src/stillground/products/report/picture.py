@@ -11,6 +11,7 @@ from matplotlib.colors import to_rgb
 from numpy.typing import NDArray
 
 from stillground.products.figures.field import FADE, resampled
+from stillground.products.figures.positions import is_star
 from stillground.products.figures.sheet import PAPER
 from stillground.products.reliability import MESH_DEPENDENT, POORLY_COVERED, RELIABLE
 from stillground.products.report.drawing import Chart, limits
@@ -19,6 +20,8 @@ from stillground.products.report.ground import FIELD, Frame, Ground, colours
 from stillground.protocols import Array
 
 HATCH = "#7c858c"
+_STAR = "m0 -5l1.5 3.4h3.7l-2.9 2.4 1 3.7-3.3-2.2-3.3 2.2 1-3.7-2.9-2.4h3.7z"
+_TRIANGLE = "m0 2.5l-3.2 -5.5h6.400z"
 _LEVELS = 100
 _BAR = 64
 _LARGEST = (820.0, 430.0)
@@ -87,14 +90,18 @@ def colour_bar(sight: Sight, width: float = 300) -> Markup:
 
 
 def draw_places(chart: Chart, places: Mapping[str, Array]) -> None:
-    """Signs where the groups of the data stand: the first grouping stars, the others open triangles."""
-    for i, (_, where) in enumerate(places.items()):
-        path = "".join(
-            f"M{x:.1f} {y:.1f}" + ("m0 -5l1.5 3.4h3.7l-2.9 2.4 1 3.7-3.3-2.2-3.3 2.2 1-3.7-2.9-2.4h3.7z"
-                                   if i == 0 else "l-3.2 -6h6.400z")
-            for x, y in zip(chart.across(where[:, 0]), chart.up(where[:, 1]), strict=True)
-        )  # fmt: skip
-        chart.add("path", class_="place-first" if i == 0 else "place-other", d=path)
+    """Signs where the groups of the data stand, as in the figures; of a column on the left edge."""
+    for name, where in sorted(places.items(), key=lambda item: is_star(item[0])):
+        sign = _STAR if is_star(name) else _TRIANGLE
+        across = chart.across(where[:, 0]) if where.shape[1] > 1 else np.full(len(where), chart.left)
+        path = "".join(f"M{x:.1f} {y:.1f}{sign}" for x, y in zip(across, chart.up(where[:, -1]), strict=True))
+        chart.add("path", class_="place-star" if is_star(name) else "place-triangle", d=path)
+
+
+def column_ends(values: Array, band: Array | None, scale: tuple[float, float]) -> tuple[float, float]:
+    """Ends of a column's level axis: they hold the values with their error band, and the scale."""
+    drawn = values if band is None else np.concatenate([values - band, values + band])
+    return limits(np.append(drawn, scale))
 
 
 def _fitted(frame: Frame, room: tuple[float, float]) -> tuple[float, float]:
@@ -181,8 +188,7 @@ def _column(
     if ground.frame.surface is not None:
         below = at <= ground.frame.surface[0] + 1e-9
         at, values, band = at[below], values[below], None if band is None else band[below]
-    drawn = values if band is None else np.concatenate([values - band[:, 0], values + band[:, 0]])
-    ends = limits(np.append(drawn, sight.scale))
+    ends = column_ends(values, None if band is None else band[:, 0], sight.scale)
     chart = Chart(size, ends, (float(elevation[-1]), float(elevation[0])), margins=(52, 14, 8, 38))
     chart.frame(sight.label, "elevation (m)", ticks=(5, 7))
     half = abs(float(elevation[0] - elevation[-1])) / max(elevation.size - 1, 1) / 2
@@ -199,10 +205,9 @@ def _column(
     if ground.usual is not None and sight.label == ground.label:
         ways = zip(ground.usual.values, ground.usual.lower, ground.usual.upper, strict=True)
         for value, lower, upper in ways:
-            chart.line([value, value], [lower, upper], "usual")
-    for where in places.values():
-        for height in where[:, -1]:
-            chart.add("path", class_="axis", d=f"M{chart.left:.1f} {float(chart.up(height)):.1f}h-6")
+            if ends[0] <= value <= ends[1]:
+                chart.line([value, value], [lower, upper], "usual")
+    draw_places(chart, places)
     return chart.svg(sight.said, width=size[0])
 
 

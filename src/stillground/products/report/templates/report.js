@@ -217,11 +217,7 @@ class Section {
       add('path', {class: 'surface', d: 'M' + line.join('L')});
     }
     if (this.shownPlaces) {
-      this.places.forEach(([, where], i) => {
-        const sign = i === 0 ? 'm0 -5l1.5 3.4h3.7l-2.9 2.4 1 3.7-3.3-2.2-3.3 2.2 1-3.7-2.9-2.4h3.7z' : 'l-3.2 -6h6.4z';
-        const d = where.map(([x, z]) => `M${this.x(x).toFixed(1)} ${this.y(z).toFixed(1)}${sign}`).join('');
-        add('path', {class: i === 0 ? 'place-first' : 'place-other', d});
-      });
+      parts.push(...this.signs(x => this.x(x)));
     }
     if (this.probe) {
       const [x, y] = this.nodeXY(this.probe);
@@ -230,6 +226,14 @@ class Section {
       add('path', {class: 'cross', d});
     }
     this.over.replaceChildren(...parts);
+  }
+  // Positions as in the figures: stars where sources stand, else triangles; stars on top.
+  signs(across) {
+    return [...this.places].sort((a, b) => a[2] - b[2]).map(([, where, star]) => {
+      const sign = star ? 'm0 -5l1.5 3.4h3.7l-2.9 2.4 1 3.7-3.3-2.2-3.3 2.2 1-3.7-2.9-2.4h3.7z' : 'm0 2.5l-3.2 -5.5h6.4z';
+      const d = where.map(place => `M${across(place[0]).toFixed(1)} ${this.y(place[place.length - 1]).toFixed(1)}${sign}`).join('');
+      return element('path', {class: star ? 'place-star' : 'place-triangle', d});
+    });
   }
   nodeXY([row, column]) {
     const {nz, nx} = this.ground;
@@ -293,11 +297,11 @@ class Column extends Section {
     }
     if (sight.chosen) add('path', {class: 'fitted', d: 'M' + line(sight.chosen).join('L')});
     add('path', {class: 'curve', d: 'M' + line(sight.field.values).join('L')});
-    for (const [from, to, value] of sight.usual || []) add('path', {class: 'usual', d: `M${x(value)} ${this.y(from)}V${this.y(to)}`});
+    for (const [from, to, value] of sight.usual || []) if (value >= low && value <= high) add('path', {class: 'usual', d: `M${x(value)} ${this.y(from)}V${this.y(to)}`});
     add('path', {class: 'axis', d: `M${PAD.left} ${PAD.top}V${bottom}H${right}`});
     add('text', {class: 'label', x: (PAD.left + right) / 2, y: height - 5, 'text-anchor': 'middle'}, sight.label);
     add('text', {class: 'label', transform: `translate(12 ${(PAD.top + bottom) / 2}) rotate(-90)`, 'text-anchor': 'middle'}, 'elevation (m)');
-    if (this.shownPlaces) for (const [, where] of this.places) for (const place of where) add('path', {class: 'axis', d: `M${PAD.left} ${this.y(place[place.length - 1])}h-5`});
+    if (this.shownPlaces) parts.push(...this.signs(() => PAD.left));
     if (this.probe) {
       add('path', {class: 'cross', d: `M${PAD.left} ${y(this.probe[0])}H${right}`});
       add('circle', {class: 'now', r: 5, cx: x(sight.field.values[this.probe[0]]), cy: y(this.probe[0])});
@@ -409,8 +413,7 @@ class Live {
       return {...common, field: {values, nz: frame.nz, nx: frame.nx}, scale: [0, spread], range: [0, spread * 1.1], table: tables.field, label: labelled('spread', unit)};
     }
     if (this.mode === 'value') {
-      const room = 0.25 * (scale[1] - scale[0]);
-      const sight = {...common, field: this.frame(this.now), scale, range: [scale[0] - room, scale[1] + room], table: tables.field, label: labelled(property.name, unit)};
+      const sight = {...common, field: this.frame(this.now), scale, range: this.about.ends, table: tables.field, label: labelled(property.name, unit)};
       if (this.about.column) {
         sight.chosen = this.frame(this.chosen.frame).values;
         sight.usual = this.about.usual;
