@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 import pytest
 import xarray as xr
-from numpy.testing import assert_allclose
+from numpy.testing import assert_allclose, assert_array_equal
 from scipy.integrate import quad
 
 import stillground
@@ -239,6 +239,9 @@ def test_apparent_conductivity_explains_each_reading_alone() -> None:
     scene = placed(measured(survey, readings, np.full(18, 1e-9)))
     assert_allclose(scene.apparent, 0.025, rtol=1e-5)
     assert_allclose(scene.against["distance (m)"], survey["x"])
+    for orientation, those in scene.apart.items():
+        assert_array_equal(those, survey["orientation"] == orientation)
+    assert list(scene.apart) == ["vertical-dipole", "horizontal-dipole"]
 
 
 def test_three_of_six_readings_are_informative() -> None:

@@ -292,6 +292,28 @@ def test_the_apparent_property_is_drawn_as_people_read_it_against_what_the_kind_
     assert write_figure(tmp_path, "survey", figure)[0].stat().st_size > 10_000
 
 
+def test_sorts_of_data_are_told_apart_in_a_flat_survey_with_its_plots_below(result: Result) -> None:
+    first = np.arange(result.observed.size) % 3 == 0
+    figure = survey_figure(
+        "line",
+        paths=None,
+        positions={},
+        against={"distance (m)": result.observed},
+        apart={"across": first, "along": ~first},
+        apparent=result.observed,
+        seen=result.property,
+        nodes=(np.linspace(0, 60, result.axes[0].size), np.linspace(200, 212, result.axes[1].size)),
+        coverage=result.coverage,
+        surface=None,
+    )
+    section, _, plot = figure.axes
+    for line, those in zip(plot.lines[:2], (first, ~first), strict=True):
+        np.testing.assert_array_equal(line.get_xdata(), result.observed[those])
+    assert len({(line.get_marker(), line.get_color()) for line in plot.lines[:2]}) == 2
+    assert [text.get_text() for text in figure.legends[0].get_texts()] == ["across", "along", "median"]
+    assert plot.get_position().y1 < section.get_position().y0
+
+
 def test_figures_come_out_the_same_whatever_the_users_settings(
     make: Callable[..., Result], surface: Any, tmp_path: Path
 ) -> None:

@@ -58,7 +58,12 @@ def test_whiteness_is_drawn_for_each_grouping_with_its_limit(result: Result) -> 
     assert [text.get_text() for text in axes.get_legend().get_texts()] == [
         "within each source",
         "within each receiver",
+        "white stays under 1.36",
     ]
+    axes.figure.draw_without_rendering()
+    legend = axes.get_legend().get_window_extent()
+    assert legend.y1 < axes.xaxis.label.get_window_extent().y0
+    assert legend.y0 > 0
     # Kolmogorov and Smirnov: 95 % of white noise stays under 1.36 (from memory).
     assert levels(axes) == [1.36]
 

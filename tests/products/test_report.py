@@ -33,7 +33,7 @@ from stillground.products.report.encoding import coarser, pack
 from stillground.products.report.folder import read_results
 from stillground.products.report.ground import ground_of
 from stillground.products.report.history import pictures
-from stillground.protocols import Result
+from stillground.protocols import GroundProperty, Result
 
 from .made_up_folders import GROUND, USUAL, column_of, stretched, write_folder
 from .made_up_results import SURFACE, slowness
@@ -385,6 +385,41 @@ def test_two_results_are_compared_on_their_common_ground(make: Callable[..., Res
     text = Text(write_comparison(one, other, tmp_path / "out").read_text(encoding="utf-8")).text
     assert "B less A" in text
     assert "one" in text.split("against")[0]
+
+
+def test_a_comparison_says_where_nothing_is_reliable_in_both(
+    make: Callable[..., Result], tmp_path: Path
+) -> None:
+    seen = make(argued=False, spacing=1.0)
+    unseen = replace(seen, coverage=replace(seen.coverage, values=np.zeros_like(seen.coverage.values)))
+    folders = [write_folder(tmp_path / name, {"ab": one}) for name, one in (("one", seen), ("other", unseen))]
+    text = Text(write_comparison(*folders, tmp_path / "out").read_text(encoding="utf-8")).text
+    assert "No ground is reliable in both; over all that both have the pictures differ by 0 m" in text
+    text = Text(write_comparison(folders[0], folders[0], tmp_path / "out").read_text(encoding="utf-8")).text
+    assert "Over the ground that is reliable in both, the pictures differ by 0 m" in text
+
+
+def test_pure_numbers_have_no_unit(make: Callable[..., Result], tmp_path: Path) -> None:
+    result = make(argued=False, spacing=1.0)
+    result = replace(result, property=GroundProperty("water_content", "1", "water content"))
+    folder = write_folder(tmp_path / "one", {"ab": result})
+    page = write_report(folder).read_text(encoding="utf-8")
+    compared = write_comparison(folder, folder, tmp_path / "out").read_text(encoding="utf-8")
+    assert "water content (1)" not in page + compared
+    assert "B less A (1)" not in compared
+    assert "differ by 0 (rms)" in Text(compared).text
+    assert '"units": "1"' not in page + compared
+
+
+def test_what_practice_reads_off_is_drawn_within_the_frame_and_the_rest_is_counted(
+    result: Result, tmp_path: Path
+) -> None:
+    far = replace(USUAL, values=np.array([1 / 1e5, USUAL.values[1]]))
+    folder = write_folder(tmp_path, {"sounding": column_of(result, 40)}, surface=GROUND, differences=far)
+    page = write_report(folder).read_text(encoding="utf-8")
+    static = page.split('<figure class="static">')[1].split("</figure>")[0]
+    assert static.count('class="usual"') == 1
+    assert "; 1 of 2 lie beyond the frame" in Text(page).text
 
 
 def test_the_command_compares_two_folders(

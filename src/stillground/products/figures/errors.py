@@ -54,7 +54,7 @@ def errors_figure(profile: str, result: Result, *, tolerance: float, surface: Su
         errors["Total error"] = shown_change(seen, result.model, rehearsal.total_error)
         said += ". Total error: root mean square on synthetic ground drawn from the prior"
     anomaly = f"{shown_anomaly(result):.3g}"
-    said += f". Rms anomaly: {with_unit(anomaly, units)}"
+    said += ". Rms anomaly: " + with_unit(anomaly, units).replace(" ", "\N{NO-BREAK SPACE}")
     scale = error_scale(result, list(errors.values()), flags)
     label = labelled(f"of {name}", units)
     maps = [Map(title, label, values, scale, ERROR_COLOURS) for title, values in errors.items()]

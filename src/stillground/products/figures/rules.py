@@ -32,6 +32,7 @@ RAIL, BADGE = 0.42, 0.175
 """Height of the row of badges above the panels, and room for one badge, inches."""
 KEY_STEP = 0.185
 EDGE = 0.03
+MOST_SUBDIVIDED = 1e4
 TICKS = (0, 1, 2, 5, 10, 20, 50, 100, 200, 500, 1000, 2000, 5000, 10_000)
 
 # Kolmogorov and Smirnov: white noise stays under it in 95 % of cases.
@@ -138,7 +139,9 @@ def _draw(axes: Axes, one: Curves, last: int) -> None:
     axes.set_xticks([tick for tick in TICKS if tick <= last])
     if one.log:
         axes.set_yscale("log")
-        axes.yaxis.set_major_locator(LogLocator(subs=(1, 2, 5)))
+        # Over many decades a locator with more than the powers of ten finds no ticks at all.
+        low, high = axes.get_ylim()
+        axes.yaxis.set_major_locator(LogLocator(subs=(1, 2, 5) if high < MOST_SUBDIVIDED * low else (1,)))
         axes.yaxis.set_major_formatter("{x:g}")
         axes.yaxis.set_minor_locator(NullLocator())
     if one.limit is not None:

@@ -36,8 +36,8 @@ from stillground.protocols import Array, Field, GroundProperty, Integers
 # Not the colours of the ground's properties: coverage says how well, not what.
 COVERAGE_COLOURS = LinearSegmentedColormap.from_list("coverage", ["#fffefb", "#bcd3cf", TEAL])
 MOST_RAYS = 2000
-PICTURE = (3.1, 4.3)
-LONG, WHOLE, PLOT_HEIGHT, FLAT = 6.05, 6.45, 2.2, 0.5
+PICTURE = (3.0, 4.3)
+LONG, WHOLE, PLOT_HEIGHT, FLAT = 5.95, 6.45, 2.2, 0.5
 """Widths of a flat section and of all plots below it and their height, inches; and what is flat: lower than
 this share of its room."""
 MARKS = (("o", TEAL), ("^", RUST), ("s", INK), ("D", MUTED))
@@ -126,13 +126,21 @@ def survey_figure(
         axes = panel(figure, *place)
         for (sort, those), (marker, colour) in zip(sorts.items(), cycle(MARKS), strict=False):
             axes.plot(
-                values[those], apparent[those], marker, ms=2.8, color=colour, alpha=0.45, mew=0, label=sort
+                values[those],
+                apparent[those],
+                marker,
+                ms=2.8,
+                color=colour,
+                alpha=0.45,
+                mew=0,
+                label=sort or None,
             )
         axes.set(xlabel=beside, ylabel=label)
         if known.size:
             axes.axhline(np.median(known), color=INK, lw=0.8, ls=(0, (5, 3)), label="median")
-    if against:
-        signs = [line for line in figure.axes[-1].lines if line.get_label()]
+    if against and (apart or known.size):
+        # Lines without a label of their own begin with an underscore.
+        signs = [line for line in figure.axes[-1].lines if not str(line.get_label()).startswith("_")]
         figure.legend(
             handles=signs,
             loc="lower right",
@@ -165,7 +173,7 @@ def _section(
     across, up = proportions(nodes)
     inches = min(widest / across, PICTURE[1] / up)
     width, height = across * inches, up * inches
-    place = (0.65, top - height, width, height)
+    place = (0.75, top - height, width, height)
     axes = panel(figure, *place)
     scale = colour_scale(coverage.values, np.where(ground(nodes, surface), 0, 1).astype(np.int8))
     draw_field(
@@ -177,6 +185,6 @@ def _section(
     draw_positions(axes, positions)
     axes.set(xlabel="distance (m)", ylabel=elevation_label(nodes))
     bar = figure.colorbar(
-        ScalarMappable(scale, COVERAGE_COLOURS), cax=panel(figure, 0.65 + width + 0.1, place[1], 0.12, height)
+        ScalarMappable(scale, COVERAGE_COLOURS), cax=panel(figure, 0.75 + width + 0.1, place[1], 0.12, height)
     )
     bar.outline.set_linewidth(0.5)

@@ -264,7 +264,8 @@ def _usual(ground: Ground) -> list[list[float]]:
     if usual is None:
         return []
     drawn = np.column_stack([usual.lower, usual.upper, usual.values])
-    return drawn[np.isfinite(drawn).all(axis=1)].tolist()
+    told: list[list[float]] = drawn[np.isfinite(drawn).all(axis=1)].tolist()
+    return told
 
 
 def frame_data(ground: Ground) -> dict[str, Any]:
