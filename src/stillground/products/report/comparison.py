@@ -168,12 +168,18 @@ def _pair(first: Profile, second: Profile, number: int) -> dict[str, Any]:
     change = max(
         float(np.percentile(np.abs(both.difference[used]), 99)), 1e-3 * (ground.scale[1] - ground.scale[0])
     )
+    scale = ground.scale
+    if ground.frame.distance is None:
+        # Curves are drawn whole, both on one axis.
+        models = np.stack([ground.model, both.second])[:, ground.inside]
+        scale = (float(models.min()), float(models.max()))
+        change = max(change, float(np.abs(both.difference[ground.inside]).max()))
     anomaly = float(np.std(ground.model[used]))
     moved = float(np.sqrt(np.mean(both.difference[used] ** 2)))
     label = ground.label
     less = labelled("B less A", unit)
     sights = [
-        Sight(model, ground.scale, label, f"{ground.long_name} of {name}")
+        Sight(model, scale, label, f"{ground.long_name} of {name}")
         for name, model in zip(_NAMES, (ground.model, both.second), strict=True)
     ] + [Sight(both.difference, (-change, change), less, "difference, B less A", CHANGE)]
     stacks = {
@@ -195,7 +201,7 @@ def _pair(first: Profile, second: Profile, number: int) -> dict[str, Any]:
             "names": list(_NAMES),
             "frame": frame_data(ground),
             "property": {"name": ground.name, "units": unit},
-            "scale": list(ground.scale),
+            "scale": list(scale),
             "change": change,
             "stacks": {name: packed.about for name, packed in stacks.items()},
         }
