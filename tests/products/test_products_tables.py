@@ -82,6 +82,7 @@ def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result
         "refinement",
         "averages",
         "noise",
+        "start_dependence",
         "remarks",
         "extras",
         "rehearsal",
