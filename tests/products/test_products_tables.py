@@ -90,7 +90,7 @@ def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result
         "files",
     ]
     assert (profile["data"], profile["nodes"]) == (625, 89 * 121)
-    assert list(profile["chosen"]) == ["rule", "iteration", "chi_square"]
+    assert list(profile["chosen"]) == ["rule", "iteration", "chi_square", "chi_square_recomputed"]
     assert profile["chosen"]["iteration"] == 9
     assert list(profile["rules"][0]) == [
         "rule",
