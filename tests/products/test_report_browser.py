@@ -391,9 +391,11 @@ def test_colours_tell_values_apart_for_every_eye(page: Browser, sight: str) -> N
 
 
 @pytest.mark.parametrize("width", [1366, 1024])
-def test_nothing_scrolls_sideways(page: Browser, width: int) -> None:
+def test_nothing_scrolls_sideways(page: Browser, width: int, tmp_path: Path) -> None:
     page.devtools("Emulation.setDeviceMetricsOverride", **(WIDE | {"width": width, "height": 700}))
     page.settle()
+    # Kept for people to look at: pytest keeps the folders of its last runs.
+    Image.fromarray(page.screenshot().astype(np.uint8)).save(tmp_path / f"report-{width}.png")
     assert page.run("return document.documentElement.scrollWidth") <= width
     right, edge = page.run(
         "const m = document.querySelector('.map').getBoundingClientRect(),"
