@@ -8,6 +8,7 @@ from typing import Any
 
 import matplotlib as mpl
 import numpy as np
+import pandas as pd
 import pytest
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
@@ -21,6 +22,7 @@ from stillground.products.figures.pattern import pattern_figure
 from stillground.products.figures.sensitivity import sensitivity_figure
 from stillground.products.figures.sheet import TEAL
 from stillground.products.figures.survey import survey_figure
+from stillground.products.overlay import Overlay
 from stillground.products.picture import picture_dataset
 from stillground.protocols import Average, Differences, Field, Pattern, Result, RuleOptions
 
@@ -213,6 +215,28 @@ def test_no_words_leave_the_sheet_or_cover_each_other(column: Result, tmp_path: 
     named = figures("hole", column, tolerance=0.02, options=options, surface=SURFACE, positions=POSITIONS)
     written = write_figures(tmp_path, "hole", named)
     assert "hole_column.png" in {path.name for path in written}
+
+
+def test_known_ground_is_drawn_and_its_signs_cover_no_others(column: Result) -> None:
+    table = pd.DataFrame(
+        {"name": ["log", "rock"], "distance": 0.0, "z": [50.0, 40.0], "known": [1700.0, np.nan]}
+    )
+    figure = column_figure(
+        "hole",
+        column,
+        tolerance=0.02,
+        surface=SURFACE,
+        positions=POSITIONS | {"station": np.array([[60.0]])},
+        differences=replace(
+            STEPPED, long_name="first differences of times reduced to the vertical, as usual"
+        ),
+        known=Overlay(table, "m s-1", "total error", 0),
+    )
+    figure.draw_without_rendering()
+    (axes,) = figure.axes
+    assert any(line.get_xydata().tolist() == [[1700.0, 50.0]] for line in axes.lines)
+    assert any(np.ptp(line.get_ydata()) == 0 and line.get_ydata()[0] == 40.0 for line in axes.lines)
+    assert not axes.get_legend().get_window_extent().overlaps(figure.legends[0].get_window_extent())
 
 
 def test_an_interval_without_a_velocity_has_none_in_the_product(column: Result, provenance: Any) -> None:

@@ -71,7 +71,8 @@ def column_figure(
 
     averages = [replace(mean, units=unit_text(mean.units)).sentence for mean in read_averages(result)]
     verdict, chosen = result.ladder.verdict, result.chosen
-    bottom = FOOT + (1.1 if differences is None else 1.25)
+    # The key of signs at the foot takes a second row with those of known ground.
+    bottom = FOOT + (1.1 if differences is None else 1.25) + (0.0 if known is None else LINE_STEP)
     figure = sheet(
         SIZE[0] + 1.2,
         bottom + SIZE[1] + LINE_STEP * len(averages) + HEADING + 0.3,
