@@ -12,6 +12,7 @@ import pandas as pd
 import xarray as xr
 
 from stillground.products.reading import shown, shown_change
+from stillground.products.trace import feet
 from stillground.products.units import with_unit
 from stillground.protocols import Array, GroundProperty, Known
 from stillground.whole import whole
@@ -81,24 +82,28 @@ def overlay(
     metres : float
         One unit of its easting and northing, m.
     reach : float
-        How far from the profile points are taken, m.
+        How far from the profile points are taken, m; none beyond its ends.
     """
     points = np.vstack([np.empty((0, 3)), *(one.points for one in known)])
     values = np.concatenate([np.empty(0), *(one.values for one in known)])
     names = np.array([name for one in known for name in one.names], dtype=object)
-    distance, aside = _beside(points[:, :2], picture, metres)
-    near = aside <= reach
+    plan = [metres * np.atleast_1d(picture[axis].to_numpy()) for axis in ("easting", "northing")]
+    near, place, aside = feet(np.column_stack(plan), points[:, :2], reach)
+    distance = np.zeros(near.size)
+    if "distance" in picture.dims:
+        along = picture["distance"].to_numpy()
+        distance = np.interp(place, np.arange(along.size), along)
     kind = "total_error" if f"{seen.name}_total_error" in picture else "noise_part"
     found, error = (
-        _at(picture[name], distance[near], points[near, 2]) for name in (seen.name, f"{seen.name}_{kind}")
+        _at(picture[name], distance, points[near, 2]) for name in (seen.name, f"{seen.name}_{kind}")
     )
     answer, given = (shown(seen, numbers)[0] for numbers in (found, values[near]))
     table = pd.DataFrame(
         {
             "name": names[near],
             **{axis: points[near, i] for i, axis in enumerate("xyz")},
-            "distance": distance[near],
-            "aside": aside[near],
+            "distance": distance,
+            "aside": aside,
             "known": given,
             "found": answer,
             "difference": given - answer,
@@ -106,7 +111,7 @@ def overlay(
         }
     )
     said = "total error" if kind == "total_error" else "noise part alone, which is not all of the error"
-    return Overlay(table, shown(seen, found)[2], said, int(np.sum(~near)))
+    return Overlay(table, shown(seen, found)[2], said, len(points) - near.size)
 
 
 def write_overlay(folder: Path, name: str, beside: Overlay) -> Path:
@@ -118,22 +123,6 @@ def write_overlay(folder: Path, name: str, beside: Overlay) -> Path:
     with whole(path) as temporary:
         table.to_csv(temporary, index=False, float_format="%.7g", lineterminator="\n", encoding="utf-8")
     return path
-
-
-def _beside(plan: Array, picture: xr.Dataset, metres: float) -> tuple[Array, Array]:
-    """Distance along the trace of its point nearest to each place, and how far off it lies, m."""
-    trace = metres * np.column_stack(
-        [np.atleast_1d(picture[name].to_numpy()) for name in ("easting", "northing")]
-    )
-    if len(trace) == 1:
-        return np.zeros(len(plan)), np.hypot(*(plan - trace[0]).T)
-    legs, along = np.diff(trace, axis=0), picture["distance"].to_numpy()
-    from_start = plan[:, None] - trace[:-1]
-    share = np.clip(np.sum(from_start * legs, axis=2) / np.sum(legs**2, axis=1), 0, 1)
-    off = np.linalg.norm(from_start - share[..., None] * legs, axis=2)
-    best = np.argmin(off, axis=1)
-    rows = np.arange(len(plan))
-    return along[best] + share[rows, best] * np.diff(along)[best], off[rows, best]
 
 
 def _at(field: xr.DataArray, distance: Array, elevation: Array) -> Array:
