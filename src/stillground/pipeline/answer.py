@@ -61,7 +61,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     """
     method = plan_method(config)
     repeated = grids[repeated_rung(grids)]
-    linear = yield from linear_ladder(profile, config, grids, repeated_rung(grids), method)
+    linear = yield from linear_ladder(profile, config, grids, method)
     if config.errors.outliers != "off" and not linear.outer:
         always = config.errors.outliers == "tukey"
         work = find_outliers(linear(repeated), repeated, method, always=always)

@@ -8,7 +8,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from stillground.config import Config
-from stillground.grid import Grid, carry
+from stillground.grid import Grid
 from stillground.pipeline.profiles import Profile
 from stillground.progress import staged
 from stillground.protocols import Array, Measurement, NonlinearMeasurement, Progress
@@ -79,12 +79,11 @@ def in_unknown(value: float | None, config: Config) -> float | None:
 
 
 def linear_ladder(
-    profile: Profile, config: Config, grids: Sequence[Grid], first: int, method: Method
+    profile: Profile, config: Config, grids: Sequence[Grid], method: Method
 ) -> Generator[Progress, None, Linear]:
-    """Linearises a nonlinear measurement on every grid, with the weights found on the ``first`` one.
+    """Linearises a nonlinear measurement on every grid, all with the same outer steps and weights.
 
-    Every rung makes the same few steps from the answer of a neighbour, in the end that of the first grid:
-    full schedules of their own would leave rungs apart by where each happened to halve a step. Of a linear
+    Both are found on the finest grid but one, whose predictions are nearly those of the finest. Of a linear
     measurement there is nothing to do. A keyboard interrupt ends the ladder at the rung before, if any.
 
     Yields
@@ -93,22 +92,22 @@ def linear_ladder(
     """
     measured = assembly(profile, config)
     plain = Linear(measured, tuple(grids), np.ones(profile.survey.sizes["datum"]))
-    pilot = measured(grids[first])
+    leader = grids[max(len(grids) - 2, 0)]
+    pilot = measured(leader)
     if not isinstance(pilot, NonlinearMeasurement):
         return plain
-    work = linearise(pilot, grids[first], method, outliers=config.errors.outliers)
+    work = linearise(pilot, leader, method, outliers=config.errors.outliers)
     led = yield from staged(work, "outer steps of the nonlinear measurement")
-    near, outer = (grids[first], led.field), dict[Grid, Linearised]()
+    outer: dict[Grid, Linearised] = {}
     try:
         for number, grid in enumerate(grids, start=1):
+            if grid is leader:
+                outer[grid] = led
+                continue
             measurement = measured(grid)
             assert isinstance(measurement, NonlinearMeasurement)
-            here, values = near
-            begin = carry(values.reshape(here.shape), here, grid).reshape(-1)
-            work = linearise(measurement, grid, method, targets=led.onwards, weights=led.weights, begin=begin)
+            work = linearise(measurement, grid, method, targets=led.targets, weights=led.weights)
             outer[grid] = yield from staged(work, f"outer steps on rung {number} of {len(grids)}")
-            if number > first:
-                near = grid, outer[grid].field
     except KeyboardInterrupt:
         if not outer:
             raise

@@ -69,7 +69,7 @@ def rehearse_all(
             yield (yield from _patterns(profile, grids, config, text, folder, command))
         else:
             method, pair, noise = plan_method(config), two_rungs(grids), 1.0
-            linear = yield from linear_ladder(profile, config, pair, 0, method)
+            linear = yield from linear_ladder(profile, config, pair, method)
             if not config.errors.trust:
                 noise = (yield from _own_answer(linear(pair[0]), pair[0], method)).noise
             found = yield from rehearse_profile(profile, config, grids, linear, noise)
@@ -90,7 +90,7 @@ def _patterns(
 ) -> Generator[Progress, None, Patterns]:
     coarse, fine = two_rungs(grids)
     method = plan_method(config)
-    linear = yield from linear_ladder(profile, config, (coarse, fine), 0, method)
+    linear = yield from linear_ladder(profile, config, (coarse, fine), method)
     sizes = config.rehearsal.patterns or [factor * method.correlation[-1] for factor in _SIZES]
     answer = yield from _own_answer(linear(coarse), coarse, method)
     stop = answer.stop(method.choose)

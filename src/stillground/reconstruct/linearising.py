@@ -12,7 +12,7 @@ from pylops import LinearOperator
 
 from stillground.grid import Grid
 from stillground.protocols import Array, Measurement, NonlinearMeasurement, Progress
-from stillground.reconstruct.outliers import biweight, some_wild, weighted_errors
+from stillground.reconstruct.outliers import biweight, huber, some_wild, weighted_errors
 from stillground.reconstruct.reconstruction import Method, prior
 from stillground.solve.cgls import cgls
 from stillground.standard_form import StandardForm, standard_form
@@ -26,8 +26,6 @@ _NEAR, _TOLD = 1.1, 1.25
 _OUTER, _INNER, _HALVINGS = 20, 60, 5
 # Two steps in a row that bring less than this part of the fall they aim at fit what is no ground.
 _STALLED = 0.25
-# From the field of a neighbouring rung, so many steps bring the misfit to rest.
-_ONWARDS = 3
 _PASSES, _SETTLED = 8, 0.05
 # Of a logarithm, a factor of seven: what is farther from a linearisation is nonsense.
 _FARTHEST = 2.0
@@ -45,7 +43,7 @@ class Linearised:
         The last linearisation with the stated errors, centred on the prior mean: operator J at u_K, data
         ``d - F(u_K) + J u_K``.
     field : array, shape (n_nodes,)
-        The model that the last step led to from u_K: the iterate of that linearisation whose misfit is 1.
+        The model u_K that the last step led to.
     targets : tuple of float
         Chi-squares that the steps aimed at.
     chi_squares : tuple of float
@@ -66,11 +64,6 @@ class Linearised:
     reached: bool
     reason: str
 
-    @property
-    def onwards(self) -> tuple[float, ...]:
-        """Targets for every rung of a ladder that begins with this field: no further than it came."""
-        return (1.0 if self.reached else self.chi_squares[-1],) * _ONWARDS
-
 
 def linearise(
     measurement: NonlinearMeasurement,
@@ -79,14 +72,13 @@ def linearise(
     *,
     targets: Sequence[float] | None = None,
     weights: Array | None = None,
-    begin: Array | None = None,
     outliers: Outliers = "off",
 ) -> Generator[Progress, None, Linearised]:
     """Fits a nonlinear measurement by linear ones in standard form, until chi-square is 1.
 
-    Each linearisation, about the model before, is solved from the prior mean: its CGLS ends where the linear
-    misfit meets the step's target exactly. The way there is halved until the nonlinear misfit falls. So the
-    last one has the answer among its own iterates, which steps from model to model would not leave there.
+    Gauss-Newton with increments: each linearisation is solved from the model it is made at, by CGLS that
+    ends where the linear misfit meets the step's target exactly; the step is halved until the nonlinear
+    misfit falls. One last linearisation, centred on the prior mean, is left for the rules to judge.
     Only the prior's covariance is taken from ``method``, its mean from the measurement.
 
     Parameters
@@ -99,11 +91,9 @@ def linearise(
         the same steps. Default: each step aims at a quarter of chi-square, down to 1.
     weights : array, shape (n_data,), optional
         Of the data, kept throughout.
-    begin : array, shape (n_nodes,), optional
-        Where to linearise first, as an answer on another grid; default: at the prior mean.
     outliers : "auto", "tukey" or "off"
-        Without ``weights``: reweight by Tukey's biweight at each step, where "auto" keeps the weights only
-        when at least two residuals turn out wild.
+        Without ``weights``: Huber's weights at each step to begin with, then Tukey's biweight until it
+        rests; with "auto" only when at least two residuals turn out wild, else all weights are 1.
 
     Yields
     ------
@@ -122,16 +112,15 @@ def linearise(
     if weights is None:
         weights = np.ones_like(measurement.data)
         if outliers != "off":
-            found, residual = yield from _steps(measurement, grid, method, None, None)
+            _, residual = yield from _steps(measurement, grid, method, None, None)
             if outliers == "tukey" or some_wild(residual):
-                weights = found.weights
-                # Data left out early, when ground still to come looked like outliers, come back.
+                weights = biweight(residual)
                 for _ in range(_PASSES):
-                    found, residual = yield from _steps(measurement, grid, method, None, weights)
+                    _, residual = yield from _steps(measurement, grid, method, None, weights)
                     before, weights = weights, biweight(residual)
                     if float(np.abs(weights - before).max()) < _SETTLED:
                         break
-    found, _ = yield from _steps(measurement, grid, method, targets, weights, begin)
+    found, _ = yield from _steps(measurement, grid, method, targets, weights)
     return found
 
 
@@ -160,65 +149,54 @@ def _steps(
     method: Method,
     targets: Sequence[float] | None,
     weights: Array | None,
-    begin: Array | None = None,
 ) -> Generator[Progress, None, tuple[Linearised, Array]]:
-    """The loop, and its last residual in stated errors; without weights they are found on the way."""
+    """The loop, and its last residual in stated errors; without weights Huber's of each step."""
     data, errors = measurement.data, measurement.errors
-    field = measurement.start if begin is None else begin
+    field = measurement.start
+    # What extra unknowns add to the data.
     beside = np.zeros_like(data)
+    linear, predicted = linearised_at(measurement, field)
     root: LinearOperator | None = None
     aims: list[float] = []
     chi_squares: list[float] = []
     slow, ended = 0, ""
     while True:
-        linear, predicted = linearised_at(measurement, field)
         residual = data - predicted - beside
-        counted = biweight(residual / errors) if weights is None else weights
-        fitted = replace(linear, errors=weighted_errors(errors, counted))
+        counted = huber(residual / errors) if weights is None else weights
+        fitted = replace(linear, data=linear.data - beside, errors=weighted_errors(errors, counted))
         chi_square = _mean_square(residual / fitted.errors)
-        chi_squares = [*chi_squares[: len(aims)], chi_square]
-        yield Progress("", len(aims), len(targets or ()) or _OUTER, f"misfit {chi_square:.3g}")
-        aim = max(_FALL * chi_square, 1.0)
-        if targets is not None:
-            if len(aims) == len(targets):
-                break
-            aim = targets[len(aims)]
-        elif not aims and chi_square <= 1:
+        chi_squares.append(chi_square)
+        made = len(aims)
+        yield Progress("", made, len(targets or ()) or _OUTER, f"misfit {chi_square:.3g}")
+        if ended or made == (_OUTER if targets is None else len(targets)):
             break
-        aims.append(aim)
+        if targets is None and chi_square <= (_NEAR if made else 1.0):
+            break
+        aim = max(_FALL * chi_square, 1.0) if targets is None else targets[made]
         if root is None:
             root, _ = prior(fitted, grid, method)
-        standard = standard_form(fitted, root, measurement.start)
+        standard = standard_form(fitted, root, field)
         solution = _iterate_at(standard, aim)
         step = standard.ground(solution) - field
         found = standard.extras(solution)
-        constants = sum((extra.response @ found[extra.name] for extra in fitted.extras), -beside)
+        constants = sum((extra.response @ found[extra.name] for extra in fitted.extras), np.zeros_like(data))
         part = min(1.0, _FARTHEST / max(float(np.abs(step).max()), _FARTHEST))
         for _ in range(_HALVINGS):
-            residual = data - measurement.predict(field + part * step) - beside - part * constants
-            after = _mean_square(residual / fitted.errors)
+            there = linearised_at(measurement, field + part * step)
+            after = _mean_square((data - there[1] - beside - part * constants) / fitted.errors)
             if after <= max(chi_square, _NEAR * aim):
                 break
             part /= 2
         else:
-            aims.pop()
-            residual = data - predicted - beside
             ended = "no shorter step lowers it"
             break
+        linear, predicted = there
         field, beside = field + part * step, beside + part * constants
-        chi_squares.append(after)
-        if targets is not None:
-            # The last one stays, as it stayed where the schedule comes from.
-            if len(aims) == len(targets):
-                break
-            continue
-        if part == 1 and aim == 1 and after <= _NEAR:
-            break
-        still = grid.norm(part * step) < _STILL * grid.norm(field - measurement.start)
-        slow = slow + 1 if chi_square - after < _STALLED * (chi_square - aim) and after > _NEAR else 0
-        if still or slow > 1 or len(aims) == _OUTER:
-            ended = "further steps hardly lower it"
-            break
+        aims.append(aim)
+        if targets is None:
+            still = grid.norm(part * step) < _STILL * grid.norm(field - measurement.start)
+            slow = slow + 1 if chi_square - after < _STALLED * (chi_square - aim) and after > _NEAR else 0
+            ended = "further steps hardly lower it" if still or slow > 1 else ""
     made = len(aims)
     reached = chi_squares[-1] <= _TOLD
     reason = f"the misfit comes to {chi_squares[-1]:.3g} in {made} outer steps"

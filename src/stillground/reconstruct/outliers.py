@@ -12,7 +12,7 @@ from stillground.protocols import Array, Measurement, Progress
 from stillground.reconstruct.reconstruction import Method, reconstruct
 from stillground.stopping.gcv import gcv
 
-_BIWEIGHT = 4.685
+_BIWEIGHT, _HUBER = 4.685, 1.345
 # Mean of weight times square of normal data, E[(1 - z^2/c^2)^2 z^2] with the normal moments 1, 3, 15.
 _ENERGY = 1 - 2 * 3 / _BIWEIGHT**2 + 15 / _BIWEIGHT**4
 _MAD_TO_DEVIATION = 1.4826
@@ -54,6 +54,18 @@ def biweight(residual: Array) -> Array:
     """
     scaled = residual / (_BIWEIGHT * _deviation(residual))
     return np.where(np.abs(scaled) < 1, (1 - scaled**2) ** 2, 0.0)
+
+
+def huber(residual: Array) -> Array:
+    """Huber's weights of residuals, at 1.345 robust standard deviations, shape (n_data,).
+
+    They are never 0, so that residuals of ground still to be found are not given up as outliers are.
+
+    References
+    ----------
+    Huber (1964), Robust estimation of a location parameter, Annals of Mathematical Statistics 35.
+    """
+    return np.asarray(1 / np.maximum(np.abs(residual) / (_HUBER * _deviation(residual)), 1))
 
 
 def find_outliers(
