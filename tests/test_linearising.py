@@ -89,16 +89,16 @@ def rms(values: Array) -> float:
 def test_chi_square_comes_to_one_and_the_last_linearisation_is_left_to_be_judged() -> None:
     measurement = toy()
     outcome = finish(linearise(measurement, LINE, TOY))
-    assert outcome.chi_squares[0] > 100
+    assert outcome.steps.misfits[0] > 100
     assert outcome.reached
-    assert outcome.chi_squares[-1] == pytest.approx(1.0, abs=0.1)
-    assert len(outcome.targets) <= 8
+    assert outcome.steps.misfits[-1] == pytest.approx(1.0, abs=0.1)
+    assert len(outcome.steps.targets) <= 8
     assert rms(outcome.field - truth(LINE.axes[0])) < 0.1 * rms(truth(LINE.axes[0]))
     # The last linearisation touches the measurement where the steps ended, and its history begins at the
     # prior mean: the discrepancy principle finds nearly the same ground on it.
     linear, predicted = linearised_at(measurement, outcome.field)
     assert np.array_equal(outcome.measurement.data, linear.data)
-    assert np.mean(((measurement.data - predicted) / measurement.errors) ** 2) == outcome.chi_squares[-1]
+    assert np.mean(((measurement.data - predicted) / measurement.errors) ** 2) == outcome.steps.misfits[-1]
     answer = answered(outcome, LINE, TOY)
     assert rms(answer - outcome.field) < 0.01 * rms(answer)
     residual = (measurement.data - measurement.predict(answer)) / measurement.errors
@@ -145,8 +145,8 @@ def test_of_a_linear_measurement_it_is_the_linear_answer(delay: bool) -> None:
     outcome = finish(linearise(measured, LINE, TOY))
     found = finish(reconstruct(linear, LINE, replace(TOY, background=0.2)))
     # Where nothing bends, every step meets its target exactly and the last linearisation is the measurement.
-    assert outcome.chi_squares[1:] == pytest.approx(outcome.targets, rel=1e-6)
-    assert outcome.targets[-1] == 1
+    assert outcome.steps.misfits[1:] == pytest.approx(outcome.steps.targets, rel=1e-6)
+    assert outcome.steps.targets[-1] == 1
     assert rms(answered(outcome, LINE, TOY) - found.model(found.stop("discrepancy")).reshape(-1)) < 1e-9
 
 
@@ -177,9 +177,9 @@ def test_rungs_that_make_the_same_steps_settle() -> None:
     led = finish(linearise(toy(grids[1]), grids[1], TOY))
     steps, answers = [], []
     for grid in grids:
-        outcome = finish(linearise(toy(grid), grid, TOY, targets=led.targets, weights=led.weights))
-        assert outcome.targets == led.targets
-        assert len(outcome.chi_squares) == len(led.targets) + 1
+        outcome = finish(linearise(toy(grid), grid, TOY, targets=led.steps.targets, weights=led.weights))
+        assert outcome.steps.targets == led.steps.targets
+        assert len(outcome.steps.misfits) == len(led.steps.targets) + 1
         steps.append(outcome.field)
         answers.append(answered(outcome, grid, TOY))
     for fields in (steps, answers):
@@ -205,7 +205,7 @@ def test_data_that_the_start_explains_need_no_step() -> None:
     explained = replace(measurement, start=truth(LINE.axes[0]))
     outcome = finish(linearise(explained, LINE, TOY))
     assert outcome.reached
-    assert outcome.targets == ()
+    assert outcome.steps.targets == ()
     assert outcome.field is explained.start
 
 
@@ -263,7 +263,7 @@ def test_curved_rays_find_a_body_and_outliers_do_not_hide_it() -> None:
     clean, body = crosshole(0.3)
     outcome = finish(linearise(clean, SECTION, ROCK))
     assert outcome.reached
-    assert len(outcome.targets) <= 8
+    assert len(outcome.steps.targets) <= 8
     before = rms(clean.start - body)
     error = rms(outcome.field - body)
     assert error < 0.5 * before

@@ -399,6 +399,26 @@ class Ladder:
 
 
 @dataclass(frozen=True)
+class OuterSteps:
+    """How the linearisations of a nonlinear measurement led to the one that the rules judge, on one grid.
+
+    Parameters
+    ----------
+    misfits : tuple of float
+        Chi-square at the prior mean and after each outer step, by the nonlinear measurement itself.
+    targets : tuple of float
+        Chi-squares that the steps aimed at.
+    inner : tuple of array, shape (n_inner + 1,)
+        For each step the chi-square of its linearisation over the inner iterations, the last one cut where
+        it meets the target.
+    """
+
+    misfits: tuple[float, ...]
+    targets: tuple[float, ...]
+    inner: tuple[Array, ...]
+
+
+@dataclass(frozen=True)
 class Choice:
     """One rule's pick on the finest rung, with what it means for the picture.
 
@@ -553,6 +573,8 @@ class Result:
     rays : tuple of array, shape (n_points, n_axes)
         The way of each datum through the answer where they bend with it, m; as in
         `NonlinearMeasurement.rays`.
+    outer_steps : OuterSteps or None
+        Of a nonlinear measurement, on the finest rung.
     start_dependence : mapping of str to float
         Of a nonlinear measurement, how far the answer on a coarse rung moves from another start, by its
         name: relative L2 change.
@@ -584,6 +606,7 @@ class Result:
     interrupted: bool = False
     averages: Mapping[str, Average] = field(default_factory=dict)
     rays: tuple[Array, ...] = ()
+    outer_steps: OuterSteps | None = None
     start_dependence: Mapping[str, float] = field(default_factory=dict)
 
 

@@ -58,7 +58,7 @@ def test_a_twin_settles_near_the_truth_and_a_white_prior_does_not() -> None:
     grid = top.finest.grid
     outer = linear.outer[grid]
     assert outer.reached
-    assert len(outer.targets) <= 8
+    assert len(outer.steps.targets) <= 8
     measurement = linear.measured(grid)
     assert isinstance(measurement, NonlinearMeasurement)
     seen = lit(linear, grid)

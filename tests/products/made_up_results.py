@@ -15,6 +15,7 @@ from stillground.protocols import (
     GroundProperty,
     History,
     Ladder,
+    OuterSteps,
     Pattern,
     Pick,
     Rehearsal,
@@ -100,6 +101,14 @@ def make_sensitivity(x: np.ndarray) -> Sensitivity:
         ),
         spread=5e-6 + 1e-6 * np.abs(x - 9),
         investigation=np.abs(x - 9) / 22,
+    )
+
+
+def make_outer_steps() -> OuterSteps:
+    return OuterSteps(
+        misfits=(36.0, 9.4, 1.3, 1.02),
+        targets=(9.0, 2.25, 1.0),
+        inner=(np.array([36.0, 14.0, 9.0]), np.array([9.4, 4.0, 2.5, 2.25]), np.array([1.3, 1.0])),
     )
 
 

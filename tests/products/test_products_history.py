@@ -14,9 +14,10 @@ import xarray as xr
 from stillground.products.history import history_dataset, write_history
 from stillground.products.ladder import ladder_dataset, write_ladder
 from stillground.products.provenance import Provenance
+from stillground.products.summary import profile_summary
 from stillground.protocols import Field, Result, RuleOptions
 
-from .made_up_results import slowness
+from .made_up_results import make_outer_steps, slowness
 
 
 def reread(path: Path) -> xr.Dataset:
@@ -95,6 +96,20 @@ def test_noise_and_unknowns_beside_the_ground_are_kept(
     assert file.delay.dims == ()
     np.testing.assert_allclose(file.delay, 3e-4, rtol=1e-6)
     assert file.source_static.attrs["units"] == file.delay.attrs["units"] == "s"
+
+
+def test_outer_steps_are_kept_with_their_inner_iterations(
+    result: Result, provenance: Provenance, tmp_path: Path
+) -> None:
+    assert "outer_chi_square" not in written(result, provenance, tmp_path)
+    steps = make_outer_steps()
+    file = written(replace(result, outer_steps=steps), provenance, tmp_path)
+    np.testing.assert_allclose(file.outer_chi_square, steps.misfits, rtol=1e-6)
+    np.testing.assert_allclose(file.outer_target, [np.nan, *steps.targets])
+    for number, curve in enumerate(steps.inner, start=1):
+        np.testing.assert_allclose(file.inner_chi_square[file.inner_step == number], curve, rtol=1e-6)
+    summary = profile_summary("ab", replace(result, outer_steps=steps), {})
+    assert summary["outer_steps"]["inner_iterations"] == [2, 3, 1]
 
 
 def test_every_rule_has_its_pick_and_its_picture(

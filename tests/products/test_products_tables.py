@@ -82,6 +82,7 @@ def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result
         "refinement",
         "averages",
         "noise",
+        "outer_steps",
         "start_dependence",
         "remarks",
         "extras",
@@ -92,6 +93,7 @@ def test_the_summary_has_the_agreed_keys(summary: dict[str, Any], result: Result
     assert (profile["data"], profile["nodes"]) == (625, 89 * 121)
     assert list(profile["chosen"]) == ["rule", "iteration", "chi_square", "chi_square_recomputed"]
     assert profile["chosen"]["iteration"] == 9
+    assert profile["outer_steps"] is None
     assert list(profile["rules"][0]) == [
         "rule",
         "iteration",

@@ -161,6 +161,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
             for name, weights in averages(finest.grid).items()
         },
         rays=rays,
+        outer_steps=linear.outer[finest.grid].steps if linear.outer else None,
         start_dependence=moved_by_start,
     )
     if config.kind.logarithmic:

@@ -106,7 +106,7 @@ def linear_ladder(
                 continue
             measurement = measured(grid)
             assert isinstance(measurement, NonlinearMeasurement)
-            work = linearise(measurement, grid, method, targets=led.targets, weights=led.weights)
+            work = linearise(measurement, grid, method, targets=led.steps.targets, weights=led.weights)
             outer[grid] = yield from staged(work, f"outer steps on rung {number} of {len(grids)}")
     except KeyboardInterrupt:
         if not outer:

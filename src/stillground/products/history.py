@@ -13,7 +13,7 @@ from stillground.products.netcdf import write_netcdf
 from stillground.products.provenance import Provenance, argument
 from stillground.products.raster import Surface, coordinates, ground, map_variable
 from stillground.products.rays import ray_variables
-from stillground.protocols import Array, Choice, Field, Result, RuleOptions
+from stillground.protocols import Array, Choice, Field, OuterSteps, Result, RuleOptions
 
 CURVES = {
     "residual_norm": "norm of the whitened residual",
@@ -62,7 +62,10 @@ def history_dataset(
         beside the ground by their names: a lone one is a scalar, several lie on ``<name>_number``, which
         counts the groups of the survey in their order. Where rays bend with the ground, some corners of
         each datum's ray through the answer: ``ray_distance(ray_node)``, ``ray_elevation(ray_node)`` and
-        ``ray_node_count(ray)``, in the order of the fit table.
+        ``ray_node_count(ray)``, in the order of the fit table. Of the outer steps that led to the
+        linearisation which all this is about, ``outer_chi_square(outer_step)``, first at the prior mean, and
+        ``outer_target(outer_step)``, NaN there; and over all their inner iterations, one after another,
+        ``inner_chi_square(inner_iteration)``, of the linearisation of ``inner_step(inner_iteration)``.
     """
     history, choices = result.history, result.choices
     inside = ground(result.axes, surface)
@@ -94,6 +97,8 @@ def history_dataset(
     for label, found in result.extras.items():
         variables[label] = _extra(label, found.values, found.units)
     variables |= ray_variables(result.rays)
+    if result.outer_steps is not None:
+        variables |= _outer_steps(result.outer_steps)
     seen = result.property
     pictures = [
         Field(f"{seen.name}_at_pick", choice.model, seen.units, f"{seen.long_name} at the pick of the rule")
@@ -121,6 +126,23 @@ def write_history(folder: Path, name: str, dataset: xr.Dataset) -> Path:
     path = folder / f"{name}_history.nc"
     write_netcdf(dataset, path)
     return path
+
+
+def _outer_steps(steps: OuterSteps) -> dict[str, xr.Variable]:
+    inner = np.concatenate([np.empty(0), *steps.inner])
+    number = np.repeat(np.arange(len(steps.inner)) + 1, [len(curve) for curve in steps.inner])
+    return {
+        "outer_chi_square": _numbers(
+            "outer_step", np.array(steps.misfits), "mean squared whitened residual, recomputed"
+        ),
+        "outer_target": _numbers(
+            "outer_step", np.array([np.nan, *steps.targets]), "what the linearised misfit was to fall to"
+        ),
+        "inner_chi_square": _numbers("inner_iteration", inner, "mean squared whitened residual, linearised"),
+        "inner_step": xr.Variable(
+            "inner_iteration", number.astype(np.int32), {"long_name": "outer step it led to", "units": "1"}
+        ),
+    }
 
 
 def _picks(choices: tuple[Choice, ...]) -> dict[str, xr.Variable]:

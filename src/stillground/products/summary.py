@@ -13,7 +13,7 @@ import numpy as np
 from stillground.products.averages import read_averages
 from stillground.products.ladder import rung_spacing
 from stillground.products.ratios import ratio_numbers
-from stillground.protocols import Found, Rehearsal, Result, Sensitivity
+from stillground.protocols import Found, OuterSteps, Rehearsal, Result, Sensitivity
 from stillground.whole import whole
 
 WORST_FIRST = ("drifting", "undecided", "settled")
@@ -38,9 +38,9 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
         ``rms`` and ``largest`` size. ``index`` is the grid convergence index of the rms anomaly, None for
         ``index_reason``. ``averages`` are of what people read, as velocity. Of a nonlinear measurement
         ``chi_square_recomputed`` is the chosen answer's own misfit, beside that on its last linearisation
-        (else None), and ``start_dependence`` how far other starts move the answer on a coarse rung,
-        relative. ``rehearsal`` and
-        ``sensitivity`` are None where they were not asked for.
+        (else None), ``outer_steps`` the misfits, targets and numbers of inner iterations that led there (else
+        None), and ``start_dependence`` how far other starts move the answer on a coarse rung, relative.
+        ``rehearsal`` and ``sensitivity`` are None where they were not asked for.
     """
     ladder, chosen = result.ladder, result.chosen
     return {
@@ -99,6 +99,7 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
             for mean in read_averages(result)
         ],
         "noise": result.noise,
+        "outer_steps": None if result.outer_steps is None else _outer_steps(result.outer_steps),
         "start_dependence": dict(result.start_dependence),
         "remarks": list(result.remarks),
         "extras": {name: _extra(extra) for name, extra in result.extras.items()},
@@ -118,6 +119,14 @@ def rehearsal_summary(rehearsal: Rehearsal) -> dict[str, Any]:
             family: {rule: ratio_numbers(ratios) for rule, ratios in rules.items()}
             for family, rules in rehearsal.ratios.items()
         },
+    }
+
+
+def _outer_steps(steps: OuterSteps) -> dict[str, Any]:
+    return {
+        "misfits": list(steps.misfits),
+        "targets": list(steps.targets),
+        "inner_iterations": [len(curve) - 1 for curve in steps.inner],
     }
 
 

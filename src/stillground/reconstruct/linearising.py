@@ -11,7 +11,7 @@ import numpy as np
 from pylops import LinearOperator
 
 from stillground.grid import Grid
-from stillground.protocols import Array, Measurement, NonlinearMeasurement, Progress
+from stillground.protocols import Array, Measurement, NonlinearMeasurement, OuterSteps, Progress
 from stillground.reconstruct.outliers import biweight, huber, some_wild, weighted_errors
 from stillground.reconstruct.reconstruction import Method, prior
 from stillground.solve.cgls import cgls
@@ -44,10 +44,7 @@ class Linearised:
         ``d - F(u_K) + J u_K``.
     field : array, shape (n_nodes,)
         The model u_K that the last step led to.
-    targets : tuple of float
-        Chi-squares that the steps aimed at.
-    chi_squares : tuple of float
-        Mean squared whitened residual at the prior mean and after each step made, by F itself.
+    steps : OuterSteps
     weights : array, shape (n_data,)
         Of the data, 1 but for outliers.
     reached : bool
@@ -58,8 +55,7 @@ class Linearised:
 
     measurement: Measurement
     field: Array
-    targets: tuple[float, ...]
-    chi_squares: tuple[float, ...]
+    steps: OuterSteps
     weights: Array
     reached: bool
     reason: str
@@ -158,14 +154,15 @@ def _steps(
     linear, predicted = linearised_at(measurement, field)
     root: LinearOperator | None = None
     aims: list[float] = []
-    chi_squares: list[float] = []
+    misfits: list[float] = []
+    inner: list[Array] = []
     slow, ended = 0, ""
     while True:
         residual = data - predicted - beside
         counted = huber(residual / errors) if weights is None else weights
         fitted = replace(linear, data=linear.data - beside, errors=weighted_errors(errors, counted))
         chi_square = _mean_square(residual / fitted.errors)
-        chi_squares.append(chi_square)
+        misfits.append(chi_square)
         made = len(aims)
         yield Progress("", made, len(targets or ()) or _OUTER, f"misfit {chi_square:.3g}")
         if ended or made == (_OUTER if targets is None else len(targets)):
@@ -176,7 +173,7 @@ def _steps(
         if root is None:
             root, _ = prior(fitted, grid, method)
         standard = standard_form(fitted, root, field)
-        solution = _iterate_at(standard, aim)
+        solution, curve = _iterate_at(standard, aim)
         step = standard.ground(solution) - field
         found = standard.extras(solution)
         constants = sum((extra.response @ found[extra.name] for extra in fitted.extras), np.zeros_like(data))
@@ -193,38 +190,44 @@ def _steps(
         linear, predicted = there
         field, beside = field + part * step, beside + part * constants
         aims.append(aim)
+        inner.append(curve)
         if targets is None:
             still = grid.norm(part * step) < _STILL * grid.norm(field - measurement.start)
             slow = slow + 1 if chi_square - after < _STALLED * (chi_square - aim) and after > _NEAR else 0
             ended = "further steps hardly lower it" if still or slow > 1 else ""
     made = len(aims)
-    reached = chi_squares[-1] <= _TOLD
-    reason = f"the misfit comes to {chi_squares[-1]:.3g} in {made} outer steps"
+    reached = misfits[-1] <= _TOLD
+    reason = f"the misfit comes to {misfits[-1]:.3g} in {made} outer steps"
     if not reached:
         reason = (
-            f"the misfit stays at {chi_squares[-1]:.3g} after {made} outer steps, its target is 1"
+            f"the misfit stays at {misfits[-1]:.3g} after {made} outer steps, its target is 1"
             f"{': ' + ended if ended else ''}; the errors may be too small, some data outliers, or the grid "
             f"too coarse for them"
         )
-    used = tuple(aims if targets is None else targets)
-    outcome = Linearised(linear, field, used, tuple(chi_squares), counted, reached, reason)
-    return outcome, residual / errors
+    steps = OuterSteps(tuple(misfits), tuple(aims), tuple(inner))
+    return Linearised(linear, field, steps, counted, reached, reason), residual / errors
 
 
-def _iterate_at(standard: StandardForm, target: float) -> Array:
-    """The CGLS iterate, shape (n_unknowns,), between steps, whose mean squared residual is the target."""
+def _iterate_at(standard: StandardForm, target: float) -> tuple[Array, Array]:
+    """The CGLS iterate, shape (n_unknowns,), between steps, whose mean squared residual is the target.
+
+    Also the mean squares of its residual at the iterations up to there.
+    """
     aim = target * standard.b.size
     x, r = np.zeros(standard.operator.shape[1]), standard.b
+    curve = [_mean_square(r)]
     for step in islice(cgls(standard.operator, standard.b[:, None]), 1, _INNER + 1):
         before, left = x, r
         x, r = step.solution[:, 0], step.residual[:, 0]
+        curve.append(max(_mean_square(r), target))
         if r @ r <= aim:
             change = r - left
             slope, excess = float(left @ change), float(left @ left) - aim
             # |left + t change|^2 = aim, the smaller root.
             t = excess / (np.sqrt(max(slope**2 - float(change @ change) * excess, 0.0)) - slope)
-            return np.asarray(before + t * (x - before))
-    return x
+            x = before + t * (x - before)
+            break
+    return x, np.array(curve)
 
 
 def _mean_square(values: Array) -> float:

@@ -19,6 +19,7 @@ from stillground.products.figures.rules import rules_figure
 from stillground.products.figures.section import section_figure
 from stillground.products.figures.sensitivity import sensitivity_figure
 from stillground.products.figures.sheet import write_figure
+from stillground.products.figures.steps import steps_figure
 from stillground.products.overlay import Overlay
 from stillground.products.picture import product
 from stillground.products.raster import Surface
@@ -39,7 +40,7 @@ def figures(
     """What draws the figures of a result, by their names; nothing is drawn before it is called.
 
     ``section`` (of a column ``column``), ``errors``, ``rules``, ``ladder`` and ``residuals`` always,
-    ``rehearsal`` and ``sensitivity`` where the result has them.
+    ``steps``, ``rehearsal`` and ``sensitivity`` where the result has them.
 
     Parameters
     ----------
@@ -72,6 +73,8 @@ def figures(
         "ladder": partial(ladder_figure, profile, result, **on_ground),
         "residuals": partial(residuals_figure, profile, result),
     }
+    if result.outer_steps is not None:
+        drawn["steps"] = partial(steps_figure, profile, result, result.outer_steps)
     if result.rehearsal is not None:
         drawn["rehearsal"] = partial(rehearsal_figure, profile, result.rehearsal, result.chosen.rule)
     if result.sensitivity is not None:
