@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -11,6 +10,7 @@ import numpy as np
 import pytest
 import xarray as xr
 from numpy.testing import assert_allclose
+from tests.refraction_line import SHOTS, V0, K, dome, line, slotnick
 
 from stillground.errors import ConfigError, SurveyError
 from stillground.grid import Grid
@@ -21,45 +21,6 @@ from stillground.physics.reciprocity import reciprocity
 from stillground.physics.start_velocity import arrivals
 from stillground.products.rays import ray_variables, rays_of
 from stillground.protocols import Array
-
-V0, K = 500.0, 60.0
-
-
-def slotnick(starts: Array, ends: Array) -> Array:
-    """Times in v = V0 + K depth below elevation 0 (Slotnick 1959)."""
-    v1, v2 = V0 - K * starts[:, 1], V0 - K * ends[:, 1]
-    square = ((ends - starts) ** 2).sum(axis=1)
-    return np.asarray(np.arccosh(1 + K**2 * square / (2 * v1 * v2)) / K)
-
-
-def dome(x: Array) -> Array:
-    return np.asarray(2.0 - 0.002 * (x - 24.0) ** 2)
-
-
-SHOTS, RECEIVERS = np.arange(0.0, 49.0, 12.0), np.arange(1.0, 48.0, 2.0)
-
-
-def line(
-    shots: Array = SHOTS,
-    receivers: Array = RECEIVERS,
-    relief: Callable[[Array], Array] = np.zeros_like,
-    times: Callable[[Array, Array], Array] = slotnick,
-    **columns: Any,
-) -> xr.Dataset:
-    """A survey due east: every shot into every receiver at another place, rows from 2 as in a file."""
-    here, there = (g.ravel() for g in np.meshgrid(shots, receivers, indexing="ij"))
-    here, there = here[here != there], there[here != there]
-    starts, ends = (np.column_stack([at, relief(at)]) for at in (here, there))
-    found = {
-        "source_x": here, "source_y": 0 * here, "source_z": starts[:, 1],
-        "receiver_x": there, "receiver_y": 0 * there, "receiver_z": ends[:, 1],
-        "time": times(starts, ends), "time_error": 0 * here + 3e-4,
-    } | columns  # fmt: skip
-    return xr.Dataset(
-        {name: ("datum", values) for name, values in found.items()},
-        coords={"row": ("datum", np.arange(2, 2 + here.size))},
-        attrs={"source": "line.csv"},
-    )
 
 
 def placed(survey: xr.Dataset, folder: Path = Path(), **settings: Any) -> CurvedRayScene:
@@ -174,6 +135,23 @@ def test_rays_lead_from_source_to_receiver_below_the_surface(shots: Array) -> No
     assert rays[longest][:, 1].min() < min(scene.starts[longest, 1], scene.ends[longest, 1]) - 3.0
 
 
+def test_coverage_is_that_of_the_rays_given_and_holds_all_their_length() -> None:
+    """The times' own derivative by slowness is the length of ray by node, taken on another way."""
+    scene = placed(line(relief=dome))
+    here = grid(scene)
+    x, z = np.meshgrid(*here.axes, indexing="ij")
+    for u in (scene.assemble(here).start, -np.log(500.0 + 8.0 * x - 30.0 * np.minimum(z, 0.0)).reshape(-1)):
+        rays = scene.assemble(here).rays(u)
+        found = scene.coverage(here, (4.0, 2.0), rays).values
+        times = TravelTimes(here, scene.starts, scene.ends, surface=scene.ground_surface)
+        by_node = times.linearise(np.exp(u)).rmatvec(np.ones(len(scene.data)))
+        expected = here.local_mean(by_node / here.weights(), (4.0, 2.0))
+        assert_allclose(found, expected, atol=1e-6 * expected.max())
+        length = sum(np.linalg.norm(np.diff(ray, axis=0), axis=1).sum() for ray in rays)
+        assert here.weights() @ found.reshape(-1) == pytest.approx(length, rel=1e-6)
+    assert not scene.coverage(here, (4.0, 2.0), (np.empty((0, 2)),)).values.any(), "a lost ray covers nothing"
+
+
 def test_kept_rays_come_back_from_the_file_of_the_iteration() -> None:
     long = np.column_stack([np.linspace(0, 90, 400), -np.linspace(0, 9, 400)])
     rays = (long, np.empty((0, 2)), long[:5])
@@ -242,7 +220,7 @@ VELOCITIES = "depth [m],velocity [m/s]\n0,400\n10,1500\n"
         (
             "surface",
             SURFACE.replace("24,0,0", "24,0,-2"),
-            r"row 26 \(source 1 m\), .*row 14 \(receiver 1.92 m\)",
+            r"row 26 \(source by 1 m\), .*row 14 \(receiver by 1.92 m\)",
         ),
         ("surface", SURFACE.replace("48,0,0", "30,0,0"), "covers 0 to 30 m along a line of 0 to 48 m"),
         ("start", VELOCITIES.replace("10,", "0,"), "column depth must increase .* row 3 does not, at 0 m"),
@@ -289,7 +267,7 @@ def test_a_start_that_is_none_is_refused(start: str, said: str) -> None:
 @pytest.mark.parametrize(
     ("columns", "said"),
     [
-        ({"time": np.full(120, 1e-5)}, r"faster than any ground.*row 7 \(11 m in 0.01 ms\)"),
+        ({"time": np.full(120, 1e-5)}, r"faster than the fastest ground.*row 7 \(11 m in 0.01 ms\)"),
         ({"receiver_x": np.r_[0.0, np.tile(np.arange(1.0, 48.0, 2.0), 5)[1:]],
           "receiver_y": np.r_[0.3, np.zeros(119)]}, "fall on one point of the section in row 2"),
     ],

@@ -8,7 +8,7 @@ flattened in C order it has ``n_nodes`` entries.
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal, Protocol, runtime_checkable
@@ -707,8 +707,12 @@ class Scene(ABC):
         """The measurement on a grid."""
 
     @abstractmethod
-    def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> Field:
-        """How well the survey visits the ground, as means over about a correlation length."""
+    def coverage(self, grid: Grid, correlation: tuple[float, ...], rays: Sequence[Array] = ()) -> Field:
+        """How well the survey visits the ground, as means over about a correlation length.
+
+        ``rays`` are those through the ground found, as `NonlinearMeasurement.rays` gives them; none of a
+        linear measurement, whose ways are known.
+        """
 
     def averages(self, grid: Grid) -> Mapping[str, Array]:
         """Means of the property that practice asks for, by what they are over: weights of the nodes.

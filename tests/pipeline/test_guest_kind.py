@@ -39,7 +39,7 @@ class Cores(Scene):
         which = {"core": np.arange(lower.size)}
         return Measurement(MatrixMult(hats(grid, lower, upper)), self.apparent, errors, which)
 
-    def coverage(self, grid, correlation):
+    def coverage(self, grid, correlation, rays=()):
         seen = hats(grid, *(end[:, 0] for end in self.paths)).sum(axis=0)
         density = grid.local_mean(seen / grid.weights(), correlation)
         return Field("cover", density, "m-1", "cores by elevation")

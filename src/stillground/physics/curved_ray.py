@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Annotated, Any
@@ -17,18 +18,29 @@ from stillground.grid import Grid
 from stillground.ground import Ground
 from stillground.operators.curved_rays import TravelTimes
 from stillground.physics import first_arrivals
+from stillground.physics.path_density import path_density
 from stillground.physics.reciprocity import reciprocity
 from stillground.physics.shot_section import ShotSection, shot_section
 from stillground.physics.start_velocity import StartVelocity, constant, fitted_velocity
 from stillground.protocols import Array, Integers, Kind, NonlinearMeasurement, Scene
 from stillground.protocols import Field as GroundField
-from stillground.survey import Section, quantity, read_surface, read_velocities, row_numbers
+from stillground.survey import (
+    Section,
+    quantity,
+    read_surface,
+    read_velocities,
+    require_file,
+    row_numbers,
+    source_of,
+)
 from stillground.survey.faults import list_rows
 from stillground.survey.quantities import InputPath, Length
 
 # Positions may stand this far above a table of the surface, whose points lie apart: the surface is then
 # taken through them, m.
 _ABOVE = 0.5
+# Positions of a line along the surface may stand this far below a table of it, m.
+_BELOW = 2.0
 # A table of the surface may leave this share of the line open at each end.
 _OPEN = 0.05
 # Depths and velocities where there are no times to fit them to, m and m s-1: soil over rock (common
@@ -166,17 +178,13 @@ class CurvedRayScene(Scene):
             stretch=self.stretch,
         )
 
-    def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> GroundField:
-        """Length of ray through the start model in a unit of area, m-1.
-
-        A Gaussian mean over half a correlation length, which keeps the total: rays have no width.
-        """
-        slowness = np.exp(self.start.log_slowness(grid, self.ground_surface))
-        rays = self._travel_times(grid).linearise(slowness, self.errors)
-        density = rays.rmatvec(np.ones(self.data.size)) / grid.weights()
-        return GroundField(
-            "path_density", grid.local_mean(density, correlation), "m-1", "ray length per area"
+    def coverage(self, grid: Grid, correlation: tuple[float, ...], rays: Sequence[Array] = ()) -> GroundField:
+        """Length of ray in a unit of area, m-1, as `path_density`."""
+        starts, ends = (
+            np.vstack([np.empty((0, 2)), *(ray[part] for ray in rays)])
+            for part in (slice(None, -1), slice(1, None))
         )
+        return path_density(grid, starts, ends, correlation)
 
     def predict(self, ground: Ground) -> Array:
         """Times through a described ground of slowness, shape (n_data,), s.
@@ -291,6 +299,7 @@ class CurvedRay(Kind):
             ),
             doubts=(
                 *first_arrivals.doubts(survey, placed.lengths),
+                *_buried(placed.everywhere, surface, settings.surface),
                 *(() if both is None else both.doubts),
             ),
             inputs=tuple(path for path in (settings.surface, settings.start) if isinstance(path, Path)),
@@ -319,10 +328,10 @@ def _require_possible(survey: xr.Dataset, lengths: Array, times: Array, errors: 
             )
         ]
         raise SurveyError(
-            str(survey.attrs.get("source", "survey")),
+            source_of(survey),
             [
-                f"faster than any ground, {fastest} m s-1, even three errors later: {list_rows(found)}; "
-                f"check the unit of time and the positions, or set use to 0"
+                f"times are faster than the fastest ground, {fastest} m s-1, even if later by three errors: "
+                f"{list_rows(found)}; check the unit of time and the positions, or set use to 0"
             ],
         )
 
@@ -337,6 +346,7 @@ def _surface(survey: xr.Dataset, placed: ShotSection, table: Path | None) -> tup
             f"{len(np.unique(places.round(3), axis=0))} positions, those not below others; "
             f"physics.surface gives a better one"
         )
+    require_file(table, "physics.surface")
     known = read_surface(table, placed.section, placed.corridor)
     ends = known[0].min(), known[0].max()
     left_open = max(ends[0], placed.section.length - ends[1])
@@ -353,16 +363,30 @@ def _surface(survey: xr.Dataset, placed: ShotSection, table: Path | None) -> tup
         n_data = len(placed.starts)
         _, once = np.unique(places.round(3), axis=0, return_index=True)
         found = [
-            (int(row_numbers(survey)[i % n_data]), f"{first_arrivals.ENDS[i // n_data]} {above[i]:.3g} m")
+            (int(row_numbers(survey)[i % n_data]), f"{first_arrivals.ENDS[i // n_data]} by {above[i]:.3g} m")
             for i in np.sort(once[above[once] > _ABOVE]).tolist()
         ]
         raise SurveyError(
-            str(table),
-            [f"positions stand above the surface: {list_rows(found)}; check the elevations of both tables"],
+            source_of(survey),
+            [
+                f"positions stand above the surface of {table.name}: {list_rows(found)}; "
+                f"check the elevations of both tables"
+            ],
         )
     raised = above > 0
     surface = _through(np.vstack([np.column_stack(known), places[raised]]))
     return surface, f"surface by {table.name}, with positions up to {max(above.max(), 0):.2g} m above it"
+
+
+def _buried(places: Array, surface: tuple[Array, Array], table: Path | None) -> tuple[str, ...]:
+    """Whether a line along the surface lies deep below the table of it."""
+    depth = float(np.min(np.interp(places[:, 0], *surface) - places[:, 1]))
+    if table is None or depth < _BELOW or np.mean(_not_below_others(places)) < 0.5:
+        return ()
+    return (
+        f"all positions lie {depth:.3g} m or more below the surface of {table.name}, though few of them "
+        f"below others: are the elevations of both tables in one system?",
+    )
 
 
 def _not_below_others(places: Array) -> Any:
@@ -397,8 +421,9 @@ def _start_velocity(
     depths: tuple[Array, Array],
 ) -> StartVelocity:
     if isinstance(given, Path):
+        require_file(given, "physics.start")
         lines = tuple(dict.fromkeys(survey["line"].values.tolist())) if "line" in survey else ()
-        depth, velocity = read_velocities(given, lines)
+        depth, velocity = read_velocities(given, lines, first_arrivals.PLAUSIBLE)
         return StartVelocity(depth, velocity, f"start: velocities of {given.name}")
     if given is not None:
         return constant(given, f"start: {given:g} m s-1 everywhere")

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -76,7 +76,7 @@ class HoleScene(Scene):
     def _operator(self, grid: Grid) -> IntervalIntegrals:
         return IntervalIntegrals(grid, self.low, self.high, self.factors)
 
-    def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> GroundField:
+    def coverage(self, grid: Grid, correlation: tuple[float, ...], rays: Sequence[Array] = ()) -> GroundField:
         """Length of ray in a metre of elevation, a Gaussian mean over half a correlation length."""
         density = self._operator(grid).rmatvec(np.ones(self.data.size)) / grid.weights()
         return GroundField(

@@ -161,7 +161,7 @@ class InductionScene(Scene):
         where = (self.along, self.ground, self.height, self.spacing, self.vertical)
         return GroundConductivity(grid, *where, tail=tail)
 
-    def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> GroundField:
+    def coverage(self, grid: Grid, correlation: tuple[float, ...], rays: Sequence[Array] = ()) -> GroundField:
         """Response of all readings in a unit of area, a Gaussian mean over half a correlation length, m-2.
 
         Readings have no width: without the mean it would depend on the grid. What they see below the grid

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import copy
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Annotated, Literal, Self
@@ -115,7 +116,7 @@ class KernelScene(Scene):
         values = self.kernels.T.reshape(*self.table.shape, -1)
         return np.ascontiguousarray(carry(values, self.table, grid).reshape(grid.n_nodes, -1).T)
 
-    def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> GroundField:
+    def coverage(self, grid: Grid, correlation: tuple[float, ...], rays: Sequence[Array] = ()) -> GroundField:
         """Root of the sum of squared kernels over errors, a Gaussian mean over half a correlation length.
 
         Relative to its greatest value.

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Literal
@@ -16,6 +17,7 @@ from stillground.grid import Grid
 from stillground.ground import Ground
 from stillground.operators.straight_rays import StraightRays
 from stillground.physics import first_arrivals
+from stillground.physics.path_density import path_density
 from stillground.physics.shot_section import shot_section
 from stillground.protocols import Array, Extra, Integers, Kind, Measurement, Scene
 from stillground.protocols import Field as GroundField
@@ -89,17 +91,9 @@ class RayScene(Scene):
         response = (self.data * (level - level.mean()))[:, None]
         return Extra("anisotropy", response, _ANISOTROPY, "1")
 
-    def coverage(self, grid: Grid, correlation: tuple[float, ...]) -> GroundField:
-        """Length of ray in a unit of area, a Gaussian mean over half a correlation length, m-1.
-
-        Rays have no width: without the mean the density would depend on the grid. The mean keeps the
-        total length.
-        """
-        operator = StraightRays(grid, self.starts, self.ends, self.lengths)
-        density = operator.rmatvec(np.ones(len(self.data))) / grid.weights()
-        return GroundField(
-            "path_density", grid.local_mean(density, correlation), "m-1", "ray length per area"
-        )
+    def coverage(self, grid: Grid, correlation: tuple[float, ...], rays: Sequence[Array] = ()) -> GroundField:
+        """Length of ray in a unit of area, m-1, as `path_density`."""
+        return path_density(grid, self.starts, self.ends, correlation, self.lengths)
 
     def predict(self, ground: Ground) -> Array:
         """Times through a described ground of slowness, shape (n_data,), s."""

@@ -134,7 +134,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         model=top.model,
         mesh_change=top.mesh_change,
         anomaly=top.anomaly,
-        coverage=profile.scene.coverage(finest.grid, method.correlation),
+        coverage=profile.scene.coverage(finest.grid, method.correlation, rays),
         predicted=predicted,
         observed=measurement.data,
         errors=measurement.errors,

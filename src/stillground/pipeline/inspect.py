@@ -65,8 +65,13 @@ def _plan(profile: Profile, config: Config) -> Plan:
 
 
 def draw(plan: Plan, config: Config, folder: Path) -> Path:
-    """Writes ``<profile>_survey`` into the figures of ``folder`` and gives the path of the PNG."""
+    """Writes ``<profile>_survey`` into the figures of ``folder`` and gives the path of the PNG.
+
+    Rays that bend are those that a run begins with.
+    """
     scene, grid = plan.profile.scene, plan.grids[-1]
+    measurement = assembly(plan.profile, config)(grid)
+    rays = measurement.rays(measurement.start) if isinstance(measurement, NonlinearMeasurement) else ()
     figure = survey_figure(
         plan.profile.name,
         paths=scene.paths,
@@ -76,7 +81,7 @@ def draw(plan: Plan, config: Config, folder: Path) -> Path:
         apart=scene.apart,
         seen=config.kind.ground_property,
         nodes=grid.axes,
-        coverage=scene.coverage(grid, correlation(config)),
+        coverage=scene.coverage(grid, correlation(config), rays),
         surface=scene.surface,
     )
     return write_figure(folder / "figures", f"{plan.profile.name}_survey", figure)[0]

@@ -86,7 +86,7 @@ def is_netcdf(path: str | Path) -> bool:
 
 
 def require_file(path: Path, key: str) -> None:
-    """Refuse a setting that names a file which is not there.
+    """Refuse a setting that names a file which is not there, or a folder.
 
     Parameters
     ----------
@@ -98,10 +98,10 @@ def require_file(path: Path, key: str) -> None:
     ------
     SurveyError
     """
-    if not path.exists():
-        tried = path.resolve()
+    if not path.is_file():
+        wrong = "is a folder, no table" if path.is_dir() else "there is no such file"
         raise SurveyError(
-            str(path), [f"there is no such file ({tried}); mend {key}, relative to the configuration"]
+            str(path), [f"{wrong} ({path.resolve()}); mend {key}, relative to the configuration"]
         )
 
 
@@ -200,7 +200,9 @@ def _netcdf(source: str) -> RawTable:
     layouts = {variable.dims for variable in variables.values()}
     if len(layouts) != 1 or len(next(iter(layouts))) != 1:
         found = ", ".join(f"{name}({', '.join(map(str, v.dims))})" for name, v in variables.items())
-        raise SurveyError(source, [f"all variables must share one dimension; it has {found or 'none'}"])
+        raise SurveyError(
+            source, [f"holds no table: all variables must share one dimension; it has {found or 'none'}"]
+        )
     columns = (
         RawColumn(name, str(variable.attrs.get("units", "")).strip() or None, variable.values)
         for name, variable in variables.items()

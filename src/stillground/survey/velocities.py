@@ -9,13 +9,15 @@ import numpy as np
 from stillground.errors import SurveyError
 from stillground.protocols import Array
 from stillground.survey.check import usable
-from stillground.survey.faults import row_numbers
+from stillground.survey.faults import row_numbers, where
 from stillground.survey.read import read
 
 _EXPECTED = ("depth", "velocity")
 
 
-def read_velocities(path: Path, lines: tuple[str, ...]) -> tuple[Array, Array]:
+def read_velocities(
+    path: Path, lines: tuple[str, ...], plausible: tuple[float, float]
+) -> tuple[Array, Array]:
     """Read columns ``depth`` and ``velocity``; a column ``line`` tells for which line of the survey.
 
     Parameters
@@ -23,6 +25,8 @@ def read_velocities(path: Path, lines: tuple[str, ...]) -> tuple[Array, Array]:
     path : path of the table, CSV or NetCDF
     lines : tuple of str
         Lines of the survey that the rows are wanted for; none where it names no line.
+    plausible : pair of float
+        The slowest and the fastest velocity of any ground, m/s.
 
     Returns
     -------
@@ -32,8 +36,8 @@ def read_velocities(path: Path, lines: tuple[str, ...]) -> tuple[Array, Array]:
     Raises
     ------
     SurveyError
-        With all faults of the table, none of its lines being wanted and depths that do not increase among
-        them.
+        With all faults of the table, none of its lines being wanted, depths that do not increase and
+        velocities of no ground among them.
     """
     table, faults = usable(read(path, expected=_EXPECTED), _EXPECTED)
     if not faults and "line" in table:
@@ -58,6 +62,9 @@ def read_velocities(path: Path, lines: tuple[str, ...]) -> tuple[Array, Array]:
                 row_numbers(table)[1:][steps <= 0][:1], table["depth"].values[1:][steps <= 0][:1], strict=True
             )
         ]
+        velocity, (slowest, fastest) = table["velocity"], plausible
+        odd = (velocity.values < slowest) | (velocity.values > fastest)
+        faults += where(velocity, odd, row_numbers(table), f"lie within {slowest:g} to {fastest:g} m/s")
     if faults:
         raise SurveyError(str(path), faults)
     return table["depth"].values, table["velocity"].values
