@@ -256,7 +256,7 @@ def test_velocities_of_a_line_are_the_start_of_that_line(tmp_path: Path) -> None
     [
         ("1500", "has no unit"),
         ("15 m/s", "is no velocity of the ground"),
-        ("gradient", "or a table of depth"),
+        ("gradient", "a table of depth"),
     ],
 )
 def test_a_start_that_is_none_is_refused(start: str, said: str) -> None:

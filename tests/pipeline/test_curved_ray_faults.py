@@ -6,11 +6,13 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+import xarray as xr
 from tests.conftest import Command
 from tests.refraction_line import dome, line
 
 from stillground.config import load
 from stillground.errors import SurveyError
+from stillground.grid import Grid
 from stillground.pipeline.profiles import read_profiles
 from stillground.survey import write_table
 
@@ -92,11 +94,62 @@ def test_cells_of_a_table_beside_the_survey_are_told_by_row_and_column(
     assert "\n" not in message
 
 
-def test_a_section_is_no_table_to_start_from(folder: Path) -> None:
-    section = line().isel(datum=[0]).expand_dims("elevation")[["time"]]
-    section.to_netcdf(folder / "section.nc")
+def section(east: float = 0.0, north: float = 0.0, length: float = 48.0) -> xr.Dataset:
+    """Velocity as the section of a run holds it, down from a surface at 1 m."""
+    distance, elevation = np.linspace(0.0, length, 9), np.array([2.0, 1.0, -4.0, -9.0])
+    velocity = np.tile([np.nan, 400.0, 900.0, 1400.0], (9, 1)).T + distance
+    return xr.Dataset(
+        {"velocity": (("elevation", "distance"), velocity, {"units": "m s-1"})},
+        {
+            "distance": distance,
+            "elevation": elevation,
+            "easting": ("distance", east + distance, {"units": "m"}),
+            "northing": ("distance", np.full(9, north), {"units": "m"}),
+        },
+    )
+
+
+@pytest.mark.parametrize("reverse", [False, True])
+def test_a_section_of_an_earlier_run_starts_the_rays(folder: Path, reverse: bool) -> None:
+    """Bilinear in the logarithm at its nodes, and up into the air and beyond the ends as at the nearest."""
+    earlier = section()
+    if reverse:
+        earlier = earlier.assign_coords(easting=("distance", 48.0 - earlier.distance.values))
+    earlier.to_netcdf(folder / "section.nc")
+    config, _ = load(folder / "config.toml", ["physics.start=section.nc"])
+    (profile,) = read_profiles(config)
+    assert "start: velocities of section.nc" in profile.scene.facts
+    assert folder / "section.nc" in profile.scene.inputs
+    nodes = Grid((-6.0, -14.0), (6.0, 5.0), (11, 5))
+    start = profile.scene.assemble(nodes).start.reshape(nodes.shape)
+    along = np.clip(nodes.axes[0], 0.0, 48.0)
+    along = 48.0 - along if reverse else along
+    at_nodes = np.column_stack([along + v for v in (1400.0, 1400.0, 900.0, 400.0, 400.0)])
+    np.testing.assert_allclose(np.exp(-start), at_nodes, rtol=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("given", "said"),
+    [
+        (section(north=30.0), "is of another line: its section lies up to 30 m off this one"),
+        (section(east=20.0), "along it from 20 to 68 m where this goes from 0 to 48 m"),
+        (section(length=20.0), "along it from 0 to 20 m where this goes from 0 to 48 m"),
+        (section().drop_vars("easting"), "has no variable easting; give a <profile>_section.nc of a run"),
+        (-section(), "its velocity is not above zero everywhere in the ground"),
+        (section().assign(velocity=section().velocity.assign_attrs(units="s")), "unit 's' does not convert"),
+    ],
+    ids=["aside", "along", "short", "no section", "negative", "unit"],
+)
+def test_a_section_that_is_not_of_this_line_is_told(folder: Path, given: xr.Dataset, said: str) -> None:
+    given.to_netcdf(folder / "section.nc")
     message = told(folder, "physics.start=section.nc")
-    assert message.startswith("section.nc: holds no table: all variables must share one dimension")
+    assert message.startswith("section.nc: ")
+    assert said in message
+
+
+def test_what_is_no_section_file_is_told(folder: Path) -> None:
+    (folder / "section.nc").write_text("velocity")
+    assert told(folder, "physics.start=section.nc").startswith("section.nc: cannot be read as the section")
 
 
 def test_positions_above_the_surface_are_told_by_their_own_table(folder: Path) -> None:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Annotated, Any
@@ -21,12 +21,14 @@ from stillground.physics import first_arrivals
 from stillground.physics.path_density import path_density
 from stillground.physics.reciprocity import reciprocity
 from stillground.physics.shot_section import ShotSection, shot_section
+from stillground.physics.start_section import StartSection
 from stillground.physics.start_velocity import StartVelocity, constant, fitted_velocity
 from stillground.protocols import Array, Integers, Kind, NonlinearMeasurement, Scene
 from stillground.protocols import Field as GroundField
 from stillground.survey import (
     Section,
     quantity,
+    read_earlier_section,
     read_surface,
     read_velocities,
     require_file,
@@ -54,7 +56,7 @@ _FINER, _MOST_NODES = 32, 2_000_000
 _ACROSS = 4
 
 
-def _start(text: Any, info: ValidationInfo) -> float | Path | None:
+def _read_start(text: Any, info: ValidationInfo) -> float | Path | None:
     if text == "fit":
         return None
     if str(text).lower().endswith((".csv", ".nc")):
@@ -63,7 +65,8 @@ def _start(text: Any, info: ValidationInfo) -> float | Path | None:
         velocity = quantity(text, "m s-1")
     except ValueError as error:
         raise ValueError(
-            f"{error}; give 'fit', a velocity like '1500 m/s', or a table of depth and velocity, .csv or .nc"
+            f"{error}; give 'fit', a velocity like '1500 m/s', a table of depth and velocity, .csv, or the "
+            f"section file of an earlier run, .nc"
         ) from error
     slowest, fastest = first_arrivals.PLAUSIBLE
     if not slowest <= velocity <= fastest:
@@ -73,7 +76,7 @@ def _start(text: Any, info: ValidationInfo) -> float | Path | None:
 
 Start = Annotated[
     float | Path | None,
-    BeforeValidator(_start),
+    BeforeValidator(_read_start),
     WithJsonSchema({"type": "string", "examples": ["fit", "1500 m/s", "velocities.csv"]}),
 ]
 
@@ -91,7 +94,7 @@ class CurvedRaySettings(BaseModel):
     start: Start = Field(
         None,
         description="velocity that the rays begin with: 'fit' (default) a growth with depth to the times, "
-        "one velocity, or a table of depth and velocity",
+        "one velocity, a table of depth and velocity (.csv), or the section of an earlier run (.nc)",
     )
     out_of_plane: Length | None = Field(
         None, description="how far positions may lie off the section; default: 5 % of its length"
@@ -145,8 +148,8 @@ class CurvedRayScene(Scene):
         By source and by receiver.
     ground_surface : pair of array
         Distance and elevation, m.
-    start : StartVelocity
-    other_starts : mapping of str to StartVelocity
+    start : StartVelocity or StartSection
+    other_starts : mapping of str to the same
     """
 
     section: Section
@@ -157,8 +160,8 @@ class CurvedRayScene(Scene):
     errors: Array
     groupings: dict[str, Integers]
     ground_surface: tuple[Array, Array]
-    start: StartVelocity
-    other_starts: dict[str, StartVelocity]
+    start: StartVelocity | StartSection
+    other_starts: Mapping[str, StartVelocity | StartSection]
 
     def _travel_times(self, grid: Grid) -> TravelTimes:
         return TravelTimes(grid, self.starts, self.ends, surface=self.ground_surface)
@@ -267,7 +270,7 @@ class CurvedRay(Kind):
         surface, told = _surface(survey, placed, settings.surface)
         starts, ends = (_below(places, surface) for places in (placed.starts, placed.ends))
         depths = [np.interp(places[:, 0], *surface) - places[:, 1] for places in (starts, ends)]
-        start = _start_velocity(survey, settings.start, data, placed.lengths, (depths[0], depths[1]))
+        start = _start(survey, placed, settings.start, data, (depths[0], depths[1]))
         both = (
             reciprocity(*first_arrivals.ends(survey), data, errors)
             if measured and "time_error" in survey
@@ -413,21 +416,23 @@ def _below(places: Array, surface: tuple[Array, Array]) -> Array:
     return np.column_stack([places[:, 0], np.minimum(places[:, 1], np.interp(places[:, 0], *surface))])
 
 
-def _start_velocity(
+def _start(
     survey: xr.Dataset,
+    placed: ShotSection,
     given: float | Path | None,
     times: Array,
-    lengths: Array,
     depths: tuple[Array, Array],
-) -> StartVelocity:
+) -> StartVelocity | StartSection:
     if isinstance(given, Path):
         require_file(given, "physics.start")
+        said = f"start: velocities of {given.name}"
+        if given.suffix.lower() == ".nc":
+            return StartSection(*read_earlier_section(given, placed.section, placed.corridor), said)
         lines = tuple(dict.fromkeys(survey["line"].values.tolist())) if "line" in survey else ()
-        depth, velocity = read_velocities(given, lines, first_arrivals.PLAUSIBLE)
-        return StartVelocity(depth, velocity, f"start: velocities of {given.name}")
+        return StartVelocity(*read_velocities(given, lines, first_arrivals.PLAUSIBLE), said)
     if given is not None:
         return constant(given, f"start: {given:g} m s-1 everywhere")
     if "time" not in survey:
         depths_of, velocities = (np.array(each) for each in _PLANNED)
         return StartVelocity(depths_of, velocities, "start: soil over rock, for want of times")
-    return fitted_velocity(times, lengths, depths)
+    return fitted_velocity(times, placed.lengths, depths)

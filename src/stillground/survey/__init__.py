@@ -6,6 +6,7 @@ The way of a table: ``read`` (the file's own faults raise), ``check`` (all other
 
 from stillground.survey.check import SurveyReport, check
 from stillground.survey.columns import COLUMNS, Column, column
+from stillground.survey.earlier_section import read_earlier_section
 from stillground.survey.faults import row_numbers, source_of
 from stillground.survey.known import read_known
 from stillground.survey.numbering import numbered
@@ -39,6 +40,7 @@ __all__ = [
     "profiles",
     "quantity",
     "read",
+    "read_earlier_section",
     "read_known",
     "read_surface",
     "read_velocities",
