@@ -92,7 +92,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
                 linear(repeated), repeated, method, logarithmic=config.kind.logarithmic
             )
         if not interrupted:
-            moved_by_start = yield from start_dependence(linear, repeated, method)
+            moved_by_start = yield from start_dependence(linear, rung)
     except KeyboardInterrupt:
         interrupted = True
 

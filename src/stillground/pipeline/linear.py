@@ -15,6 +15,7 @@ from stillground.protocols import Array, Measurement, NonlinearMeasurement, Prog
 from stillground.reconstruct import (
     Linearised,
     Method,
+    Reconstruction,
     linearise,
     reconstruct,
     reweighted,
@@ -114,30 +115,25 @@ def linear_ladder(
     return replace(plain, grids=tuple(grids[: len(outer)]), weights=led.weights, outer=outer)
 
 
-def start_dependence(
-    linear: Linear, grid: Grid, method: Method
-) -> Generator[Progress, None, dict[str, float]]:
-    """How far the answer on a grid moves from other starts, relative L2 in the unknown; empty if linear.
+def start_dependence(linear: Linear, rung: Reconstruction) -> Generator[Progress, None, dict[str, float]]:
+    """How far the answer on a rung moves from other starts, relative L2 in the unknown; empty if linear.
 
     Yields
     ------
     Progress
     """
+    grid, method = rung.grid, rung.method
     measurement = linear.measured(grid)
     if not isinstance(measurement, NonlinearMeasurement):
         return {}
-
-    def solved(linearised: Measurement, name: str) -> Generator[Progress, None, Array]:
-        work = reconstruct(reweighted(linearised, linear.weights), grid, method)
-        found = yield from staged(work, f"start: {name}")
-        return found.model(found.stop(method.choose))
-
-    base = yield from solved(linear.stated(grid), "as asked")
+    base = rung.model(rung.stop(method.choose))
     size = grid.norm(base - grid.mean(base))
     moved = {}
     for name, start in measurement.other_starts.items():
         work = linearise(replace(measurement, start=start), grid, method, weights=linear.weights)
         outcome = yield from staged(work, f"start: {name}")
-        other = yield from solved(outcome.measurement, name)
+        judged = reconstruct(reweighted(outcome.measurement, linear.weights), grid, method)
+        found = yield from staged(judged, f"start: {name}")
+        other = found.model(found.stop(method.choose))
         moved[name] = grid.norm(other - base) / size if size > 0 else 0.0
     return moved
