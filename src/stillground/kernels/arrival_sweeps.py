@@ -3,7 +3,9 @@
 Where ``(a_1 tau - b_1)^2 + (a_2 tau - b_2)^2 = s^2 r^2`` held when a node was accepted, with each b
 linear in the tau of earlier nodes, the derivatives obey, with ``g = a tau - b``,
 
-    (g_1 a_1 + g_2 a_2) dtau = s r^2 ds + g_1 db_1 + g_2 db_2.
+    (g_1 a_1 + g_2 a_2) dtau = (g_1^2 + g_2^2) ds / s + g_1 db_1 + g_2 db_2,
+
+also where a front crept along the surface and ``g_1`` is a share of s r that only places set.
 
 The tangent takes the nodes in the order of acceptance; the adjoint takes the same numbers in the
 reverse order and so is its transpose to rounding. Padded arrays as in `fast_marching`; a trailing
@@ -79,7 +81,8 @@ def _stencil(
     scale = 1.0 / (g_a * a_a + g_b * a_b)
     g_a *= scale
     g_b *= scale
-    return slow[n] * square * scale, n_1, g_a * w_1, n_2, g_a * w_2, n_3, g_b * w_3, n_4, g_b * w_4
+    own = (g_a * g_a + g_b * g_b) / (slow[n] * scale)
+    return own, n_1, g_a * w_1, n_2, g_a * w_2, n_3, g_b * w_3, n_4, g_b * w_4
 
 
 @cache

@@ -12,6 +12,11 @@ next to the source's. Its slope is then not zero but that of tau where the front
 known only when the node's turn comes, and without it the error falls with the spacing and not with
 its square.
 
+Nodes beside the air stand a little above the ground, and their times carry on those below the surface;
+a march from node to node would follow the steps of the grid instead. Where an axis has no earlier
+neighbour because there is air, the slope is that on the side of the ground as long as the front comes
+from there, and else that of a front which creeps along the surface.
+
 Arrays are padded by two nodes on each side, so that no stencil asks for bounds; what is not accepted,
 not ground or padding has an infinite time.
 
@@ -54,10 +59,25 @@ AGREE, SLIGHT = 0.1, 0.2
 _ROOM = room(NEAR)
 
 
+@njit(nogil=True, cache=True, error_model="numpy")
+def _creep(width: float, above: float, above_1: float, above_2: float) -> float:
+    """Way of a front along the surface between nodes ``width`` apart, over ``width``.
+
+    The nodes and the one before them are so far above the surface, and have the times of a front that
+    goes on there as at the surface below them.
+    """
+    rise, rise_1 = above_1 - above, above_2 - above_1
+    piece, piece_1 = np.hypot(width, rise), np.hypot(width, rise_1)
+    way = float((piece + rise / piece * above - rise_1 / piece_1 * above_1) / width)
+    # A node within the ground leads there straight.
+    return way if above_1 >= 0.0 else min(way, 1.0)
+
+
 @njit(nogil=True, cache=True, error_model="numpy", fastmath={"reassoc", "contract", "arcp", "nsz"})
 def march(
     slowness: Array,
     closed: Places,
+    surface: Array,
     source: Array,
     spacing: Array,
     field: Array,
@@ -75,6 +95,8 @@ def march(
         Padded, s/m; zero in the padding.
     closed : int32 array, shape (n * m,)
         FAR on the nodes of the ground, CLOSED elsewhere.
+    surface : array, shape (n,)
+        Height of the ground's surface at each row of nodes, in index units along the second axis.
     source : array, shape (2,)
         In index units of the padded array.
     spacing : array, shape (2,)
@@ -197,12 +219,13 @@ def march(
                 a = c + x
                 b = c * tau_1
             # The slope at the neighbour that the front came from, the flatter of those on its two sides.
-            # Where they differ there is a kink or a corner near and none is safe; beside air none is
-            # but in the source's own row. Where T is least along an axis its slope is slight, or that of
-            # the distance.
+            # Where they differ there is a kink or a corner near and none is safe. Where T is least along
+            # an axis its slope is slight, or that of the distance.
             s = slow[n]
             s_r = s * np.sqrt(square)
             slope = NOTHING
+            slight = SLIGHT * s_r
+            least = field[n + step, 0]
             other_b = across * (field[n + step - aside, 1] - tau_1)
             candidate = across * (tau_1 - field[n + step + aside, 1])
             before = field[n + step - aside, 0] < np.inf
@@ -212,19 +235,38 @@ def march(
                     slope = SLOPE_BEHIND
                     if abs(y * tau_1 - candidate) < abs(y * tau_1 - other_b):
                         slope, other_b = SLOPE_AHEAD, candidate
-            elif abs(y) <= (h_b if along else h_a):
-                if before:
-                    slope = SLOPE_BEHIND
-                elif after:
+            elif before or after:
+                slope = SLOPE_BEHIND
+                if after:
                     slope, other_b = SLOPE_AHEAD, candidate
-            if slope != NOTHING and min(abs(y * tau_1 - other_b), abs(other_b)) <= SLIGHT * s_r:
+                if abs(y) > (h_b if along else h_a):
+                    # Beside the air, but not in the source's own row.
+                    way = 0.0
+                    if along and closed[n + 1] == CLOSED:
+                        back = -1 if behind else 1
+                        above, above_1 = j0 - surface[i0], j0 - surface[i0 + back]
+                        above_2 = j0 - surface[i0 + 2 * back]
+                        way = _creep(h_a, h_b * above, h_b * above_1, h_b * above_2)
+                    elif not along and behind and closed[n - stride] != closed[n + stride]:
+                        back = -1 if closed[n - stride] == CLOSED else 1
+                        if PAD <= i0 + back < n_rows - PAD:
+                            rise = h_b * (surface[i0] - surface[i0 + back])
+                            way = rise / np.hypot(h_a, rise)
+                    # Along no way at all nothing would be left to take derivatives of.
+                    if way > 1e-6:
+                        slight = np.inf
+                        field[n, 1] = (b + (s_r if c > 0.0 else -s_r) * way) / a
+                        least = time = field[n, 1] * np.sqrt(square)
+                    else:
+                        slope = NOTHING
+            if slope != NOTHING and min(abs(y * tau_1 - other_b), abs(other_b)) <= slight:
                 p = a * a + y * y
                 q = a * b + y * other_b
                 inner = q * q - p * (b * b + other_b * other_b - s_r * s_r)
                 if inner > 0.0:
                     tau = (q + np.sqrt(inner)) / p
                     candidate = tau * np.sqrt(square)
-                    if candidate >= field[n + step, 0]:
+                    if candidate >= least:
                         time = candidate
                         field[n, 1] = tau
                         code[n] = digits + BASE * slope if along else digits + slope

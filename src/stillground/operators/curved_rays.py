@@ -52,7 +52,8 @@ class TravelTimes:
     Notes
     -----
     Times solve the eikonal equation |grad T| = s by fast marching, of second order in the spacing
-    where the medium is smooth and of first order behind sharp interfaces (see
+    where the medium is smooth, also under relief, and of first order behind sharp interfaces and where
+    fronts creep around a hollow of the surface, whose edge is known to a cell (see
     `stillground.kernels.fast_marching`). Between nodes T is distance times a bilinear function.
 
     References

@@ -30,6 +30,8 @@ class Layout:
         Two-dimensional.
     closed : int32 array, shape (n_padded,)
         Which nodes are ground, as the march takes it.
+    surface : array, shape (n_padded_rows,)
+        Height of the surface at each row of nodes along the first axis.
     sources : array, shape (n_sources, 2)
     source : int array, shape (n_data,)
         Source of each datum.
@@ -40,6 +42,7 @@ class Layout:
 
     grid: Grid
     closed: NDArray[np.int32]
+    surface: Array
     sources: Array
     source: Integers
     receivers: Array
@@ -131,6 +134,7 @@ def lay_out(grid: Grid, starts: Array, ends: Array, surface: tuple[Array, Array]
     return Layout(
         grid=grid,
         closed=_closed(grid, surface),
+        surface=_heights(grid, surface),
         sources=sources + PAD,
         source=source.reshape(-1).astype(np.int64),
         receivers=receivers + PAD,
@@ -161,6 +165,15 @@ def _closed(grid: Grid, surface: tuple[Array, Array] | None) -> NDArray[np.int32
     return state.reshape(-1)
 
 
+def _heights(grid: Grid, surface: tuple[Array, Array] | None) -> Array:
+    """Of the surface in index units of the padded grid, level beyond the grid."""
+    top = grid.shape[1] - 1.0
+    if surface is None:
+        return np.full(grid.shape[0] + 2 * PAD, top + PAD)
+    level = (np.interp(grid.axes[0], *surface) - grid.origin[1]) / grid.spacing[1]
+    return np.pad(np.minimum(level, top) + PAD, PAD, mode="edge")
+
+
 @dataclass(frozen=True)
 class Marched:
     """What one source's march leaves: tau and stencil of each node, and the order of acceptance."""
@@ -188,6 +201,7 @@ class Marcher:
         self._count = march(
             self._slowness,
             self._layout.closed,
+            self._layout.surface,
             self._layout.sources[source],
             self._layout.spacing,
             self.field,
