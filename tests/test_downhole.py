@@ -221,7 +221,7 @@ def ensemble(draws: int = 50) -> tuple[Array, Array, Array, Rehearsal, Array]:
     chosen = [run.inside(run.history.last if stop is None else stop)
               for run, stop in zip(runs, stops, strict=True)]  # fmt: skip
     answers = background[:, None] + problem.anomaly(back(problem.operator, np.column_stack(chosen)))
-    linear = finish(linear_ladder(profile, config, grids, 0, plan_method(config)))
+    linear = finish(linear_ladder(profile, config, grids, plan_method(config)))
     rehearsal = finish(rehearse_profile(profile, config, grids, linear, 1.0))
     elevation = grid.axes[0]
     return elevation, ground.values(elevation[:, None]), answers, rehearsal, noisy / scene.factors[:, None]

@@ -25,7 +25,7 @@ def ladder() -> None:
     config = settings()
     (profile,) = read_profiles(config)
     grids, method = plan_grids(profile, config), plan_method(config)
-    assemble = finish(linear_ladder(profile, config, grids, 0, method))
+    assemble = finish(linear_ladder(profile, config, grids, method))
     took = []
     for _ in range(6):
         begin = time.process_time(), time.perf_counter()
