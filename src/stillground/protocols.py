@@ -652,6 +652,17 @@ class Differences:
     values: Array
 
 
+@dataclass(frozen=True)
+class ErrorEstimate:
+    """The size of the errors by data that measure one thing more than once.
+
+    ``ratio`` is their size over what is stated; ``said`` tells it in words, with its numbers.
+    """
+
+    ratio: float
+    said: str
+
+
 @dataclass(frozen=True, kw_only=True)
 class Scene(ABC):
     """One profile's survey set into the ground: positions as arrays, labels behind it.
@@ -685,6 +696,8 @@ class Scene(ABC):
         Files that were read beside the survey.
     grid : Grid or None
         The finest rung, where the survey comes with one; None where the settings make it.
+    error_estimate : ErrorEstimate or None
+        Where enough data measure one thing more than once.
     """
 
     lower: tuple[float, ...]
@@ -701,6 +714,7 @@ class Scene(ABC):
     doubts: tuple[str, ...] = ()
     inputs: tuple[Path, ...] = ()
     grid: Grid | None = None
+    error_estimate: ErrorEstimate | None = None
 
     @abstractmethod
     def assemble(self, grid: Grid) -> Measurement | NonlinearMeasurement:

@@ -90,7 +90,7 @@ def run(
     """
     from stillground.cli import console, tables
     from stillground.config import load
-    from stillground.pipeline.run import Done, output_folder
+    from stillground.pipeline.run import Begun, Done, output_folder
     from stillground.pipeline.run import run as work
 
     settings, text = load(config, overrides or ())
@@ -100,9 +100,9 @@ def run(
         console.heading(settings.title)
     outcome = console.follow(
         work(settings, text, folder, command=command, resume=resume),
-        tables.profile,
+        lambda event: tables.begun(event) if isinstance(event, Begun) else tables.profile(event),
         quiet=quiet,
-        shown=Done,
+        shown=(Begun, Done),
     )
     if not quiet:
         tables.closing(outcome)

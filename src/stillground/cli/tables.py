@@ -15,7 +15,7 @@ from stillground.counted import counted
 from stillground.percent import percent
 from stillground.pipeline.inspect import Plan
 from stillground.pipeline.rehearse import Patterns, Rehearsed
-from stillground.pipeline.run import Done, Outcome
+from stillground.pipeline.run import Begun, Done, Outcome
 from stillground.products.averages import read_averages
 from stillground.products.overlay import overlay_sentence
 from stillground.products.provenance import CAUTION
@@ -46,13 +46,17 @@ def _number(value: float | None, digits: int = 3) -> str:
     return "-" if value is None or math.isnan(value) else f"{value:.{digits}g}"
 
 
+def begun(begun: Begun) -> None:
+    """What is odd about one profile and its settings, before any work."""
+    say()
+    remarks(begun.profile.report)
+    for sentence in (*begun.profile.scene.doubts, *begun.advice):
+        say(f"warning: {sentence}")
+
+
 def profile(done: Done) -> None:
     """One profile's rules, ladder and verdict."""
     result = done.result.arrays
-    say()
-    remarks(done.result.profile.report)
-    for sentence in (*done.result.profile.scene.doubts, *done.result.advice):
-        say(f"warning: {sentence}")
     nodes = " by ".join(str(len(axis)) for axis in result.axes)
     say(f"{done.result.name}: {result.observed.size} data, {nodes} nodes, background {_background(result)}")
     say()

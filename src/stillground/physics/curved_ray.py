@@ -305,6 +305,7 @@ class CurvedRay(Kind):
                 *_buried(placed.everywhere, surface, settings.surface),
                 *(() if both is None else both.doubts),
             ),
+            error_estimate=None if both is None else both.estimate,
             inputs=tuple(path for path in (settings.surface, settings.start) if isinstance(path, Path)),
             section=placed.section,
             starts=starts,

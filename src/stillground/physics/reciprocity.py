@@ -6,11 +6,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from stillground.protocols import Array
+from stillground.counted import counted
+from stillground.protocols import Array, ErrorEstimate
 
 # From fewer pairs the error is known too badly to doubt the given one: to a quarter with eight.
 _FEW = 8
 _FACTOR = 1.5
+# Pairs past 5 robust standard deviations are wild; the median of the squares of standard normal numbers.
+_WILD, _MEDIAN = 5.0, 0.4549
 
 
 @dataclass(frozen=True)
@@ -20,6 +23,8 @@ class Reciprocity:
     Parameters
     ----------
     pairs : int
+    wild : int
+        Pairs that differ so much that one of the two is an outlier; left out.
     error : float
         Standard deviation of one time, s.
     given : float
@@ -27,26 +32,35 @@ class Reciprocity:
     """
 
     pairs: int
+    wild: int
     error: float
     given: float
 
     @property
     def fact(self) -> str:
+        left_out = f" ({counted(self.wild, 'wild one', 'wild ones')} left out)" if self.wild else ""
         return (
-            f"{self.pairs} pairs measured both ways differ as errors of {1e3 * self.error:.3g} ms would make "
-            f"them; given for them are {1e3 * self.given:.3g} ms"
+            f"{self.pairs} pairs measured both ways differ{left_out} as errors of {1e3 * self.error:.3g} ms "
+            f"would make them; given for them are {1e3 * self.given:.3g} ms"
         )
+
+    @property
+    def estimate(self) -> ErrorEstimate | None:
+        """What it tells of all errors; None from few pairs."""
+        return None if self.pairs < _FEW else ErrorEstimate(self.error / self.given, self.fact)
 
     @property
     def doubts(self) -> tuple[str, ...]:
         ratio = self.error / self.given
         if self.pairs < _FEW or 1 / _FACTOR <= ratio <= _FACTOR:
             return ()
-        than = "larger" if ratio > 1 else "smaller"
+        follows = "the misfit cannot come to 1, and errors turn up as ground"
+        if ratio < 1:
+            follows = "ground that the data show is left out"
         return (
             f"errors by the {self.pairs} pairs measured both ways are {1e3 * self.error:.3g} ms, "
-            f"{than} than the {1e3 * self.given:.3g} ms given: check [errors] or the column time_error, "
-            f"since where to stop hangs on it",
+            f"{ratio:.2g} times the {1e3 * self.given:.3g} ms given: with these {follows}; "
+            f"check [errors] or the column time_error",
         )
 
 
@@ -77,5 +91,7 @@ def reciprocity(starts: Array, ends: Array, times: Array, errors: Array) -> Reci
     if not both.size:
         return None
     scaled = (mean[both] - mean[at[both]]) ** 2 / (variance[both] + variance[at[both]])
+    tame = scaled <= _WILD**2 * np.median(scaled) / _MEDIAN
     given = float(np.sqrt(np.mean(errors[np.isin(group, np.r_[both, at[both]])] ** 2)))
-    return Reciprocity(both.size, float(np.sqrt(np.mean(scaled))) * given, given)
+    error = float(np.sqrt(np.mean(scaled[tame]))) * given
+    return Reciprocity(both.size, int(np.sum(~tame)), error, given)

@@ -18,6 +18,7 @@ from stillground.pipeline.linear import in_unknown, linear_ladder, start_depende
 from stillground.pipeline.profiles import Profile
 from stillground.pipeline.remarks import remark, remark_nonlinear
 from stillground.pipeline.simulate import described_ground
+from stillground.pipeline.unreached import why_unreached
 from stillground.progress import staged
 from stillground.protocols import (
     Array,
@@ -44,7 +45,7 @@ Assemble = Callable[[Grid], Measurement]
 # Repeated work goes on the finest rung of no more nodes than this; what it tells has settled there.
 _REPEATED_NODES = 6000
 _MEMBERS = 32
-# Of a logarithm: no ground differs so much from its prior mean, and marches end in overflow.
+# Of a logarithm: no ground differs so much from its prior mean, and marches and products end in overflow.
 _BEYOND = 20.0
 
 
@@ -77,6 +78,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     rehearsal = sensitivity = None
     deviations: dict[str, float] = {}
     moved_by_start: dict[str, float] = {}
+    causes: tuple[str, ...] = ()
     interrupted = top.interrupted or len(linear.grids) < len(grids)
     try:
         if not interrupted:
@@ -93,6 +95,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
             )
         if not interrupted:
             moved_by_start = yield from start_dependence(linear, rung)
+            causes = yield from why_unreached(linear, grids, repeated_rung(grids), finest, profile, method)
     except KeyboardInterrupt:
         interrupted = True
 
@@ -114,8 +117,9 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         if config.kind.logarithmic and np.abs(answer_of - measurement.start).max() > _BEYOND:
             raise ConfigError(
                 f"{profile.name}: to fit the data the ground would have to change by a factor of more than "
-                f"{np.exp(_BEYOND):.0g}; look at errors.floor, which may be too small, and at the picks; "
-                f'errors.outliers = "tukey" leaves wild ones out'
+                f"{np.exp(_BEYOND):.0g}; look at errors.floor, which may be too small, at the picks "
+                f'(errors.outliers = "tukey" leaves wild ones out), and at the velocity or other ground that '
+                f"the fit starts from"
             )
         predicted = measurement.predict(answer_of)
         for extra in measurement.extras:
@@ -126,7 +130,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         choices = tuple(found if choice is chosen else choice for choice in choices)
         chosen = found
         rays = measurement.rays(answer_of)
-        remarks += remark_nonlinear(linear.outer[finest.grid], chosen, config)
+        remarks += remark_nonlinear(linear.outer[finest.grid], causes, chosen, config)
     result = Result(
         property=config.kind.ground_property,
         axes=finest.grid.axes,
@@ -173,9 +177,15 @@ def out_of_the_logarithm(result: Result, grid: Grid, averages: Mapping[str, Arra
     """A result in the logarithm of the ground property as one in the property itself.
 
     Errors and changes are taken to first order, property times error of the logarithm. What is relative, as
-    the changes of the ladder and with them its verdict, stays that of the logarithm.
+    the changes of the ladder and with them its verdict, stays that of the logarithm. Iterates farther from
+    the prior mean than any ground are cut there.
     """
-    model = np.exp(result.model)
+    least, most = float(result.background.min()) - _BEYOND, float(result.background.max()) + _BEYOND
+
+    def out(field: Array) -> Array:
+        return np.exp(np.clip(field, least, most))
+
+    model = out(result.model)
 
     def scaled(errors: Array) -> Array:
         return model * errors
@@ -185,26 +195,30 @@ def out_of_the_logarithm(result: Result, grid: Grid, averages: Mapping[str, Arra
         total = None if mean.total_error is None else value * mean.total_error
         return Average(value, value * mean.noise_part, total)
 
-    choices = tuple(replace(choice, model=np.exp(choice.model)) for choice in result.choices)
+    choices = tuple(replace(choice, model=out(choice.model)) for choice in result.choices)
     spread = grid.norm(model - grid.mean(model)) / float(np.sqrt(np.prod(grid.lengths)))
     rehearsal, sensitivity = result.rehearsal, result.sensitivity
+    means = {name: average(name, mean) for name, mean in result.averages.items()}
+    if rehearsal is not None:
+        missed = {name: means[name].value * error for name, error in rehearsal.average_errors.items()}
+        rehearsal = replace(rehearsal, total_error=scaled(rehearsal.total_error), average_errors=missed)
     return replace(
         result,
-        background=np.exp(result.background),
+        background=out(result.background),
         model=model,
         mesh_change=scaled(result.mesh_change),
         anomaly=spread if result.anomaly > 0 else 0.0,
         choices=choices,
         chosen=next(choice for choice in choices if choice.rule == result.chosen.rule),
-        snapshots=tuple((iteration, np.exp(field)) for iteration, field in result.snapshots),
+        snapshots=tuple((iteration, out(field)) for iteration, field in result.snapshots),
         ladder=replace(
             result.ladder,
-            rungs=tuple(replace(rung, model=np.exp(rung.model)) for rung in result.ladder.rungs),
+            rungs=tuple(replace(rung, model=out(rung.model)) for rung in result.ladder.rungs),
         ),
         noise_part=scaled(result.noise_part),
-        rehearsal=rehearsal and replace(rehearsal, total_error=scaled(rehearsal.total_error)),
+        rehearsal=rehearsal,
         sensitivity=sensitivity and replace(sensitivity, spread=scaled(sensitivity.spread)),
-        averages={name: average(name, mean) for name, mean in result.averages.items()},
+        averages=means,
     )
 
 

@@ -70,9 +70,14 @@ def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str,
     return tuple(said)
 
 
-def remark_nonlinear(outer: Linearised, chosen: Choice, config: Config) -> tuple[str, ...]:
-    """Sentences on how far the last linearisation of a nonlinear measurement is to be trusted."""
-    said = [] if outer.reached else [outer.reason]
+def remark_nonlinear(
+    outer: Linearised, causes: tuple[str, ...], chosen: Choice, config: Config
+) -> tuple[str, ...]:
+    """Sentences on how far the last linearisation of a nonlinear measurement is to be trusted.
+
+    ``causes`` are those found of a target that was not reached, see `unreached.why_unreached`.
+    """
+    said = [] if outer.reached else [outer.reason, *causes]
     recomputed = chosen.chi_square_recomputed
     if recomputed is not None and abs(recomputed / chosen.chi_square - 1) > _NOT_LINEAR:
         said.append(

@@ -16,10 +16,11 @@ import xarray as xr
 
 from stillground.config import Config, from_mapping, load
 from stillground.errors import ConfigError
+from stillground.pipeline.advice import advise
 from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.labels import ProfileResult, label, provenance, survey_crs
-from stillground.pipeline.profiles import place, read_overlays, read_profiles
+from stillground.pipeline.profiles import Profile, place, read_overlays, read_profiles
 from stillground.pipeline.site import line, plan_slices, recalled, write_site
 from stillground.products.curtain import curtain_dataset, write_curtain
 from stillground.products.figures import write_figures
@@ -37,6 +38,14 @@ from stillground.progress import finish
 from stillground.protocols import Progress
 from stillground.survey import source_of
 from stillground.whole import require_writable
+
+
+@dataclass(frozen=True)
+class Begun:
+    """One profile about to be reconstructed, with what settings will not do; yielded before its progress."""
+
+    profile: Profile
+    advice: tuple[str, ...]
 
 
 @dataclass(frozen=True)
@@ -58,7 +67,7 @@ class Outcome:
 
 def run(
     config: Config, text: str, folder: Path, *, command: str = "stillground run", resume: bool = False
-) -> Generator[Progress | Done, None, Outcome]:
+) -> Generator[Progress | Begun | Done, None, Outcome]:
     """Reconstructs every profile of a configuration and writes its products.
 
     Parameters
@@ -75,7 +84,7 @@ def run(
 
     Yields
     ------
-    Progress or Done
+    Progress, Begun or Done
 
     Returns
     -------
@@ -118,6 +127,7 @@ def run(
                     lines[profile.name] = recalled(folder, files_of, profile, plans[profile.name][0])
                 continue
             grids = plans[profile.name]
+            yield Begun(profile, advise(profile, grids, config))
             arrays = yield from answer(profile, grids, config)
             result = label(profile, grids, arrays, config, origin, known)
             # Until the new ones are there, nothing must speak for files that are being replaced.

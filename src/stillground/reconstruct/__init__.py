@@ -2,7 +2,7 @@
 
 from stillground.reconstruct.extras import with_delay, with_statics
 from stillground.reconstruct.linearising import Linearised, Outliers, linearise, linearised_at
-from stillground.reconstruct.outliers import find_outliers, reweighted, weighted_errors
+from stillground.reconstruct.outliers import biweight, find_outliers, reweighted, weighted_errors
 from stillground.reconstruct.reconstruction import (
     Method,
     Problem,
@@ -20,6 +20,7 @@ __all__ = [
     "Outliers",
     "Problem",
     "Reconstruction",
+    "biweight",
     "find_outliers",
     "judge",
     "linearise",
