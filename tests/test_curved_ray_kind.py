@@ -190,6 +190,28 @@ def test_both_ways_tell_the_error_of_a_time() -> None:
         assert any("check [errors]" in doubt for doubt in doubts)
 
 
+def test_wild_picks_hardly_move_the_error_that_both_ways_tell() -> None:
+    shots = np.arange(0.0, 40.0, 2.0)
+    noisy = line(shots, shots)
+    noisy["time"] = noisy["time"] + 3e-4 * np.random.default_rng(5).standard_normal(noisy.sizes["datum"])
+    noisy["time"][[9, 100, 200]] += 1e-2
+    scene = placed(noisy)
+    found = reciprocity(scene.starts, scene.ends, scene.data, scene.errors)
+    assert found is not None
+    assert (found.pairs, found.wild) == (190, 3)
+    assert found.error == pytest.approx(3e-4, rel=0.15)
+    assert not scene.doubts
+    assert scene.error_estimate is not None
+    assert scene.error_estimate.ratio == pytest.approx(1.0, rel=0.15)
+    assert "(3 wild ones left out)" in scene.error_estimate.said
+
+
+def test_few_pairs_tell_too_little_to_estimate_errors_by() -> None:
+    scene = placed(line(np.arange(0.0, 8.0, 2.0), np.arange(0.0, 48.0, 2.0)))
+    assert any("6 pairs measured both ways" in fact for fact in scene.facts)
+    assert scene.error_estimate is None
+
+
 def test_pairs_of_one_way_tell_nothing_of_errors() -> None:
     scene = placed(line())
     assert reciprocity(scene.starts, scene.ends, scene.data, scene.errors) is None
