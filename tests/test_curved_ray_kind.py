@@ -206,6 +206,25 @@ def test_wild_picks_hardly_move_the_error_that_both_ways_tell() -> None:
     assert "(3 wild ones left out)" in scene.error_estimate.said
 
 
+def test_constants_of_places_are_no_errors_of_picks() -> None:
+    shots = np.arange(0.0, 24.0, 2.0)
+    late = line(shots, shots)
+    random = np.random.default_rng(5)
+    constant = 2e-3 * random.standard_normal(shots.size)
+    number = (late["source_x"].to_numpy() / 2).astype(int)
+    late["time"] = late["time"] + constant[number] + 3e-4 * random.standard_normal(late.sizes["datum"])
+    scene = placed(late)
+    found = reciprocity(scene.starts, scene.ends, scene.data, scene.errors)
+    assert found is not None
+    assert found.constants
+    # 66 pairs less 11 differences of constants: to a tenth.
+    assert found.error == pytest.approx(3e-4, rel=0.3)
+    assert not scene.doubts
+    assert any(
+        "by constants of places (errors.statics fits such), beside these" in fact for fact in scene.facts
+    )
+
+
 def test_few_pairs_tell_too_little_to_estimate_errors_by() -> None:
     scene = placed(line(np.arange(0.0, 8.0, 2.0), np.arange(0.0, 48.0, 2.0)))
     assert any("6 pairs measured both ways" in fact for fact in scene.facts)

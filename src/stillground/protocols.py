@@ -656,10 +656,12 @@ class Differences:
 class ErrorEstimate:
     """The size of the errors by data that measure one thing more than once.
 
-    ``ratio`` is their size over what is stated; ``said`` tells it in words, with its numbers.
+    ``ratio`` is their size over what is stated, beside ``constants`` of places where these explain most of
+    the differences; ``said`` tells it in words, with its numbers.
     """
 
     ratio: float
+    constants: bool
     said: str
 
 

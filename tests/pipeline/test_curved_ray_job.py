@@ -250,6 +250,17 @@ def test_errors_too_small_are_named_where_both_ways_tell_them(tmp_path: Path) ->
     assert "given for them are 0.08 ms" in said
 
 
+def test_constants_of_sources_are_named_rather_than_errors_too_small(tmp_path: Path) -> None:
+    def late(starts: Array, ends: Array) -> Array:
+        return noisy(starts, ends) + np.where(starts[:, 0] % 16 < 8, 1e-3, -1e-3)
+
+    (said,) = causes(surveyed(tmp_path, late), "errors.outliers=off")
+    assert said.startswith(
+        "sources or receivers have constants of their own: 21 pairs measured both ways differ"
+    )
+    assert said.endswith("set errors.statics")
+
+
 def test_a_wild_pick_is_named_by_its_row(tmp_path: Path) -> None:
     def wild(starts: Array, ends: Array) -> Array:
         times = noisy(starts, ends)
@@ -265,6 +276,20 @@ def test_a_grid_too_coarse_is_named_with_the_next_finer_ones_misfit(tmp_path: Pa
     (said,) = causes(surveyed(tmp_path), "ground.spacing=3 m")
     assert said.startswith("the grid is too coarse for the data: on nodes of 6 m the misfit stays at ")
     assert said.endswith("take ground.spacing of 1.5 m or less")
+
+
+def test_what_was_looked_at_is_told_where_no_cause_is_found(tmp_path: Path) -> None:
+    """Times that vary from pick to pick alike both ways, as no ground of such lengths makes them."""
+
+    def ruffled(starts: Array, ends: Array) -> Array:
+        phase = 3.0 * (starts[:, 0] + ends[:, 0])
+        return noisy(starts, ends) + 6e-4 * np.sin(phase)
+
+    path = surveyed(tmp_path, ruffled)
+    (said,) = causes(path, "errors.outliers=off", "refinement.levels=1", "ground.spacing=2 m")
+    assert said.startswith("of the usual causes of a misfit of ")
+    assert "the errors stated are right (21 pairs measured both ways differ as errors of 0.2" in said
+    assert "no datum lies far off all others; left are constants of sources" in said
 
 
 def test_errors_that_both_ways_contradict_are_told_before_any_work(tmp_path: Path) -> None:

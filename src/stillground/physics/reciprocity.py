@@ -5,9 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from scipy.sparse import csr_array
 
 from stillground.counted import counted
-from stillground.protocols import Array, ErrorEstimate
+from stillground.protocols import Array, ErrorEstimate, Integers
 
 # From fewer pairs the error is known too badly to doubt the given one: to a quarter with eight.
 _FEW = 8
@@ -25,29 +26,35 @@ class Reciprocity:
     pairs : int
     wild : int
         Pairs that differ so much that one of the two is an outlier; left out.
+    constants : bool
+        Whether most of the differences are constants of the places, as a late trigger makes them.
     error : float
-        Standard deviation of one time, s.
+        Standard deviation of one time, beside such constants, s.
     given : float
         Root mean square of the errors given for the same times, s.
     """
 
     pairs: int
     wild: int
+    constants: bool
     error: float
     given: float
 
     @property
     def fact(self) -> str:
         left_out = f" ({counted(self.wild, 'wild one', 'wild ones')} left out)" if self.wild else ""
+        beside = " by constants of places (errors.statics fits such), beside these" if self.constants else ""
         return (
-            f"{self.pairs} pairs measured both ways differ{left_out} as errors of {1e3 * self.error:.3g} ms "
-            f"would make them; given for them are {1e3 * self.given:.3g} ms"
+            f"{self.pairs} pairs measured both ways differ{left_out}{beside} as errors of "
+            f"{1e3 * self.error:.3g} ms would make them; given for them are {1e3 * self.given:.3g} ms"
         )
 
     @property
     def estimate(self) -> ErrorEstimate | None:
         """What it tells of all errors; None from few pairs."""
-        return None if self.pairs < _FEW else ErrorEstimate(self.error / self.given, self.fact)
+        return (
+            None if self.pairs < _FEW else ErrorEstimate(self.error / self.given, self.constants, self.fact)
+        )
 
     @property
     def doubts(self) -> tuple[str, ...]:
@@ -69,7 +76,8 @@ def reciprocity(starts: Array, ends: Array, times: Array, errors: Array) -> Reci
 
     Times of one way that were measured again are averaged first. By reciprocity both ways take equal time,
     so half the mean squared difference is the variance of one time, each difference counted by the
-    variance that the given errors lead one to expect.
+    variance that the given errors lead one to expect. Where a constant for each place explains most of the
+    differences, the error is that of the rest.
 
     Parameters
     ----------
@@ -90,8 +98,25 @@ def reciprocity(starts: Array, ends: Array, times: Array, errors: Array) -> Reci
     both = np.flatnonzero((way[at] == back) & (way < back))
     if not both.size:
         return None
-    scaled = (mean[both] - mean[at[both]]) ** 2 / (variance[both] + variance[at[both]])
-    tame = scaled <= _WILD**2 * np.median(scaled) / _MEDIAN
+    expected = np.sqrt(variance[both] + variance[at[both]])
+    scaled = (mean[both] - mean[at[both]]) / expected
+    tame = scaled**2 <= _WILD**2 * np.median(scaled**2) / _MEDIAN
     given = float(np.sqrt(np.mean(errors[np.isin(group, np.r_[both, at[both]])] ** 2)))
-    error = float(np.sqrt(np.mean(scaled[tame]))) * given
-    return Reciprocity(both.size, int(np.sum(~tame)), error, given)
+    size = float(np.sqrt(np.mean(scaled[tame] ** 2)))
+    kept = way[both][tame]
+    beside = _beside_constants(scaled[tame], expected[tame], kept // n_places, kept % n_places)
+    constants = beside is not None and size > _FACTOR * beside
+    error = given * (beside if beside is not None and constants else size)
+    return Reciprocity(both.size, int(np.sum(~tame)), constants, error, given)
+
+
+def _beside_constants(scaled: Array, expected: Array, here: Integers, there: Integers) -> float | None:
+    """Root mean square of what a constant for each place leaves of differences; None where that is little."""
+    _, place = np.unique(np.r_[here, there], return_inverse=True)
+    pair = np.tile(np.arange(scaled.size), 2)
+    design = csr_array((np.r_[1 / expected, -1 / expected], (pair, place)))
+    solution, _, rank, _ = np.linalg.lstsq((design.T @ design).toarray(), design.T @ scaled)
+    left = scaled.size - int(rank)
+    if left < _FEW:
+        return None
+    return float(np.sqrt(np.sum((scaled - design @ solution) ** 2) / left))

@@ -52,6 +52,7 @@ def why_unreached(
         finer = yield from staged(work, "whether a finer grid fits better")
     found = [
         *_errors(profile.scene.error_estimate, misfit),
+        *_constants(profile.scene.error_estimate, finest),
         *_outliers(finest, linear.weights, misfit, profile),
         *_grid(linear.outer[grids[first]], finer, grids[first:], finest.grid),
     ]
@@ -66,6 +67,12 @@ def _errors(estimate: ErrorEstimate | None, misfit: float) -> list[str]:
         f"the errors stated are too small: {estimate.said}; that alone makes {alone:.3g} of the misfit of "
         f"{misfit:.3g}; state errors {estimate.ratio:.2g} times as large"
     ]
+
+
+def _constants(estimate: ErrorEstimate | None, finest: Reconstruction) -> list[str]:
+    if estimate is None or not estimate.constants or finest.measurement.extras:
+        return []
+    return [f"sources or receivers have constants of their own: {estimate.said}; set errors.statics"]
 
 
 def _outliers(finest: Reconstruction, weights: Array, misfit: float, profile: Profile) -> list[str]:
@@ -111,6 +118,6 @@ def _none_found(estimate: ErrorEstimate | None, misfit: float, finer: Linearised
         tried.append(f"a finer grid fits no better ({finer.chi_squares[-1]:.3g})")
     return (
         f"of the usual causes of a misfit of {misfit:.3g} none is found: {', '.join(tried)}; left are "
-        f"constants of sources or receivers (errors.statics), and ground that changes over less than "
-        f"ground.correlation"
+        f"constants of sources or receivers (errors.statics), a start too far off, and ground that "
+        f"changes over less than ground.correlation"
     )
