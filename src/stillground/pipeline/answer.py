@@ -78,7 +78,6 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     rehearsal = sensitivity = None
     deviations: dict[str, float] = {}
     moved_by_start: dict[str, float] = {}
-    causes: tuple[str, ...] = ()
     interrupted = top.interrupted or len(linear.grids) < len(grids)
     try:
         if not interrupted:
@@ -95,7 +94,6 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
             )
         if not interrupted:
             moved_by_start = yield from start_dependence(linear, rung)
-            causes = yield from why_unreached(linear, grids, repeated_rung(grids), finest, profile, method)
     except KeyboardInterrupt:
         interrupted = True
 
@@ -130,6 +128,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         choices = tuple(found if choice is chosen else choice for choice in choices)
         chosen = found
         rays = measurement.rays(answer_of)
+        causes = why_unreached(linear, finest, profile)
         remarks += remark_nonlinear(linear.outer[finest.grid], causes, chosen, config)
     result = Result(
         property=config.kind.ground_property,

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Generator, Sequence
-
 import numpy as np
 
 from stillground.counted import counted
@@ -11,9 +9,8 @@ from stillground.grid import Grid
 from stillground.percent import percent
 from stillground.pipeline.linear import Linear
 from stillground.pipeline.profiles import Profile
-from stillground.progress import staged
-from stillground.protocols import Array, ErrorEstimate, NonlinearMeasurement, Progress
-from stillground.reconstruct import Linearised, Method, Reconstruction, biweight, linearise
+from stillground.protocols import Array, ErrorEstimate
+from stillground.reconstruct import Reconstruction, biweight
 from stillground.survey import row_numbers
 
 # What takes a cause's part of the misfit away must leave less than this of it.
@@ -23,40 +20,26 @@ _LARGER = 1.25
 _LISTED = 5
 
 
-def why_unreached(
-    linear: Linear,
-    grids: Sequence[Grid],
-    first: int,
-    finest: Reconstruction,
-    profile: Profile,
-    method: Method,
-) -> Generator[Progress, None, tuple[str, ...]]:
+def why_unreached(linear: Linear, finest: Reconstruction, profile: Profile) -> tuple[str, ...]:
     """Sentences on the causes, one each; nothing where the target is reached or the measurement linear.
 
     Too small errors are told by data that measure one thing more than once, outliers by the residuals, and a
-    grid too coarse by the next finer one than the ``first``, where the whole fit is tried again.
-
-    Yields
-    ------
-    Progress
+    grid too coarse by the rung before: all rungs make the same outer steps.
     """
     outer = linear.outer.get(finest.grid)
     if outer is None or outer.reached:
         return ()
-    misfit = outer.chi_squares[-1]
-    finer = None
-    if first + 1 < len(grids):
-        measurement = linear.measured(grids[first + 1])
-        assert isinstance(measurement, NonlinearMeasurement)
-        work = linearise(measurement, grids[first + 1], method, weights=linear.weights)
-        finer = yield from staged(work, "whether a finer grid fits better")
-    found = [
-        *_errors(profile.scene.error_estimate, misfit),
-        *_constants(profile.scene.error_estimate, finest),
+    rungs = linear.grids[: linear.grids.index(finest.grid) + 1]
+    *coarser, misfit = (linear.outer[grid].steps.misfits[-1] for grid in rungs)
+    before = coarser[-1] if coarser else None
+    estimate = profile.scene.error_estimate
+    found = (
+        *_errors(estimate, misfit),
+        *_constants(estimate, finest),
         *_outliers(finest, linear.weights, misfit, profile),
-        *_grid(linear.outer[grids[first]], finer, grids[first:], finest.grid),
-    ]
-    return tuple(found) or (_none_found(profile.scene.error_estimate, misfit, finer),)
+        *_grid(before, misfit, finest.grid),
+    )
+    return found or (_none_found(estimate, before, misfit),)
 
 
 def _errors(estimate: ErrorEstimate | None, misfit: float) -> list[str]:
@@ -96,28 +79,26 @@ def _outliers(finest: Reconstruction, weights: Array, misfit: float, profile: Pr
     ]
 
 
-def _grid(coarse: Linearised, finer: Linearised | None, grids: Sequence[Grid], finest: Grid) -> list[str]:
-    if finer is None or finer.chi_squares[-1] > _CLEARLY * coarse.chi_squares[-1]:
+def _grid(before: float | None, misfit: float, grid: Grid) -> list[str]:
+    if before is None or misfit > _CLEARLY * before:
         return []
-    wide, narrow = (max(grid.spacing) for grid in grids[:2])
+    spacing = max(grid.spacing)
     return [
-        f"the grid is too coarse for the data: on nodes of {wide:g} m the misfit stays at "
-        f"{coarse.chi_squares[-1]:.3g}, on {narrow:g} m it comes to {finer.chi_squares[-1]:.3g}; take "
-        f"ground.spacing of {max(finest.spacing) / 2:g} m or less"
+        f"the grid is too coarse for the data: on nodes of {2 * spacing:g} m the misfit is {before:.3g} "
+        f"and on {spacing:g} m at {misfit:.3g}; take ground.spacing of {spacing / 2:g} m or less"
     ]
 
 
-def _none_found(estimate: ErrorEstimate | None, misfit: float, finer: Linearised | None) -> str:
+def _none_found(estimate: ErrorEstimate | None, before: float | None, misfit: float) -> str:
     tried = [
         "no data measure one thing twice, so that the errors stated may be too small"
         if estimate is None
         else f"the errors stated are right ({estimate.said})",
         "no datum lies far off all others",
+        *([] if before is None else [f"the grid before fits hardly worse ({before:.3g})"]),
     ]
-    if finer is not None:
-        tried.append(f"a finer grid fits no better ({finer.chi_squares[-1]:.3g})")
     return (
         f"of the usual causes of a misfit of {misfit:.3g} none is found: {', '.join(tried)}; left are "
-        f"constants of sources or receivers (errors.statics), a start too far off, and ground that "
-        f"changes over less than ground.correlation"
+        "constants of sources or receivers (errors.statics), a start too far off, and ground that changes "
+        "over less than ground.correlation"
     )
