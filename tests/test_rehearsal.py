@@ -192,10 +192,9 @@ def test_errors_are_those_of_the_grounds_whether_iterates_are_kept_or_not(
 
 def test_a_described_ground_is_a_family_of_its_own(pairs: tuple[Pair, Pair]) -> None:
     (_, fine) = pairs
-    described = 1e-5 * np.sin(fine[0].axes[0])[:, None] * np.ones(fine[0].shape[1])
-    found = finish(
-        rehearse(*pairs, a_method(iterations=10), twins=3, seed=0, described=described.reshape(-1))
-    )
+    ground = (1e-5 * np.sin(fine[0].axes[0])[:, None] * np.ones(fine[0].shape[1])).reshape(-1)
+    seen = fine[1].operator.matvec(ground)
+    found = finish(rehearse(*pairs, a_method(iterations=10), twins=3, seed=0, described=(ground, seen)))
     assert set(found.ratios) == {"prior", "layers", "described"}
 
 

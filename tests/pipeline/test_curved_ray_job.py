@@ -16,16 +16,18 @@ from tests.conftest import crosshole
 from tests.products.made_up_results import make_result
 from tests.refraction_line import V0, K, line, slotnick
 
-from stillground.config import load
+from stillground.config import Config, load
 from stillground.grid import Grid
 from stillground.operators.curved_rays import TravelTimes
 from stillground.pipeline.answer import answer, out_of_the_logarithm
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.labels import ProfileResult
 from stillground.pipeline.profiles import read_profiles
+from stillground.pipeline.rehearse import Rehearsed, rehearse_all
 from stillground.pipeline.run import Begun, Done, run, run_config
+from stillground.pipeline.simulate import simulate
 from stillground.progress import finish
-from stillground.protocols import Array, Average, Progress, Result
+from stillground.protocols import Array, Average, Progress, Rehearsal, Result
 from stillground.survey import write_table
 
 CONFIG = """
@@ -361,3 +363,33 @@ def test_a_result_leaves_the_logarithm_as_the_exponential_function_does() -> Non
     assert found.ladder.change == made.ladder.change
     assert found.ladder.verdict == made.ladder.verdict
     assert out_of_the_logarithm(replace(logarithmic, anomaly=0.0), grid, {"all": weights}).anomaly == 0.0
+
+
+SIMULATED = """
+[simulate]
+output = "line.csv"
+noise = "0.2 ms"
+background = "1500 m/s"
+[[simulate.layer]]
+bottom = "-5 m"
+value = "700 m/s"
+"""
+
+
+def test_a_rehearsal_takes_part_of_the_described_ground_that_the_survey_is_of(tmp_path: Path) -> None:
+    """Its data are marched, not those of the linearisation that is judged; another ground is left out."""
+    path = surveyed(tmp_path)
+    path.write_text(CONFIG + '[errors]\nfloor = "0.2 ms"\n' + SIMULATED)
+    config, text = load(path, ["rehearsal.twins=4"])
+    simulate(config, replace=True)
+
+    def rehearsed(config: Config) -> Rehearsal:
+        found = list(rehearse_all(config, text, tmp_path / "out", command="rehearse", pattern=False))
+        assert isinstance(found[-1], Rehearsed)
+        return found[-1].rehearsal
+
+    ratios = rehearsed(config).ratios
+    assert set(ratios) == {"prior", "layers", "described"}
+    assert ratios["described"]["discrepancy"].max() < 1.5
+    other, _ = load(path, ["rehearsal.twins=4", "simulate.background=1700 m/s"])
+    assert set(rehearsed(other).ratios) == {"prior", "layers"}

@@ -14,7 +14,7 @@ from stillground.errors import ConfigError
 from stillground.grid import Grid, prolong
 from stillground.pipeline.capacity import SNAPSHOT_VALUES
 from stillground.pipeline.grids import correlation
-from stillground.pipeline.linear import in_unknown, linear_ladder, start_dependence
+from stillground.pipeline.linear import Linear, in_unknown, linear_ladder, start_dependence
 from stillground.pipeline.profiles import Profile
 from stillground.pipeline.remarks import remark, remark_nonlinear
 from stillground.pipeline.simulate import described_ground
@@ -40,13 +40,13 @@ from stillground.sensitivity import vary
 from stillground.solve.columns import norm
 from stillground.uncertainty import extra_deviations, noise_part
 
-Assemble = Callable[[Grid], Measurement]
-
 # Repeated work goes on the finest rung of no more nodes than this; what it tells has settled there.
 _REPEATED_NODES = 6000
 _MEMBERS = 32
 # Of a logarithm: no ground differs so much from its prior mean, and marches and products end in overflow.
 _BEYOND = 20.0
+# A linearisation reaches data whose misfit at it is no larger, as in an outer step's fall to a quarter.
+_TRUSTED = 4.0
 
 
 def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator[Progress, None, Result]:
@@ -263,7 +263,7 @@ def two_rungs(grids: Sequence[Grid]) -> tuple[Grid, Grid]:
 
 
 def rehearse_profile(
-    profile: Profile, config: Config, grids: Sequence[Grid], linear: Assemble, noise: float
+    profile: Profile, config: Config, grids: Sequence[Grid], linear: Linear, noise: float
 ) -> Generator[Progress, None, Rehearsal]:
     """All rules on twins of a profile; data come from the next finer rung than they are judged on.
 
@@ -271,13 +271,6 @@ def rehearse_profile(
     """
     coarse, fine = two_rungs(grids)
     method = plan_method(config)
-    described = None
-    # Of a nonlinear kind, two rungs' linearisations differ over a whole ground by more than its noise.
-    if config.simulate is not None and not config.kind.logarithmic:
-        axes = config.kind.axes
-        ground = described_ground(config.simulate, axes)
-        points = np.stack(np.meshgrid(*fine.axes, indexing="ij"), axis=-1).reshape(-1, len(axes))
-        described = ground.values(points) - ground.background
     return (
         yield from rehearse(
             (coarse, linear(coarse)),
@@ -286,10 +279,37 @@ def rehearse_profile(
             twins=config.rehearsal.twins,
             seed=config.rehearsal.seed,
             noise=noise,
-            described=described,
+            described=_described(profile, config, linear, coarse, fine),
             averages=profile.scene.averages,
         )
     )
+
+
+def _described(
+    profile: Profile, config: Config, linear: Linear, coarse: Grid, fine: Grid
+) -> tuple[Array, Array] | None:
+    """The ground of ``[simulate]`` on the fine grid and its data, both less what the prior mean is and gives.
+
+    Of a nonlinear measurement data are its own, seen from the linearisation at the survey's answer. That
+    reaches no other ground than the survey's: what is described must explain its data nearly to the errors.
+    """
+    if config.simulate is None:
+        return None
+    ground = described_ground(config.simulate, config.kind.axes)
+    points = np.stack(np.meshgrid(*fine.axes, indexing="ij"), axis=-1).reshape(-1, len(fine.axes))
+    values = ground.values(points)
+    measured = linear.measured(coarse)
+    if isinstance(measured, Measurement):
+        return values - ground.background, linear(fine).operator.matvec(values - ground.background)
+    data = profile.scene.predict(ground)
+    left = (measured.data - data) / weighted_errors(measured.errors, linear.weights)
+    if left @ left > _TRUSTED * left.size:
+        return None
+    at_answer, mean = linear(coarse), linear(fine).background
+    assert at_answer.background is not None
+    assert mean is not None
+    seen = data - measured.data + at_answer.data - at_answer.operator.matvec(at_answer.background)
+    return (np.log(values) if config.kind.logarithmic else values) - mean, seen
 
 
 def _broken_off(top: Climb, n_rungs: int, interrupted: bool) -> tuple[str, ...]:

@@ -100,7 +100,7 @@ def _seconds(profile: Profile, grids: Sequence[Grid], config: Config) -> dict[st
     repeated = grids[repeated_rung(grids)]
     coarse, _ = _at_start(assemble, repeated)
     if config.rehearsal.twins:
-        families = len(FAMILIES) + (config.simulate is not None and not config.kind.logarithmic)
+        families = len(FAMILIES) + (config.simulate is not None)
         together = _seconds_of(coarse, repeated, method, config.rehearsal.twins)
         found["rehearsal"] = families * together
     if config.sensitivity.vary:

@@ -85,7 +85,7 @@ def _grid(before: float | None, misfit: float, grid: Grid) -> list[str]:
     spacing = max(grid.spacing)
     return [
         f"the grid is too coarse for the data: on nodes of {2 * spacing:g} m the misfit is {before:.3g} "
-        f"and on {spacing:g} m at {misfit:.3g}; take ground.spacing of {spacing / 2:g} m or less"
+        f"and on {spacing:g} m {misfit:.3g}; take ground.spacing of {spacing / 2:g} m or less"
     ]
 
 

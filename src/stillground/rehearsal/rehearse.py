@@ -35,7 +35,7 @@ def rehearse(
     twins: int,
     seed: int,
     noise: float = 1.0,
-    described: Array | None = None,
+    described: tuple[Array, Array] | None = None,
     averages: Callable[[Grid], Mapping[str, Array]] = no_averages,
 ) -> Generator[Progress, None, Rehearsal]:
     """Draws grounds, takes their data on a finer grid with the survey's own errors, and lets every rule stop.
@@ -53,8 +53,9 @@ def rehearse(
     seed : int
     noise : float
         Size of the errors over what is stated.
-    described : array, shape (n_nodes of fine,), optional
-        A ground less the background, in the property's unit; it is not scaled.
+    described : pair of array, shape (n_nodes of fine,) and (n_data,), optional
+        A ground less the background, in the unknown's unit, and its data less those of the background; they
+        are not scaled.
     averages : callable
         From a grid to weights of its nodes by name: means whose errors are wanted.
 
@@ -93,9 +94,9 @@ def rehearse(
         scale = np.sqrt(signal * twins / np.sum(seen**2))
         families[name], data[name] = scale * grounds, scale * seen
     if described is not None:
-        families["described"] = np.tile(described[:, None], (1, twins))
-        seen = fine_measurement.operator.matvec(described) / measurement.errors
-        data["described"] = np.tile(seen[:, None], (1, twins))
+        ground, seen = described
+        families["described"] = np.tile(ground[:, None], (1, twins))
+        data["described"] = np.tile((seen / measurement.errors)[:, None], (1, twins))
 
     inner_product = _GroundProduct(problem)
     ratios: dict[str, dict[str, Array]] = {}
