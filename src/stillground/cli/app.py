@@ -148,9 +148,9 @@ def rehearse(
     """Try all stopping rules on synthetic ground under the survey of CONFIG.
 
     Grounds are drawn from the prior, and as layers; where CONFIG describes a ground under [simulate],
-    that too. Each goes through the survey's own geometry with its own errors. Prints what each rule
-    costs over the best iterate: median, 90 %, worst; groups of rules that cannot be told apart; and
-    which to choose.
+    that too (where rays bend, if it explains the survey). Each goes through the survey's own geometry
+    with its own errors. Prints what each rule costs over the best iterate: median, 90 %, worst; groups
+    of rules that cannot be told apart; and which to choose.
 
     Writes the same numbers as <profile>_rehearsal.json, and a figure.
 
