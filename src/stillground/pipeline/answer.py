@@ -129,7 +129,8 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         chosen = found
         rays = measurement.rays(answer_of)
         causes = why_unreached(linear, finest, profile)
-        remarks += remark_nonlinear(linear.outer[finest.grid], causes, chosen, config)
+        outer, moved = linear.outer[finest.grid], linear.moved(finest.grid)
+        remarks += remark_nonlinear(outer, causes, chosen, top.ladder, moved, config)
     result = Result(
         property=config.kind.ground_property,
         axes=finest.grid.axes,

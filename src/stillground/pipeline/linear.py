@@ -8,7 +8,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from stillground.config import Config
-from stillground.grid import Grid
+from stillground.grid import Grid, prolong
 from stillground.pipeline.profiles import Profile
 from stillground.progress import staged
 from stillground.protocols import Array, Measurement, NonlinearMeasurement, Progress
@@ -54,6 +54,15 @@ class Linear:
         measurement = self.measured(grid)
         assert isinstance(measurement, Measurement)
         return measurement
+
+    def moved(self, grid: Grid) -> float | None:
+        """Relative L2 change of the outer steps' model since the rung before; None where there is none."""
+        if grid not in self.outer or grid == self.grids[0]:
+            return None
+        before = self.grids[self.grids.index(grid) - 1]
+        here, there = self.outer[grid].field, self.outer[before].field.reshape(before.shape)
+        change = here - prolong(there, before, grid).reshape(-1)
+        return grid.norm(change) / grid.norm(here - grid.mean(here))
 
     def __call__(self, grid: Grid) -> Measurement:
         return reweighted(self.stated(grid), self.weights)

@@ -6,7 +6,7 @@ import numpy as np
 
 from stillground.config import Config
 from stillground.percent import percent
-from stillground.protocols import Array, Choice, RuleOptions
+from stillground.protocols import Array, Choice, Ladder, RuleOptions
 from stillground.reconstruct import Linearised, Reconstruction, shared_constants
 from stillground.stopping.gcv import gcv
 
@@ -15,6 +15,7 @@ _ROUNDING = 1e-6
 _STATICS, _WARY = 2.5, 1.4
 _STALLED = 0.01
 _NOT_LINEAR = 0.2
+_STEADIER = 0.6
 
 
 def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str, ...]:
@@ -71,11 +72,17 @@ def remark(finest: Reconstruction, weights: Array, config: Config) -> tuple[str,
 
 
 def remark_nonlinear(
-    outer: Linearised, causes: tuple[str, ...], chosen: Choice, config: Config
+    outer: Linearised,
+    causes: tuple[str, ...],
+    chosen: Choice,
+    ladder: Ladder,
+    moved: float | None,
+    config: Config,
 ) -> tuple[str, ...]:
     """Sentences on how far the last linearisation of a nonlinear measurement is to be trusted.
 
-    ``causes`` are those found of a target that was not reached, see `unreached.why_unreached`.
+    ``causes`` are those found of a target that was not reached, see `unreached.why_unreached`; ``moved``
+    is how far the outer steps' own model did since the grid before, see `Linear.moved`.
     """
     said = [] if outer.reached else [outer.reason, *causes]
     recomputed = chosen.chi_square_recomputed
@@ -83,6 +90,13 @@ def remark_nonlinear(
         said.append(
             f"the misfit of the answer is {recomputed:.3g} where its last linearisation has "
             f"{chosen.chi_square:.3g}: the answer is farther off than that reaches; trust its details less"
+        )
+    restless = outer.reached and ladder.verdict.word != "settled"
+    if restless and moved is not None and moved < _STEADIER * ladder.change[-1]:
+        said.append(
+            f"the model that the outer steps came to moved only by {percent(moved)} from the grid before, "
+            f"its linearisation more: arrivals that can go two ways almost equally fast change over; one "
+            f"grid more may tell (a finer ground.spacing, refinement.levels one higher)"
         )
     resting = ["error bars"]
     resting += ["rehearsal"] if config.rehearsal.twins else []

@@ -201,8 +201,7 @@ def _steps(
     if not reached:
         reason = (
             f"the misfit stays at {misfits[-1]:.3g} after {made} outer steps, its target is 1"
-            f"{': ' + ended if ended else ''}; the errors may be too small, some data outliers, or the grid "
-            f"too coarse for them"
+            f"{': ' + ended if ended else ''}"
         )
     steps = OuterSteps(tuple(misfits), tuple(aims), tuple(inner))
     return Linearised(linear, field, steps, counted, reached, reason), residual / errors
