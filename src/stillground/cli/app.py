@@ -117,7 +117,8 @@ def inspect(config: Configuration, out: Out = None, overrides: Settings = None) 
     """Read and judge the survey of CONFIG without reconstructing it.
 
     Prints counts, ranges, repeated and suspicious rows, the distance of positions off the section,
-    the planned grids, and the memory and time that a run would take; writes one figure.
+    the planned grids, and the memory and time that a run would take; draws the geometry, and times
+    against distance where sources and receivers stand along the surface.
 
     \b
     Example:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
@@ -263,7 +264,7 @@ def _shorten(text: str, listed: tuple[Any, ...]) -> str:
     return text if len(listed) <= _LISTED else f"{text} and {len(listed) - _LISTED} more"
 
 
-def plan(planned: Plan, figure: Path) -> None:
+def plan(planned: Plan, figures: Sequence[Path]) -> None:
     """One profile of `inspect`."""
     survey, report = planned.profile.survey, planned.profile.report
     say()
@@ -291,7 +292,8 @@ def plan(planned: Plan, figure: Path) -> None:
         say(f"warning: {sentence}")
     times = ", ".join(f"{_time(seconds)} for the {what}" for what, seconds in planned.seconds.items())
     say(f"a run will take about {times}, and {planned.memory / 2**20:.0f} MiB")
-    say(f"figure: {figure}")
+    for figure in figures:
+        say(f"figure: {figure}")
 
 
 def _time(seconds: float) -> str:

@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 
 import numpy as np
 import psutil
+from matplotlib.figure import Figure
 
 from stillground.config import Config
 from stillground.grid import Grid
@@ -16,9 +18,11 @@ from stillground.pipeline.advice import advise
 from stillground.pipeline.answer import plan_method, repeated_rung
 from stillground.pipeline.capacity import memory, rows_on_grid
 from stillground.pipeline.grids import correlation, plan_grids
+from stillground.pipeline.labels import curves_of
 from stillground.pipeline.linear import Measured, assembly
 from stillground.pipeline.profiles import Profile, read_profiles
-from stillground.products.figures.sheet import write_figure
+from stillground.products.figures import write_figures
+from stillground.products.figures.distance import distance_figure
 from stillground.products.figures.survey import survey_figure
 from stillground.protocols import Measurement, NonlinearMeasurement
 from stillground.reconstruct import Method, linearised_at, prepare
@@ -64,16 +68,18 @@ def _plan(profile: Profile, config: Config) -> Plan:
     )
 
 
-def draw(plan: Plan, config: Config, folder: Path) -> Path:
-    """Writes ``<profile>_survey`` into the figures of ``folder`` and gives the path of the PNG.
+def draw(plan: Plan, config: Config, folder: Path) -> tuple[Path, ...]:
+    """Writes figures of the survey into those of ``folder`` and gives the paths of the PNGs.
 
-    Rays that bend are those that a run begins with.
+    ``<profile>_survey``, where rays that bend are those that a run begins with, and of data along a line on
+    the surface ``<profile>_<datum>_distance``.
     """
-    scene, grid = plan.profile.scene, plan.grids[-1]
-    measurement = assembly(plan.profile, config)(grid)
+    profile, grid = plan.profile, plan.grids[-1]
+    scene, measurement = profile.scene, assembly(profile, config)(grid)
     rays = measurement.rays(measurement.start) if isinstance(measurement, NonlinearMeasurement) else ()
-    figure = survey_figure(
-        plan.profile.name,
+    survey = partial(
+        survey_figure,
+        profile.name,
         paths=scene.paths,
         positions=scene.positions,
         apparent=scene.apparent,
@@ -84,7 +90,11 @@ def draw(plan: Plan, config: Config, folder: Path) -> Path:
         coverage=scene.coverage(grid, correlation(config), rays),
         surface=scene.surface,
     )
-    return write_figure(folder / "figures", f"{plan.profile.name}_survey", figure)[0]
+    curves = curves_of(profile, config, measurement.groupings, measurement.data, measurement.errors)
+    drawn: dict[str, Callable[[], Figure]] = {"survey": survey}
+    if curves is not None:
+        drawn[curves.name] = partial(distance_figure, profile.name, curves)
+    return write_figures(folder / "figures", profile.name, drawn)[::2]
 
 
 def _seconds(profile: Profile, grids: Sequence[Grid], config: Config) -> dict[str, float]:

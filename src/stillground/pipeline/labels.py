@@ -22,6 +22,7 @@ from stillground.grid import Grid
 from stillground.pipeline.advice import advise
 from stillground.pipeline.profiles import Profile
 from stillground.products.cf import plan_unit
+from stillground.products.data_curves import DataCurves, data_curves
 from stillground.products.figures import figures
 from stillground.products.fit import fit_table
 from stillground.products.history import history_dataset
@@ -31,7 +32,7 @@ from stillground.products.overlay import Overlay, overlay
 from stillground.products.picture import picture_dataset
 from stillground.products.provenance import Provenance, timestamp
 from stillground.products.summary import profile_summary
-from stillground.protocols import Array, Known, Result, RuleOptions
+from stillground.protocols import Array, Integers, Known, Result, RuleOptions
 from stillground.survey import row_numbers, to_si
 
 _PACKAGES = ("stillground", "numpy", "scipy", "pylops", "xarray", "numba", "netCDF4")
@@ -190,8 +191,41 @@ def label(
             positions=profile.scene.positions,
             differences=profile.scene.differences,
             known=beside,
+            curves=curves_of(
+                profile,
+                config,
+                result.groupings,
+                result.observed,
+                result.errors,
+                predicted=result.predicted,
+                weights=result.weights,
+            ),
         ),
         overlay=beside,
+    )
+
+
+def curves_of(
+    profile: Profile,
+    config: Config,
+    groupings: Mapping[str, Integers],
+    observed: Array,
+    errors: Array,
+    **answer: Array,
+) -> DataCurves | None:
+    """A profile's data as curves along its line in the table's unit; None where it has no such line."""
+    datum, scene = config.kind.datum, profile.scene
+    unit, factor = _table_unit(profile, datum, config.kind.datum_units)
+    return data_curves(
+        groupings=groupings,
+        positions=scene.positions,
+        surface=scene.surface,
+        datum=datum.replace("_", " "),
+        unit=unit,
+        si_factor=factor,
+        observed=observed,
+        errors=errors,
+        **answer,
     )
 
 

@@ -9,7 +9,9 @@ from typing import Any
 
 from matplotlib.figure import Figure
 
+from stillground.products.data_curves import DataCurves
 from stillground.products.figures.column import column_figure
+from stillground.products.figures.distance import distance_figure
 from stillground.products.figures.errors import errors_figure
 from stillground.products.figures.ladder import ladder_figure
 from stillground.products.figures.pattern import pattern_figure
@@ -36,11 +38,12 @@ def figures(
     positions: Mapping[str, Array],
     differences: Differences | None = None,
     known: Overlay | None = None,
+    curves: DataCurves | None = None,
 ) -> dict[str, Callable[[], Figure]]:
     """What draws the figures of a result, by their names; nothing is drawn before it is called.
 
     ``section`` (of a column ``column``), ``errors``, ``rules``, ``ladder`` and ``residuals`` always,
-    ``steps``, ``rehearsal`` and ``sensitivity`` where the result has them.
+    ``<datum>_distance``, ``steps``, ``rehearsal`` and ``sensitivity`` where there are such.
 
     Parameters
     ----------
@@ -58,6 +61,8 @@ def figures(
         In a column, the usual estimate to draw behind the answer.
     known : Overlay, optional
         Known ground to draw over it.
+    curves : DataCurves, optional
+        The data against distance along the line.
     """
     on_ground: dict[str, Any] = {"tolerance": tolerance, "surface": surface}
     placed = on_ground | {"positions": positions, "known": known}
@@ -75,6 +80,8 @@ def figures(
     }
     if result.outer_steps is not None:
         drawn["steps"] = partial(steps_figure, profile, result, result.outer_steps)
+    if curves is not None:
+        drawn[curves.name] = partial(distance_figure, profile, curves)
     if result.rehearsal is not None:
         drawn["rehearsal"] = partial(rehearsal_figure, profile, result.rehearsal, result.chosen.rule)
     if result.sensitivity is not None:

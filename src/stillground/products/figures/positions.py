@@ -28,6 +28,18 @@ def draw_positions(axes: Axes, positions: Mapping[str, Array]) -> None:
         axes.plot(across, places[:, -1], **_sign(name), transform=where, clip_on=False, zorder=4)
 
 
+def draw_starts(axes: Axes, name: str, along: Array) -> None:
+    """Draw places by what stands there at the foot of axes over distance, ``along`` in m."""
+    axes.plot(
+        along,
+        np.zeros(len(along)),
+        **_sign(name),
+        transform=axes.get_xaxis_transform(),
+        clip_on=False,
+        zorder=4,
+    )
+
+
 def is_star(name: str) -> bool:
     """Whether what stands there is drawn as a star, as sources are, and not as a triangle."""
     return name == "source"
