@@ -25,7 +25,7 @@ from stillground.products.report import write_comparison, write_report
 from stillground.protocols import Result
 
 from .made_up_folders import GROUND, USUAL, column_of, write_folder
-from .made_up_results import SURFACE, make_result, slowness
+from .made_up_results import SURFACE, bent, bent_rays, make_result, slowness
 
 CHROMIUM, DRIVER = shutil.which("chromium"), shutil.which("chromedriver")
 pytestmark = pytest.mark.skipif(
@@ -517,3 +517,46 @@ def test_a_comparison_shows_both_and_their_difference(browser: Browser, tmp_path
     assert browser.console() == []
     text = "\n".join(sheet.extract_text() for sheet in browser.pdf().pages)
     assert "B less A" in text
+
+
+def test_rays_are_drawn_over_the_field_until_they_are_switched_off(browser: Browser, tmp_path: Path) -> None:
+    folder = write_folder(tmp_path, {"toe": bent(make_result(argued=False, spacing=0.5))}, surface=SURFACE)
+    browser.open(write_report(folder))
+    assert browser.console() == []
+
+    def layer() -> np.ndarray:
+        """Opacity of the layer of rays within the frame."""
+        text, width, height = browser.run(
+            "const c = document.querySelectorAll('.map canvas')[1],"
+            "[w, h, left, top] = window.report.state().box,"
+            "d = c.getContext('2d').getImageData(left, top, Math.round(w), Math.round(h));"
+            "let s = ''; for (let i = 3; i < d.data.length; i += 4) s += String.fromCharCode(d.data[i]);"
+            "return [btoa(s), d.width, d.height]"
+        )
+        return np.frombuffer(base64.b64decode(text), np.uint8).reshape(height, width)
+
+    shown = layer()
+    height, width = shown.shape
+    x, z = nodes(browser)
+
+    def near(distance: float, elevation: float) -> int:
+        column = round((distance - x[0]) / (x[-1] - x[0]) * width)
+        row = round((z[0] - elevation) / (z[0] - z[-1]) * height)
+        return int(shown[row - 1 : row + 2, column - 1 : column + 2].max())
+
+    for ray in [ray for ray in bent_rays() if len(ray)][::2][::40]:
+        assert min(near(*corner) for corner in ray[5:-5:10]) > 20
+    for place in ((-1.0, 50.0), (19.0, 50.0), (9.0, 34.5)):
+        assert near(*place) == 0, "no ray comes there"
+    field = browser.canvas()
+    browser.set("rays", False, "change")
+    assert layer().max() == 0
+    np.testing.assert_array_equal(browser.canvas(), field, err_msg="the field is another layer")
+    browser.set("rays", True, "change")
+    browser.set("slider", 0)
+    np.testing.assert_array_equal(layer(), shown, err_msg="the rays of the answer stay at every iteration")
+    browser.devtools("Emulation.setDeviceMetricsOverride", **(WIDE | {"width": 1024}))
+    browser.settle()
+    browser.settle()
+    assert browser.run("const [a, b] = document.querySelectorAll('.map canvas'); return a.width === b.width")
+    assert layer().max() > 20, "drawn again where the window changes"

@@ -11,6 +11,8 @@ from stillground.protocols import Array
 
 # Corners kept of a ray: more than eyes tell apart on a screen.
 _MOST = 48
+# Rays drawn: more would hide the ground, and make files large.
+_MOST_DRAWN = 400
 
 
 def thinned(ray: Array) -> Array:
@@ -24,6 +26,19 @@ def thinned(ray: Array) -> Array:
     if len(ray) <= _MOST:
         return ray
     return np.asarray(ray[np.linspace(0, len(ray) - 1, _MOST).round().astype(int)])
+
+
+def drawn_rays(rays: Sequence[Array]) -> list[Array]:
+    """What pictures show: rays that were found, thinned, and of many every so many.
+
+    Examples
+    --------
+    >>> ray = np.array([[0.0, 0.0], [5.0, -2.0], [10.0, 0.0]])
+    >>> [len(drawn_rays(rays)) for rays in ([], [ray, ray[:0]], [ray] * 1000)]
+    [0, 1, 334]
+    """
+    found = [ray for ray in rays if len(ray)]
+    return [thinned(ray) for ray in found[:: -(-len(found) // _MOST_DRAWN) or 1]]
 
 
 def ray_variables(rays: Sequence[Array]) -> dict[str, xr.Variable]:

@@ -9,20 +9,16 @@ from matplotlib.collections import LineCollection
 from matplotlib.lines import Line2D
 
 from stillground.products.figures.sheet import PAPER
-from stillground.products.rays import thinned
+from stillground.products.rays import drawn_rays
 from stillground.protocols import Array
-
-# More would hide the ground, and make the file large.
-_MOST = 400
 
 
 def draw_rays(axes: Axes, rays: Sequence[Array]) -> Line2D:
     """Draw rays, (distance, elevation) in m, faintly under the positions; gives their sign for a legend.
 
-    Of many, every so many.
+    Those of `drawn_rays`.
     """
-    found = [ray for ray in rays if len(ray)]
-    drawn = found[:: -(-len(found) // _MOST) or 1]
+    drawn = drawn_rays(rays)
     faint = {"lw": 0.4, "alpha": max(0.15, 0.5 * min(1.0, (60 / max(len(drawn), 1)) ** 0.5)), "color": PAPER}
-    axes.add_collection(LineCollection([thinned(ray) for ray in drawn], **faint, zorder=2.5), autolim=False)
+    axes.add_collection(LineCollection(drawn, **faint, zorder=2.5), autolim=False)
     return Line2D([], [], color="#9aa4aa", lw=0.8, label="ray")

@@ -25,6 +25,7 @@ class Chosen(BaseModel):
     rule: str
     iteration: float | None
     chi_square: float
+    chi_square_recomputed: float | None = None
 
 
 class RuleEntry(BaseModel):

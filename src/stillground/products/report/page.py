@@ -22,6 +22,7 @@ from stillground.products.figures.positions import is_star
 from stillground.products.figures.sheet import VERDICTS
 from stillground.products.overlay import overlay_sentence
 from stillground.products.provenance import CAUTION
+from stillground.products.rays import drawn_rays, rays_of
 from stillground.products.reliability import MEANINGS, MESH_DEPENDENT, POORLY_COVERED, RELIABLE
 from stillground.products.report.curves import curve_charts, curve_table
 from stillground.products.report.drawing import badge_symbol, minus
@@ -123,6 +124,8 @@ class RuleRow:
 def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: int) -> dict[str, Any]:
     entry, ground = profile.entry, ground_of(profile)
     stand = places(profile)
+    traced = rays_of(profile.history)
+    rays = drawn_rays(traced)
     label = ground.label
     stop = _number(entry.chosen.iteration)
     said = (
@@ -144,7 +147,9 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
         "ground": ground,
         "column": ground.frame.distance is None,
         "tall": ground.frame.tall,
-        "static": large(ground, sight, stand, None if band is None else band.values),
+        "static": large(ground, sight, stand, None if band is None else band.values, rays),
+        "rays": (len(rays), len(traced)),
+        "own_misfit": _own_misfit(entry, traced=bool(rays)),
         "picks": _picks(profile, ground, label, drawn),
         "bar": colour_bar(Sight(ground.model, ground.scale, label, said)),
         "curves": curve_charts(profile, drawn),
@@ -302,8 +307,31 @@ def numbers(entry: Entry) -> list[tuple[str, str, str]]:
         ("last change of the grid", _percent(last), "%" if last is not None else ""),
         ("order of the changes", "–" if refinement.order is None else minus(f"{refinement.order:.1f}"), ""),
         ("still to come", _percent(refinement.remaining), "%" if refinement.remaining is not None else ""),
-        ("misfit at the stop", f"{entry.chosen.chi_square:#.3g}", ""),
+        ("misfit at the stop", f"{entry.chosen.chi_square:#.3g}", _recomputed(entry)),
     ]
+
+
+def _recomputed(entry: Entry) -> str:
+    own = entry.chosen.chi_square_recomputed
+    return "" if own is None else f"recomputed {own:#.3g}"
+
+
+def _own_misfit(entry: Entry, *, traced: bool) -> str:
+    """What a nonlinear measurement itself makes of the chosen answer's misfit, in words; else nothing."""
+    own, linear = entry.chosen.chi_square_recomputed, entry.chosen.chi_square
+    if own is None:
+        return ""
+    still, anew = (", along rays held still", " with rays traced through the answer") if traced else ("", "")
+    change = own / linear - 1
+    apart = (
+        "as good as the same"
+        if abs(change) < 0.005
+        else f"{percent(abs(change))} {'more' if change > 0 else 'less'}"
+    )
+    return (
+        f"All misfits here are of the last linearisation{still}. Recomputed{anew} (in brackets), that of "
+        f"{entry.chosen.rule} is {own:#.3g} instead of {linear:#.3g}: {apart}."
+    )
 
 
 def _shares(ground: Ground) -> str:

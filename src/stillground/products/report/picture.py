@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -51,14 +51,21 @@ class Sight:
     colours: str = FIELD
 
 
-def large(ground: Ground, sight: Sight, places: Mapping[str, Array], band: Array | None = None) -> Markup:
-    """A picture with axes, colour bar, surface and positions; a column with its error band."""
+def large(
+    ground: Ground,
+    sight: Sight,
+    places: Mapping[str, Array],
+    band: Array | None = None,
+    rays: Sequence[Array] = (),
+) -> Markup:
+    """A picture with axes, colour bar, surface, rays and positions; a column with its error band."""
     frame = ground.frame
     if frame.distance is None:
         return _column(ground, sight, _COLUMN, band, places)
     width, height = _fitted(frame, _LARGEST)
     chart = _chart(frame, (width + 130, height + 62), (52, 78, 20, 42))
     _image(chart, ground, sight, pixels=900)
+    _rays(chart, rays)
     exaggerated = f", heights × {frame.exaggeration}" if frame.exaggeration > 1 else ""
     chart.frame(f"distance (m){exaggerated}", "elevation (m)", grid=False, ticks=(8, 7))
     draw_places(chart, places)
@@ -96,6 +103,19 @@ def draw_places(chart: Chart, places: Mapping[str, Array]) -> None:
         across = chart.across(where[:, 0]) if where.shape[1] > 1 else np.full(len(where), chart.left)
         path = "".join(f"M{x:.1f} {y:.1f}{sign}" for x, y in zip(across, chart.up(where[:, -1]), strict=True))
         chart.add("path", class_="place-star" if is_star(name) else "place-triangle", d=path)
+
+
+def _rays(chart: Chart, rays: Sequence[Array]) -> None:
+    """Rays, (distance, elevation) in m, as one path; ``data-box`` tells the script its frame."""
+    lines = []
+    for ray in rays:
+        corners = np.column_stack([chart.across(ray[:, 0]), chart.up(ray[:, 1])]).round(1)
+        # Steps are shorter than places.
+        steps = " ".join(f"{x:.3g} {y:.3g}" for x, y in np.diff(corners, axis=0))
+        lines.append(f"M{corners[0, 0]:g} {corners[0, 1]:g}l{steps}")
+    if lines:
+        box = f"{chart.left:g} {chart.top:g} {chart.right - chart.left:.2f} {chart.bottom - chart.top:.2f}"
+        chart.add("path", class_="rays", d="".join(lines), data_box=box)
 
 
 def column_ends(values: Array, band: Array | None, scale: tuple[float, float]) -> tuple[float, float]:

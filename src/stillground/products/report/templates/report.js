@@ -89,12 +89,38 @@ function ticks(low, high, wanted) {
 
 // One picture of the ground with axes, colour bar and probe: a section on a canvas.
 class Section {
-  constructor(host, ground, places) {
-    Object.assign(this, {host, ground, places, probe: null, shownPlaces: true});
-    this.canvas = document.createElement('canvas');
-    this.canvas.setAttribute('aria-hidden', 'true');
+  // rays: the path of the static picture that holds them, if one does
+  constructor(host, ground, places, rays) {
+    Object.assign(this, {host, ground, places, probe: null, shownPlaces: true, shownRays: true});
+    const layer = () => {
+      const made = document.createElement('canvas');
+      made.setAttribute('aria-hidden', 'true');
+      return made;
+    };
+    this.canvas = layer();
     this.over = element('svg', {'aria-hidden': 'true'});
     host.append(this.canvas, this.over);
+    if (rays) {
+      // A canvas of their own, so that neither slider nor probe has to draw them again.
+      Object.assign(this, {rays, rayCanvas: layer(), raysDrawn: ''});
+      this.canvas.after(this.rayCanvas);
+    }
+  }
+  drawRays() {
+    if (!this.rays) return;
+    const {rayCanvas: canvas, canvas: {width, height}, wide, high} = this, now = `${width} ${height} ${this.shownRays}`;
+    if (this.raysDrawn === now) return;
+    this.raysDrawn = now;
+    Object.assign(canvas, {width, height});
+    if (!this.shownRays) return;
+    const [left, top, across, up] = this.rays.dataset.box.split(' ').map(Number), sharp = width / this.host.clientWidth;
+    const path = new Path2D(), a = sharp * wide / across, d = sharp * high / up;
+    path.addPath(new Path2D(this.rays.getAttribute('d')), {a, d, e: sharp * PAD.left - a * left, f: sharp * PAD.top - d * top});
+    const context = canvas.getContext('2d'), style = getComputedStyle(this.rays);
+    context.strokeStyle = style.stroke;
+    context.globalAlpha = +style.strokeOpacity;
+    context.lineWidth = parseFloat(style.strokeWidth) * sharp;
+    context.stroke(path);
   }
   fit(width, height) {
     const {distance: d, elevation: e, exaggeration} = this.ground;
@@ -185,6 +211,7 @@ class Section {
     }
     context.putImageData(scale, Math.round((width - PAD.right + 14) * sharp), Math.round(PAD.top * sharp));
     this.sight = sight;
+    this.drawRays();
     this.overlay();
   }
   overlay() {
@@ -357,7 +384,7 @@ class Live {
     this.rules = about.rules;
     this.chosen = this.rules.find(rule => rule.name === about.chosen) || this.rules[0];
     const Kind = about.column ? Column : Section;
-    this.map = new Kind(this.part('map'), about.frame, about.places);
+    this.map = new Kind(this.part('map'), about.frame, about.places, article.querySelector('.static .rays'));
     this.flags = Float32Array.from(stacks.quality.field(0).values, Math.round);
     this.coverage = about.companions.length ? stacks.quality.field(1).values : null;
     const {nz, nx} = about.frame;
@@ -566,6 +593,7 @@ class Live {
     part('veiled').addEventListener('change', veil);
     if (part('threshold')) part('threshold').addEventListener('input', veil);
     if (part('places')) part('places').addEventListener('change', event => { this.map.shownPlaces = event.target.checked; this.map.overlay(); });
+    if (part('rays')) part('rays').addEventListener('change', event => { this.map.shownRays = event.target.checked; this.map.drawRays(); });
     const frameOf = marked => { const rule = this.rules.find(one => one.symbol === marked.dataset.rule); return rule ? rule.frame : null; };
     article.addEventListener('click', event => {
       const marked = event.target.closest('[data-rule]');

@@ -1,0 +1,114 @@
+"""Laws of the report on nonlinear measurements: rays in their true places, the recomputed misfit beside."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable
+from dataclasses import replace
+from pathlib import Path
+
+import numpy as np
+import pytest
+from numpy.testing import assert_allclose
+
+from stillground.products.report import page as page_module
+from stillground.products.report import write_comparison, write_report
+from stillground.protocols import Result
+
+from .made_up_folders import write_folder
+from .made_up_results import SURFACE, bent, bent_rays
+
+
+def written(result: Result, folder: Path) -> str:
+    return write_report(write_folder(folder, {"toe": result}, surface=SURFACE)).read_text(encoding="utf-8")
+
+
+def static_rays(page: str) -> list[np.ndarray]:
+    """The rays of the static picture as (share of its width, share of its height)."""
+    (path,) = re.findall(r'<path class="rays" d="([^"]+)" data-box="([^"]+)"', page)
+    left, top, width, height = map(float, path[1].split())
+    found = []
+    for line in path[0].split("M")[1:]:
+        start, steps = line.split("l")
+        corners = np.cumsum(np.array(f"{start} {steps}".split(), float).reshape(-1, 2), axis=0)
+        found.append((corners - [left, top]) / [width, height])
+    return found
+
+
+@pytest.fixture(scope="module")
+def coarse(make: Callable[..., Result]) -> Result:
+    return make(argued=False, spacing=0.5)
+
+
+@pytest.fixture(scope="module")
+def page(coarse: Result, tmp_path_factory: pytest.TempPathFactory) -> str:
+    return written(bent(coarse), tmp_path_factory.mktemp("bent"))
+
+
+def test_static_rays_go_where_the_rays_went(page: str, coarse: Result) -> None:
+    drawn = static_rays(page)
+    rays = [ray for ray in bent_rays() if len(ray)][::2]
+    assert len(drawn) == len(rays) == 312
+    (x0, x1), (z0, z1) = ((axis[0], axis[-1]) for axis in coarse.axes)
+    for shares, ray in zip(drawn, rays, strict=True):
+        found = np.column_stack([x0 + shares[:, 0] * (x1 - x0), z1 - shares[:, 1] * (z1 - z0)])
+        ends = ray[[0, -1]]
+        # A tenth of a pixel is 7 mm here.
+        assert_allclose(found[[0, -1]], ends, atol=0.01)
+        straight = np.interp(found[:, 0], ray[:, 0], ray[:, 1])
+        assert_allclose(found[:, 1], straight, atol=0.02)
+
+
+def test_rays_have_a_switch_and_words(page: str) -> None:
+    assert 'data-part="rays" checked> Rays of the answer</label>' in page
+    assert "Faint lines: 312 of 625 rays through the answer at the chosen pick." in page
+
+
+def test_the_misfit_recomputed_is_told_beside_the_linear_one(page: str, coarse: Result) -> None:
+    linear = coarse.chosen.chi_square
+    assert f'<td class="n">{linear:.3g} <small>(1.27)</small></td>' in page
+    assert page.count("<small>(") == 1, "of the chosen rule alone"
+    more = 100 * (1.27 / linear - 1)
+    assert (
+        "All misfits here are of the last linearisation, along rays held still. Recomputed with rays traced "
+        f"through the answer (in brackets), that of gcv is 1.27 instead of {linear:#.3g}: "
+        f"{abs(more):.2g} % {'more' if more > 0 else 'less'}." in page
+    )
+    assert f"<dd>{linear:#.3g}<small> recomputed 1.27</small></dd>" in page
+
+
+@pytest.mark.parametrize(
+    ("factor", "said"), [(1.3, "30 % more"), (0.8, "20 % less"), (1.001, "as good as the same")]
+)
+def test_how_far_the_misfits_differ_is_said(coarse: Result, factor: float, said: str, tmp_path: Path) -> None:
+    one = bent(coarse, factor * coarse.chosen.chi_square)
+    text = written(replace(one, rays=()), tmp_path)
+    assert f": {said}." in text
+    assert "of the last linearisation. Recomputed (in brackets), that of gcv" in text, "no word of rays"
+
+
+def test_results_without_rays_and_recomputed_numbers_show_nothing(coarse: Result, tmp_path: Path) -> None:
+    text = written(coarse, tmp_path)
+    assert 'class="rays"' not in text
+    assert 'data-part="rays"' not in text
+    for word in ("Faint lines", "ecomputed", "<small>("):
+        assert word not in text
+
+
+def test_rays_count_in_the_budget_of_the_page(
+    coarse: Result, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    room = len(written(coarse, tmp_path)) + 60_000
+    monkeypatch.setattr(page_module, "MOST_BYTES", room)
+    told = "To keep this page small"
+    assert told not in written(coarse, tmp_path)
+    assert told in written(bent(coarse), tmp_path), "pictures give way to rays"
+
+
+def test_a_comparison_tells_both_misfits_of_both(coarse: Result, tmp_path: Path) -> None:
+    folders = [
+        write_folder(tmp_path / name, {"toe": one}, surface=SURFACE)
+        for name, one in (("bent", bent(coarse)), ("straight", coarse))
+    ]
+    text = write_comparison(*folders, tmp_path).read_text(encoding="utf-8")
+    assert text.count("recomputed 1.27") == 1
