@@ -9,6 +9,7 @@ import re
 import shutil
 import time
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -520,8 +521,10 @@ def test_a_comparison_shows_both_and_their_difference(browser: Browser, tmp_path
 
 
 def test_rays_are_drawn_over_the_field_until_they_are_switched_off(browser: Browser, tmp_path: Path) -> None:
-    folder = write_folder(tmp_path, {"toe": bent(make_result(argued=False, spacing=0.5))}, surface=SURFACE)
-    browser.open(write_report(folder))
+    # Few, so that what is beside them is seen too.
+    rays = tuple(ray if i % 156 == 0 else ray[:0] for i, ray in enumerate(bent_rays()))
+    result = replace(bent(make_result(argued=False, spacing=0.5)), rays=rays)
+    browser.open(write_report(write_folder(tmp_path, {"toe": result}, surface=SURFACE)))
     assert browser.console() == []
 
     def layer() -> np.ndarray:
@@ -544,10 +547,12 @@ def test_rays_are_drawn_over_the_field_until_they_are_switched_off(browser: Brow
         row = round((z[0] - elevation) / (z[0] - z[-1]) * height)
         return int(shown[row - 1 : row + 2, column - 1 : column + 2].max())
 
-    for ray in [ray for ray in bent_rays() if len(ray)][::2][::40]:
-        assert min(near(*corner) for corner in ray[5:-5:10]) > 20
-    for place in ((-1.0, 50.0), (19.0, 50.0), (9.0, 34.5)):
-        assert near(*place) == 0, "no ray comes there"
+    assert 80 < shown.max() < 160, "faint"
+    for ray in rays[::156]:
+        for distance, elevation in ray[5:-5:10]:
+            assert near(distance, elevation) > 20
+            assert near(distance, elevation + 0.5) == 0
+            assert near(distance, elevation - 0.5) == 0
     field = browser.canvas()
     browser.set("rays", False, "change")
     assert layer().max() == 0
@@ -559,4 +564,4 @@ def test_rays_are_drawn_over_the_field_until_they_are_switched_off(browser: Brow
     browser.settle()
     browser.settle()
     assert browser.run("const [a, b] = document.querySelectorAll('.map canvas'); return a.width === b.width")
-    assert layer().max() > 20, "drawn again where the window changes"
+    assert layer().max() > 60, "drawn again where the window changes"

@@ -14,6 +14,8 @@ from stillground.protocols import Array, Integers
 # Buried shots belong to the curves, boreholes do not: how deep places may lie, of the length of the line.
 _BURIED = 0.05
 _FEWEST = 3
+# More would hide each other.
+_MOST_DRAWN = 40
 
 
 @dataclass(frozen=True)
@@ -61,6 +63,11 @@ class DataCurves:
         """Curves that have data, by the distance of their sources."""
         held = np.unique(self.number)
         return np.asarray(held[np.argsort(self.starts[held], kind="stable")])
+
+    @property
+    def drawn(self) -> Integers:
+        """Those of `numbers` that pictures show: of many, every so many."""
+        return self.numbers[:: -(-self.numbers.size // _MOST_DRAWN)]
 
     def branches(self, number: int) -> Iterator[Integers]:
         """Data of a curve on each side of its source, by ascending distance."""

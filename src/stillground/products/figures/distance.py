@@ -16,7 +16,6 @@ from stillground.products.figures.positions import draw_starts, position_key
 from stillground.products.figures.sheet import FOOT, HEADING, INK, MARGIN, RUST, panel, sheet, styled
 from stillground.products.units import labelled, unit_text, with_unit
 
-_MOST = 40
 _WIDTH, _HEIGHT = 6.5, 3.9
 
 
@@ -30,12 +29,11 @@ def distance_figure(profile: str, curves: DataCurves) -> Figure:
     curves : DataCurves
         Of many, every so many are drawn.
     """
-    every = curves.numbers
-    drawn = every[:: -(-every.size // _MOST)]
+    drawn = curves.drawn
     shown = np.isin(curves.number, drawn)
     bottom = FOOT + 0.75
     figure = sheet(7.4, bottom + _HEIGHT + HEADING, f"{profile}: {curves.datum} against distance",
-                   _said(curves, every.size, drawn.size))  # fmt: skip
+                   _said(curves))  # fmt: skip
     axes = panel(figure, 0.68, bottom, _WIDTH, _HEIGHT)
     colours = cycle(rcParams["axes.prop_cycle"].by_key()["color"])
     for number, colour in zip(drawn, colours, strict=False):
@@ -73,7 +71,8 @@ def distance_figure(profile: str, curves: DataCurves) -> Figure:
     return figure
 
 
-def _said(curves: DataCurves, n_curves: int, n_drawn: int) -> str:
+def _said(curves: DataCurves) -> str:
+    n_curves, n_drawn = curves.numbers.size, curves.drawn.size
     low, high = (f"{end:.2g}" for end in (curves.errors.min(), curves.errors.max()))
     errors = with_unit(low if low == high else f"{low} to {high}", unit_text(curves.unit))
     some = "" if n_drawn == n_curves else f", {n_drawn} of them drawn"

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
 from matplotlib.axes import Axes
@@ -19,6 +20,17 @@ def draw_rays(axes: Axes, rays: Sequence[Array]) -> Line2D:
     Those of `drawn_rays`.
     """
     drawn = drawn_rays(rays)
-    faint = {"lw": 0.4, "alpha": max(0.15, 0.5 * min(1.0, (60 / max(len(drawn), 1)) ** 0.5)), "color": PAPER}
-    axes.add_collection(LineCollection(drawn, **faint, zorder=2.5), autolim=False)
+    lines = LineCollection(drawn, lw=0.4, alpha=opacity(len(drawn)), color=PAPER, zorder=2.5)
+    axes.add_collection(lines, autolim=False)
     return Line2D([], [], color="#9aa4aa", lw=0.8, label="ray")
+
+
+def opacity(n_rays: int) -> float:
+    """Of each of so many rays on a picture: the more, the fainter.
+
+    Examples
+    --------
+    >>> opacity(10), opacity(240), opacity(10_000)
+    (0.5, 0.25, 0.15)
+    """
+    return max(0.15, 0.5 * min(1.0, math.sqrt(60 / max(n_rays, 1))))

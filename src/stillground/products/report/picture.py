@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from stillground.products.figures.field import FADE, resampled
 from stillground.products.figures.positions import is_star
+from stillground.products.figures.rays import opacity
 from stillground.products.figures.sheet import PAPER
 from stillground.products.reliability import MESH_DEPENDENT, POORLY_COVERED, RELIABLE
 from stillground.products.report.drawing import Chart, limits
@@ -115,7 +116,8 @@ def _rays(chart: Chart, rays: Sequence[Array]) -> None:
         lines.append(f"M{corners[0, 0]:g} {corners[0, 1]:g}l{steps}")
     if lines:
         box = f"{chart.left:g} {chart.top:g} {chart.right - chart.left:.2f} {chart.bottom - chart.top:.2f}"
-        chart.add("path", class_="rays", d="".join(lines), data_box=box)
+        faint = round(opacity(len(lines)), 3)
+        chart.add("path", class_="rays", d="".join(lines), data_box=box, stroke_opacity=faint)
 
 
 def column_ends(values: Array, band: Array | None, scale: tuple[float, float]) -> tuple[float, float]:
