@@ -8,6 +8,7 @@ from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
+import pandas as pd
 import pytest
 from numpy.testing import assert_allclose
 
@@ -112,3 +113,38 @@ def test_a_comparison_tells_both_misfits_of_both(coarse: Result, tmp_path: Path)
     ]
     text = write_comparison(*folders, tmp_path).read_text(encoding="utf-8")
     assert text.count("recomputed 1.27") == 1
+
+
+def on_the_surface(folder: Path, gap: bool = False) -> None:
+    """Moves sources and receivers of a folder's fit table to a line on the surface."""
+    path = folder / "toe_fit.csv"
+    fit = pd.read_csv(path)
+    for name, first in (("source", 0.0), ("receiver", 0.3)):
+        along = first + 0.7 * (fit[name] - 1)
+        fit[f"{name}_distance [m]"] = along
+        fit[f"{name}_elevation [m]"] = np.interp(along, *SURFACE)
+        # Numbers need not be without gaps, where somebody took rows out.
+        fit[name] = fit[name] * (2 if gap else 1)
+    fit.to_csv(path, index=False)
+
+
+def test_a_line_on_the_surface_has_a_curve_for_each_source(coarse: Result, tmp_path: Path) -> None:
+    folder = write_folder(tmp_path, {"toe": bent(coarse)}, surface=SURFACE)
+    caption = "Time against distance, a curve for each source (stars): dots observed, lines predicted"
+    assert caption not in write_report(folder).read_text(encoding="utf-8"), "boreholes have none"
+    for gap in (False, True):
+        on_the_surface(folder, gap)
+        text = write_report(folder).read_text(encoding="utf-8")
+        assert f"{caption}; ringed: count less than half</figcaption>" in text
+        (chart,) = re.findall(rf'aria-label="{re.escape(caption)}[^>]*>(.*?)</svg>', text)
+        (dots,) = re.findall(r'class="dots observed" d="([^"]+)"', chart)
+        places = np.array([one.split("h")[0].split() for one in dots.split("M")[1:]], float)
+        assert len(places) == 625
+        # Straight lines through the numbers of receivers and the times: axes are linear.
+        fit = pd.read_csv(folder / "toe_fit.csv")
+        for pixels, column in zip(places.T, ("receiver_distance [m]", "observed_time [ms]"), strict=True):
+            assert np.abs(np.corrcoef(pixels, fit[column])[0, 1]) > 1 - 1e-5
+        # Two branches each, but where no receiver stands left of the first source.
+        assert chart.count('class="curve faint"') == 49
+        (rings,) = re.findall(r'class="dots dot" d="([^"]+)"', chart)
+        assert rings.count("M") == np.sum(fit["weight"] < 0.5) == 2

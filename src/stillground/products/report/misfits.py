@@ -9,10 +9,12 @@ import numpy as np
 import pandas as pd
 from markupsafe import Markup
 
+from stillground.products.data_curves import data_curves
 from stillground.products.report.drawing import Chart, limits, minus
 from stillground.products.report.encoding import png
 from stillground.products.report.folder import Profile
 from stillground.products.report.ground import CHANGE, colours
+from stillground.products.report.picture import draw_places
 from stillground.products.units import labelled, unit_text, with_unit
 from stillground.protocols import Array
 
@@ -48,8 +50,7 @@ def fit_charts(profile: Profile) -> list[Shown]:
     charts = [_matrix(fit, residual, groupings[:2]) if len(groupings) >= 2 else _ordered(fit, residual)]
     charts.append(_histogram(residual))
     worst = _worst(profile, residual)
-    offset = _offset(profile)
-    return [*charts, *(chart for chart in (worst, offset) if chart is not None)]
+    return [*charts, *(chart for chart in (worst, _curves(profile) or _offset(profile)) if chart is not None)]
 
 
 def outliers(profile: Profile) -> tuple[list[Outlier], int]:
@@ -215,6 +216,51 @@ def _worst(profile: Profile, residual: Array) -> Shown | None:
         f"Worst {name}, number {number}: mean residual {minus(f'{mean:+.2f}')} standard errors "
         f"over {int(rows.sum())} data. Dots observed, line predicted"
     )
+    return Shown(chart.svg(said), said)
+
+
+def _curves(profile: Profile) -> Shown | None:
+    """Data against distance along the line, one curve for each source; None where there is no such line."""
+    fit, section = profile.fit, profile.section
+    if "surface_altitude" not in section or "distance" not in profile.dims:
+        return None
+    (observed, predicted), datum, unit = _data(fit)
+    curves = data_curves(
+        groupings={name: np.unique(fit[name], return_inverse=True)[1] for name in profile.groupings},
+        positions=places(profile),
+        surface=(section["distance"].values, section["surface_altitude"].values),
+        datum=datum,
+        unit=unit,
+        si_factor=1.0,
+        observed=observed,
+        # The table has them only relative to residuals, and they are not drawn.
+        errors=np.full(len(fit), np.nan),
+        predicted=predicted,
+        weights=fit["weight"].to_numpy(dtype=float),
+    )
+    if curves is None or curves.predicted is None:
+        return None
+    drawn = curves.drawn
+    shown = np.isin(curves.number, drawn)
+    data = np.concatenate([curves.observed, curves.predicted])
+    low, high = limits(data)
+    across = limits(np.concatenate([curves.distance, curves.starts[drawn]]))
+    chart = Chart(SIZE, across, (0.0 if data.min() >= 0 else low, high), margins=(52, 10, 8, 36))
+    chart.frame(f"distance of the {curves.along} (m)", labelled(datum, unit))
+    for number in drawn:
+        for side in curves.branches(int(number)):
+            chart.line(curves.distance[side], curves.predicted[side], "curve faint")
+    light = curves.light & shown
+    if light.any():
+        for kind, radius in (("dot", 4.0), ("hollow", 3.0)):
+            chart.dots(curves.distance[light], curves.observed[light], kind, radius)
+    chart.dots(curves.distance[shown], curves.observed[shown], "observed", 1.3)
+    starts = curves.starts[drawn]
+    draw_places(chart, {"source": np.column_stack([starts, np.full(starts.size, chart.y[0])])})
+    said = f"{datum.capitalize()} against distance, a curve for each {curves.of} (stars): dots observed, "
+    said += "lines predicted"
+    said += "; ringed: count less than half" if light.any() else ""
+    said += "" if drawn.size == curves.numbers.size else f"; {drawn.size} of {curves.numbers.size} drawn"
     return Shown(chart.svg(said), said)
 
 
