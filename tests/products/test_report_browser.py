@@ -528,24 +528,25 @@ def test_rays_are_drawn_over_the_field_until_they_are_switched_off(browser: Brow
     assert browser.console() == []
 
     def layer() -> np.ndarray:
-        """Opacity of the layer of rays within the frame."""
-        text, width, height = browser.run(
+        """Opacity of the layer of rays within the frame, to 255."""
+        text, width, height, faint = browser.run(
             "const c = document.querySelectorAll('.map canvas')[1],"
             "[w, h, left, top] = window.report.state().box,"
             "d = c.getContext('2d').getImageData(left, top, Math.round(w), Math.round(h));"
             "let s = ''; for (let i = 3; i < d.data.length; i += 4) s += String.fromCharCode(d.data[i]);"
-            "return [btoa(s), d.width, d.height]"
+            "return [btoa(s), d.width, d.height, getComputedStyle(c).opacity]"
         )
-        return np.frombuffer(base64.b64decode(text), np.uint8).reshape(height, width)
+        opaque = np.frombuffer(base64.b64decode(text), np.uint8).reshape(height, width)
+        return opaque * float(faint)
 
     shown = layer()
     height, width = shown.shape
     x, z = nodes(browser)
 
-    def near(distance: float, elevation: float) -> int:
+    def near(distance: float, elevation: float) -> float:
         column = round((distance - x[0]) / (x[-1] - x[0]) * width)
         row = round((z[0] - elevation) / (z[0] - z[-1]) * height)
-        return int(shown[row - 1 : row + 2, column - 1 : column + 2].max())
+        return float(shown[row - 1 : row + 2, column - 1 : column + 2].max())
 
     assert 80 < shown.max() < 160, "faint"
     for ray in rays[::156]:

@@ -117,8 +117,9 @@ class Section {
     const path = new Path2D(), a = sharp * wide / across, d = sharp * high / up;
     path.addPath(new Path2D(this.rays.getAttribute('d')), {a, d, e: sharp * PAD.left - a * left, f: sharp * PAD.top - d * top});
     const context = canvas.getContext('2d'), style = getComputedStyle(this.rays);
+    // The whole layer is faint, so that rays do not add up where they meet.
+    canvas.style.opacity = style.strokeOpacity;
     context.strokeStyle = style.stroke;
-    context.globalAlpha = +style.strokeOpacity;
     context.lineWidth = parseFloat(style.strokeWidth) * sharp;
     context.stroke(path);
   }
