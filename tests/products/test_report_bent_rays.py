@@ -10,8 +10,10 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 import pytest
+import xarray as xr
 from numpy.testing import assert_allclose
 
+from stillground.errors import ResultError
 from stillground.products.report import page as page_module
 from stillground.products.report import write_comparison, write_report
 from stillground.protocols import Result
@@ -148,3 +150,12 @@ def test_a_line_on_the_surface_has_a_curve_for_each_source(coarse: Result, tmp_p
         assert chart.count('class="curve faint"') == 49
         (rings,) = re.findall(r'class="dots dot" d="([^"]+)"', chart)
         assert rings.count("M") == np.sum(fit["weight"] < 0.5) == 2
+
+
+def test_a_history_that_lost_its_rays_is_refused(coarse: Result, tmp_path: Path) -> None:
+    folder = write_folder(tmp_path, {"toe": bent(coarse)}, surface=SURFACE)
+    path = folder / "toe_history.nc"
+    history = xr.load_dataset(path).drop_vars("ray_elevation")
+    history.to_netcdf(path)
+    with pytest.raises(ResultError, match=r"toe_history\.nc: holds no 'ray_elevation'"):
+        write_report(folder)

@@ -35,6 +35,7 @@ class DataCurves:
     distance : array, shape (n_kept,)
         Of each datum's receiver along the line, m.
     observed, errors : array, shape (n_kept,)
+        Errors are NaN where they are not known.
     predicted : array, shape (n_kept,), or None
         What the answer gives; None before there is one.
     light : array of bool, shape (n_kept,)

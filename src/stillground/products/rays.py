@@ -37,7 +37,7 @@ def drawn_rays(rays: Sequence[Array]) -> list[Array]:
     >>> [len(drawn_rays(rays)) for rays in ([], [ray, ray[:0]], [ray] * 1000)]
     [0, 1, 334]
     """
-    found = [ray for ray in rays if len(ray)]
+    found = [ray for ray in rays if len(ray) > 1]
     return [thinned(ray) for ray in found[:: -(-len(found) // _MOST_DRAWN) or 1]]
 
 

@@ -18,6 +18,7 @@ from stillground.protocols import Word
 _CURVES = ("chi_square", "solution_norm")
 _PICKS = ("shown_iteration", "firm", "reason")
 _RUNGS = ("spacing", "nodes", "change", "tolerance")
+_RAYS = ("ray_distance", "ray_elevation")
 _FIT = ("row", "residual_over_error", "weight")
 
 
@@ -206,6 +207,8 @@ def read_summary(folder: Path) -> Summary:
 def _profile(folder: Path, entry: Entry) -> Profile:
     ground = "section" if "section" in entry.files else "column"
     history = _dataset(folder, entry, "history", _CURVES + _PICKS)
+    if "ray_node_count" in history:
+        _require(folder / entry.files["history"], _RAYS, history.variables)
     at_pick = [str(name) for name in history.data_vars if str(name).endswith("_at_pick")]
     if len(at_pick) != 1:
         raise _damaged(folder / entry.files["history"], "holds no pictures at the picks")
