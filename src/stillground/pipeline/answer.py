@@ -14,7 +14,7 @@ from stillground.errors import ConfigError
 from stillground.grid import Grid, prolong
 from stillground.pipeline.capacity import SNAPSHOT_VALUES
 from stillground.pipeline.grids import correlation
-from stillground.pipeline.linear import Linear, in_unknown, linear_ladder, start_dependence
+from stillground.pipeline.linear import Linear, believed, in_unknown, linear_ladder, start_dependence
 from stillground.pipeline.profiles import Profile
 from stillground.pipeline.remarks import remark, remark_nonlinear
 from stillground.pipeline.simulate import described_ground
@@ -63,6 +63,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     method = plan_method(config)
     repeated = grids[repeated_rung(grids)]
     linear = yield from linear_ladder(profile, config, grids, method)
+    method = yield from believed(linear, method)
     if config.errors.outliers != "off" and not linear.outer:
         always = config.errors.outliers == "tukey"
         work = find_outliers(linear(repeated), repeated, method, always=always)

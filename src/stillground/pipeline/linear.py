@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Generator, Mapping, Sequence
+from collections.abc import Callable, Generator, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from itertools import islice
 
 import numpy as np
+from pylops import LinearOperator
 
 from stillground.config import Config
 from stillground.grid import Grid, prolong
 from stillground.pipeline.profiles import Profile
 from stillground.progress import staged
-from stillground.protocols import Array, Measurement, NonlinearMeasurement, Progress
+from stillground.protocols import Array, Iterate, Measurement, NonlinearMeasurement, Progress
 from stillground.reconstruct import (
     Linearised,
     Method,
@@ -122,6 +124,30 @@ def linear_ladder(
         if not outer:
             raise
     return replace(plain, grids=tuple(grids[: len(outer)]), weights=led.weights, outer=outer)
+
+
+def believed(linear: Linear, method: Method) -> Generator[Progress, None, Method]:
+    """The method, whose solver ends where the last linearisation fits as well as the outer steps did.
+
+    Beyond, it fits what is no ground: where the outer steps reached their target, the rules find out.
+
+    Yields
+    ------
+    Progress
+    """
+    grid = linear.grids[-1]
+    outer = linear.outer.get(grid)
+    if outer is None or outer.reached:
+        return method
+    work = reconstruct(linear(grid), grid, method)
+    found = yield from staged(work, "how far to believe the last linearisation")
+    curve = found.run.history.chi_square
+    steps = int(np.argmax(curve <= max(outer.steps.misfits[-1], curve.min())))
+
+    def solver(operator: LinearOperator, b: Array) -> Iterator[Iterate]:
+        return islice(method.solver(operator, b), steps + 1)
+
+    return replace(method, solver=solver)
 
 
 def start_dependence(linear: Linear, rung: Reconstruction) -> Generator[Progress, None, dict[str, float]]:
