@@ -19,9 +19,10 @@ from tests.refraction_line import V0, K, line, slotnick
 from stillground.config import Config, load
 from stillground.grid import Grid
 from stillground.operators.curved_rays import TravelTimes
-from stillground.pipeline.answer import answer, out_of_the_logarithm
+from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.labels import ProfileResult
+from stillground.pipeline.logarithm import out_of_the_logarithm
 from stillground.pipeline.profiles import read_profiles
 from stillground.pipeline.rehearse import Rehearsed, rehearse_all
 from stillground.pipeline.run import Begun, Done, run, run_config

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Generator, Iterator, Mapping, Sequence
+from collections.abc import Callable, Generator, Iterator, Sequence
 from dataclasses import replace
 from functools import partial
 
@@ -14,11 +14,12 @@ from stillground.errors import ConfigError
 from stillground.grid import Grid, prolong
 from stillground.pipeline.capacity import SNAPSHOT_VALUES
 from stillground.pipeline.grids import correlation
-from stillground.pipeline.linear import Linear, believed, in_unknown, linear_ladder, start_dependence
+from stillground.pipeline.linear import Linear, believed, linear_ladder, start_dependence
+from stillground.pipeline.logarithm import in_unknown, out_of_the_logarithm
 from stillground.pipeline.profiles import Profile
-from stillground.pipeline.remarks import remark, remark_nonlinear
+from stillground.pipeline.recomputed import recomputed
+from stillground.pipeline.remarks import remark
 from stillground.pipeline.simulate import described_ground
-from stillground.pipeline.unreached import why_unreached
 from stillground.progress import staged
 from stillground.protocols import (
     Array,
@@ -43,8 +44,6 @@ from stillground.uncertainty import extra_deviations, noise_part
 # Repeated work goes on the finest rung of no more nodes than this; what it tells has settled there.
 _REPEATED_NODES = 6000
 _MEMBERS = 32
-# Of a logarithm: no ground differs so much from its prior mean, and marches and products end in overflow.
-_BEYOND = 20.0
 # A linearisation reaches data whose misfit at it is no larger, as in an outer step's fall to a quarter.
 _TRUSTED = 4.0
 
@@ -109,29 +108,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         for name, values in finest.standard.extras(solution).items()
     }
     predicted = linear.stated(finest.grid).data - finest.run.residual(chosen_stop) * finest.measurement.errors
-    rays: tuple[Array, ...] = ()
     remarks = _broken_off(top, len(grids), interrupted) + remark(finest, weights, config)
-    if isinstance(measurement, NonlinearMeasurement):
-        answer_of = top.model.reshape(-1)
-        if config.kind.logarithmic and np.abs(answer_of - measurement.start).max() > _BEYOND:
-            raise ConfigError(
-                f"{profile.name}: to fit the data the ground would have to change by a factor of more than "
-                f"{np.exp(_BEYOND):.0g}; look at errors.floor, which may be too small, at the picks "
-                f'(errors.outliers = "tukey" leaves wild ones out), and at the velocity or other ground that '
-                f"the fit starts from"
-            )
-        predicted = measurement.predict(answer_of)
-        for extra in measurement.extras:
-            predicted = predicted + extra.response @ extras[extra.name].values
-        left = (measurement.data - predicted) / weighted_errors(measurement.errors, weights)
-        recomputed = float(left @ left) / left.size
-        found = replace(chosen, chi_square_recomputed=recomputed)
-        choices = tuple(found if choice is chosen else choice for choice in choices)
-        chosen = found
-        rays = measurement.rays(answer_of)
-        causes = why_unreached(linear, finest, profile)
-        outer, moved = linear.outer[finest.grid], linear.moved(finest.grid)
-        remarks += remark_nonlinear(outer, causes, chosen, top.ladder, moved, config)
     result = Result(
         property=config.kind.ground_property,
         axes=finest.grid.axes,
@@ -139,7 +116,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         model=top.model,
         mesh_change=top.mesh_change,
         anomaly=top.anomaly,
-        coverage=profile.scene.coverage(finest.grid, method.correlation, rays),
+        coverage=profile.scene.coverage(finest.grid, method.correlation),
         predicted=predicted,
         observed=measurement.data,
         errors=measurement.errors,
@@ -165,62 +142,13 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
             )
             for name, weights in averages(finest.grid).items()
         },
-        rays=rays,
-        outer_steps=linear.outer[finest.grid].steps if linear.outer else None,
         start_dependence=moved_by_start,
     )
+    if isinstance(measurement, NonlinearMeasurement):
+        result = recomputed(result, measurement, linear, finest, profile, config)
     if config.kind.logarithmic:
         result = out_of_the_logarithm(result, finest.grid, averages(finest.grid))
     return result
-
-
-def out_of_the_logarithm(result: Result, grid: Grid, averages: Mapping[str, Array]) -> Result:
-    """A result in the logarithm of the ground property as one in the property itself.
-
-    Errors and changes are taken to first order, property times error of the logarithm. What is relative, as
-    the changes of the ladder and with them its verdict, stays that of the logarithm. Iterates farther from
-    the prior mean than any ground are cut there.
-    """
-    least, most = float(result.background.min()) - _BEYOND, float(result.background.max()) + _BEYOND
-
-    def out(field: Array) -> Array:
-        return np.exp(np.clip(field, least, most))
-
-    model = out(result.model)
-
-    def scaled(errors: Array) -> Array:
-        return model * errors
-
-    def average(name: str, mean: Average) -> Average:
-        value = float(averages[name] @ model.reshape(-1))
-        total = None if mean.total_error is None else value * mean.total_error
-        return Average(value, value * mean.noise_part, total)
-
-    choices = tuple(replace(choice, model=out(choice.model)) for choice in result.choices)
-    spread = grid.norm(model - grid.mean(model)) / float(np.sqrt(np.prod(grid.lengths)))
-    rehearsal, sensitivity = result.rehearsal, result.sensitivity
-    means = {name: average(name, mean) for name, mean in result.averages.items()}
-    if rehearsal is not None:
-        missed = {name: means[name].value * error for name, error in rehearsal.average_errors.items()}
-        rehearsal = replace(rehearsal, total_error=scaled(rehearsal.total_error), average_errors=missed)
-    return replace(
-        result,
-        background=out(result.background),
-        model=model,
-        mesh_change=scaled(result.mesh_change),
-        anomaly=spread if result.anomaly > 0 else 0.0,
-        choices=choices,
-        chosen=next(choice for choice in choices if choice.rule == result.chosen.rule),
-        snapshots=tuple((iteration, out(field)) for iteration, field in result.snapshots),
-        ladder=replace(
-            result.ladder,
-            rungs=tuple(replace(rung, model=out(rung.model)) for rung in result.ladder.rungs),
-        ),
-        noise_part=scaled(result.noise_part),
-        rehearsal=rehearsal,
-        sensitivity=sensitivity and replace(sensitivity, spread=scaled(sensitivity.spread)),
-        averages=means,
-    )
 
 
 def plan_method(config: Config) -> Method:

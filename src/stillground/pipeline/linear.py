@@ -11,6 +11,7 @@ from pylops import LinearOperator
 
 from stillground.config import Config
 from stillground.grid import Grid, prolong
+from stillground.pipeline.logarithm import in_unknown
 from stillground.pipeline.profiles import Profile
 from stillground.progress import staged
 from stillground.protocols import Array, Iterate, Measurement, NonlinearMeasurement, Progress
@@ -83,11 +84,6 @@ def assembly(profile: Profile, config: Config) -> Measured:
         return with_delay(measurement, units) if config.errors.delay == "fit" else measurement
 
     return assemble
-
-
-def in_unknown(value: float | None, config: Config) -> float | None:
-    """A ground property as what is reconstructed: of a logarithmic kind its logarithm."""
-    return float(np.log(value)) if value is not None and config.kind.logarithmic else value
 
 
 def linear_ladder(
