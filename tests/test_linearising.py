@@ -90,7 +90,7 @@ def test_chi_square_comes_to_one_and_the_last_linearisation_is_left_to_be_judged
     measurement = toy()
     outcome = finish(linearise(measurement, LINE, TOY))
     assert outcome.steps.misfits[0] > 100
-    assert outcome.reached
+    assert outcome.steps.reached
     assert outcome.steps.misfits[-1] == pytest.approx(1.0, abs=0.1)
     assert len(outcome.steps.targets) <= 8
     assert rms(outcome.field - truth(LINE.axes[0])) < 0.1 * rms(truth(LINE.axes[0]))
@@ -194,7 +194,7 @@ def test_a_target_out_of_reach_is_told() -> None:
     noise = np.random.default_rng(5).standard_normal(measurement.data.size)
     contradicting = replace(measurement, data=measurement.data + 0.5 * noise)
     outcome = finish(linearise(contradicting, LINE, TOY))
-    assert not outcome.reached
+    assert not outcome.steps.reached
     assert "stays at" in outcome.reason
     assert "its target is 1" in outcome.reason
     assert np.all(np.isfinite(outcome.field))
@@ -204,7 +204,7 @@ def test_data_that_the_start_explains_need_no_step() -> None:
     measurement = toy()
     explained = replace(measurement, start=truth(LINE.axes[0]))
     outcome = finish(linearise(explained, LINE, TOY))
-    assert outcome.reached
+    assert outcome.steps.reached
     assert outcome.steps.targets == ()
     assert outcome.field is explained.start
 
@@ -262,7 +262,7 @@ def crosshole(contrast: float, *, outliers: float = 0.0) -> tuple[Arrivals, Arra
 def test_curved_rays_find_a_body_and_outliers_do_not_hide_it() -> None:
     clean, body = crosshole(0.3)
     outcome = finish(linearise(clean, SECTION, ROCK))
-    assert outcome.reached
+    assert outcome.steps.reached
     assert len(outcome.steps.targets) <= 8
     before = rms(clean.start - body)
     error = rms(outcome.field - body)
@@ -270,13 +270,13 @@ def test_curved_rays_find_a_body_and_outliers_do_not_hide_it() -> None:
     wild, _ = crosshole(0.3, outliers=0.1)
     robust = finish(linearise(wild, SECTION, ROCK, outliers="auto"))
     assert rms(robust.field - body) < 1.1 * error
-    assert not finish(linearise(wild, SECTION, ROCK)).reached
+    assert not finish(linearise(wild, SECTION, ROCK)).steps.reached
 
 
 def test_over_nearly_uniform_ground_curved_rays_give_the_straight_ray_answer() -> None:
     measurement, body = crosshole(-0.01)
     outcome = finish(linearise(measurement, SECTION, ROCK))
-    assert outcome.reached
+    assert outcome.steps.reached
     straight = Measurement(StraightRays(SECTION, SOURCES, RECEIVERS), measurement.data, measurement.errors)
     found = finish(reconstruct(straight, SECTION, replace(ROCK, background=1 / 2000)))
     slowness = found.model(found.stop("discrepancy")).reshape(-1)

@@ -411,11 +411,18 @@ class OuterSteps:
     inner : tuple of array, shape (n_inner + 1,)
         For each step the chi-square of its linearisation over the inner iterations, the last one cut where
         it meets the target.
+    reached : bool
+        Whether chi-square came to 1, within a quarter.
+    homing : tuple of float
+        Chi-squares, by the nonlinear measurement, of the answer that the linearisation after the steps gives
+        from the prior mean; then after each step from the model part of the way towards that answer.
     """
 
     misfits: tuple[float, ...]
     targets: tuple[float, ...]
     inner: tuple[Array, ...]
+    reached: bool
+    homing: tuple[float, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -547,6 +554,8 @@ class Result:
     groupings : mapping
         As in Measurement.
     history : History
+    options : RuleOptions
+        As the rules took them.
     choices : tuple of Choice
         One for each rule, in the order asked for.
     chosen : Choice
@@ -592,6 +601,7 @@ class Result:
     errors: Array
     groupings: Mapping[str, Integers]
     history: History
+    options: RuleOptions
     choices: tuple[Choice, ...]
     chosen: Choice
     snapshots: tuple[tuple[int, Array], ...]

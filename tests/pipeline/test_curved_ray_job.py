@@ -253,17 +253,18 @@ def test_errors_too_small_are_named_where_both_ways_tell_them(tmp_path: Path) ->
     assert "given for them are 0.08 ms" in said
 
 
-def test_without_a_fit_the_linearisation_is_believed_no_further_than_the_outer_steps(tmp_path: Path) -> None:
+def test_without_a_fit_rules_ask_for_the_misfit_that_the_outer_steps_came_to(tmp_path: Path) -> None:
     path = surveyed(tmp_path, error=NOISE / 2.5)
     result = answered(path, "refinement.levels=1", "ground.spacing=2 m")
     assert result.outer_steps is not None
-    reached, curve = result.outer_steps.misfits[-1], result.history.chi_square
-    assert result.history.ended
-    assert curve[-1] <= reached < curve[-2]
-    assert result.chosen.pick.iteration is None
+    reached = result.outer_steps.misfits[-1]
+    assert result.options.tau**2 == pytest.approx(reached)
+    assert result.chosen.chi_square == pytest.approx(reached, rel=0.05)
     own = result.chosen.chi_square_recomputed
     assert own is not None
     assert own < 3 * reached
+    # Rules that need no errors see the whole history.
+    assert result.history.last == 30
 
 
 def test_constants_of_sources_are_named_rather_than_errors_too_small(tmp_path: Path) -> None:

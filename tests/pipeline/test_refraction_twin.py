@@ -22,7 +22,7 @@ def test_a_twin_settles_near_the_truth_and_a_white_prior_does_not() -> None:
     clean = twin()
     top, grid = clean.top, clean.top.finest.grid
     outer = clean.linear.outer[grid]
-    assert outer.reached
+    assert outer.steps.reached
     assert len(outer.steps.targets) <= 8
     # Sharp layers through a smooth prior: what is left is mostly their edges.
     assert clean.error(top.model, clean.lit) < 0.75 * clean.error(clean.measurement.start, clean.lit)
@@ -51,7 +51,6 @@ def test_a_linearisation_that_moves_more_than_the_steps_is_told(word: Word, shar
         field=np.ones(1),
         steps=make_outer_steps(),
         weights=np.ones(1),
-        reached=True,
         reason="",
     )
     ladder = replace(result.ladder, verdict=replace(result.ladder.verdict, word=word))

@@ -21,6 +21,7 @@ from stillground.protocols import (
     Pick,
     Rehearsal,
     Result,
+    RuleOptions,
     Rung,
     Sensitivity,
     Variation,
@@ -110,6 +111,7 @@ def make_outer_steps() -> OuterSteps:
         misfits=(36.0, 9.4, 1.3, 1.02),
         targets=(9.0, 2.25, 1.0),
         inner=(np.array([36.0, 14.0, 9.0]), np.array([9.4, 4.0, 2.5, 2.25]), np.array([1.3, 1.0])),
+        reached=True,
     )
 
 
@@ -226,6 +228,7 @@ def make_result(
         observed=observed,
         errors=errors,
         groupings={"source": i, "receiver": j},
+        options=RuleOptions(),
         history=history,
         choices=choices,
         chosen=choices[1] if n_rules > 1 else choices[0],

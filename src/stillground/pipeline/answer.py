@@ -14,7 +14,7 @@ from stillground.errors import ConfigError
 from stillground.grid import Grid, prolong
 from stillground.pipeline.capacity import SNAPSHOT_VALUES
 from stillground.pipeline.grids import correlation
-from stillground.pipeline.linear import Linear, believed, linear_ladder, start_dependence
+from stillground.pipeline.linear import Linear, asked, linear_ladder, start_dependence
 from stillground.pipeline.logarithm import in_unknown, out_of_the_logarithm
 from stillground.pipeline.profiles import Profile
 from stillground.pipeline.recomputed import recomputed
@@ -62,7 +62,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     method = plan_method(config)
     repeated = grids[repeated_rung(grids)]
     linear = yield from linear_ladder(profile, config, grids, method)
-    method = yield from believed(linear, method)
+    method = asked(linear, method)
     if config.errors.outliers != "off" and not linear.outer:
         always = config.errors.outliers == "tukey"
         work = find_outliers(linear(repeated), repeated, method, always=always)
@@ -84,7 +84,8 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
             scatter, average_scatter = yield from noise_part(
                 rung, chosen_stop, members=_MEMBERS, seed=0, averages=averages(rung.grid)
             )
-            deviations = extra_deviations(rung)
+            # Of a nonlinear measurement the start, which is fitted too, takes up part of an extra unknown.
+            deviations = {} if linear.outer else extra_deviations(rung)
         if config.rehearsal.twins and not interrupted:
             noise = 1.0 if config.errors.trust else finest.noise
             rehearsal = yield from rehearse_profile(profile, config, grids, linear, noise)
@@ -122,6 +123,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
         errors=measurement.errors,
         groupings=measurement.groupings,
         history=finest.run.history,
+        options=finest.options,
         choices=choices,
         chosen=chosen,
         snapshots=tuple(_snapshots(top)),

@@ -32,7 +32,7 @@ from stillground.products.overlay import Overlay, overlay
 from stillground.products.picture import picture_dataset
 from stillground.products.provenance import Provenance, timestamp
 from stillground.products.summary import profile_summary
-from stillground.protocols import Array, Integers, Known, Result, RuleOptions
+from stillground.protocols import Array, Integers, Known, Result
 from stillground.survey import row_numbers, to_si
 
 _PACKAGES = ("stillground", "numpy", "scipy", "pylops", "xarray", "numba", "netCDF4")
@@ -143,7 +143,6 @@ def label(
     easting, northing = plan_trace(profile, result.axes, crs)
     surface, tolerance = profile.scene.surface, config.refinement.tolerance
     unit, factor = _table_unit(profile, kind.datum, kind.datum_units)
-    options = _judged_by(config, result.noise)
     picture = picture_dataset(
         profile.name,
         result,
@@ -165,7 +164,7 @@ def label(
         history=history_dataset(
             profile.name,
             result,
-            options=options,
+            options=result.options,
             surface=surface,
             provenance=origin,
         ),
@@ -186,7 +185,7 @@ def label(
             profile.name,
             result,
             tolerance=tolerance,
-            options=options,
+            options=result.options,
             surface=surface,
             positions=profile.scene.positions,
             differences=profile.scene.differences,
@@ -246,15 +245,6 @@ def plan_trace(profile: Profile, axes: tuple[Array, ...], crs: pyproj.CRS | None
     _, metres = plan_unit(crs)
     easting, northing = profile.scene.trace(axes[0] if len(axes) > 1 else np.zeros(1))
     return np.asarray(easting) / metres, np.asarray(northing) / metres
-
-
-def _judged_by(config: Config, noise: float) -> RuleOptions:
-    """The numbers that the rules took; ``noise`` is the size found of the errors over what is stated."""
-    return RuleOptions(
-        tau=config.stopping.tau,
-        gcv_factor=config.stopping.gcv_factor,
-        noise=1.0 if config.errors.trust else noise,
-    )
 
 
 def _table_unit(profile: Profile, datum: str, si: str) -> tuple[str, float]:

@@ -2,19 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Generator, Iterator, Mapping, Sequence
+from collections.abc import Callable, Generator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
-from itertools import islice
 
 import numpy as np
-from pylops import LinearOperator
 
 from stillground.config import Config
+from stillground.errors import ConfigError
 from stillground.grid import Grid, prolong
-from stillground.pipeline.logarithm import in_unknown
 from stillground.pipeline.profiles import Profile
 from stillground.progress import staged
-from stillground.protocols import Array, Iterate, Measurement, NonlinearMeasurement, Progress
+from stillground.protocols import Array, Measurement, NonlinearMeasurement, Progress
 from stillground.reconstruct import (
     Linearised,
     Method,
@@ -74,12 +72,14 @@ class Linear:
 def assembly(profile: Profile, config: Config) -> Measured:
     """From a grid to the measurement with the extra unknowns and prior mean that a configuration asks for."""
     units = config.kind.datum_units
-    mean = in_unknown(config.ground.background, config)
 
     def assemble(grid: Grid) -> Measurement | NonlinearMeasurement:
         measurement = profile.scene.assemble(grid)
-        if isinstance(measurement, NonlinearMeasurement) and mean is not None:
-            measurement = replace(measurement, start=np.full(grid.n_nodes, mean))
+        if isinstance(measurement, NonlinearMeasurement) and config.ground.background is not None:
+            raise ConfigError(
+                f"ground.background: {config.kind.name} is told by its own settings, [physics], where to "
+                f"begin; leave this one out"
+            )
         measurement = with_statics(measurement, config.errors.statics, units)
         return with_delay(measurement, units) if config.errors.delay == "fit" else measurement
 
@@ -106,6 +106,8 @@ def linear_ladder(
         return plain
     work = linearise(pilot, leader, method, outliers=config.errors.outliers)
     led = yield from staged(work, "outer steps of the nonlinear measurement")
+    # Where its own nodes kept the leading grid from the target, a finer one may come nearer.
+    targets = (*led.steps.targets, *(() if led.steps.reached else (1.0, 1.0)))
     outer: dict[Grid, Linearised] = {}
     try:
         for number, grid in enumerate(grids, start=1):
@@ -114,7 +116,8 @@ def linear_ladder(
                 continue
             measurement = measured(grid)
             assert isinstance(measurement, NonlinearMeasurement)
-            work = linearise(measurement, grid, method, targets=led.steps.targets, weights=led.weights)
+            homing = len(led.steps.homing) - 1
+            work = linearise(measurement, grid, method, targets=targets, homing=homing, weights=led.weights)
             outer[grid] = yield from staged(work, f"outer steps on rung {number} of {len(grids)}")
     except KeyboardInterrupt:
         if not outer:
@@ -122,28 +125,16 @@ def linear_ladder(
     return replace(plain, grids=tuple(grids[: len(outer)]), weights=led.weights, outer=outer)
 
 
-def believed(linear: Linear, method: Method) -> Generator[Progress, None, Method]:
-    """The method, whose solver ends where the last linearisation fits as well as the outer steps did.
+def asked(linear: Linear, method: Method) -> Method:
+    """The method, asking for no lower misfit than the outer steps came to where they missed their target.
 
-    Beyond, it fits what is no ground: where the outer steps reached their target, the rules find out.
-
-    Yields
-    ------
-    Progress
+    Where the errors stated are not trusted, the rules go by those that cross-validation finds.
     """
-    grid = linear.grids[-1]
-    outer = linear.outer.get(grid)
-    if outer is None or outer.reached:
+    outer = linear.outer.get(linear.grids[-1])
+    if outer is None or outer.steps.reached or not method.trust:
         return method
-    work = reconstruct(linear(grid), grid, method)
-    found = yield from staged(work, "how far to believe the last linearisation")
-    curve = found.run.history.chi_square
-    steps = int(np.argmax(curve <= max(outer.steps.misfits[-1], curve.min())))
-
-    def solver(operator: LinearOperator, b: Array) -> Iterator[Iterate]:
-        return islice(method.solver(operator, b), steps + 1)
-
-    return replace(method, solver=solver)
+    tau = method.options.tau * float(np.sqrt(outer.steps.misfits[-1]))
+    return replace(method, options=replace(method.options, tau=tau))
 
 
 def start_dependence(linear: Linear, rung: Reconstruction) -> Generator[Progress, None, dict[str, float]]:

@@ -84,14 +84,14 @@ def remark_nonlinear(
     ``causes`` are those found of a target that was not reached, see `unreached.why_unreached`; ``moved``
     is how far the outer steps' own model did since the grid before, see `Linear.moved`.
     """
-    said = [] if outer.reached else [outer.reason, *causes]
+    said = [] if outer.steps.reached else [outer.reason, *causes]
     recomputed = chosen.chi_square_recomputed
     if recomputed is not None and abs(recomputed / chosen.chi_square - 1) > _NOT_LINEAR:
         said.append(
             f"the misfit of the answer is {recomputed:.3g} where its last linearisation has "
             f"{chosen.chi_square:.3g}: the answer is farther off than that reaches; trust its details less"
         )
-    restless = outer.reached and ladder.verdict.word != "settled"
+    restless = outer.steps.reached and ladder.verdict.word != "settled"
     if restless and moved is not None and moved < _STEADIER * ladder.change[-1]:
         said.append(
             f"the model that the outer steps came to moved only by {percent(moved)} from the grid before, "

@@ -27,7 +27,7 @@ def why_unreached(linear: Linear, finest: Reconstruction, profile: Profile) -> t
     grid too coarse by the rung before: all rungs make the same outer steps.
     """
     outer = linear.outer.get(finest.grid)
-    if outer is None or outer.reached:
+    if outer is None or outer.steps.reached:
         return ()
     rungs = linear.grids[: linear.grids.index(finest.grid) + 1]
     *coarser, misfit = (linear.outer[grid].steps.misfits[-1] for grid in rungs)

@@ -127,6 +127,7 @@ def _outer_steps(steps: OuterSteps) -> dict[str, Any]:
         "misfits": list(steps.misfits),
         "targets": list(steps.targets),
         "inner_iterations": [len(curve) - 1 for curve in steps.inner],
+        "homing": list(steps.homing),
     }
 
 

@@ -10,9 +10,17 @@ from typing import Literal
 import numpy as np
 from pylops import LinearOperator
 
+from stillground.counted import counted
 from stillground.grid import Grid
 from stillground.protocols import Array, Measurement, NonlinearMeasurement, OuterSteps, Progress
-from stillground.reconstruct.outliers import biweight, huber, some_wild, weighted_errors
+from stillground.reconstruct.outliers import (
+    BIWEIGHT_ENERGY,
+    HUBER_ENERGY,
+    biweight,
+    huber,
+    some_wild,
+    weighted_errors,
+)
 from stillground.reconstruct.reconstruction import Method, prior
 from stillground.solve.cgls import cgls
 from stillground.standard_form import StandardForm, standard_form
@@ -23,12 +31,18 @@ Outliers = Literal["auto", "tukey", "off"]
 _FALL = 0.25
 # Chi-square by the nonlinear measurement is at its target when it is so near.
 _NEAR, _TOLD = 1.1, 1.25
-_OUTER, _INNER, _HALVINGS = 20, 60, 5
-# Two steps in a row that bring less than this part of the fall they aim at fit what is no ground.
-_STALLED = 0.25
+_OUTER, _INNER, _NEARER = 20, 60, 8
+# A step must bring this part of the fall it aims at.
+_ENOUGH = 0.25
 _PASSES, _SETTLED = 8, 0.05
+# In stated errors, which may be too small; of normal residuals it is 0.67.
+_FITTED = 3.0
 # Of a logarithm, a factor of seven: what is farther from a linearisation is nonsense.
 _FARTHEST = 2.0
+# Two falls in a row by less than this share of the misfit fit what is no ground.
+_SLOW = 0.03
+# Steps home at most; and an answer so far from the model, in the unknown, has no misfit.
+_HOMING, _BEYOND = 6, 10.0
 # In parts of the way from the prior mean.
 _STILL = 2e-3
 
@@ -47,8 +61,6 @@ class Linearised:
     steps : OuterSteps
     weights : array, shape (n_data,)
         Of the data, 1 but for outliers.
-    reached : bool
-        Whether chi-square came to 1, within a quarter.
     reason : str
         How the loop ended, in words.
     """
@@ -57,7 +69,6 @@ class Linearised:
     field: Array
     steps: OuterSteps
     weights: Array
-    reached: bool
     reason: str
 
 
@@ -67,15 +78,18 @@ def linearise(
     method: Method,
     *,
     targets: Sequence[float] | None = None,
+    homing: int | None = None,
     weights: Array | None = None,
     outliers: Outliers = "off",
 ) -> Generator[Progress, None, Linearised]:
     """Fits a nonlinear measurement by linear ones in standard form, until chi-square is 1.
 
     Gauss-Newton with increments: each linearisation is solved from the model it is made at, by CGLS that
-    ends where the linear misfit meets the step's target exactly; the step is halved until the nonlinear
-    misfit falls. One last linearisation, centred on the prior mean, is left for the rules to judge.
-    Only the prior's covariance is taken from ``method``, its mean from the measurement.
+    ends where the linear misfit meets the step's target exactly; the target comes nearer until the
+    nonlinear misfit follows. One last linearisation, centred on the prior mean, is left for the rules.
+    Where the answer by that would not fit, steps part of the way towards it bring the model home: to where
+    the linear answer is the model it is made at. Only the prior's covariance is taken from ``method``, its
+    mean from the measurement.
 
     Parameters
     ----------
@@ -85,11 +99,14 @@ def linearise(
     targets : sequence of float, optional
         Chi-squares to aim at, a step each and no more: the rungs of a ladder are comparable when all make
         the same steps. Default: each step aims at a quarter of chi-square, down to 1.
+    homing : int, optional
+        How many steps home to make; default: as many as the answer needs to fit.
     weights : array, shape (n_data,), optional
         Of the data, kept throughout.
     outliers : "auto", "tukey" or "off"
         Without ``weights``: Huber's weights at each step to begin with, then Tukey's biweight until it
-        rests; with "auto" only when at least two residuals turn out wild, else all weights are 1.
+        rests; with "auto" only when most data are fitted and at least two residuals are wild, else all
+        weights are 1.
 
     Yields
     ------
@@ -109,7 +126,9 @@ def linearise(
         weights = np.ones_like(measurement.data)
         if outliers != "off":
             _, residual = yield from _steps(measurement, grid, method, None, None)
-            if outliers == "tukey" or some_wild(residual):
+            # Where not even half of the data are fitted, what stands out of the others tells nothing.
+            fitted = float(np.median(np.abs(residual))) < _FITTED
+            if outliers == "tukey" or (fitted and some_wild(residual)):
                 weights = biweight(residual)
                 for _ in range(_PASSES):
                     _, residual = yield from _steps(measurement, grid, method, None, weights)
@@ -117,16 +136,11 @@ def linearise(
                     if float(np.abs(weights - before).max()) < _SETTLED:
                         break
     found, _ = yield from _steps(measurement, grid, method, targets, weights)
-    return found
+    return (yield from _brought_home(measurement, grid, method, found, homing))
 
 
-def linearised_at(
-    measurement: NonlinearMeasurement, field: Array, mean: Array | None = None
-) -> tuple[Measurement, Array]:
-    """The linear measurement that touches a nonlinear one at a field, and the data over that field.
-
-    ``mean`` is its prior mean, by default the nonlinear measurement's.
-    """
+def linearised_at(measurement: NonlinearMeasurement, field: Array) -> tuple[Measurement, Array]:
+    """The linear measurement that touches a nonlinear one at a field, and the data over that field."""
     predicted, operator = measurement.linearise(field)
     linear = Measurement(
         operator,
@@ -134,7 +148,7 @@ def linearised_at(
         measurement.errors,
         measurement.groupings,
         measurement.extras,
-        measurement.start if mean is None else mean,
+        measurement.start,
     )
     return linear, predicted
 
@@ -152,6 +166,7 @@ def _steps(
     # What extra unknowns add to the data.
     beside = np.zeros_like(data)
     linear, predicted = linearised_at(measurement, field)
+    bounds = method.bounds or (-np.inf, np.inf)
     root: LinearOperator | None = None
     aims: list[float] = []
     misfits: list[float] = []
@@ -159,8 +174,9 @@ def _steps(
     slow, ended = 0, ""
     while True:
         residual = data - predicted - beside
-        counted = huber(residual / errors) if weights is None else weights
-        fitted = replace(linear, data=linear.data - beside, errors=weighted_errors(errors, counted))
+        weighed = huber(residual / errors) if weights is None else weights
+        energy = HUBER_ENERGY if weights is None else BIWEIGHT_ENERGY
+        fitted = replace(linear, data=linear.data - beside, errors=weighted_errors(errors, weighed, energy))
         chi_square = _mean_square(residual / fitted.errors)
         misfits.append(chi_square)
         made = len(aims)
@@ -173,38 +189,78 @@ def _steps(
         if root is None:
             root, _ = prior(fitted, grid, method)
         standard = standard_form(fitted, root, field)
-        solution, curve = _iterate_at(standard, aim)
-        step = standard.ground(solution) - field
-        found = standard.extras(solution)
-        constants = sum((extra.response @ found[extra.name] for extra in fitted.extras), np.zeros_like(data))
-        part = min(1.0, _FARTHEST / max(float(np.abs(step).max()), _FARTHEST))
-        for _ in range(_HALVINGS):
-            there = linearised_at(measurement, field + part * step)
-            after = _mean_square((data - there[1] - beside - part * constants) / fitted.errors)
-            if after <= max(chi_square, _NEAR * aim):
+        for _ in range(_NEARER):
+            solution, curve = _iterate_at(standard, aim)
+            step = standard.ground(solution) - field
+            found = standard.extras(solution)
+            part = min(1.0, _FARTHEST / max(float(np.abs(step).max()), _FARTHEST))
+            there = np.clip(field + part * step, *bounds)
+            constants = part * sum((e.response @ found[e.name] for e in fitted.extras), np.zeros_like(data))
+            touching = linearised_at(measurement, there)
+            after = _mean_square((data - touching[1] - beside - constants) / fitted.errors)
+            if after <= max(chi_square - _ENOUGH * (chi_square - aim), _NEAR * aim):
                 break
-            part /= 2
+            # A step that aims too far bends its own rays away: one that aims at less has another direction.
+            aim = float(np.sqrt(aim * chi_square))
         else:
-            ended = "no shorter step lowers it"
+            ended = "no step lowers it by much"
             break
-        linear, predicted = there
-        field, beside = field + part * step, beside + part * constants
+        moved = grid.norm(there - field)
+        (linear, predicted), field, beside = touching, there, beside + constants
         aims.append(aim)
         inner.append(curve)
-        if targets is None:
-            still = grid.norm(part * step) < _STILL * grid.norm(field - measurement.start)
-            slow = slow + 1 if chi_square - after < _STALLED * (chi_square - aim) and after > _NEAR else 0
-            ended = "further steps hardly lower it" if still or slow > 1 else ""
+        slow = slow + 1 if after > (1 - _SLOW) * chi_square else 0
+        if targets is None and (slow > 1 or moved < _STILL * grid.norm(field - measurement.start)):
+            ended = "further steps hardly lower it"
     made = len(aims)
-    reached = misfits[-1] <= _TOLD
-    reason = f"the misfit comes to {misfits[-1]:.3g} in {made} outer steps"
+    reached, in_words = misfits[-1] <= _TOLD, counted(made, "outer step", "outer steps")
+    reason = f"the misfit comes to {misfits[-1]:.3g} in {in_words}"
     if not reached:
         reason = (
-            f"the misfit stays at {misfits[-1]:.3g} after {made} outer steps, its target is 1"
-            f"{': ' + ended if ended else ''}"
+            f"the misfit stays at {misfits[-1]:.3g} after {in_words}, its target is 1"
+            f"{': ' + ended if ended else ''}; rules that ask for a misfit ask for this one"
         )
-    steps = OuterSteps(tuple(misfits), tuple(aims), tuple(inner))
-    return Linearised(linear, field, steps, counted, reached, reason), residual / errors
+    steps = OuterSteps(tuple(misfits), tuple(aims), tuple(inner), reached)
+    return Linearised(linear, field, steps, weighed, reason), residual / errors
+
+
+def _brought_home(
+    measurement: NonlinearMeasurement, grid: Grid, method: Method, found: Linearised, count: int | None
+) -> Generator[Progress, None, Linearised]:
+    """Steps from the model towards the answer from the prior mean, by ever smaller parts of the way.
+
+    ``count`` of them, or until the answer's own misfit is that of the outer steps, within a quarter; where
+    it never is, as many as bring it nearest.
+    """
+    errors = weighted_errors(measurement.errors, found.weights)
+    bounds = method.bounds or (-np.inf, np.inf)
+    root, _ = prior(replace(found.measurement, errors=errors), grid, method)
+    aim = max(found.steps.misfits[-1], 1.0)
+    most = _HOMING if count is None else count
+    nearest, owns = found, list[float]()
+    for made in range(most + 1):
+        standard = standard_form(replace(found.measurement, errors=errors), root, measurement.start)
+        solution, _ = _iterate_at(standard, aim)
+        way = np.clip(standard.ground(solution), *bounds) - found.field
+        far = float(np.abs(way).max())
+        own = np.inf
+        if far < _BEYOND:
+            extras = standard.extras(solution)
+            left = measurement.data - measurement.predict(found.field + way)
+            own = _mean_square(
+                (left - sum((e.response @ extras[e.name] for e in measurement.extras), 0 * left)) / errors
+            )
+        owns.append(own)
+        yield Progress("", made, most, f"misfit of the answer {own:.3g}")
+        found = replace(found, steps=replace(found.steps, homing=tuple(owns)))
+        if count is not None or own == min(owns):
+            nearest = found
+        if made == most or (count is None and own <= _TOLD * aim):
+            break
+        part = min(1 / max(made + 1, 2), _FARTHEST / max(far, _FARTHEST))
+        field = found.field + part * way
+        found = replace(found, field=field, measurement=linearised_at(measurement, field)[0])
+    return nearest
 
 
 def _iterate_at(standard: StandardForm, target: float) -> tuple[Array, Array]:
@@ -215,6 +271,8 @@ def _iterate_at(standard: StandardForm, target: float) -> tuple[Array, Array]:
     aim = target * standard.b.size
     x, r = np.zeros(standard.operator.shape[1]), standard.b
     curve = [_mean_square(r)]
+    if curve[0] <= target:
+        return x, np.array(curve)
     for step in islice(cgls(standard.operator, standard.b[:, None]), 1, _INNER + 1):
         before, left = x, r
         x, r = step.solution[:, 0], step.residual[:, 0]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Generator
 from dataclasses import replace
 
@@ -14,7 +15,9 @@ from stillground.stopping.gcv import gcv
 
 _BIWEIGHT, _HUBER = 4.685, 1.345
 # Mean of weight times square of normal data, E[(1 - z^2/c^2)^2 z^2] with the normal moments 1, 3, 15.
-_ENERGY = 1 - 2 * 3 / _BIWEIGHT**2 + 15 / _BIWEIGHT**4
+BIWEIGHT_ENERGY = 1 - 2 * 3 / _BIWEIGHT**2 + 15 / _BIWEIGHT**4
+# Likewise E[min(1, c/|z|) z^2] = P(|z| < c).
+HUBER_ENERGY = math.erf(_HUBER / math.sqrt(2))
 _MAD_TO_DEVIATION = 1.4826
 _PASSES = 4
 _SETTLED = 0.01
@@ -30,14 +33,14 @@ def reweighted(measurement: Measurement, weights: Array) -> Measurement:
     return replace(measurement, errors=weighted_errors(measurement.errors, weights))
 
 
-def weighted_errors(errors: Array, weights: Array) -> Array:
-    """The errors that `reweighted` gives, shape (n_data,)."""
-    return errors / _applied(weights)
+def weighted_errors(errors: Array, weights: Array, energy: float = BIWEIGHT_ENERGY) -> Array:
+    """The errors that `reweighted` gives, shape (n_data,); ``energy`` is the weights' with normal data."""
+    return errors / _applied(weights, energy)
 
 
-def _applied(weights: Array) -> Array:
+def _applied(weights: Array, energy: float = BIWEIGHT_ENERGY) -> Array:
     factor = np.sqrt(np.maximum(weights, 1e-6))
-    return factor if np.all(weights == 1) else factor / np.sqrt(_ENERGY)
+    return factor if np.all(weights == 1) else factor / np.sqrt(energy)
 
 
 def some_wild(residual: Array) -> bool:
@@ -103,4 +106,5 @@ def find_outliers(
 
 
 def _deviation(residual: Array) -> float:
+    """The robust standard deviation of residuals: of normal data that of their middle half."""
     return _MAD_TO_DEVIATION * float(np.median(np.abs(residual - np.median(residual)))) or 1.0

@@ -76,6 +76,11 @@ class Reconstruction:
         """Nodal field of the ground property at a fractional iteration, shape ``grid.shape``."""
         return self.standard.ground(self.run.solution(iteration)).reshape(self.grid.shape)
 
+    @property
+    def options(self) -> RuleOptions:
+        """As the rules took them."""
+        return _options(self.method, self.noise)
+
     def stop(self, rule: str) -> float:
         """Where the picture of a rule is taken: its pick, or the last iterate where it found none."""
         pick = self.picks[rule].iteration
@@ -157,6 +162,10 @@ def judge(history: History, method: Method) -> tuple[dict[str, Pick], float]:
     """
     pick = gcv(history, method.options).iteration
     noise = noise_size(history, float(history.last) if pick is None else pick)
-    options = method.options if method.trust else replace(method.options, noise=noise)
+    options = _options(method, noise)
     picks = {name: questioned(rule(history, options), history, noise) for name, rule in method.rules.items()}
     return picks, noise
+
+
+def _options(method: Method, noise: float) -> RuleOptions:
+    return method.options if method.trust else replace(method.options, noise=noise)
