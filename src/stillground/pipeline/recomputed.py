@@ -2,19 +2,26 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import replace
 
 import numpy as np
 
 from stillground.config import Config
 from stillground.errors import ConfigError
+from stillground.grid import Grid
 from stillground.pipeline.linear import Linear
 from stillground.pipeline.logarithm import BEYOND
 from stillground.pipeline.profiles import Profile
 from stillground.pipeline.remarks import remark_nonlinear
 from stillground.pipeline.unreached import why_unreached
-from stillground.protocols import NonlinearMeasurement, Result
+from stillground.protocols import Array, Choice, Ladder, NonlinearMeasurement, Result
 from stillground.reconstruct import Reconstruction, weighted_errors
+
+# An answer with that many times the misfit of its linearisation does not fit.
+_POOR = 1.5
+# This share of the rays along the base is no chance.
+_SOME = 0.02
 
 
 def recomputed(
@@ -47,14 +54,42 @@ def recomputed(
     chosen = replace(result.chosen, chi_square_recomputed=float(left @ left) / left.size)
     rays = measurement.rays(model)
     causes, moved = why_unreached(linear, finest, profile), linear.moved(finest.grid)
-    said = remark_nonlinear(outer, causes, chosen, result.ladder, moved, config)
+    ladder = _doubted(result.ladder, chosen)
+    said = _along_the_base(rays, finest.grid, profile)
+    said += remark_nonlinear(outer, causes, chosen, ladder, moved, config)
     return replace(
         result,
         predicted=predicted,
+        ladder=ladder,
         choices=tuple(chosen if choice is result.chosen else choice for choice in result.choices),
         chosen=chosen,
         rays=rays,
         coverage=profile.scene.coverage(finest.grid, finest.method.correlation, rays),
         outer_steps=outer.steps,
         remarks=result.remarks + said,
+    )
+
+
+def _doubted(ladder: Ladder, chosen: Choice) -> Ladder:
+    """A ladder whose answer does not fit the data is not settled, however little it moves."""
+    own, verdict = chosen.chi_square_recomputed or 0.0, ladder.verdict
+    if verdict.word != "settled" or own <= _POOR * max(chosen.chi_square, 1.0):
+        return ladder
+    reason = (
+        f"the answer itself has a misfit of {own:.3g}, its linearisation {chosen.chi_square:.3g}: it is not "
+        f"the ground that the data ask for, though it hardly moves from grid to grid"
+    )
+    return replace(ladder, verdict=replace(verdict, word="undecided", reason=reason))
+
+
+def _along_the_base(rays: Sequence[Array], grid: Grid, profile: Profile) -> tuple[str, ...]:
+    """Whether the ground that is modelled ends where rays would go deeper."""
+    base = grid.origin[-1] + 1.5 * grid.spacing[-1]
+    below = sum(bool(len(ray)) and float(ray[:, -1].min()) < base for ray in rays)
+    deepest = min(float(places[:, -1].min()) for places in profile.scene.positions.values())
+    if below < _SOME * len(rays) or deepest < base:
+        return ()
+    return (
+        f"{below} of {len(rays)} rays run along the base of the ground that is modelled, at "
+        f"{grid.origin[-1]:.4g} m: they would go deeper; take a larger ground.depth",
     )

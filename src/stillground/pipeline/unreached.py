@@ -21,13 +21,12 @@ _LISTED = 5
 
 
 def why_unreached(linear: Linear, finest: Reconstruction, profile: Profile) -> tuple[str, ...]:
-    """Sentences on the causes, one each; nothing where the target is reached or the measurement linear.
+    """Sentences on the causes, one each; nothing where the target is reached.
 
     Too small errors are told by data that measure one thing more than once, outliers by the residuals, and a
     grid too coarse by the rung before: all rungs make the same outer steps.
     """
-    outer = linear.outer.get(finest.grid)
-    if outer is None or outer.steps.reached:
+    if linear.outer[finest.grid].steps.reached:
         return ()
     rungs = linear.grids[: linear.grids.index(finest.grid) + 1]
     *coarser, misfit = (linear.outer[grid].steps.misfits[-1] for grid in rungs)
@@ -95,7 +94,7 @@ def _none_found(estimate: ErrorEstimate | None, before: float | None, misfit: fl
         if estimate is None
         else f"the errors stated are right ({estimate.said})",
         "no datum lies far off all others",
-        *([] if before is None else [f"the grid before fits hardly worse ({before:.3g})"]),
+        *([] if before is None else [f"the grid before does not fit clearly worse ({before:.3g})"]),
     ]
     return (
         f"of the usual causes of a misfit of {misfit:.3g} none is found: {', '.join(tried)}; left are "
