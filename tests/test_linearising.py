@@ -24,6 +24,7 @@ from stillground.reconstruct import (
     reweighted,
     with_delay,
 )
+from stillground.reconstruct.outliers import HUBER_ENERGY, huber, weighted_errors
 from stillground.solve.lsqr import lsqr
 from stillground.stopping.discrepancy import discrepancy
 
@@ -187,6 +188,36 @@ def test_rungs_that_make_the_same_steps_settle() -> None:
         # Means by the trapezoid rule and a Matern prior of s = 2: second order.
         assert changes[1] < changes[0] / 2
         assert changes[1] < 0.005 * rms(fields[-1])
+
+
+def test_a_target_that_is_met_already_leaves_the_model_where_it_is() -> None:
+    found = finish(linearise(toy(), LINE, TOY, targets=(2000.0, 3000.0)))
+    assert found.steps.misfits[2] == found.steps.misfits[1]
+
+
+def test_outer_steps_keep_bounds() -> None:
+    bounded = replace(TOY, bounds=(-0.5, 1.0))
+    found = finish(linearise(toy(), LINE, bounded))
+    assert found.field.min() >= -0.5
+    assert found.field.max() == 1.0
+
+
+def test_huber_weights_of_normal_residuals_leave_their_mean_square() -> None:
+    """E[min(1, c / |z|) z^2] = P(|z| < c) for the standard normal (Huber 1964, the weights of his psi)."""
+    z = np.random.default_rng(4).standard_normal(400_000)
+    errors = weighted_errors(np.ones_like(z), huber(z), HUBER_ENERGY)
+    assert float(np.mean((z / errors) ** 2)) == pytest.approx(1.0, abs=0.01)
+
+
+def test_steps_home_bring_the_answer_to_fit() -> None:
+    """From a start far off, the linearisation where the steps end is another than where its answer is."""
+    far = replace(toy(), start=np.full(LINE.n_nodes, -3.0))
+    found = finish(linearise(far, LINE, TOY))
+    assert found.steps.homing[-1] == min(found.steps.homing)
+    own = ((far.data - far.predict(answered(found, LINE, TOY))) / far.errors) ** 2
+    assert float(np.mean(own)) == pytest.approx(found.steps.homing[-1], rel=0.02)
+    same = finish(linearise(far, LINE, TOY, targets=found.steps.targets, homing=len(found.steps.homing) - 1))
+    assert same.steps.homing == found.steps.homing
 
 
 def test_a_target_out_of_reach_is_told() -> None:

@@ -17,6 +17,7 @@ from tests.products.made_up_results import make_result
 from tests.refraction_line import V0, K, line, slotnick
 
 from stillground.config import Config, load
+from stillground.errors import ConfigError
 from stillground.grid import Grid
 from stillground.operators.curved_rays import TravelTimes
 from stillground.pipeline.answer import answer
@@ -24,6 +25,7 @@ from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.labels import ProfileResult
 from stillground.pipeline.logarithm import out_of_the_logarithm
 from stillground.pipeline.profiles import read_profiles
+from stillground.pipeline.recomputed import _doubted
 from stillground.pipeline.rehearse import Rehearsed, rehearse_all
 from stillground.pipeline.run import Begun, Done, run, run_config
 from stillground.pipeline.simulate import simulate
@@ -238,6 +240,55 @@ def test_a_run_broken_off_before_anything_is_whole_keeps_the_profiles_finished(t
     summary = json.loads((tmp_path / "out" / "summary.json").read_text())
     assert [profile["name"] for profile in summary["profiles"]] == ["line"]
     assert not list((tmp_path / "out").glob("second*"))
+
+
+@pytest.mark.parametrize("pattern", [False, True])
+def test_a_rehearsal_broken_off_in_the_outer_steps_ends_there(tmp_path: Path, pattern: bool) -> None:
+    config, text = load(surveyed(tmp_path))
+    work = rehearse_all(config, text, tmp_path / "out", command="", pattern=pattern)
+    for event in work:
+        if isinstance(event, Progress) and "rung 2 of 2" in event.stage:
+            break
+    with pytest.raises(KeyboardInterrupt):
+        finish(work) if work.throw(KeyboardInterrupt) else None
+    assert not list((tmp_path / "out").glob("*"))
+
+
+def test_the_answer_fits_by_itself_or_is_not_settled(tmp_path: Path) -> None:
+    result = answered(surveyed(tmp_path), "physics.start=2500 m/s")
+    assert result.outer_steps is not None
+    homing, own = result.outer_steps.homing, result.chosen.chi_square_recomputed
+    assert own is not None
+    assert own < 1.5 or result.ladder.verdict.word != "settled"
+    assert homing[-1] <= homing[0]
+    settled = replace(result.ladder, verdict=replace(result.ladder.verdict, word="settled"))
+    poor = replace(result.chosen, chi_square_recomputed=3.0)
+    assert _doubted(settled, poor).verdict.word == "undecided"
+    assert "misfit of 3" in _doubted(settled, poor).verdict.reason
+    assert _doubted(settled, replace(poor, chi_square_recomputed=1.2)) is settled
+
+
+def test_rays_along_the_base_of_the_ground_are_told(tmp_path: Path) -> None:
+    path = surveyed(tmp_path)
+    shallow, deep = answered(path, "ground.depth=4 m", "ground.margin=1 m"), answered(path)
+    assert any("rays run along the base" in remark for remark in shallow.remarks)
+    assert not any("rays run along the base" in remark for remark in deep.remarks)
+
+
+def test_a_delay_found_with_bent_rays_has_no_error_and_says_so(tmp_path: Path) -> None:
+    result = answered(surveyed(tmp_path), "errors.delay=fit")
+    assert result.extras["delay"].deviation is None
+    assert any("depends on where the fit starts" in remark for remark in result.remarks)
+
+
+def test_a_background_beside_a_start_is_refused(tmp_path: Path) -> None:
+    with pytest.raises(ConfigError, match=r"ground\.background: curved-ray is told by its own settings"):
+        answered(surveyed(tmp_path), "ground.background=900 m/s")
+
+
+def test_times_that_nothing_fits_are_not_taken_for_outliers(tmp_path: Path) -> None:
+    late = surveyed(tmp_path, lambda starts, ends: noisy(starts, ends) + 0.1)
+    assert np.all(answered(late).weights == 1)
 
 
 def causes(path: Path, *overrides: str) -> tuple[str, ...]:

@@ -6,7 +6,6 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.optimize import least_squares
-from scipy.stats import theilslopes
 
 from stillground.grid import Grid
 from stillground.physics.first_arrivals import PLAUSIBLE
@@ -14,8 +13,6 @@ from stillground.protocols import Array
 
 # Over a survey's median offset velocities grow by this share to this multiple of the surface's.
 _GROWTH = (1e-4, 100.0)
-# Picks beyond this share of the longest distance are far; so many are taken at most, and a few tell nothing.
-_FAR, _PAIRS, _FEW = 0.6, 400, 10
 
 
 @dataclass(frozen=True)
@@ -79,8 +76,7 @@ def fitted_velocity(times: Array, lengths: Array, depths: tuple[Array, Array]) -
     Notes
     -----
     The logarithms of the times are fitted, so that near and far picks count alike, with a loss that grows
-    but linearly for those far off. No velocity is told that is faster than where the farthest wave turns,
-    nor much faster than that by which the times of far picks grow with distance.
+    but linearly for those far off. No velocity is told that is faster than where the farthest wave turns.
     """
     reach = float(np.median(lengths))
     apparent = float(np.median(lengths / times))
@@ -97,7 +93,7 @@ def fitted_velocity(times: Array, lengths: Array, depths: tuple[Array, Array]) -
     found = least_squares(misfit, first, bounds=(bounds[0], bounds[1]), loss="soft_l1", f_scale=0.1)
     surface, growth, fastest = parameters(found.x)
     turning = float(np.hypot(surface, growth * lengths.max() / 2))
-    fastest = min(fastest, turning, _far(times, lengths))
+    fastest = min(fastest, turning)
     depth = (fastest - surface) / growth
     off = float(np.sqrt(np.mean(misfit(found.x) ** 2)))
     return StartVelocity(
@@ -106,16 +102,6 @@ def fitted_velocity(times: Array, lengths: Array, depths: tuple[Array, Array]) -
         f"start: velocity {surface:.4g} m s-1 at the surface, growing to {fastest:.4g} m s-1 at a depth of "
         f"{depth:.3g} m, fitted to the times, which it gives to {100 * off:.2g} %",
     )
-
-
-def _far(times: Array, lengths: Array) -> float:
-    """The velocity along the far branches of the times, and a fifth more; infinite where they tell none."""
-    far = np.flatnonzero(lengths >= _FAR * lengths.max())
-    far = far[:: max(len(far) // _PAIRS, 1)]
-    if len(far) < _FEW or np.ptp(lengths[far]) == 0:
-        return np.inf
-    slowness = float(theilslopes(times[far], lengths[far]).slope)
-    return 1.2 / slowness if slowness > 0 else np.inf
 
 
 def arrivals(

@@ -56,6 +56,11 @@ def recomputed(
     causes, moved = why_unreached(linear, finest, profile), linear.moved(finest.grid)
     ladder = _doubted(result.ladder, chosen)
     said = _along_the_base(rays, finest.grid, profile)
+    if "delay" in result.extras:
+        said += (
+            "where rays bend, a delay and the velocity near the surface hardly tell each other apart: the "
+            "delay found depends on where the fit starts, and has no error bar",
+        )
     said += remark_nonlinear(outer, causes, chosen, ladder, moved, config)
     return replace(
         result,

@@ -11,7 +11,7 @@ from stillground.grid import Grid
 from stillground.pipeline.answer import plan_method, rehearse_profile, two_rungs
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.labels import provenance
-from stillground.pipeline.linear import linear_ladder
+from stillground.pipeline.linear import Linear, linear_ladder
 from stillground.pipeline.profiles import Profile, read_profiles
 from stillground.products.figures import write_pattern_figure, write_rehearsal_figure
 from stillground.products.pattern import pattern_dataset, write_pattern
@@ -69,7 +69,7 @@ def rehearse_all(
             yield (yield from _patterns(profile, grids, config, text, folder, command))
         else:
             method, pair, noise = plan_method(config), two_rungs(grids), 1.0
-            linear = yield from linear_ladder(profile, config, pair, method)
+            linear = yield from _linear_pair(profile, config, pair, method)
             if not config.errors.trust:
                 noise = (yield from _own_answer(linear(pair[0]), pair[0], method)).noise
             found = yield from rehearse_profile(profile, config, grids, linear, noise)
@@ -77,6 +77,16 @@ def rehearse_all(
             file = write_rehearsal(folder, profile.name, found, choose)
             figure = write_rehearsal_figure(folder / "figures", profile.name, found, choose)
             yield Rehearsed(profile.name, found, choose, file, figure)
+
+
+def _linear_pair(
+    profile: Profile, config: Config, pair: tuple[Grid, Grid], method: Method
+) -> Generator[Progress, None, Linear]:
+    """Both grids' measurements: one alone, where the user broke off, rehearses nothing."""
+    linear = yield from linear_ladder(profile, config, pair, method)
+    if len(linear.grids) < len(pair):
+        raise KeyboardInterrupt
+    return linear
 
 
 def _own_answer(
@@ -90,7 +100,7 @@ def _patterns(
 ) -> Generator[Progress, None, Patterns]:
     coarse, fine = two_rungs(grids)
     method = plan_method(config)
-    linear = yield from linear_ladder(profile, config, (coarse, fine), method)
+    linear = yield from _linear_pair(profile, config, (coarse, fine), method)
     sizes = config.rehearsal.patterns or [factor * method.correlation[-1] for factor in _SIZES]
     answer = yield from _own_answer(linear(coarse), coarse, method)
     stop = answer.stop(method.choose)

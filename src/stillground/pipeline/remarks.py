@@ -14,7 +14,7 @@ _MISSTATED = 1.3
 _ROUNDING = 1e-6
 _STATICS, _WARY = 2.5, 1.4
 _STALLED = 0.01
-_NOT_LINEAR = 0.2
+_NOT_LINEAR = 1.2
 _STEADIER = 0.6
 
 
@@ -86,7 +86,7 @@ def remark_nonlinear(
     """
     said = [] if outer.steps.reached else [outer.reason, *causes]
     recomputed = chosen.chi_square_recomputed
-    if recomputed is not None and abs(recomputed / chosen.chi_square - 1) > _NOT_LINEAR:
+    if recomputed is not None and recomputed > _NOT_LINEAR * max(chosen.chi_square, 1.0):
         said.append(
             f"the misfit of the answer is {recomputed:.3g} where its last linearisation has "
             f"{chosen.chi_square:.3g}: the answer is farther off than that reaches; trust its details less"
