@@ -152,6 +152,21 @@ def test_a_line_on_the_surface_has_a_curve_for_each_source(coarse: Result, tmp_p
         assert rings.count("M") == np.sum(fit["weight"] < 0.5) == 2
 
 
+def test_curves_of_anything_but_sources_are_told_by_their_own_name_and_sign(
+    coarse: Result, tmp_path: Path
+) -> None:
+    folder = write_folder(tmp_path, {"toe": bent(coarse)}, surface=SURFACE)
+    on_the_surface(folder)
+    path = folder / "toe_fit.csv"
+    fit = pd.read_csv(path)
+    fit.rename(columns=lambda name: re.sub("^source", "station", name)).to_csv(path, index=False)
+    text = write_report(folder).read_text(encoding="utf-8")
+    caption = "Time against distance, a curve for each station (triangles): dots observed, lines predicted"
+    (chart,) = re.findall(rf'aria-label="{re.escape(caption)}[^>]*>(.*?)</svg>', text)
+    assert 'class="place-triangle"' in chart
+    assert 'class="place-star"' not in chart
+
+
 def test_a_history_that_lost_its_rays_is_refused(coarse: Result, tmp_path: Path) -> None:
     folder = write_folder(tmp_path, {"toe": bent(coarse)}, surface=SURFACE)
     path = folder / "toe_history.nc"

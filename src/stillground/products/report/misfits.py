@@ -10,6 +10,7 @@ import pandas as pd
 from markupsafe import Markup
 
 from stillground.products.data_curves import data_curves
+from stillground.products.figures.positions import is_star
 from stillground.products.report.drawing import Chart, limits, minus
 from stillground.products.report.encoding import png
 from stillground.products.report.folder import Profile
@@ -256,8 +257,9 @@ def _curves(profile: Profile) -> Shown | None:
             chart.dots(curves.distance[light], curves.observed[light], kind, radius)
     chart.dots(curves.distance[shown], curves.observed[shown], "observed", 1.3)
     starts = curves.starts[drawn]
-    draw_places(chart, {"source": np.column_stack([starts, np.full(starts.size, chart.y[0])])})
-    said = f"{datum.capitalize()} against distance, a curve for each {curves.of} (stars): dots observed, "
+    draw_places(chart, {curves.of: np.column_stack([starts, np.full(starts.size, chart.y[0])])})
+    sign = "stars" if is_star(curves.of) else "triangles"
+    said = f"{datum.capitalize()} against distance, a curve for each {curves.of} ({sign}): dots observed, "
     said += "lines predicted"
     said += "; ringed: count less than half" if light.any() else ""
     said += "" if drawn.size == curves.numbers.size else f"; {drawn.size} of {curves.numbers.size} drawn"
