@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
@@ -12,16 +13,18 @@ import pandas as pd
 import pytest
 import xarray as xr
 from numpy.testing import assert_allclose
-from tests.conftest import crosshole
+from tests.conftest import Command, crosshole
 from tests.products.made_up_results import make_result
 from tests.refraction_line import V0, K, line, slotnick
 
+from stillground.cli import tables
 from stillground.config import Config, load
 from stillground.errors import ConfigError
 from stillground.grid import Grid
 from stillground.operators.curved_rays import TravelTimes
 from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
+from stillground.pipeline.inputs import refuse_to_replace
 from stillground.pipeline.labels import ProfileResult
 from stillground.pipeline.logarithm import out_of_the_logarithm
 from stillground.pipeline.profiles import read_profiles
@@ -30,7 +33,7 @@ from stillground.pipeline.rehearse import Rehearsed, rehearse_all
 from stillground.pipeline.run import Begun, Done, run, run_config
 from stillground.pipeline.simulate import simulate
 from stillground.progress import finish
-from stillground.protocols import Array, Average, Progress, Rehearsal, Result
+from stillground.protocols import Array, Average, OuterSteps, Progress, Rehearsal, Result
 from stillground.survey import write_table
 
 CONFIG = """
@@ -126,6 +129,61 @@ def test_the_products_of_a_run_are_there(done: tuple[ProfileResult, Path]) -> No
         ground = np.isfinite(slowness)
         assert_allclose(slowness[ground], profile.arrays.model[ground], rtol=1e-5)
         assert {"path_density", "mesh_change", "slowness_noise_part", "reliability"} <= set(section)
+
+
+def test_a_run_does_not_write_over_the_section_it_starts_from(
+    tmp_path: Path, done: tuple[ProfileResult, Path], stillground: Command
+) -> None:
+    path, earlier = surveyed(tmp_path), tmp_path / "out" / "line_section.nc"
+    earlier.parent.mkdir()
+    earlier.write_bytes(before := (done[1] / "line_section.nc").read_bytes())
+    # By another way to the same folder.
+    start = f"physics.start={earlier.parent}/../out/line_section.nc"
+    told = stillground("run", path, "--set", start, "--out", earlier.parent)
+    assert told.returncode == 2
+    (said,) = told.stderr.splitlines()[-1:]
+    assert said.startswith("stillground: ")
+    assert said.endswith(
+        "line_section.nc is read by this run, and this run would write over it; give another --out or move it"
+    )
+    assert [file.name for file in earlier.parent.iterdir()] == [earlier.name]
+    assert earlier.read_bytes() == before
+
+
+def test_whatever_a_run_writes_of_a_profile_is_refused_as_input_and_nothing_else(tmp_path: Path) -> None:
+    """The names are those in the folder of a run with all of its products and known ground beside it."""
+    path = surveyed(tmp_path)
+    (tmp_path / "log.csv").write_text("x [m],y [m],z [m],value [m/s]\n24,0,-3,1000\n")
+    products = ["section", "map", "survey", "curtain", "points", "history"]
+    asked = [f"output.products={json.dumps(products)}", 'overlay=[{file="log.csv"}]', "refinement.levels=1"]
+    config, text = load(path, ["ground.spacing=2 m", *asked])
+    finish(run(config, text, tmp_path / "out"))
+    (profile,) = read_profiles(config)
+    names = {file.name for file in (tmp_path / "out").iterdir()} - {"summary.json"}
+    assert {"line_section.nc", "line_curtain.qml", "line_overlay.csv", "map.nc", "survey.nc"} <= names
+    for name in names:
+        if not name.startswith("map_"):
+            reading = replace(profile, scene=replace(profile.scene, inputs=(tmp_path / "out" / name,)))
+            with pytest.raises(ConfigError, match=re.escape(f"{name} is read by this run")):
+                refuse_to_replace((reading,), config, tmp_path / "out")
+    # What is not asked for is not written.
+    reading = replace(profile, scene=replace(profile.scene, inputs=(tmp_path / "out" / "line_curtain.nc",)))
+    few, _ = load(path, ['output.products=["section"]'])
+    refuse_to_replace((reading,), few, tmp_path / "out")
+    # A survey beside the products, and a table with the profile's name in its own.
+    (tmp_path / "line_surface.csv").write_text("")
+    reading = replace(profile, scene=replace(profile.scene, inputs=(tmp_path / "line_surface.csv",)))
+    refuse_to_replace((reading,), config, tmp_path)
+
+
+@pytest.mark.parametrize(("targets", "said"), [(1, "1 outer step: 9, 1"), (2, "2 outer steps: 9, 3, 1")])
+def test_outer_steps_are_counted_in_words(
+    done: tuple[ProfileResult, Path], capsys: pytest.CaptureFixture[str], targets: int, said: str
+) -> None:
+    result, folder = done
+    steps = OuterSteps((9.0, 3.0, 1.0)[:: 3 - targets], (1.0,) * targets, (np.ones(1),) * targets)
+    tables.profile(Done(replace(result, arrays=replace(result.arrays, outer_steps=steps)), folder))
+    assert f"misfit over {said}\n" in capsys.readouterr().out
 
 
 def test_the_survey_layers_hold_the_rays_of_the_answer(done: tuple[ProfileResult, Path]) -> None:

@@ -64,7 +64,7 @@ def profile(done: Done) -> None:
     _rules(result.choices, result.chosen)
     if (steps := result.outer_steps) is not None:
         fallen = ", ".join(_number(misfit) for misfit in steps.misfits)
-        say(f"misfit over {len(steps.targets)} outer steps: {fallen}")
+        say(f"misfit over {counted(len(steps.targets), 'outer step', 'outer steps')}: {fallen}")
     if result.chosen.chi_square_recomputed is not None:
         say(
             f"misfits are those of the last linearisation; the answer's own is "

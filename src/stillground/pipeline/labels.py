@@ -20,6 +20,7 @@ from stillground.config import Config
 from stillground.errors import ConfigError
 from stillground.grid import Grid
 from stillground.pipeline.advice import advise
+from stillground.pipeline.inputs import inputs
 from stillground.pipeline.profiles import Profile
 from stillground.products.cf import plan_unit
 from stillground.products.data_curves import DataCurves, data_curves
@@ -109,13 +110,11 @@ class ProfileResult:
 
 def provenance(profiles: Sequence[Profile], config: Config, text: str, command: str) -> Provenance:
     """What made the files of a run: the configuration, digests of all inputs, versions, time."""
-    beside = [path for profile in profiles for path in profile.scene.inputs]
-    inputs = dict.fromkeys([*config.survey.files, *(one.file for one in config.overlay), *beside])
     return Provenance(
         title=config.title,
         config_text=text,
         command=command,
-        inputs=digests(path for path in inputs if path.is_file()),
+        inputs=digests(path for path in inputs(profiles, config) if path.is_file()),
         versions={name: version(name) for name in _PACKAGES} | {"python": sys.version.split()[0]},
         created=timestamp(),
         cautions="",

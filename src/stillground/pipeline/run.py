@@ -19,6 +19,7 @@ from stillground.errors import ConfigError
 from stillground.pipeline.advice import advise
 from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
+from stillground.pipeline.inputs import refuse_to_replace
 from stillground.pipeline.labels import ProfileResult, label, provenance, survey_crs
 from stillground.pipeline.profiles import Profile, place, read_overlays, read_profiles
 from stillground.pipeline.site import line, plan_slices, recalled, write_site
@@ -103,6 +104,7 @@ def run(
     begin = time.perf_counter()
     yield Progress("reading the survey", 0, 1)
     profiles, known = read_profiles(config), read_overlays(config)
+    refuse_to_replace(profiles, config, folder)
     plans = {profile.name: plan_grids(profile, config) for profile in profiles}
     slicing = None
     if "map" in config.output.products:
