@@ -22,7 +22,7 @@ def read_velocities(
 
     Parameters
     ----------
-    path : path of the table, CSV or NetCDF
+    path : path of the table, CSV
     lines : tuple of str
         Lines of the survey that the rows are wanted for; none where it names no line.
     plausible : pair of float
