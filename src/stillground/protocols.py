@@ -466,6 +466,8 @@ class Rehearsal:
         property's unit, and the share of the truth that comes back, ``cov(fit, truth) / var(truth)``.
     average_errors : mapping of str to float
         Root mean square errors of the scene's averages over the same twins.
+    remarks : tuple of str
+        What took no part, and why.
     """
 
     ratios: Mapping[str, Mapping[str, Array]]
@@ -475,6 +477,7 @@ class Rehearsal:
     total_error: Array
     resolved: Array
     average_errors: Mapping[str, float] = field(default_factory=dict)
+    remarks: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)

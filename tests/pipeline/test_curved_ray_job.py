@@ -31,7 +31,7 @@ from stillground.pipeline.profiles import read_profiles
 from stillground.pipeline.recomputed import _doubted
 from stillground.pipeline.rehearse import Rehearsed, rehearse_all
 from stillground.pipeline.run import Begun, Done, run, run_config
-from stillground.pipeline.simulate import simulate
+from stillground.pipeline.simulate import described_ground, simulate
 from stillground.progress import finish
 from stillground.protocols import Array, Average, OuterSteps, Progress, Rehearsal, Result
 from stillground.survey import write_table
@@ -517,3 +517,28 @@ def test_a_rehearsal_takes_part_of_the_described_ground_that_the_survey_is_of(tm
     assert ratios["described"]["discrepancy"].max() < 1.5
     other, _ = load(path, ["rehearsal.twins=4", "simulate.background=1700 m/s"])
     assert set(rehearsed(other).ratios) == {"prior", "layers"}
+
+
+def test_why_a_described_ground_takes_no_part_in_a_rehearsal_is_told(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """By `rehearse` and by a run that rehearses, with the misfit by its definition."""
+    path = surveyed(tmp_path)
+    path.write_text(CONFIG + '[errors]\nfloor = "0.2 ms"\noutliers = "off"\n' + SIMULATED)
+    few = ("rehearsal.twins=3", "ground.spacing=1.5 m")
+    config, text = load(path, few)
+    (profile,) = read_profiles(config)
+    assert config.simulate is not None
+    data = profile.scene.predict(described_ground(config.simulate, config.kind.axes))
+    misfit = np.mean((profile.survey["time"].values - data) ** 2 / profile.survey["time_error"].values ** 2)
+    said = (
+        f"the ground of [simulate] takes no part in the rehearsal: its data have a misfit of {misfit:.3g} to "
+        f"the survey's, and the rehearsal reaches no ground with more than 4"
+    )
+    (entry,) = list(rehearse_all(config, text, tmp_path / "out", command="rehearse", pattern=False))[-1:]
+    assert isinstance(entry, Rehearsed)
+    tables.rehearsal(entry)
+    assert capsys.readouterr().out.count(f"warning: {said}") == 1
+    (told,) = json.loads(entry.file.read_text())["remarks"]
+    assert told.startswith(said)
+    assert told in answered(path, *few).remarks

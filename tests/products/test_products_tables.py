@@ -154,7 +154,7 @@ def test_the_summary_tells_what_each_rule_costs(
     made = write_summary(tmp_path, run_summary("t", "0", None, [summary]))
     profile = json.loads(made.read_text(encoding="utf-8"))["profiles"][0]
     rehearsal = profile["rehearsal"]
-    assert list(rehearsal) == ["groups", "cost", "left_out", "families"]
+    assert list(rehearsal) == ["groups", "cost", "left_out", "remarks", "families"]
     assert rehearsal["groups"][0] == ["gcv", "discrepancy", "risk", "whiteness", "monotone-error"]
     assert rehearsal["groups"][1:] == [["quasi-optimality"], ["l-curve"], ["hanke-raus"]]
     assert rehearsal["cost"]["l-curve"] == 0.6

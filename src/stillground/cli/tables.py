@@ -167,6 +167,8 @@ def rehearsal(found: Rehearsed) -> None:
     say(f"{found.name}: error over the best iterate's, on synthetic ground under this survey")
     say()
     _rehearsal(found.rehearsal, found.choose)
+    for sentence in found.rehearsal.remarks:
+        say(f"warning: {sentence}")
     say(f"written: {found.file}, {found.figure}")
 
 

@@ -110,6 +110,7 @@ def answer(profile: Profile, grids: Sequence[Grid], config: Config) -> Generator
     }
     predicted = linear.stated(finest.grid).data - finest.run.residual(chosen_stop) * finest.measurement.errors
     remarks = _broken_off(top, len(grids), interrupted) + remark(finest, weights, config)
+    remarks += () if rehearsal is None else rehearsal.remarks
     result = Result(
         property=config.kind.ground_property,
         axes=finest.grid.axes,
@@ -203,27 +204,28 @@ def rehearse_profile(
     """
     coarse, fine = two_rungs(grids)
     method = plan_method(config)
-    return (
-        yield from rehearse(
-            (coarse, linear(coarse)),
-            (fine, linear(fine)),
-            method,
-            twins=config.rehearsal.twins,
-            seed=config.rehearsal.seed,
-            noise=noise,
-            described=_described(profile, config, linear, coarse, fine),
-            averages=profile.scene.averages,
-        )
+    described = _described(profile, config, linear, coarse, fine)
+    found = yield from rehearse(
+        (coarse, linear(coarse)),
+        (fine, linear(fine)),
+        method,
+        twins=config.rehearsal.twins,
+        seed=config.rehearsal.seed,
+        noise=noise,
+        described=None if isinstance(described, str) else described,
+        averages=profile.scene.averages,
     )
+    return replace(found, remarks=(described,)) if isinstance(described, str) else found
 
 
 def _described(
     profile: Profile, config: Config, linear: Linear, coarse: Grid, fine: Grid
-) -> tuple[Array, Array] | None:
+) -> tuple[Array, Array] | str | None:
     """The ground of ``[simulate]`` on the fine grid and its data, both less what the prior mean is and gives.
 
     Of a nonlinear measurement data are its own, seen from the linearisation at the survey's answer. That
-    reaches no other ground than the survey's: what is described must explain its data nearly to the errors.
+    reaches no other ground than the survey's: what is described must explain its data nearly to the errors,
+    else it is told in words why it is left out.
     """
     if config.simulate is None:
         return None
@@ -235,8 +237,13 @@ def _described(
         return values - ground.background, linear(fine).operator.matvec(values - ground.background)
     data = profile.scene.predict(ground)
     left = (measured.data - data) / weighted_errors(measured.errors, linear.weights)
-    if left @ left > _TRUSTED * left.size:
-        return None
+    misfit = float(left @ left) / left.size
+    if misfit > _TRUSTED:
+        return (
+            "the ground of [simulate] takes no part in the rehearsal: its data have a misfit of "
+            f"{misfit:.3g} to the survey's, and the rehearsal reaches no ground with more than "
+            f"{_TRUSTED:g}; describe one that explains the survey"
+        )
     at_answer, mean = linear(coarse), linear(fine).background
     assert at_answer.background is not None
     assert mean is not None

@@ -110,11 +110,12 @@ def profile_summary(name: str, result: Result, files: Mapping[str, str]) -> dict
 
 
 def rehearsal_summary(rehearsal: Rehearsal) -> dict[str, Any]:
-    """Groups of equals, what trusting each rule costs, who is left out, ratios by family in three numbers."""
+    """Groups of equals, costs of trusting rules, what is left out, ratios by family in three numbers."""
     return {
         "groups": [list(group) for group in rehearsal.groups],
         "cost": dict(rehearsal.cost),
         "left_out": dict(rehearsal.left_out),
+        "remarks": list(rehearsal.remarks),
         "families": {
             family: {rule: ratio_numbers(ratios) for rule, ratios in rules.items()}
             for family, rules in rehearsal.ratios.items()
