@@ -277,8 +277,8 @@ def test_true_lengths_keep_the_velocity_of_rays_out_of_the_plane(survey: xr.Data
 @pytest.mark.parametrize(
     ("settings", "asked"),
     [
-        ([], ["ladder"]),
-        (["rehearsal.twins=3", "sensitivity.vary=true"], ["ladder", "rehearsal", "sensitivity"]),
+        ([], ["ladder", "products"]),
+        (["rehearsal.twins=3", "sensitivity.vary=true"], ["ladder", "rehearsal", "sensitivity", "products"]),
     ],
 )
 def test_all_long_work_that_is_asked_for_is_timed_beforehand(

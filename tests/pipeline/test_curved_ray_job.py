@@ -7,6 +7,7 @@ import re
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -25,6 +26,7 @@ from stillground.operators.curved_rays import TravelTimes
 from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.inputs import refuse_to_replace
+from stillground.pipeline.inspect import inspect
 from stillground.pipeline.labels import ProfileResult
 from stillground.pipeline.logarithm import out_of_the_logarithm
 from stillground.pipeline.profiles import read_profiles
@@ -33,7 +35,17 @@ from stillground.pipeline.rehearse import Rehearsed, rehearse_all
 from stillground.pipeline.run import Begun, Done, run, run_config
 from stillground.pipeline.simulate import described_ground, simulate
 from stillground.progress import finish
-from stillground.protocols import Array, Average, OuterSteps, Progress, Rehearsal, Result
+from stillground.protocols import (
+    Array,
+    Average,
+    Measurement,
+    NonlinearMeasurement,
+    OuterSteps,
+    Progress,
+    Rehearsal,
+    Result,
+)
+from stillground.reconstruct import linearised_at
 from stillground.survey import write_table
 
 CONFIG = """
@@ -487,6 +499,28 @@ def test_a_result_leaves_the_logarithm_as_the_exponential_function_does() -> Non
     assert found.ladder.change == made.ladder.change
     assert found.ladder.verdict == made.ladder.verdict
     assert out_of_the_logarithm(replace(logarithmic, anomaly=0.0), grid, {"all": weights}).anomaly == 0.0
+
+
+@pytest.mark.parametrize("levels", [1, 2, 3])
+def test_outer_steps_are_planned_within_a_factor_of_two(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, levels: int
+) -> None:
+    """By a clock that goes on by the nodes of the grid with each linearisation and stands still otherwise."""
+    clock = [0.0]
+
+    def ticking(measurement: NonlinearMeasurement, *given: Any) -> tuple[Measurement, Array]:
+        clock[0] += measurement.start.size
+        return linearised_at(measurement, *given)
+
+    monkeypatch.setattr("stillground.pipeline.inspect.linearised_at", ticking)
+    monkeypatch.setattr("stillground.reconstruct.linearising.linearised_at", ticking)
+    config, _ = load(surveyed(tmp_path), [f"refinement.levels={levels}", "ground.spacing=1 m"])
+    with monkeypatch.context() as patch:
+        patch.setattr("stillground.pipeline.inspect.time.perf_counter", lambda: clock[0])
+        (plan,) = inspect(config)
+    began = clock[0]
+    finish(answer(plan.profile, plan.grids, config))
+    assert 0.5 < plan.seconds["outer steps"] / (clock[0] - began) < 2.0
 
 
 SIMULATED = """

@@ -293,7 +293,11 @@ def plan(planned: Plan, figures: Sequence[Path]) -> None:
     for sentence in (*planned.profile.scene.doubts, *planned.advice):
         say(f"warning: {sentence}")
     times = ", ".join(f"{_time(seconds)} for the {what}" for what, seconds in planned.seconds.items())
-    say(f"a run will take about {times}, and {planned.memory / 2**20:.0f} MiB")
+    total = _time(sum(planned.seconds.values()))
+    say(
+        f"a run will take about {total}, give or take a factor of two ({times}), "
+        f"and {planned.memory / 2**20:.0f} MiB"
+    )
     for figure in figures:
         say(f"figure: {figure}")
 

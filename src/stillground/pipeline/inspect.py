@@ -31,16 +31,25 @@ from stillground.sensitivity import RECONSTRUCTIONS
 from stillground.solve import iterate, n_probes
 
 _TIMED_STEPS = 3
-# Outer steps that most surveys need; each also marches once to try its step.
+# Linearisations that the outer steps of most surveys need, halved steps among them.
 _OUTER_STEPS = 8
+# Of every run; more where there are outer steps, data along a line, a rehearsal or a sensitivity.
+_FIGURES = 5
+# A figure as PNG and PDF, the report, or all files beside these: what it took where this was written.
+_SECONDS_A_DRAWING = 0.5
 
 
 @dataclass(frozen=True)
 class Plan:
     """What a run of one profile will do and cost.
 
-    ``memory`` of the whole process in bytes is predicted from sizes, ``seconds`` from a few timed steps: of
-    the ladder, and of the rehearsal and the sensitivity where they are asked for. Both leave figures out.
+    ``memory`` of the whole process in bytes is predicted from sizes and leaves figures out.
+
+    ``seconds`` come from a few timed steps: of the ladder with its outliers, rounding and noise part, of the
+    outer steps of a nonlinear measurement on all rungs and from other starts, and of the rehearsal and the
+    sensitivity where they are asked for; of the products from the number of figures. Usual surveys take half
+    to twice as long; outer steps that do not reach their target, or pass by pass turn out more outliers, and
+    reading, starting and compiling come on top.
     """
 
     profile: Profile
@@ -104,18 +113,29 @@ def _seconds(profile: Profile, grids: Sequence[Grid], config: Config) -> dict[st
     share = sum(grid.n_nodes for grid in grids) / grids[-1].n_nodes
     # Once before it counts, since that includes compiling.
     _seconds_of(finest, grids[-1], method, 1)
-    found = {"ladder": share * _seconds_of(finest, grids[-1], method, 1)}
     _, outer = _at_start(assemble, grids[-1])
-    found["ladder"] += share * outer
+    # As much again for outliers, for what rounding alone changes, and for the noise part.
+    found = {"ladder": 2 * share * _seconds_of(finest, grids[-1], method, 1)}
     repeated = grids[repeated_rung(grids)]
-    coarse, _ = _at_start(assemble, repeated)
+    coarse, again = _at_start(assemble, repeated)
+    once = _seconds_of(coarse, repeated, method, 1)
+    pilot, figures = assemble(repeated), _FIGURES
+    if isinstance(pilot, NonlinearMeasurement):
+        leading = grids[max(len(grids) - 2, 0)].n_nodes / grids[-1].n_nodes
+        passes = share + (leading if config.errors.outliers != "off" else 0.0)
+        found["outer steps"] = passes * outer + len(pilot.other_starts) * (again + once)
+        figures += 2
     if config.rehearsal.twins:
         families = len(FAMILIES) + (config.simulate is not None)
         together = _seconds_of(coarse, repeated, method, config.rehearsal.twins)
         found["rehearsal"] = families * together
+        figures += 1
     if config.sensitivity.vary:
-        found["sensitivity"] = RECONSTRUCTIONS * _seconds_of(coarse, repeated, method, 1)
-    return found
+        found["sensitivity"] = RECONSTRUCTIONS * once
+        figures += 1
+    wanted = config.output.products
+    drawn = 1 + figures * ("figures" in wanted) + ("report" in wanted)
+    return found | {"products": _SECONDS_A_DRAWING * drawn}
 
 
 def _at_start(assemble: Measured, grid: Grid) -> tuple[Measurement, float]:
