@@ -36,7 +36,7 @@ _OUTER_STEPS = 8
 # Of every run; more where there are outer steps, data along a line, a rehearsal or a sensitivity.
 _FIGURES = 5
 # A figure as PNG and PDF, the report, or all files beside these: what it took where this was written.
-_SECONDS_A_DRAWING = 0.5
+_SECONDS_A_DRAWING = 0.4
 
 
 @dataclass(frozen=True)
