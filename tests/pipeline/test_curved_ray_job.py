@@ -193,7 +193,9 @@ def test_outer_steps_are_counted_in_words(
     done: tuple[ProfileResult, Path], capsys: pytest.CaptureFixture[str], targets: int, said: str
 ) -> None:
     result, folder = done
-    steps = OuterSteps((9.0, 3.0, 1.0)[:: 3 - targets], (1.0,) * targets, (np.ones(1),) * targets)
+    assert result.arrays.outer_steps is not None
+    misfits = (9.0, 3.0, 1.0)[:: 3 - targets]
+    steps = replace(result.arrays.outer_steps, misfits=misfits, targets=(1.0,) * targets)
     tables.profile(Done(replace(result, arrays=replace(result.arrays, outer_steps=steps)), folder))
     assert f"misfit over {said}\n" in capsys.readouterr().out
 
