@@ -34,13 +34,13 @@ from stillground.pipeline.recomputed import _doubted
 from stillground.pipeline.rehearse import Rehearsed, rehearse_all
 from stillground.pipeline.run import Begun, Done, run, run_config
 from stillground.pipeline.simulate import described_ground, simulate
+from stillground.pipeline.site import recalled
 from stillground.progress import finish
 from stillground.protocols import (
     Array,
     Average,
     Measurement,
     NonlinearMeasurement,
-    OuterSteps,
     Progress,
     Rehearsal,
     Result,
@@ -200,12 +200,22 @@ def test_outer_steps_are_counted_in_words(
     assert f"misfit over {said}\n" in capsys.readouterr().out
 
 
+def test_a_line_that_is_recalled_keeps_its_own_misfit(done: tuple[ProfileResult, Path]) -> None:
+    profile, folder = done
+    files = {"section": "line_section.nc", "history": "line_history.nc", "fit": "line_fit.csv"}
+    again = recalled(folder, files, profile.profile, grid_of(profile.arrays))
+    own = profile.arrays.chosen.chi_square_recomputed
+    assert own != profile.arrays.chosen.chi_square
+    assert again.picture.attrs["chosen_chi_square_recomputed"] == own
+
+
 def test_the_survey_layers_hold_the_rays_of_the_answer(done: tuple[ProfileResult, Path]) -> None:
     profile, folder = done
     result, scene = profile.arrays, profile.profile.scene
     with xr.open_dataset(folder / "survey.nc") as layers:
         counts = layers["ray_node_count"].to_numpy()
         places = np.column_stack([layers[f"ray_{axis}"] for axis in "xyz"])
+        assert float(layers["line_misfit"][0]) == pytest.approx(result.chosen.chi_square_recomputed)
     rays = np.split(places, np.cumsum(counts)[:-1])
     assert len(rays) == result.observed.size
     # The line runs due east from 0: x is the distance.

@@ -18,6 +18,8 @@ from stillground.products.picture import picture_dataset
 from stillground.products.provenance import CAUTION, Provenance, argument, timestamp
 from stillground.protocols import Result, RuleOptions
 
+from .made_up_results import bent
+
 
 def test_time_follows_source_date_epoch(monkeypatch: pytest.MonkeyPatch) -> None:
     # https://reproducible-builds.org/specs/source-date-epoch: seconds since 1970, in UTC.
@@ -82,6 +84,13 @@ def test_every_netcdf_file_of_a_profile_says_what_argues_its_answer(
         assert made.attrs["chosen_chi_square"] == result.chosen.chi_square
         assert (made.attrs["verdict"], made.attrs["order"]) == ("settled", 2.0)
         assert set(provenance.attributes("")) <= set(made.attrs)
+
+
+def test_of_a_nonlinear_measurement_its_own_misfit_and_other_starts_argue_too(result: Result) -> None:
+    said, plain = argument(bent(result, 2.99)), argument(result)
+    assert said.pop("chosen_chi_square_recomputed") == 2.99
+    assert said.pop("start_dependence") == "a quarter slower: 0.148, half as steep: 2.06"
+    assert said == plain
 
 
 def test_an_order_that_cannot_be_told_is_left_out(make: Callable[..., Result]) -> None:

@@ -16,6 +16,7 @@ from stillground.products.survey import survey_dataset, write_survey
 from stillground.protocols import Result
 
 from .crossing_lines import CENTRES, PROVENANCE, TOP, bent, crossing_lines, make_line, straight, unit
+from .made_up_results import bent as curved
 
 UTM = "EPSG:32631"
 EAST, NORTH = CENTRES[UTM]
@@ -53,6 +54,13 @@ def test_lines_carry_the_argument_for_their_answer(layers: xr.Dataset) -> None:
     first = layers.isel(line=0)
     assert (first.line_verdict, first.line_rule, first.line_order) == ("settled", "gcv", 2.0)
     assert float(first.line_iteration) == 9
+
+
+def test_the_misfit_of_a_line_is_the_answers_own_where_that_was_recomputed(result: Result) -> None:
+    trace = straight(result.axes[0], 0.0, 9.0)
+    lines = [make_line("ab", result, trace, None), make_line("cd", curved(result, 2.99), trace, None)]
+    made = survey_dataset(lines, static_units="s", crs=None, provenance=PROVENANCE)
+    np.testing.assert_allclose(made.line_misfit, [result.chosen.chi_square, 2.99], rtol=1e-6)
 
 
 def test_bent_rays_are_lines_in_space_with_row_and_residual(result: Result) -> None:

@@ -90,11 +90,19 @@ def test_how_far_the_misfits_differ_is_said(coarse: Result, factor: float, said:
     assert "of the last linearisation. Recomputed (in brackets), that of gcv" in text, "no word of rays"
 
 
+def test_how_far_other_starts_move_the_answer_is_said_under_the_rules(page: str) -> None:
+    rules = page.split('class="rules"')[1].split("</section>")[0]
+    assert (
+        "From another start the answer moves by 15 % (a quarter slower), 206 % (half as steep); "
+        "on a coarse grid." in rules
+    )
+
+
 def test_results_without_rays_and_recomputed_numbers_show_nothing(coarse: Result, tmp_path: Path) -> None:
     text = written(coarse, tmp_path)
     assert 'class="rays"' not in text
     assert 'data-part="rays"' not in text
-    for word in ("Faint lines", "ecomputed", "<small>("):
+    for word in ("Faint lines", "ecomputed", "<small>(", "another start"):
         assert word not in text
 
 
@@ -115,6 +123,9 @@ def test_a_comparison_tells_both_misfits_of_both(coarse: Result, tmp_path: Path)
     ]
     text = write_comparison(*folders, tmp_path).read_text(encoding="utf-8")
     assert text.count("recomputed 1.27") == 1
+    linear = f"{coarse.chosen.chi_square:.3g}"
+    told = f"<td>1.27 <small>({linear} on its last linearisation)</small></td><td>{linear}</td>"
+    assert f'<tr><th scope="row">misfit</th>{told}</tr>' in text
 
 
 def on_the_surface(folder: Path, gap: bool = False) -> None:

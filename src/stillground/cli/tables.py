@@ -22,6 +22,7 @@ from stillground.products.overlay import overlay_sentence
 from stillground.products.provenance import CAUTION
 from stillground.products.reading import shown
 from stillground.products.reliability import MESH_DEPENDENT, NO_DATA
+from stillground.products.start_dependence import start_sentence
 from stillground.products.units import with_unit
 from stillground.protocols import Choice, Ladder, Rehearsal, Result, Sensitivity
 from stillground.survey import SurveyReport, to_si
@@ -71,8 +72,7 @@ def profile(done: Done) -> None:
             f"{_number(result.chosen.chi_square_recomputed)}"
         )
     if result.start_dependence:
-        moved = ", ".join(f"{name} {100 * part:.2g} %" for name, part in result.start_dependence.items())
-        say(f"from another start the answer moves by (on a coarse rung, relative): {moved}")
+        say(start_sentence(result.start_dependence))
     if result.rehearsal is not None:
         _rehearsal(result.rehearsal, result.chosen.rule)
         say()

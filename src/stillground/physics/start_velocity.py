@@ -8,6 +8,7 @@ import numpy as np
 from scipy.optimize import least_squares
 
 from stillground.grid import Grid
+from stillground.percent import percent
 from stillground.physics.first_arrivals import PLAUSIBLE
 from stillground.protocols import Array
 
@@ -100,7 +101,7 @@ def fitted_velocity(times: Array, lengths: Array, depths: tuple[Array, Array]) -
         np.array([0.0, depth]),
         np.array([surface, fastest]),
         f"start: velocity {surface:.4g} m s-1 at the surface, growing to {fastest:.4g} m s-1 at a depth of "
-        f"{depth:.3g} m, fitted to the times, which it gives to {100 * off:.2g} %",
+        f"{depth:.3g} m, fitted to the times, which it gives to {percent(off)}",
     )
 
 

@@ -69,7 +69,9 @@ class Provenance:
 def argument(result: Result) -> dict[str, Any]:
     """Global attributes that argue an answer: which rule stopped it where, and what the grid does to it.
 
-    ``order`` is left out where it cannot be told.
+    ``order`` is left out where it cannot be told. Of a nonlinear measurement ``chosen_chi_square`` is on the
+    last linearisation, ``chosen_chi_square_recomputed`` the answer's own, and ``start_dependence`` tells by
+    what part other starts move the answer, as text.
     """
     chosen, verdict = result.chosen, result.ladder.verdict
     said: dict[str, Any] = {
@@ -79,7 +81,14 @@ def argument(result: Result) -> dict[str, Any]:
         "verdict": verdict.word,
         "verdict_reason": verdict.reason,
     }
-    return said if verdict.order is None else said | {"order": verdict.order}
+    if verdict.order is not None:
+        said["order"] = verdict.order
+    if chosen.chi_square_recomputed is not None:
+        said["chosen_chi_square_recomputed"] = chosen.chi_square_recomputed
+    if result.start_dependence:
+        moved = result.start_dependence.items()
+        said["start_dependence"] = ", ".join(f"{name}: {part:.3g}" for name, part in moved)
+    return said
 
 
 def timestamp() -> datetime:

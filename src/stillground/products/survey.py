@@ -85,7 +85,8 @@ def _lines(lines: Sequence[Line], crs: CRS | None) -> dict[str, xr.Variable]:
         "line_rule": _text([one["chosen_rule"] for one in said], "stopping rule"),
         "line_iteration": _numbers([one["chosen_iteration"] for one in said], "iteration of the answer"),
         "line_misfit": _numbers(
-            [one["chosen_chi_square"] for one in said], "mean squared residual over error"
+            [one.get("chosen_chi_square_recomputed", one["chosen_chi_square"]) for one in said],
+            "mean squared residual over error",
         ),
         "line_length": _numbers([line.last - line.first for line in lines], "length", "m"),
     }

@@ -115,6 +115,7 @@ class Entry(BaseModel):
     rules: list[RuleEntry] = Key(min_length=1)
     refinement: Refinement
     noise: float | None = None
+    start_dependence: dict[str, float] = {}
     remarks: list[str] = []
     extras: dict[str, ExtraEntry] = {}
     averages: list[AverageEntry] = []

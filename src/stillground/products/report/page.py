@@ -34,6 +34,7 @@ from stillground.products.report.misfits import Shown as FigureShown
 from stillground.products.report.misfits import extra_charts, fit_charts, legible, outliers, places
 from stillground.products.report.picture import Sight, colour_bar, column_ends, large, small
 from stillground.products.report.rungs import change_chart, rung_pictures
+from stillground.products.start_dependence import start_sentence
 from stillground.products.units import with_unit
 from stillground.protocols import Array
 from stillground.whole import whole
@@ -150,6 +151,7 @@ def _profile(profile: Profile, symbols: Mapping[str, str], room: int, number: in
         "static": large(ground, sight, stand, None if band is None else band.values, rays),
         "rays": (len(rays), len(traced)),
         "own_misfit": _own_misfit(entry, traced=bool(rays)),
+        "other_starts": _other_starts(entry),
         "picks": _picks(profile, ground, label, drawn),
         "bar": colour_bar(Sight(ground.model, ground.scale, label, said)),
         "curves": curve_charts(profile, drawn),
@@ -332,6 +334,11 @@ def _own_misfit(entry: Entry, *, traced: bool) -> str:
         f"All misfits here are of the last linearisation{still}. Recomputed{anew} (in brackets), that of "
         f"{entry.chosen.rule} is {own:#.3g} instead of {linear:#.3g}: {apart}."
     )
+
+
+def _other_starts(entry: Entry) -> str:
+    said = start_sentence(entry.start_dependence)
+    return said and f"{said[0].upper()}{said[1:]}."
 
 
 def _shares(ground: Ground) -> str:
