@@ -18,7 +18,7 @@ from stillground.ground import Blob, Box, Ground
 from stillground.operators.curved_rays import TravelTimes
 from stillground.physics.curved_ray import CurvedRay, CurvedRayScene, CurvedRaySettings
 from stillground.physics.reciprocity import reciprocity
-from stillground.physics.start_velocity import arrivals
+from stillground.physics.start_velocity import arrivals, fitted_velocity
 from stillground.products.rays import ray_variables, rays_of
 from stillground.protocols import Array
 
@@ -49,6 +49,14 @@ def test_a_few_wild_times_hardly_move_the_start() -> None:
 
     depths = np.linspace(0.0, 10.0, 5)
     assert_allclose(placed(line(times=wild)).start.velocity(depths), V0 + K * depths, rtol=0.1)
+
+
+def test_a_start_that_hardly_fits_says_so_in_whole_percent() -> None:
+    """Times off by a factor exp(4.2) up and down are off by 420 % in the logarithm."""
+    lengths = np.linspace(1.0, 50.0, 50)
+    off = np.exp(np.where(np.arange(50) % 2, 4.2, -4.2))
+    start = fitted_velocity(lengths / 1000 * off, lengths, (np.zeros(50), np.zeros(50)))
+    assert start.fact.endswith("which it gives to 420 %")
 
 
 def test_waves_of_the_start_take_the_times_of_a_march_through_it() -> None:
@@ -234,6 +242,7 @@ def test_few_pairs_tell_too_little_to_estimate_errors_by() -> None:
 def test_pairs_of_one_way_tell_nothing_of_errors() -> None:
     scene = placed(line())
     assert reciprocity(scene.starts, scene.ends, scene.data, scene.errors) is None
+    assert "no pairs measured both ways: the data do not check the errors given" in scene.facts
 
 
 def test_a_survey_only_planned_has_a_start_and_no_pairs_of_one_place() -> None:
@@ -248,6 +257,7 @@ def test_a_survey_only_planned_has_a_start_and_no_pairs_of_one_place() -> None:
     assert planned.sizes["datum"] == 5 * 21 - 5
     scene = placed(planned)
     assert np.ptp(scene.start.velocities) > 0
+    assert not any("both ways" in fact for fact in scene.facts)
     assert scene.predict(Ground(1e-3)).max() == pytest.approx(0.04, rel=1e-6)
 
 

@@ -10,10 +10,12 @@ import xarray as xr
 from tests.conftest import Command
 from tests.refraction_line import dome, line
 
+from stillground.cli import tables
 from stillground.config import load
 from stillground.errors import SurveyError
 from stillground.grid import Grid
 from stillground.pipeline.profiles import read_profiles
+from stillground.pipeline.run import Begun
 from stillground.survey import write_table
 
 CONFIG = """
@@ -189,6 +191,41 @@ def test_a_pick_that_no_ground_gives_is_told_by_its_row(
         survey["receiver_y"][10] = 0.3
     write_table(folder / "line.csv", survey)
     assert said in told(folder)
+
+
+@pytest.mark.parametrize("kind", ["curved-ray", "straight-ray"])
+def test_milliseconds_in_a_column_of_seconds_are_refused(folder: Path, kind: str) -> None:
+    table = (folder / "line.csv").read_text()
+    assert "time [ms]" in table
+    (folder / "line.csv").write_text(table.replace("time [ms]", "time [s]"))
+    message = told(folder, f"survey.kind={kind}")
+    assert message.startswith(
+        "line.csv: column time is taken in s, which makes the median apparent velocity "
+    )
+    survey = line(relief=dome)
+    length = np.hypot(*(survey[f"receiver_{axis}"] - survey[f"source_{axis}"] for axis in "xz"))
+    assert f"velocity {np.median(length / survey['time']) / 1000:.3g} m s-1, where" in message
+    assert message.endswith("where the slowest ground has some 50; check its unit, and that of the positions")
+
+
+def test_slow_ground_is_doubted_and_not_refused(folder: Path) -> None:
+    """Median apparent velocities of some 38 m s-1: below all plausible ground, and above a tenth of it."""
+    survey = line(relief=dome)
+    write_table(folder / "line.csv", survey.assign(time=20 * survey["time"]))
+    config, _ = load(folder / "config.toml")
+    (profile,) = read_profiles(config)
+    assert any("is the unit of time right?" in doubt for doubt in profile.scene.doubts)
+
+
+def test_a_run_says_before_any_work_what_it_takes_a_survey_for(
+    folder: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    config, _ = load(folder / "config.toml")
+    (profile,) = read_profiles(config)
+    tables.begun(Begun(profile, ()))
+    said = capsys.readouterr().out.splitlines()
+    assert "no pairs measured both ways: the data do not check the errors given" in said
+    assert any(line.startswith("apparent velocities ") for line in said)
 
 
 def test_zero_offset_picks_are_told_by_row_and_place(folder: Path) -> None:

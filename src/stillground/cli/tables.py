@@ -49,9 +49,11 @@ def _number(value: float | None, digits: int = 3) -> str:
 
 
 def begun(begun: Begun) -> None:
-    """What is odd about one profile and its settings, before any work."""
+    """What one profile is taken for, and what is odd about it and its settings, before any work."""
     say()
     remarks(begun.profile.report)
+    for fact in begun.profile.scene.facts:
+        say(fact)
     for sentence in (*begun.profile.scene.doubts, *begun.advice):
         say(f"warning: {sentence}")
 

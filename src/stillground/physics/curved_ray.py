@@ -19,7 +19,7 @@ from stillground.ground import Ground
 from stillground.operators.curved_rays import TravelTimes
 from stillground.physics import first_arrivals
 from stillground.physics.path_density import path_density
-from stillground.physics.reciprocity import reciprocity
+from stillground.physics.reciprocity import UNCHECKED, reciprocity
 from stillground.physics.shot_section import ShotSection, shot_section
 from stillground.physics.start_section import StartSection
 from stillground.physics.start_velocity import StartVelocity, constant, fitted_velocity
@@ -260,22 +260,21 @@ class CurvedRay(Kind):
         ------
         SurveyError
             When positions lie too far off the section or above the surface, a source and a receiver on one
-            point, times are faster than any ground, or a table beside the survey does not fit it.
+            point, times are faster or far slower than any ground, or a table beside the survey does not
+            fit it.
         """
         placed = shot_section(survey, settings.out_of_plane)
         measured = "time" in survey
         data, errors = first_arrivals.times(survey)
+        first_arrivals.require_waves(survey, placed.lengths)
         if measured:
             _require_possible(survey, placed.lengths, data, errors)
         surface, told = _surface(survey, placed, settings.surface)
         starts, ends = (_below(places, surface) for places in (placed.starts, placed.ends))
         depths = [np.interp(places[:, 0], *surface) - places[:, 1] for places in (starts, ends)]
         start = _start(survey, placed, settings.start, data, (depths[0], depths[1]))
-        both = (
-            reciprocity(*first_arrivals.ends(survey), data, errors)
-            if measured and "time_error" in survey
-            else None
-        )
+        told_errors = measured and "time_error" in survey
+        both = reciprocity(*first_arrivals.ends(survey), data, errors) if told_errors else None
         along = np.linspace(0.0, placed.section.length, 200)
         lowest_ground = float(np.interp(along, *surface).min())
         highest = max(float(surface[1].max()), float(placed.everywhere[:, 1].max()))
@@ -298,7 +297,7 @@ class CurvedRay(Kind):
                 told,
                 *first_arrivals.facts(survey, placed.lengths),
                 start.fact,
-                *(() if both is None else (both.fact,)),
+                *((UNCHECKED if both is None else both.fact,) if told_errors else ()),
             ),
             doubts=(
                 *first_arrivals.doubts(survey, placed.lengths),

@@ -9,7 +9,10 @@ import xarray as xr
 from pydantic import BaseModel, ConfigDict, Field, model_validator
 
 from stillground.counted import counted
+from stillground.errors import SurveyError
 from stillground.protocols import Array, GroundProperty
+from stillground.survey import source_of
+from stillground.survey.faults import label
 from stillground.survey.places import Places
 
 SLOWNESS = GroundProperty(
@@ -25,6 +28,8 @@ ENDS = ("source", "receiver")
 # (common practice, no source).
 PLAUSIBLE = (50, 10_000)
 _LARGE_ERROR = 0.3
+# Below this part of the slowest a whole survey is no slow ground but another unit.
+_TOO_SLOW = 0.1
 
 
 class ShotPlan(BaseModel):
@@ -66,6 +71,30 @@ def times(survey: xr.Dataset) -> tuple[Array, Array]:
     """Times and their errors, s; ones where a survey is only planned."""
     time, error = (_values(survey, name) for name in ("time", "time_error"))
     return time, error
+
+
+def require_waves(survey: xr.Dataset, lengths: Array) -> None:
+    """Refuses times so late over ways of ``lengths``, m, that their unit must be another.
+
+    Raises
+    ------
+    SurveyError
+        When the median apparent velocity is below a tenth of the slowest plausible one.
+    """
+    if "time" not in survey:
+        return
+    time, slowest = survey["time"], PLAUSIBLE[0]
+    median = float(np.median(lengths / time.values))
+    if median < _TOO_SLOW * slowest:
+        unit = time.attrs.get("original_units", time.attrs.get("units", "s"))
+        raise SurveyError(
+            source_of(survey),
+            [
+                f"{label(time)} is taken in {unit}, which makes the median apparent velocity "
+                f"{median:.3g} m s-1, where the slowest ground has some {slowest}; check its unit, and that "
+                f"of the positions"
+            ],
+        )
 
 
 def facts(survey: xr.Dataset, lengths: Array) -> tuple[str, ...]:

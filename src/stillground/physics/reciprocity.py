@@ -13,6 +13,8 @@ from stillground.protocols import Array, ErrorEstimate, Integers
 # From fewer pairs the error is known too badly to doubt the given one: to a quarter with eight.
 _FEW = 8
 _FACTOR = 1.5
+# What to say without any.
+UNCHECKED = "no pairs measured both ways: the data do not check the errors given"
 # Pairs past 5 robust standard deviations are wild; the median of the squares of standard normal numbers.
 _WILD, _MEDIAN = 5.0, 0.4549
 

@@ -129,12 +129,13 @@ class StraightRay(Kind):
         Raises
         ------
         SurveyError
-            When positions lie too far off the section, all in one place in plan, or a source and a
-            receiver on the same point of it.
+            When positions lie too far off the section, all in one place in plan, a source and a
+            receiver on the same point of it, or times are far slower than any ground.
         """
         placed = shot_section(survey, settings.out_of_plane)
         starts, ends, lengths = placed.starts, placed.ends, placed.lengths
         span, everywhere = ends - starts, placed.everywhere
+        first_arrivals.require_waves(survey, lengths)
         data, errors = first_arrivals.times(survey)
         surface = None
         if settings.surface is not None:
