@@ -207,6 +207,7 @@ def test_every_command_teaches_by_example(stillground: Command) -> None:
         assert f"stillground {command}" in help_text
         assert "Example" in help_text
     assert "no clearance to dig" in stillground("--help").stdout
+    assert "those of kind curved-ray" in " ".join(stillground("simulate", "--help").stdout.split())
     assert stillground("--version").stdout.startswith("stillground 0")
 
 

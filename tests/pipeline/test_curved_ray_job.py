@@ -200,6 +200,21 @@ def test_outer_steps_are_counted_in_words(
     assert f"misfit over {said}\n" in capsys.readouterr().out
 
 
+def test_print_and_notebook_say_the_misfit_of_the_answer_itself_and_every_warning(
+    done: tuple[ProfileResult, Path],
+) -> None:
+    chosen = replace(done[0].arrays.chosen, chi_square=1.0, chi_square_recomputed=2.99)
+    arrays = replace(done[0].arrays, chosen=chosen, choices=(chosen,), remarks=("errors < floor",))
+    result = replace(done[0], arrays=arrays, advice=("take a finer grid",))
+    assert str(result).endswith("misfit 2.99 (1 on its last linearisation)>")
+    shown = result._repr_html_()
+    assert ">2.99 (1 on its last linearisation)<" in shown
+    assert "warning: errors &lt; floor<" in shown
+    assert "warning: take a finer grid<" in shown
+    linear = replace(arrays, chosen=replace(chosen, chi_square_recomputed=None))
+    assert str(replace(result, arrays=linear)).endswith("misfit 1>")
+
+
 def test_a_line_that_is_recalled_keeps_its_own_misfit(done: tuple[ProfileResult, Path]) -> None:
     profile, folder = done
     files = {"section": "line_section.nc", "history": "line_history.nc", "fit": "line_fit.csv"}

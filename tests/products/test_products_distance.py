@@ -163,7 +163,7 @@ def test_there_are_no_curves_without_a_line_on_a_surface() -> None:
 @pytest.mark.parametrize(
     ("config", "names"),
     [
-        ("osmere-weir-refraction", ["refraction_survey.png", "refraction_time_distance.png"]),
+        ("osmere-weir-refraction", ["refraction_survey.png", "refraction_picks.png"]),
         ("osmere-weir-downhole", ["downhole-b3_survey.png"]),
     ],
 )

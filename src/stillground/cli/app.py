@@ -189,7 +189,8 @@ def simulate(
     """Compute a survey over the ground described in CONFIG and write its table.
 
     The table [simulate] describes a background with blobs, discs, layers and boxes, the noise, and
-    where sources and receivers stand. Data come from closed forms, not from a grid. The same
+    where sources and receivers stand. Data come from closed forms, not from a grid; those of kind
+    curved-ray, which have none, from a march through the ground on a fine grid of its own. The same
     configuration gives the same table to the byte. The table goes to simulate.output.
 
     \b

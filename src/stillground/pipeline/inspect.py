@@ -81,7 +81,7 @@ def draw(plan: Plan, config: Config, folder: Path) -> tuple[Path, ...]:
     """Writes figures of the survey into those of ``folder`` and gives the paths of the PNGs.
 
     ``<profile>_survey``, where rays that bend are those that a run begins with, and of data along a line on
-    the surface ``<profile>_<datum>_distance``.
+    the surface ``<profile>_picks``: those of a run, with what the answer predicts, keep their name.
     """
     profile, grid = plan.profile, plan.grids[-1]
     scene, measurement = profile.scene, assembly(profile, config)(grid)
@@ -102,7 +102,7 @@ def draw(plan: Plan, config: Config, folder: Path) -> tuple[Path, ...]:
     curves = curves_of(profile, config, measurement.groupings, measurement.data, measurement.errors)
     drawn: dict[str, Callable[[], Figure]] = {"survey": survey}
     if curves is not None:
-        drawn[curves.name] = partial(distance_figure, profile.name, curves)
+        drawn["picks"] = partial(distance_figure, profile.name, curves)
     return write_figures(folder / "figures", profile.name, drawn)[::2]
 
 

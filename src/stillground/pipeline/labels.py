@@ -28,7 +28,7 @@ from stillground.products.figures import figures
 from stillground.products.fit import fit_table
 from stillground.products.history import history_dataset
 from stillground.products.ladder import ladder_dataset
-from stillground.products.notebook import display
+from stillground.products.notebook import display, misfit
 from stillground.products.overlay import Overlay, overlay
 from stillground.products.picture import picture_dataset
 from stillground.products.provenance import Provenance, timestamp
@@ -88,7 +88,8 @@ class ProfileResult:
         return self.figures[name]()
 
     def _repr_html_(self) -> str:
-        return display(self.name, self.arrays, self.plot())
+        warnings = (*self.profile.scene.doubts, *self.advice, *self.arrays.remarks)
+        return display(self.name, self.arrays, self.plot(), warnings)
 
     @property
     def verdict(self) -> str:
@@ -104,7 +105,7 @@ class ProfileResult:
         chosen, verdict = self.arrays.chosen, self.arrays.ladder.verdict
         return (
             f"<stillground result '{self.name}': {verdict.word} ({verdict.reason}); "
-            f"{chosen.rule} stops at iteration {chosen.iteration:.3g}, misfit {chosen.chi_square:.3g}>"
+            f"{chosen.rule} stops at iteration {chosen.iteration:.3g}, misfit {misfit(chosen)}>"
         )
 
 

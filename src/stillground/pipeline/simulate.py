@@ -1,4 +1,4 @@
-"""Makes a survey over a described ground, from closed forms: no grid takes part."""
+"""Makes a survey over a described ground: no grid of the reconstruction takes part."""
 
 from __future__ import annotations
 

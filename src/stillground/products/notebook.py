@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from base64 import b64encode
+from collections.abc import Sequence
 from html import escape
 from io import BytesIO
 
@@ -17,7 +18,14 @@ _CELL = "padding:1px 10px 1px 0;text-align:left;border:0;background:none;font-si
 _TABLE = "border-collapse:collapse;font-size:12px;line-height:1.35;margin:0;align-self:start"
 
 
-def display(name: str, result: Result, picture: Figure) -> str:
+def misfit(choice: Choice) -> str:
+    """The misfit of a rule's answer: its own where that was recomputed, with that on the linearisation."""
+    own = choice.chi_square_recomputed
+    linear = f"{choice.chi_square:.3g}"
+    return linear if own is None else f"{own:.3g} ({linear} on its last linearisation)"
+
+
+def display(name: str, result: Result, picture: Figure, warnings: Sequence[str] = ()) -> str:
     """HTML without scripts or links that stands by itself in a cell's output.
 
     Parameters
@@ -27,6 +35,8 @@ def display(name: str, result: Result, picture: Figure) -> str:
     result : Result
     picture : Figure
         Of the answer.
+    warnings : sequence of str
+        What the run warns of.
     """
     small = BytesIO()
     with our_look():
@@ -36,6 +46,7 @@ def display(name: str, result: Result, picture: Figure) -> str:
     said = f"{escape(name)}: {verdict.word}"
     head = "".join(f'<th style="{_CELL}">{text}</th>' for text in ("rule", "iteration", "misfit", ""))
     rows = "".join(_row(choice, choice is result.chosen) for choice in result.choices)
+    told = "".join(f'<p style="margin:6px 0 0">warning: {escape(each)}</p>' for each in warnings)
     image = b64encode(small.getvalue()).decode()
     return (
         f'<div style="font:13px sans-serif;color:{INK};background:{PAPER};padding:8px;max-width:75em">'
@@ -44,6 +55,7 @@ def display(name: str, result: Result, picture: Figure) -> str:
         f'<div style="display:flex;flex-wrap:wrap;gap:12px"><table style="{_TABLE}">'
         f"<tr>{head}</tr>{rows}</table>"
         f'<img src="data:image/png;base64,{image}" alt="{said}" style="max-width:36em;height:auto"></div>'
+        f"{told}"
         f'<p style="margin:6px 0 0;color:{MUTED};font-size:11px">{escape(CAUTION)}</p></div>'
     )
 
@@ -55,7 +67,7 @@ def _row(choice: Choice, chosen: bool) -> str:
         f'<b style="color:{badge.colour}">{escape(badge.letter)}</b> {escape(choice.rule)}'
         + (" (chosen)" if chosen else ""),
         iteration,
-        f"{choice.chi_square:.3g}",
+        misfit(choice),
         "firm" if choice.pick.firm else "weak",
     )
     tip = escape(choice.pick.reason, quote=True)
