@@ -195,9 +195,12 @@ def test_outer_steps_are_counted_in_words(
     result, folder = done
     assert result.arrays.outer_steps is not None
     misfits = (9.0, 3.0, 1.0)[:: 3 - targets]
-    steps = replace(result.arrays.outer_steps, misfits=misfits, targets=(1.0,) * targets)
+    made = (1.8, 1.1)[:targets]
+    steps = replace(result.arrays.outer_steps, misfits=misfits, targets=(1.0,) * targets, homing=made)
     tables.profile(Done(replace(result, arrays=replace(result.arrays, outer_steps=steps)), folder))
-    assert f"misfit over {said}\n" in capsys.readouterr().out
+    out = capsys.readouterr().out
+    assert f"misfit over {said}\n" in out
+    assert ("own misfit, over 1 step to it: 1.8, 1.1" in out) == (targets == 2)
 
 
 def test_print_and_notebook_say_the_misfit_of_the_answer_itself_and_every_warning(

@@ -68,6 +68,10 @@ def profile(done: Done) -> None:
     if (steps := result.outer_steps) is not None:
         fallen = ", ".join(_number(misfit) for misfit in steps.misfits)
         say(f"misfit over {counted(len(steps.targets), 'outer step', 'outer steps')}: {fallen}")
+        if len(steps.homing) > 1:
+            home = ", ".join(_number(misfit) for misfit in steps.homing)
+            made = counted(len(steps.homing) - 1, "step", "steps")
+            say(f"the answer's own misfit, over {made} to it: {home}")
     if result.chosen.chi_square_recomputed is not None:
         say(
             f"misfits are those of the last linearisation; the answer's own is "
