@@ -11,7 +11,7 @@ import numpy as np
 from stillground.config import load
 from stillground.pipeline.answer import plan_method
 from stillground.pipeline.grids import plan_grids
-from stillground.pipeline.linear import Linear, linear_ladder
+from stillground.pipeline.linear import Linear, asked, linear_ladder
 from stillground.pipeline.profiles import read_profiles
 from stillground.pipeline.simulate import described_ground
 from stillground.progress import finish
@@ -78,6 +78,7 @@ def twin(*overrides: str, seed: int | None = None, wild: float = 0.0, stated: fl
     profile = replace(profile, scene=replace(scene, data=times, errors=stated * scene.errors))
     method = plan_method(config)
     linear = finish(linear_ladder(profile, config, plan_grids(profile, config), method))
+    method = asked(linear, method)
     top = finish(climb(linear, linear.grids, method, config.refinement.tolerance, config.kind.regularity))
     ground = described_ground(config.simulate, config.kind.axes)
     nodes = np.stack(np.meshgrid(*top.finest.grid.axes, indexing="ij"), axis=-1).reshape(-1, 2)

@@ -363,9 +363,14 @@ def test_the_answer_fits_by_itself_or_is_not_settled(tmp_path: Path) -> None:
     assert homing[-1] <= homing[0]
     settled = replace(result.ladder, verdict=replace(result.ladder.verdict, word="settled"))
     poor = replace(result.chosen, chi_square_recomputed=3.0)
-    assert _doubted(settled, poor).verdict.word == "undecided"
-    assert "misfit of 3" in _doubted(settled, poor).verdict.reason
-    assert _doubted(settled, replace(poor, chi_square_recomputed=1.2)) is settled
+    doubted = _doubted(settled, poor, trust=True).verdict
+    assert doubted.word == "undecided"
+    assert "misfit of 3" in doubted.reason
+    assert _doubted(settled, replace(poor, chi_square_recomputed=1.2), trust=True) is settled
+    # Of errors half as large as stated a misfit of 4 is right, but only where they are not trusted.
+    fair = replace(poor, chi_square=4.0, chi_square_recomputed=5.0)
+    assert _doubted(settled, fair, trust=True).verdict.word == "undecided"
+    assert _doubted(settled, fair, trust=False) is settled
 
 
 def test_rays_along_the_base_of_the_ground_are_told(tmp_path: Path) -> None:

@@ -255,7 +255,9 @@ def _broken_off(top: Climb, n_rungs: int, interrupted: bool) -> tuple[str, ...]:
     if not interrupted:
         return ()
     if len(top.rungs) == n_rungs and not top.finest.run.interrupted:
-        return ("interrupted after the ladder: error bars, rehearsal or sensitivity are missing",)
+        return (
+            "interrupted after the ladder: error bars, rehearsal, sensitivity or other starts are missing",
+        )
     spacing = max(top.finest.grid.spacing)
     return (
         f"interrupted on the grid of {spacing:g} m after {top.finest.run.history.last} iterations: "

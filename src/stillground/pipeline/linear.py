@@ -106,8 +106,6 @@ def linear_ladder(
         return plain
     work = linearise(pilot, leader, method, outliers=config.errors.outliers)
     led = yield from staged(work, "outer steps of the nonlinear measurement")
-    # Where its own nodes kept the leading grid from the target, a finer one may come nearer.
-    targets = (*led.steps.targets, *(() if led.steps.reached else (1.0, 1.0)))
     outer: dict[Grid, Linearised] = {}
     try:
         for number, grid in enumerate(grids, start=1):
@@ -117,7 +115,9 @@ def linear_ladder(
             measurement = measured(grid)
             assert isinstance(measurement, NonlinearMeasurement)
             homing = len(led.steps.homing) - 1
-            work = linearise(measurement, grid, method, targets=targets, homing=homing, weights=led.weights)
+            work = linearise(
+                measurement, grid, method, targets=led.steps.targets, homing=homing, weights=led.weights
+            )
             outer[grid] = yield from staged(work, f"outer steps on rung {number} of {len(grids)}")
     except KeyboardInterrupt:
         if not outer:
@@ -133,7 +133,7 @@ def asked(linear: Linear, method: Method) -> Method:
     outer = linear.outer.get(linear.grids[-1])
     if outer is None or outer.steps.reached or not method.trust:
         return method
-    tau = method.options.tau * float(np.sqrt(outer.steps.misfits[-1]))
+    tau = max(method.options.tau, float(np.sqrt(outer.steps.misfits[-1])))
     return replace(method, options=replace(method.options, tau=tau))
 
 

@@ -18,7 +18,7 @@ from stillground.pipeline.unreached import why_unreached
 from stillground.protocols import Array, Choice, Ladder, NonlinearMeasurement, Result
 from stillground.reconstruct import Reconstruction, weighted_errors
 
-# An answer with that many times the misfit of its linearisation does not fit.
+# An answer with that many times the misfit it should have does not fit.
 _POOR = 1.5
 # This share of the rays along the base is no chance.
 _SOME = 0.02
@@ -54,14 +54,14 @@ def recomputed(
     chosen = replace(result.chosen, chi_square_recomputed=float(left @ left) / left.size)
     rays = measurement.rays(model)
     causes, moved = why_unreached(linear, finest, profile), linear.moved(finest.grid)
-    ladder = _doubted(result.ladder, chosen)
+    ladder = _doubted(result.ladder, chosen, trust=config.errors.trust)
     said = _along_the_base(rays, finest.grid, profile)
-    if "delay" in result.extras:
+    if result.extras:
         said += (
-            "where rays bend, a delay and the velocity near the surface hardly tell each other apart: the "
-            "delay found depends on where the fit starts, and has no error bar",
+            f"{', '.join(result.extras)}: the start of the fit, from the same data, takes up a part; what is "
+            f"found depends on where the fit starts, and has no error bar",
         )
-    said += remark_nonlinear(outer, causes, chosen, ladder, moved, config)
+    said += remark_nonlinear(outer, causes, chosen, result.ladder, moved, config)
     return replace(
         result,
         predicted=predicted,
@@ -75,10 +75,13 @@ def recomputed(
     )
 
 
-def _doubted(ladder: Ladder, chosen: Choice) -> Ladder:
-    """A ladder whose answer does not fit the data is not settled, however little it moves."""
+def _doubted(ladder: Ladder, chosen: Choice, *, trust: bool) -> Ladder:
+    """A ladder whose answer does not fit the data is not settled, however little it moves.
+
+    It is to fit the errors stated where these are trusted, else as well as its linearisation does.
+    """
     own, verdict = chosen.chi_square_recomputed or 0.0, ladder.verdict
-    if verdict.word != "settled" or own <= _POOR * max(chosen.chi_square, 1.0):
+    if verdict.word != "settled" or own <= _POOR * (1.0 if trust else max(chosen.chi_square, 1.0)):
         return ladder
     reason = (
         f"the answer itself has a misfit of {own:.3g}, its linearisation {chosen.chi_square:.3g}: it is not "
@@ -92,7 +95,7 @@ def _along_the_base(rays: Sequence[Array], grid: Grid, profile: Profile) -> tupl
     base = grid.origin[-1] + 1.5 * grid.spacing[-1]
     below = sum(bool(len(ray)) and float(ray[:, -1].min()) < base for ray in rays)
     deepest = min(float(places[:, -1].min()) for places in profile.scene.positions.values())
-    if below < _SOME * len(rays) or deepest < base:
+    if not rays or below < _SOME * len(rays) or deepest < base:
         return ()
     return (
         f"{below} of {len(rays)} rays run along the base of the ground that is modelled, at "

@@ -11,7 +11,7 @@ from stillground.grid import Grid
 from stillground.pipeline.answer import plan_method, rehearse_profile, two_rungs
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.labels import provenance
-from stillground.pipeline.linear import Linear, linear_ladder
+from stillground.pipeline.linear import Linear, asked, linear_ladder
 from stillground.pipeline.profiles import Profile, read_profiles
 from stillground.products.figures import write_pattern_figure, write_rehearsal_figure
 from stillground.products.pattern import pattern_dataset, write_pattern
@@ -101,6 +101,7 @@ def _patterns(
     coarse, fine = two_rungs(grids)
     method = plan_method(config)
     linear = yield from _linear_pair(profile, config, (coarse, fine), method)
+    method = asked(linear, method)
     sizes = config.rehearsal.patterns or [factor * method.correlation[-1] for factor in _SIZES]
     answer = yield from _own_answer(linear(coarse), coarse, method)
     stop = answer.stop(method.choose)

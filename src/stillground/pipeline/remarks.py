@@ -84,7 +84,8 @@ def remark_nonlinear(
     ``causes`` are those found of a target that was not reached, see `unreached.why_unreached`; ``moved``
     is how far the outer steps' own model did since the grid before, see `Linear.moved`.
     """
-    said = [] if outer.steps.reached else [outer.reason, *causes]
+    asked = "; rules that ask for a misfit ask for no lower one" if config.errors.trust else ""
+    said = [] if outer.steps.reached else [outer.reason + asked, *causes]
     recomputed = chosen.chi_square_recomputed
     if recomputed is not None and recomputed > _NOT_LINEAR * max(chosen.chi_square, 1.0):
         said.append(

@@ -15,6 +15,8 @@ from stillground.survey import row_numbers
 
 # What takes a cause's part of the misfit away must leave less than this of it.
 _CLEARLY = 0.75
+# A finer grid makes two steps more: by themselves they take a third of a misfit that errors too small leave.
+_FINER = 0.5
 # Errors by pairs that many times those stated leave a misfit above what counts as reached.
 _LARGER = 1.25
 _LISTED = 5
@@ -24,7 +26,7 @@ def why_unreached(linear: Linear, finest: Reconstruction, profile: Profile) -> t
     """Sentences on the causes, one each; nothing where the target is reached.
 
     Too small errors are told by data that measure one thing more than once, outliers by the residuals, and a
-    grid too coarse by the rung before: all rungs make the same outer steps.
+    grid too coarse, where it is nothing of these, by the rung before.
     """
     if linear.outer[finest.grid].steps.reached:
         return ()
@@ -36,8 +38,7 @@ def why_unreached(linear: Linear, finest: Reconstruction, profile: Profile) -> t
         *_errors(estimate, misfit),
         *_constants(estimate, finest),
         *_outliers(finest, linear.weights, misfit, profile),
-        *_grid(before, misfit, finest.grid),
-    )
+    ) or tuple(_grid(before, misfit, finest.grid))
     return found or (_none_found(estimate, before, misfit),)
 
 
@@ -79,7 +80,7 @@ def _outliers(finest: Reconstruction, weights: Array, misfit: float, profile: Pr
 
 
 def _grid(before: float | None, misfit: float, grid: Grid) -> list[str]:
-    if before is None or misfit > _CLEARLY * before:
+    if before is None or misfit > _FINER * before:
         return []
     spacing = max(grid.spacing)
     return [

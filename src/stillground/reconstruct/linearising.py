@@ -32,6 +32,8 @@ _FALL = 0.25
 # Chi-square by the nonlinear measurement is at its target when it is so near.
 _NEAR, _TOLD = 1.1, 1.25
 _OUTER, _INNER, _NEARER = 20, 60, 8
+# Steps beyond a schedule that leaves a grid above the target.
+_MORE = 2
 # A step must bring this part of the fall it aims at.
 _ENOUGH = 0.25
 _PASSES, _SETTLED = 8, 0.05
@@ -97,10 +99,11 @@ def linearise(
     grid : Grid
     method : Method
     targets : sequence of float, optional
-        Chi-squares to aim at, a step each and no more: the rungs of a ladder are comparable when all make
-        the same steps. Default: each step aims at a quarter of chi-square, down to 1.
+        Chi-squares to aim at, a step each, and two more at 1 where they do not lead there: the rungs of a
+        ladder are comparable when all make the same steps. Default: each step aims at a quarter of
+        chi-square, down to 1.
     homing : int, optional
-        How many steps home to make; default: as many as the answer needs to fit.
+        How many steps home to try; default: as many as the answer needs to fit.
     weights : array, shape (n_data,), optional
         Of the data, kept throughout.
     outliers : "auto", "tukey" or "off"
@@ -181,11 +184,12 @@ def _steps(
         misfits.append(chi_square)
         made = len(aims)
         yield Progress("", made, len(targets or ()) or _OUTER, f"misfit {chi_square:.3g}")
-        if ended or made == (_OUTER if targets is None else len(targets)):
+        scheduled = _OUTER if targets is None else len(targets) + (_MORE if chi_square > _TOLD else 0)
+        if ended or made >= scheduled:
             break
         if targets is None and chi_square <= (_NEAR if made else 1.0):
             break
-        aim = max(_FALL * chi_square, 1.0) if targets is None else targets[made]
+        aim = max(_FALL * chi_square, 1.0) if targets is None else (*targets, *(1.0,) * _MORE)[made]
         if root is None:
             root, _ = prior(fitted, grid, method)
         standard = standard_form(fitted, root, field)
@@ -218,7 +222,7 @@ def _steps(
     if not reached:
         reason = (
             f"the misfit stays at {misfits[-1]:.3g} after {in_words}, its target is 1"
-            f"{': ' + ended if ended else ''}; rules that ask for a misfit ask for this one"
+            f"{': ' + ended if ended else ''}"
         )
     steps = OuterSteps(tuple(misfits), tuple(aims), tuple(inner), reached)
     return Linearised(linear, field, steps, weighed, reason), residual / errors
@@ -229,8 +233,8 @@ def _brought_home(
 ) -> Generator[Progress, None, Linearised]:
     """Steps from the model towards the answer from the prior mean, by ever smaller parts of the way.
 
-    ``count`` of them, or until the answer's own misfit is that of the outer steps, within a quarter; where
-    it never is, as many as bring it nearest.
+    Until the answer's own misfit is that of the outer steps, within a quarter, or ``count`` of them; of all
+    these models it is the one whose answer fits best.
     """
     errors = weighted_errors(measurement.errors, found.weights)
     bounds = method.bounds or (-np.inf, np.inf)
@@ -253,7 +257,7 @@ def _brought_home(
         owns.append(own)
         yield Progress("", made, most, f"misfit of the answer {own:.3g}")
         found = replace(found, steps=replace(found.steps, homing=tuple(owns)))
-        if count is not None or own == min(owns):
+        if own == min(owns):
             nearest = found
         if made == most or (count is None and own <= _TOLD * aim):
             break
