@@ -16,7 +16,7 @@ from stillground.pipeline.profiles import Profile
 from stillground.pipeline.remarks import remark_nonlinear
 from stillground.pipeline.unreached import why_unreached
 from stillground.protocols import Array, Choice, Ladder, NonlinearMeasurement, Result
-from stillground.reconstruct import Reconstruction, weighted_errors
+from stillground.reconstruct import Reconstruction, beside, weighted_errors
 
 # An answer with that many times the misfit it should have does not fit.
 _POOR = 1.5
@@ -47,9 +47,8 @@ def recomputed(
             f'(errors.outliers = "tukey" leaves wild ones out), and at the velocity or other ground that '
             f"the fit starts from"
         )
-    predicted = measurement.predict(model)
-    for extra in measurement.extras:
-        predicted = predicted + extra.response @ result.extras[extra.name].values
+    extras = {name: found.values for name, found in result.extras.items()}
+    predicted = measurement.predict(model) + beside(measurement, extras)
     left = (result.observed - predicted) / weighted_errors(result.errors, result.weights)
     chosen = replace(result.chosen, chi_square_recomputed=float(left @ left) / left.size)
     rays = measurement.rays(model)

@@ -1,6 +1,6 @@
 """One answer on one grid: standard form, iteration, rules, and the loops around them. Arrays only."""
 
-from stillground.reconstruct.extras import with_delay, with_statics
+from stillground.reconstruct.extras import beside, with_delay, with_statics
 from stillground.reconstruct.linearising import Linearised, Outliers, linearise, linearised_at
 from stillground.reconstruct.outliers import biweight, find_outliers, reweighted, weighted_errors
 from stillground.reconstruct.reconstruction import (
@@ -20,6 +20,7 @@ __all__ = [
     "Outliers",
     "Problem",
     "Reconstruction",
+    "beside",
     "biweight",
     "find_outliers",
     "judge",

@@ -21,6 +21,14 @@ _LEAST_SIGNAL = 0.05
 _PROBES = 64
 
 
+def beside(measurement: Measurement | NonlinearMeasurement, found: Mapping[str, Array]) -> Array:
+    """What extra unknowns of these values add to the data, shape (n_data,)."""
+    total = np.zeros_like(measurement.data)
+    for extra in measurement.extras:
+        total += extra.response @ found[extra.name]
+    return total
+
+
 def with_statics(measurement: Measured, statics: Mapping[str, float], units: str) -> Measured:
     """Adds one constant for every source, receiver or other group, with a prior.
 

@@ -13,6 +13,7 @@ from pylops import LinearOperator
 from stillground.counted import counted
 from stillground.grid import Grid
 from stillground.protocols import Array, Measurement, NonlinearMeasurement, OuterSteps, Progress
+from stillground.reconstruct.extras import beside
 from stillground.reconstruct.outliers import (
     BIWEIGHT_ENERGY,
     HUBER_ENERGY,
@@ -167,7 +168,7 @@ def _steps(
     data, errors = measurement.data, measurement.errors
     field = measurement.start
     # What extra unknowns add to the data.
-    beside = np.zeros_like(data)
+    constants = np.zeros_like(data)
     linear, predicted = linearised_at(measurement, field)
     bounds = method.bounds or (-np.inf, np.inf)
     root: LinearOperator | None = None
@@ -176,10 +177,11 @@ def _steps(
     inner: list[Array] = []
     slow, ended = 0, ""
     while True:
-        residual = data - predicted - beside
+        residual = data - predicted - constants
         weighed = huber(residual / errors) if weights is None else weights
         energy = HUBER_ENERGY if weights is None else BIWEIGHT_ENERGY
-        fitted = replace(linear, data=linear.data - beside, errors=weighted_errors(errors, weighed, energy))
+        allowed = weighted_errors(errors, weighed, energy)
+        fitted = replace(linear, data=linear.data - constants, errors=allowed)
         chi_square = _mean_square(residual / fitted.errors)
         misfits.append(chi_square)
         made = len(aims)
@@ -196,12 +198,11 @@ def _steps(
         for _ in range(_NEARER):
             solution, curve = _iterate_at(standard, aim)
             step = standard.ground(solution) - field
-            found = standard.extras(solution)
             part = min(1.0, _FARTHEST / max(float(np.abs(step).max()), _FARTHEST))
             there = np.clip(field + part * step, *bounds)
-            constants = part * sum((e.response @ found[e.name] for e in fitted.extras), np.zeros_like(data))
+            added = part * beside(measurement, standard.extras(solution))
             touching = linearised_at(measurement, there)
-            after = _mean_square((data - touching[1] - beside - constants) / fitted.errors)
+            after = _mean_square((data - touching[1] - constants - added) / fitted.errors)
             if after <= max(chi_square - _ENOUGH * (chi_square - aim), _NEAR * aim):
                 break
             # A step that aims too far bends its own rays away: one that aims at less has another direction.
@@ -210,7 +211,7 @@ def _steps(
             ended = "no step lowers it by much"
             break
         moved = grid.norm(there - field)
-        (linear, predicted), field, beside = touching, there, beside + constants
+        (linear, predicted), field, constants = touching, there, constants + added
         aims.append(aim)
         inner.append(curve)
         slow = slow + 1 if after > (1 - _SLOW) * chi_square else 0
@@ -249,11 +250,9 @@ def _brought_home(
         far = float(np.abs(way).max())
         own = np.inf
         if far < _BEYOND:
-            extras = standard.extras(solution)
-            left = measurement.data - measurement.predict(found.field + way)
-            own = _mean_square(
-                (left - sum((e.response @ extras[e.name] for e in measurement.extras), 0 * left)) / errors
-            )
+            predicted = measurement.predict(found.field + way)
+            predicted = predicted + beside(measurement, standard.extras(solution))
+            own = _mean_square((measurement.data - predicted) / errors)
         owns.append(own)
         yield Progress("", made, most, f"misfit of the answer {own:.3g}")
         found = replace(found, steps=replace(found.steps, homing=tuple(owns)))
