@@ -146,6 +146,7 @@ def test_a_section_that_is_not_of_this_line_is_told(folder: Path, given: xr.Data
     given.to_netcdf(folder / "section.nc")
     message = told(folder, "physics.start=section.nc")
     assert message.startswith("section.nc: ")
+    assert message.count("section.nc: ") == 1
     assert said in message
 
 

@@ -42,8 +42,8 @@ def read_earlier_section(path: Path, section: Section, corridor: float) -> tuple
         with xr.open_dataset(path, engine="netcdf4") as file:
             missing = [name for name in _NEEDED if name not in file.variables]
             if missing:
-                raise SurveyError(
-                    str(path), [f"has no variable {', '.join(missing)}; give a <profile>_section.nc of a run"]
+                raise ValueError(
+                    f"has no variable {', '.join(missing)}; give a <profile>_section.nc of a run"
                 )
             taken = file[list(_NEEDED)].load().sortby("elevation").transpose("distance", "elevation")
         elevation, easting, northing, values = (
