@@ -6,6 +6,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from tests.broken_off import broken_at
 
 from stillground.config import from_mapping, load
 from stillground.errors import ConfigError
@@ -13,25 +14,11 @@ from stillground.pipeline.answer import answer
 from stillground.pipeline.grids import plan_grids
 from stillground.pipeline.profiles import read_profiles
 from stillground.progress import finish, staged
-from stillground.protocols import Progress, Result
-
-
-def broken_at(small: Path, stage: str, *overrides: str) -> Result:
-    config, _ = load(small / "small.toml", overrides)
-    (profile,) = read_profiles(config)
-    work = answer(profile, plan_grids(profile, config), config)
-    step = next(work)
-    while stage not in step.stage or step.done < 5:
-        step = next(work)
-    try:
-        work.throw(KeyboardInterrupt)
-        return finish(work)
-    except StopIteration as end:
-        return end.value
+from stillground.protocols import Progress
 
 
 def test_an_answer_stands_when_its_error_bars_are_broken_off(small: Path) -> None:
-    result = broken_at(small, "noise part")
+    result = broken_at(small / "small.toml", "noise part", done=5)
     assert result.interrupted
     assert np.isnan(result.noise_part).all(), "no error bars rather than too small ones"
     assert len(result.ladder.rungs) == 3
@@ -39,14 +26,16 @@ def test_an_answer_stands_when_its_error_bars_are_broken_off(small: Path) -> Non
 
 
 def test_a_ladder_stands_when_its_check_of_rounding_is_broken_off(small: Path) -> None:
-    result = broken_at(small, "rounding", "stopping.choose=discrepancy", "stopping.tau=0.1")
+    result = broken_at(
+        small / "small.toml", "rounding", "stopping.choose=discrepancy", "stopping.tau=0.1", done=5
+    )
     assert result.interrupted
     assert (len(result.ladder.rungs), result.ladder.jitter) == (3, None)
     assert "interrupted after the ladder" in result.remarks[0]
 
 
 def test_a_rung_is_judged_as_far_as_it_came(small: Path) -> None:
-    result = broken_at(small, "rung 2")
+    result = broken_at(small / "small.toml", "rung 2", done=5)
     assert result.interrupted
     assert len(result.ladder.rungs) == 2
     assert result.history.last == 5

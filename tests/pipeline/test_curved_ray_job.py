@@ -14,6 +14,7 @@ import pandas as pd
 import pytest
 import xarray as xr
 from numpy.testing import assert_allclose
+from tests.broken_off import broken_at
 from tests.conftest import Command, crosshole
 from tests.products.made_up_results import make_result
 from tests.refraction_line import V0, K, line, slotnick
@@ -291,21 +292,6 @@ def test_ground_of_nearly_one_velocity_gives_the_answer_of_straight_rays(
     flat = answered(tmp_path / "straight.toml", "ground.background=1800 m/s")
     difference = np.sqrt(np.mean((curved.model * 1800 - flat.model * 1800) ** 2))
     assert difference < (1e-4 if contrast == 0 else 0.15 * contrast)
-
-
-def broken_at(path: Path, stage: str) -> Result:
-    """The answer of a run broken off at the third step of a stage."""
-    config, _ = load(path)
-    (profile,) = read_profiles(config)
-    work = answer(profile, plan_grids(profile, config), config)
-    step = next(work)
-    while stage not in step.stage:
-        step = next(work)
-    try:
-        work.throw(KeyboardInterrupt)
-        return finish(work)
-    except StopIteration as end:
-        return end.value
 
 
 def test_outer_steps_broken_off_on_a_rung_leave_the_rungs_before(tmp_path: Path) -> None:
